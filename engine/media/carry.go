@@ -1,0 +1,159 @@
+package media
+
+import (
+	"bytes"
+	"context"
+	"io"
+	"maps"
+	"os"
+	"slices"
+	"strconv"
+	"strings"
+)
+
+// tagSource is the recording whose tags, chunks and pictures a delivery carries on. A nil tagSource
+// carries nothing; every method works on it.
+type tagSource struct {
+	f    *os.File
+	size int64
+	kind kind
+	wav  *wavHeader // nil if it is not WAV
+}
+
+// openTags opens the file tags are taken from; "" gives nil.
+func openTags(path string) (*tagSource, error) {
+	if path == "" {
+		return nil, nil
+	}
+	f, size, err := openRegular(path)
+	if err != nil {
+		return nil, about(path, err)
+	}
+	t := &tagSource{f: f, size: size}
+	if t.kind, err = sniff(f); err == nil && t.kind.container == "wav" {
+		t.wav, err = parseWAV(f, size)
+	}
+	if err != nil {
+		f.Close()
+		return nil, about(path, err)
+	}
+	return t, nil
+}
+
+func (t *tagSource) close() {
+	if t != nil {
+		t.f.Close() // it was only read
+	}
+}
+
+// is reports whether a path leads to the very file tags are taken from.
+func (t *tagSource) is(path string) bool {
+	if t == nil {
+		return false
+	}
+	mine, err1 := t.f.Stat()
+	other, err2 := os.Stat(path)
+	return err1 == nil && err2 == nil && os.SameFile(mine, other)
+}
+
+// ownChunks are chunks that describe the samples or their levels: a new file has its own or none. PEAK
+// and levl hold peaks and go stale with any gain.
+var ownChunks = []string{"fmt ", "data", "fact", "ds64", "JUNK", "junk", "PEAK", "levl"}
+
+// before and after return the chunks to carry over in front of the samples and behind them.
+func (t *tagSource) before() []chunk {
+	if t == nil || t.wav == nil {
+		return nil
+	}
+	return carried(t.wav.before)
+}
+
+func (t *tagSource) after() []chunk {
+	if t == nil || t.wav == nil {
+		return nil
+	}
+	return carried(t.wav.after)
+}
+
+func carried(list []chunk) []chunk {
+	var kept []chunk
+	for _, c := range list {
+		if !slices.Contains(ownChunks, c.id) {
+			kept = append(kept, c)
+		}
+	}
+	return kept
+}
+
+// body returns a chunk's content, byte for byte but for one thing: the five loudness figures of a bext
+// chunk (EBU Tech 3285, version 2 and up) describe the sound as it was, so they are marked unused.
+func (t *tagSource) body(c chunk) io.Reader {
+	body := io.NewSectionReader(t.f, c.start, c.len)
+	const version, figures, end = 346, 412, 422
+	if c.id != "bext" || c.len < end {
+		return body
+	}
+	head, err := readAt(t.f, c.start, end)
+	if err != nil || len(head) < end || le16(head[version:]) < 2 {
+		return body
+	}
+	for at := figures; at < end; at += 2 {
+		head[at], head[at+1] = 0xFF, 0x7F
+	}
+	return io.MultiReader(bytes.NewReader(head), io.NewSectionReader(t.f, c.start+end, c.len-end))
+}
+
+// stale reports whether a tag states a level or a length that the new file no longer has: anything that
+// speaks of a gain, Opus's R128_ tags, and the "…NORM" and "…SMPB" notes of MP4 players.
+func stale(name string) bool {
+	name = strings.ToUpper(name)
+	return strings.Contains(name, "GAIN") || strings.HasPrefix(name, "R128_") ||
+		strings.HasSuffix(name, "NORM") || strings.HasSuffix(name, "SMPB")
+}
+
+// technical tags describe the file they were in, not the recording.
+var technical = []string{
+	"encoder", "major_brand", "minor_version", "compatible_brands", "handler_name", "vendor_id", "language",
+	"duration", "creation_time", "number_of_frames", "number_of_bytes", "bps",
+}
+
+const maxTag = 100 << 10 // bytes; the system limits one argument of a command to 128 KiB
+
+// ffmpegTags returns FFmpeg's options, in front of the output, for the tags, chapters and pictures of the
+// source, which must be input 1. pictures says whether the target has room for them.
+func (t *Toolbox) ffmpegTags(ctx context.Context, src *tagSource, pictures bool) ([]string, error) {
+	if src == nil {
+		return []string{"-map_metadata", "-1"}, nil
+	}
+	p, err := t.runProbe(ctx, src.f, src.kind)
+	if err != nil {
+		return nil, err
+	}
+	args := []string{"-map_metadata", "-1", "-map_chapters", "1"}
+	tags := map[string]string{}
+	if s := p.sound(); s != nil { // Ogg keeps its tags on the stream, the others on the file
+		keepTags(tags, s.Tags)
+	}
+	keepTags(tags, p.Format.Tags)
+	for _, name := range slices.Sorted(maps.Keys(tags)) {
+		args = append(args, "-metadata", name+"="+tags[name])
+	}
+	if pictures {
+		for _, index := range p.pictures() {
+			args = append(args, "-map", "1:"+strconv.Itoa(index))
+		}
+		args = append(args, "-c:v", "copy", "-disposition:v", "attached_pic")
+	}
+	return args, nil
+}
+
+func keepTags(dst, src map[string]string) {
+	for name, value := range src {
+		name, value = strings.ReplaceAll(name, "\x00", ""), strings.ReplaceAll(value, "\x00", "")
+		lower := strings.ToLower(name)
+		if name == "" || strings.Contains(name, "=") || len(value) > maxTag || stale(name) || slices.Contains(technical, lower) || strings.HasPrefix(lower, "_statistics") {
+			continue
+		}
+		dst[name] = value
+	}
+}

@@ -1,0 +1,167 @@
+package media
+
+import (
+	"bytes"
+	"context"
+	"encoding/json"
+	"fmt"
+	"os"
+	"strconv"
+	"strings"
+
+	"evenshelf/engine/audio"
+)
+
+// inputFD is the name under which a child finds the file we opened for it as descriptor 3. Opened this
+// way it can seek, which a pipe cannot, and no path of ours is ever taken for an option or a URL.
+const inputFD = "file:/dev/fd/3"
+
+// guarded are the options in front of every input FFmpeg is given.
+func guarded(k kind) []string {
+	return []string{"-protocol_whitelist", "file,pipe", "-f", k.demuxer}
+}
+
+// probe is what ffprobe says about a file, as far as it matters here.
+type probe struct {
+	Streams []probeStream `json:"streams"`
+	Format  struct {
+		Duration string            `json:"duration"`
+		BitRate  string            `json:"bit_rate"`
+		Tags     map[string]string `json:"tags"`
+	} `json:"format"`
+}
+
+type probeStream struct {
+	Index       int               `json:"index"`
+	Type        string            `json:"codec_type"`
+	Codec       string            `json:"codec_name"`
+	SampleFmt   string            `json:"sample_fmt"`
+	SampleRate  string            `json:"sample_rate"`
+	Channels    int               `json:"channels"`
+	TimeBase    string            `json:"time_base"`
+	DurationTS  int64             `json:"duration_ts"`
+	BitRate     string            `json:"bit_rate"`
+	RawBits     string            `json:"bits_per_raw_sample"`
+	Bits        int               `json:"bits_per_sample"`
+	Disposition map[string]int    `json:"disposition"`
+	Tags        map[string]string `json:"tags"`
+}
+
+// runProbe asks ffprobe about an open file.
+func (t *Toolbox) runProbe(ctx context.Context, f *os.File, k kind) (*probe, error) {
+	ctx, cancel := context.WithTimeoutCause(ctx, stallLimit, fmt.Errorf("FFmpeg took more than %v to look at it", stallLimit))
+	defer cancel()
+	args := append([]string{"-v", "error", "-of", "json", "-show_streams", "-show_format"}, guarded(k)...)
+	c, err := startChild(ctx, true, []*os.File{f}, t.ffprobe, append(args, inputFD)...)
+	if err != nil {
+		return nil, err
+	}
+	out := bytes.Buffer{}
+	const limit = 8 << 20
+	buf := make([]byte, 32<<10)
+	for out.Len() < limit {
+		n, err := c.Read(buf)
+		out.Write(buf[:n])
+		if err != nil {
+			break
+		}
+	}
+	if out.Len() >= limit {
+		c.kill()
+		return nil, &FormatError{-1, "its tags are larger than any recording's"}
+	}
+	if err := c.wait(); err != nil {
+		if stop := stopped(ctx)(); stop != nil {
+			return nil, stop
+		}
+		return nil, &FormatError{-1, "the file cannot be read: " + err.Error()}
+	}
+	var p probe
+	if err := json.Unmarshal(out.Bytes(), &p); err != nil {
+		return nil, fmt.Errorf("FFmpeg's answer is not understood: %w", err)
+	}
+	return &p, nil
+}
+
+// sound returns the first sound stream, or nil.
+func (p *probe) sound() *probeStream {
+	for i := range p.Streams {
+		if p.Streams[i].Type == "audio" {
+			return &p.Streams[i]
+		}
+	}
+	return nil
+}
+
+// pictures returns the stream numbers of cover art, of the kinds every container takes.
+func (p *probe) pictures() []int {
+	var list []int
+	for _, s := range p.Streams {
+		if s.Type == "video" && s.Disposition["attached_pic"] == 1 && (s.Codec == "mjpeg" || s.Codec == "png") {
+			list = append(list, s.Index)
+		}
+	}
+	return list
+}
+
+func (p *probe) video() bool {
+	for _, s := range p.Streams {
+		if s.Type == "video" && s.Disposition["attached_pic"] == 0 {
+			return true
+		}
+	}
+	return false
+}
+
+// info turns the answer into an Info, but for Decoder.
+func (p *probe) info(k kind) (Info, error) {
+	s := p.sound()
+	if s == nil {
+		return Info{}, fmt.Errorf("%w: there is no sound in it", ErrUnsupported)
+	}
+	info := Info{Container: k.container, Codec: s.Codec, Frames: -1, Video: p.video()}
+	info.Format = audio.Format{Rate: atoi(s.SampleRate), Layout: audio.UsualLayout(s.Channels)}
+	if err := checkFormat(info.Format, -1); err != nil {
+		return Info{}, err
+	}
+	switch {
+	case strings.HasPrefix(s.Codec, "pcm_f"):
+		info.Float, info.BitDepth = true, s.Bits
+	case lossless[s.Codec] || strings.HasPrefix(s.Codec, "pcm_s") || strings.HasPrefix(s.Codec, "pcm_u"):
+		if info.BitDepth = atoi(s.RawBits); info.BitDepth == 0 {
+			info.BitDepth = s.Bits
+		}
+		if info.BitDepth == 0 && strings.HasPrefix(s.SampleFmt, "s16") {
+			info.BitDepth = 16
+		} else if info.BitDepth == 0 {
+			info.BitDepth = 24
+		}
+	default:
+		if info.BitRate = atoi(s.BitRate); info.BitRate == 0 && !info.Video {
+			info.BitRate = atoi(p.Format.BitRate)
+		}
+	}
+	if counts[k.container] && s.DurationTS > 0 && s.TimeBase == "1/"+s.SampleRate {
+		info.Frames = s.DurationTS
+	}
+	return info, nil
+}
+
+// lossless codecs besides PCM, by FFmpeg's names.
+var lossless = map[string]bool{"flac": true, "alac": true, "wavpack": true, "ape": true, "tta": true, "tak": true, "mlp": true, "truehd": true}
+
+// counts names the containers whose duration is a count of frames; in the others FFmpeg estimates it or
+// it is kept in milliseconds.
+var counts = map[string]bool{
+	"flac": true, "ogg": true, "mp4": true, "mov": true, "aiff": true, "caf": true, "au": true, "w64": true, "wav": true,
+	"wv": true, "ape": true,
+}
+
+// atoi returns 0 for what is not a number: ffprobe leaves out or writes "N/A" for what it does not know.
+func atoi(s string) int {
+	n, err := strconv.Atoi(s)
+	if err != nil || n < 0 {
+		return 0
+	}
+	return n
+}

@@ -1,0 +1,131 @@
+package media
+
+import (
+	"context"
+	"encoding/binary"
+	"fmt"
+	"os"
+	"strconv"
+
+	"evenshelf/engine/audio"
+)
+
+// ffWriter has FFmpeg encode. The sound goes to the child as a WAV stream: float for lossy codecs, which
+// do their own rounding, and integers already dithered for lossless ones. The output is the file we
+// opened, by its descriptor.
+type ffWriter struct {
+	child *child
+	pack  *packer
+}
+
+func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *tagSource) (*ffWriter, error) {
+	l, isLossy := lossyCodecs[spec.Codec]
+	muxer := map[string]string{"flac": "flac", "mp4": "ipod", "aiff": "aiff"}[spec.Container]
+	pcm := Spec{Format: spec.Format, BitDepth: spec.BitDepth}
+	if isLossy {
+		muxer = l.muxer
+		pcm.BitDepth, pcm.Float = 32, true
+	}
+	if pcm.Format.Layout.Mask == 0 {
+		pcm.Format.Layout = audio.UsualLayout(pcm.Format.Layout.Channels)
+	}
+	if isLossy {
+		pcm.Format.Layout = encoderLayout(pcm.Format.Layout)
+	}
+
+	args := []string{"-nostdin", "-v", "error", "-y", "-f", "wav", "-ignore_length", "1", "-i", "pipe:0"}
+	files := []*os.File{f}
+	if tags != nil {
+		args = append(append(args, guarded(tags.kind)...), "-i", inputFD)
+		files = []*os.File{tags.f, f}
+	}
+	args = append(args, "-map", "0:a:0")
+	carried, err := t.ffmpegTags(ctx, tags, muxer != "ogg" && muxer != "aiff")
+	if err != nil {
+		return nil, err
+	}
+	args = append(args, carried...)
+	if mask := unusualMask(spec.Format.Layout); spec.Codec == "flac" {
+		args = append(args, "-metadata", maskComment+"="+mask) // empty: none, not even the source's
+	}
+	args = append(args, t.encoderArgs(spec)...)
+	args = append(args, "-fflags", "+bitexact", "-f", muxer, fmt.Sprintf("file:/dev/fd/%d", 2+len(files)))
+	c, err := startChild(ctx, false, files, t.ffmpeg, args...)
+	if err != nil {
+		return nil, err
+	}
+	w := &ffWriter{child: c, pack: newPacker(pcm.Format.Layout.Channels, pcm.BitDepth, pcm.Float)}
+	if err := w.send(streamHead(pcm)); err != nil {
+		c.kill()
+		return nil, err
+	}
+	return w, nil
+}
+
+// streamHead returns the head of an endless WAV stream.
+func streamHead(spec Spec) []byte {
+	b := append([]byte("RIFF\xFF\xFF\xFF\xFFWAVE"), fmtChunk(spec)...)
+	return binary.LittleEndian.AppendUint32(append(b, "data"...), unknown32)
+}
+
+// encoderArgs chooses the encoder and its quality.
+func (t *Toolbox) encoderArgs(spec Spec) []string {
+	rate := strconv.Itoa
+	channels := spec.Format.Layout.Channels
+	switch spec.Codec {
+	case "mp3":
+		args := []string{"-c:a", "libmp3lame", "-id3v2_version", "3"} // the version old players read too
+		if spec.BitRate == 0 {
+			return append(args, "-q:a", "0")
+		}
+		return append(args, "-b:a", rate(mp3BitRate(spec.BitRate, spec.Format.Rate)))
+	case "vorbis":
+		return []string{"-c:a", "libvorbis", "-q:a", fmt.Sprint(vorbisQuality(spec.BitRate, spec.Format))}
+	case "opus":
+		bits := spec.BitRate
+		if bits == 0 {
+			bits = 128_000 * channels
+		}
+		return []string{"-c:a", "libopus", "-b:a", rate(min(max(bits, 6_000), 256_000*channels))}
+	case "aac":
+		// Sources of low rate were made with tools (SBR) this encoder lacks: it gets no less than it needs.
+		bits := max(spec.BitRate, 64_000*channels)
+		if spec.BitRate == 0 {
+			bits = 128_000 * channels
+		}
+		args := []string{"-c:a", "aac", "-b:a", rate(min(bits, 256_000*channels))}
+		return append(args, t.exactLength(spec)...)
+	case "alac":
+		return append([]string{"-c:a", "alac"}, t.exactLength(spec)...)
+	default:
+		return []string{"-c:a", spec.Codec}
+	}
+}
+
+// exactLength has an MP4 file count its length in frames instead of milliseconds, so that the padding of
+// the last packet can be told from sound. Older FFmpegs cannot do it.
+func (t *Toolbox) exactLength(spec Spec) []string {
+	var major, minor int
+	fmt.Sscanf(t.version, "%d.%d", &major, &minor)
+	if major < 5 || major == 5 && minor < 1 {
+		return nil
+	}
+	return []string{"-movie_timescale", strconv.Itoa(spec.Format.Rate)}
+}
+
+func (w *ffWriter) write(src audio.Block) error { return w.send(w.pack.pack(src)) }
+
+// send writes to the child. If the child has ended, its own words are the error.
+func (w *ffWriter) send(b []byte) error {
+	_, err := w.child.Write(b)
+	if err == nil {
+		return nil
+	}
+	if said := w.child.wait(); said != nil {
+		return said
+	}
+	return fmt.Errorf("FFmpeg stopped listening: %w", err)
+}
+
+func (w *ffWriter) finish() error { return w.child.wait() }
+func (w *ffWriter) abort()        { w.child.kill() }

@@ -1,0 +1,161 @@
+package media
+
+import (
+	"bufio"
+	"context"
+	"errors"
+	"fmt"
+	"io"
+	"math"
+	"os"
+
+	mp3 "github.com/hajimehoshi/go-mp3"
+
+	"evenshelf/engine/audio"
+)
+
+// mp3Reader reads MP3 without FFmpeg. It is the fallback: go-mp3 delivers 16-bit samples, clipped at
+// full scale, so overs are lost; it stops at damage where FFmpeg carries on; and it decodes intensity
+// stereo wrongly, so that is refused.
+type mp3Reader struct {
+	f       *os.File
+	path    string
+	info    Info
+	stream  *blockStream
+	wide    audio.Block // go-mp3 always makes two channels
+	cut     audio.Block
+	mono    bool
+	left    int64 // frames promised and still to come; math.MaxInt64 if none are
+	exact   bool
+	stopped func() error
+	err     error
+}
+
+func newMP3Reader(ctx context.Context, f *os.File, path string, start int64) (*mp3Reader, error) {
+	head, g, err := readGapless(f, start)
+	if err != nil {
+		return nil, err
+	}
+	if head.layer != 3 {
+		return nil, fmt.Errorf("%w: reading MPEG audio of layer %d needs FFmpeg, and %s", ErrUnsupported, head.layer, needFFmpeg)
+	}
+	layout := audio.Stereo
+	if head.mono {
+		layout = audio.Mono
+	}
+	r := &mp3Reader{
+		f: f, path: path, mono: head.mono, exact: g.trimmed, stopped: stopped(ctx), left: math.MaxInt64,
+		wide: audio.NewBlock(2, audio.BlockFrames), cut: make(audio.Block, 2),
+		info: Info{
+			Container: "mp3", Codec: "mp3", Format: audio.Format{Rate: head.rate, Layout: layout},
+			Frames: g.frames, BitRate: head.bitRate, Decoder: "go-mp3 0.3.4",
+		},
+	}
+	if g.bitRate > 0 {
+		r.info.BitRate = g.bitRate
+	}
+	if g.trimmed {
+		r.left = g.frames
+	}
+	// The decoder gets a Reader that begins at the sound: given a Seeker it would first read all
+	// of it to count frames, and given an ID3 tag it would take its word for how much memory it needs.
+	src := &plainStereo{r: bufio.NewReader(io.NewSectionReader(f, start, math.MaxInt64-start))}
+	dec, err := guard(func() (*mp3.Decoder, error) { return mp3.NewDecoder(src) })
+	switch {
+	case errors.Is(err, ErrUnsupported):
+		return nil, err
+	case err != nil:
+		return nil, &FormatError{start, "its sound cannot be decoded: " + err.Error()}
+	}
+	r.stream = newBlockStream(guardedReader{dec}, unpackS16, 4, math.MaxInt64)
+	skip := int64(g.skip)
+	if g.found {
+		skip += int64(head.frames)
+	}
+	_, err = io.CopyN(io.Discard, r.stream.r, 4*skip)
+	if err != nil && err != io.EOF {
+		return nil, &FormatError{start, "its sound cannot be decoded: " + err.Error()}
+	}
+	return r, nil
+}
+
+func (r *mp3Reader) Format() audio.Format { return r.info.Format }
+func (r *mp3Reader) Info() Info           { return r.info }
+func (r *mp3Reader) Close() error         { return closeOnce(&r.f) }
+
+// ReadBlock implements audio.Source.
+func (r *mp3Reader) ReadBlock(dst audio.Block) (int, error) {
+	if r.err == nil {
+		r.err = r.stopped()
+	}
+	if r.err != nil {
+		return 0, r.err
+	}
+	want := int(min(int64(dst.Frames()), audio.BlockFrames, r.left))
+	if want == 0 && r.left == 0 {
+		r.err = io.EOF
+		return 0, r.err
+	}
+	n, err := 0, error(nil)
+	if r.mono {
+		if n, err = r.stream.read(r.wide.Cut(r.cut, 0, want)); n > 0 {
+			copy(dst[0], r.wide[0][:n])
+		}
+	} else {
+		n, err = r.stream.read(dst.Cut(r.cut, 0, want))
+	}
+	if r.left != math.MaxInt64 {
+		r.left -= int64(n)
+	}
+	switch {
+	case err == io.EOF || err == io.ErrUnexpectedEOF:
+		err = io.EOF
+		if r.exact && r.left > 0 {
+			err = torn(r.path, r.info, r.info.Frames-r.left)
+		}
+	case errors.Is(err, ErrUnsupported):
+		err = about(r.path, err)
+	case err != nil:
+		err = about(r.path, fmt.Errorf("the sound is damaged: %w: %w", err, io.ErrUnexpectedEOF))
+	}
+	r.err = err
+	return n, err
+}
+
+// plainStereo passes MPEG frames on and ends the stream at the first that uses intensity stereo: one
+// channel with a direction instead of two. Old encoders chose it at low bit rates.
+type plainStereo struct {
+	r    *bufio.Reader
+	left int // bytes of the current frame
+}
+
+func (s *plainStereo) Read(p []byte) (int, error) {
+	if s.left == 0 {
+		head, _ := s.r.Peek(4)
+		h := parseMPEG(head)
+		if h.intensity {
+			return 0, fmt.Errorf("%w: this MP3 has intensity stereo, reading it needs FFmpeg, and %s", ErrUnsupported, needFFmpeg)
+		}
+		s.left = max(1, h.length) // byte by byte to the next frame where there is none
+	}
+	n, err := s.r.Read(p[:min(len(p), s.left)])
+	s.left -= n
+	return n, err
+}
+
+// guard turns a panic of a decoder, which hostile input can cause, into an error.
+func guard[T any](f func() (T, error)) (v T, err error) {
+	defer func() {
+		if p := recover(); p != nil {
+			err = errors.New("the decoder gave up on damaged data")
+		}
+	}()
+	return f()
+}
+
+// guardedReader is a Reader that never panics.
+type guardedReader struct{ io.Reader }
+
+func (g guardedReader) Read(p []byte) (int, error) {
+	return guard(func() (int, error) { return g.Reader.Read(p) })
+}

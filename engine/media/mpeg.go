@@ -1,0 +1,135 @@
+package media
+
+import (
+	"encoding/binary"
+	"io"
+)
+
+// mpegHeader is the four-byte header of one MPEG audio frame (ISO/IEC 11172-3 2.4.2.3 and 13818-3).
+type mpegHeader struct {
+	length  int // bytes of the whole frame; 0 if this is not a header
+	frames  int // PCM frames it decodes to
+	rate    int // Hz
+	bitRate int // bit/s
+	layer   int
+	mono    bool
+	// intensity says that a joint stereo frame of layer 3 keeps some of its bands as one channel.
+	intensity bool
+	lowRate   bool // MPEG-2 or 2.5: half the side information
+}
+
+// Bit rates in kbit/s by index, as in the standards' tables.
+var (
+	mpegRates  = [3]int{44100, 48000, 32000}
+	mpeg1Bits  = [4][15]int{1: {0, 32, 64, 96, 128, 160, 192, 224, 256, 288, 320, 352, 384, 416, 448}, 2: {0, 32, 48, 56, 64, 80, 96, 112, 128, 160, 192, 224, 256, 320, 384}, 3: {0, 32, 40, 48, 56, 64, 80, 96, 112, 128, 160, 192, 224, 256, 320}}
+	mpeg2Bits1 = [15]int{0, 32, 48, 56, 64, 80, 96, 112, 128, 144, 160, 176, 192, 224, 256}
+	mpeg2Bits  = [15]int{0, 8, 16, 24, 32, 40, 48, 56, 64, 80, 96, 112, 128, 144, 160}
+)
+
+// parseMPEG reads a frame header; the zero value means that b does not begin with one. Free-format
+// streams (bit rate index 0) are not recognised: nothing makes them.
+func parseMPEG(b []byte) mpegHeader {
+	if len(b) < 4 || b[0] != 0xFF || b[1]&0xE0 != 0xE0 {
+		return mpegHeader{}
+	}
+	version, layer := b[1]>>3&3, 4-int(b[1]>>1&3)
+	bits, rate := int(b[2]>>4), int(b[2]>>2&3)
+	if version == 1 || layer == 4 || bits == 0 || bits == 15 || rate == 3 {
+		return mpegHeader{}
+	}
+	h := mpegHeader{rate: mpegRates[rate], layer: layer, mono: b[3]>>6 == 3, lowRate: version != 3}
+	h.intensity = layer == 3 && b[3]>>6 == 1 && b[3]&0x10 != 0
+	switch {
+	case !h.lowRate:
+		h.bitRate = 1000 * mpeg1Bits[layer][bits]
+	case layer == 1:
+		h.bitRate = 1000 * mpeg2Bits1[bits]
+	default:
+		h.bitRate = 1000 * mpeg2Bits[bits]
+	}
+	switch version {
+	case 2:
+		h.rate /= 2
+	case 0:
+		h.rate /= 4
+	}
+	padding := int(b[2] >> 1 & 1)
+	switch {
+	case layer == 1:
+		h.frames = 384
+		h.length = (12*h.bitRate/h.rate + padding) * 4
+	case layer == 3 && h.lowRate:
+		h.frames = 576
+		h.length = 72*h.bitRate/h.rate + padding
+	default:
+		h.frames = 1152
+		h.length = 144*h.bitRate/h.rate + padding
+	}
+	return h
+}
+
+// gapless is what an MP3's first frame says about the length of the sound. There is no standard for it;
+// the layout is common practice among encoders.
+type gapless struct {
+	found   bool  // the first frame is such a note, not sound
+	frames  int64 // PCM frames of the recording; −1 if not stated
+	bitRate int   // bit/s on average; 0 if not stated
+	skip    int   // PCM frames to leave out at the start, not counting the note itself
+	trimmed bool  // skip and frames come from the encoder's own figures: they are exact
+}
+
+// decoderDelay is the delay of every MP3 decoder: 528 frames of the filter bank and 1 of the hybrid.
+const decoderDelay = 528 + 1
+
+// readGapless looks for the note in the first MPEG frame, which begins at offset start.
+func readGapless(r io.ReaderAt, start int64) (mpegHeader, gapless, error) {
+	b, err := readAt(r, start, 512)
+	if err != nil {
+		return mpegHeader{}, gapless{}, err
+	}
+	h, g := parseMPEG(b), gapless{frames: -1}
+	if h.layer != 3 {
+		return h, g, nil
+	}
+	at := 36 // after the side information
+	switch {
+	case h.lowRate && h.mono:
+		at = 13
+	case h.lowRate != h.mono:
+		at = 21
+	}
+	if len(b) < at+120+24 || string(b[at:at+4]) != "Xing" && string(b[at:at+4]) != "Info" {
+		return h, g, nil
+	}
+	g.found = true
+	flags, p := b[at+7], at+8
+	var coded int64 // bytes of all MPEG frames
+	if flags&1 != 0 {
+		g.frames = int64(binary.BigEndian.Uint32(b[p:])) * int64(h.frames)
+		p += 4
+	}
+	if flags&2 != 0 {
+		coded = int64(binary.BigEndian.Uint32(b[p:]))
+		p += 4
+	}
+	if flags&4 != 0 {
+		p += 100
+	}
+	if flags&8 != 0 {
+		p += 4
+	}
+	if coded > 0 && g.frames > 0 && string(b[at:at+4]) == "Xing" { // "Info" is a constant rate: the header's
+		g.bitRate = int(8 * coded * int64(h.rate) / g.frames)
+	}
+	if maker := string(b[p : p+4]); maker != "LAME" && maker != "Lavf" && maker != "Lavc" {
+		return h, g, nil // the figures behind an unknown name may mean anything
+	}
+	delay := int(b[p+21])<<4 | int(b[p+22]>>4)
+	padding := int(b[p+22]&15)<<8 | int(b[p+23])
+	g.skip = delay + decoderDelay
+	if g.frames >= 0 {
+		g.frames = max(0, g.frames-int64(g.skip)-int64(max(0, padding-decoderDelay)))
+		g.trimmed = true
+	}
+	return h, g, nil
+}
