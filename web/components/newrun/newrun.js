@@ -1,0 +1,60 @@
+import { get, post } from "../../api.js";
+import { el, parts, say } from "../../dom.js";
+import { number } from "../../figures.js";
+
+export function mount(button) {
+  const dialog = document.getElementById(button.dataset.dialog);
+  const form = dialog.querySelector("form");
+  const part = parts(dialog);
+  const says = form.querySelector(".says");
+  const start = form.querySelector("button[type=submit]");
+
+  async function offer() {
+    start.disabled = true;
+    try {
+      const { profiles } = await get(form.dataset.profiles);
+      part.profiles.replaceChildren(...profiles.map(option));
+      start.disabled = false;
+    } catch (error) {
+      const again = el("button", { type: "button" }, "Try again");
+      again.addEventListener("click", offer);
+      part.profiles.replaceChildren(el("p", { class: "says wrong" }, error.message), again);
+    }
+  }
+
+  button.disabled = false;
+  button.addEventListener("click", () => {
+    say(says, "");
+    dialog.showModal();
+    offer();
+  });
+  part.close.addEventListener("click", () => dialog.close());
+  form.addEventListener("submit", async (event) => {
+    event.preventDefault();
+    start.disabled = true;
+    try {
+      const run = await post(form.dataset.url, {
+        shelf_id: Number(form.dataset.shelf),
+        folder: form.elements.folder.value.trim(),
+        profile: form.elements.profile.value,
+        delivery: form.elements.delivery.value,
+      });
+      location.assign(`/runs/${run.id}`);
+    } catch (error) {
+      say(says, error.message, true);
+      start.disabled = false;
+    }
+  });
+}
+
+function option(profile, index) {
+  const limits = profile.limiting_db > 0
+    ? `peaks held under ${number(profile.ceiling_dbtp)} dBTP`
+    : `stops where a peak would pass ${number(profile.ceiling_dbtp)} dBTP`;
+  return el("label", { class: "option" },
+    el("input", { type: "radio", name: "profile", value: profile.name, checked: index === 0 }),
+    el("span", {},
+      el("b", {}, profile.name),
+      el("small", {}, profile.summary),
+      el("small", {}, `Aims at ${number(profile.target_lufs)} LUFS, within ${number(profile.tolerance_lu)} LU; ${limits}.`)));
+}

@@ -1,0 +1,97 @@
+package web
+
+import (
+	"math"
+	"strings"
+	"testing"
+	"time"
+
+	"evenshelf/engine/audio"
+	"evenshelf/engine/level"
+	"evenshelf/store"
+)
+
+func TestNumbers(t *testing.T) {
+	for _, c := range []struct{ got, want string }{
+		{number(-18, 1), "−18.0"}, {number(-0.04, 1), "0.0"}, {number(11.25, 1), "11.2"}, {signed(0.04), "0.0"}, {signed(3), "+3.0"}, {signed(-3), "−3.0"},
+		{count(0), "0"}, {count(999), "999"}, {count(1000), "1,000"}, {count(100000), "100,000"}, {count(int64(-1234567)), "-1,234,567"},
+		{clock(3.2), "0:03.2"}, {clock(59.96), "1:00.0"}, {clock(3723.44), "1:02:03.4"}, {clock(-1), "0:00.0"}, {clock(math.NaN()), "0:00.0"},
+		{length(22320, true), "6 h 12 min"}, {length(204, true), "3 min 24 s"}, {length(8.16, true), "8.2 s"}, {length(59.7, true), "1 min 0 s"}, {length(0, false), "–"},
+		{size(512), "512 bytes"}, {size(41_000_000), "41.0 MB"}, {plural(1, "job", "jobs"), "1 job"}, {plural(96, "job", "jobs"), "96 jobs"},
+		{folder("a/b/c.wav"), "a/b/"}, {folder("c.wav"), ""},
+	} {
+		if got := strings.ReplaceAll(c.got, narrow, " "); got != c.want {
+			t.Errorf("got %q, want %q", got, c.want)
+		}
+	}
+}
+
+func TestFigureTakesAnyFloat(t *testing.T) {
+	var none *float64
+	for _, v := range []any{none, math.Inf(-1), audio.LUFS(math.NaN()), nil} {
+		if newFigure(v, "LUFS").Defined {
+			t.Errorf("%v counts as defined", v)
+		}
+	}
+	for _, v := range []any{new(-18.0), -18.0, audio.LUFS(-18)} {
+		if f := newFigure(v, "LUFS"); f.Text != "−18.0" || f.Unit != "LUFS" {
+			t.Errorf("%v is written %+v", v, f)
+		}
+	}
+}
+
+func TestWhen(t *testing.T) {
+	for _, c := range []struct {
+		t    any
+		want string
+	}{
+		{noon.Add(-time.Hour), "today at 11:00"}, {noon.Add(-13 * time.Hour), "yesterday at 23:00"}, {noon.AddDate(0, -1, 0), "14 April at 12:00"},
+		{noon.AddDate(-1, 0, 0), "14 May 2030"}, {(*time.Time)(nil), "–"}, {time.Time{}, "–"},
+	} {
+		if got := when(c.t, noon); got != c.want {
+			t.Errorf("when(%v) = %q, want %q", c.t, got, c.want)
+		}
+	}
+}
+
+func TestTold(t *testing.T) {
+	done := store.Recording{State: store.Done, Before: &store.Figures{}, After: &store.Figures{Integrated: new(-18.02)}}
+	copied := &store.Run{Delivery: store.Copy}
+	for _, c := range []struct {
+		r    store.Recording
+		run  *store.Run
+		plan *level.Plan
+		want string
+	}{
+		{done, copied, &level.Plan{Gain: 11.3, Ceiling: -1, Limit: true}, "Lifted by 11.3 dB to −18.0 LUFS; peaks held under −1.0 dBTP."},
+		{done, copied, &level.Plan{Gain: -4.26}, "Lowered by 4.3 dB to −18.0 LUFS."},
+		{done, copied, &level.Plan{Untouched: true}, "Already within the profile: copied byte for byte, nothing changed."},
+		{done, copied, &level.Plan{Gain: 0.01}, "Left at its level to −18.0 LUFS."},
+		{done, &store.Run{Delivery: store.Measure}, nil, "Measured only; nothing was written."},
+		{store.Recording{}, nil, nil, "Not measured yet: it waits for a first run."},
+		{store.Recording{State: store.Done, Reason: "écho found."}, copied, nil, "Finished. Écho found."},
+	} {
+		if got := told(c.r, c.run, &store.Job{Plan: c.plan}); got != c.want {
+			t.Errorf("told %q, want %q", got, c.want)
+		}
+	}
+}
+
+func TestRunPaceAndBar(t *testing.T) {
+	start := noon.Add(-10 * time.Minute)
+	v := viewRun(store.Run{State: store.RunWorking, Jobs: 100, Done: 48, Held: 1, Failed: 1, Working: 2, Waiting: 48, StartedAt: &start,
+		SecondsDone: 20 * 3600, BytesDone: 500, BytesTotal: 1000}, noon)
+	if v.Ended != 50 || v.Pace != "2.0 hours" || v.Left != "about 10 minutes left" {
+		t.Errorf("ended %d, pace %q, %q", v.Ended, v.Pace, v.Left)
+	}
+	jobs := 0
+	for _, p := range v.Parts {
+		jobs += p.Jobs
+	}
+	if jobs != 100 {
+		t.Errorf("the bar holds %d of 100 jobs", jobs)
+	}
+	if v = viewRun(store.Run{State: store.RunWaiting}, noon); v.Pace != "" || v.Left != "" {
+		t.Errorf("a run that has not begun foretells %q, %q", v.Pace, v.Left)
+	}
+}

@@ -1,0 +1,84 @@
+package web
+
+import (
+	"net/http"
+
+	"github.com/gin-gonic/gin"
+
+	"evenshelf/store"
+)
+
+// uploadShelf is the one shelf that takes new files; every other holds originals and is only read. The server
+// makes it at its first start, so while it is empty it is a form rather than a shelf.
+const uploadShelf = "uploads"
+
+// shelfView is a shelf as its section of a page shows it.
+type shelfView struct {
+	store.ShelfSummary
+	Never        int      // neither done, held nor failed
+	Unmeasured   int      // without a reading
+	Spread       *float64 // quietest to loudest as they arrived, LU
+	SpreadAfter  *float64
+	Tolerance    *float64 // of the profile that levelled it last, LU
+	Measurements bool     // the last run only measured
+	Whole        bool     // the shelf has a page, or the start page, to itself
+	TakesUploads bool
+}
+
+func viewShelf(s store.ShelfSummary) shelfView {
+	v := shelfView{
+		ShelfSummary: s,
+		Never:        max(s.Recordings-s.Done-s.Held-s.Failed, 0),
+		Unmeasured:   max(s.Recordings-s.Measured, 0),
+		Spread:       spread(s.Quietest, s.Loudest),
+		SpreadAfter:  spread(s.QuietestAfter, s.LoudestAfter),
+	}
+	v.TakesUploads = s.Name == uploadShelf
+	if s.LastRun != nil {
+		v.Tolerance = tolerance(s.LastRun.Profile)
+		v.Measurements = s.LastRun.Delivery == store.Measure
+	}
+	return v
+}
+
+type shelvesPage struct {
+	Shelves []shelfView
+	Uploads *shelfView // the upload shelf while it is empty
+}
+
+func (s *Site) shelves(c *gin.Context) {
+	all, err := s.store.Shelves(c.Request.Context())
+	if err != nil {
+		s.fail(c, err)
+		return
+	}
+	var p shelvesPage
+	for _, sh := range all {
+		v := viewShelf(sh)
+		if v.TakesUploads && v.Recordings == 0 {
+			p.Uploads = &v
+			continue
+		}
+		p.Shelves = append(p.Shelves, v)
+	}
+	if len(p.Shelves) == 1 {
+		p.Shelves[0].Whole = true
+	}
+	s.render(c, http.StatusOK, "shelves", p)
+}
+
+func (s *Site) shelf(c *gin.Context) {
+	n, err := id(c)
+	if err != nil {
+		s.fail(c, err)
+		return
+	}
+	sh, err := s.store.Shelf(c.Request.Context(), n)
+	if err != nil {
+		s.fail(c, err)
+		return
+	}
+	v := viewShelf(sh)
+	v.Whole = true
+	s.render(c, http.StatusOK, "shelf", v)
+}

@@ -1,0 +1,129 @@
+package web
+
+import (
+	"fmt"
+	"math"
+	"strings"
+	"unicode"
+	"unicode/utf8"
+
+	"evenshelf/engine/profile"
+	"evenshelf/store"
+)
+
+// stateWords says a job's state to a person who does not know the queue.
+func stateWords(s store.JobState) string {
+	switch s {
+	case "":
+		return "not levelled yet"
+	case store.Held:
+		return "held for a listen"
+	case store.Working:
+		return "being worked on"
+	}
+	return string(s)
+}
+
+// deliveryWords says where a run's results go.
+func deliveryWords(d store.Delivery) string {
+	switch d {
+	case store.Measure:
+		return "only measured; nothing written"
+	case store.Copy:
+		return "levelled copies; originals not touched"
+	}
+	return string(d)
+}
+
+// spread is the distance from the quietest to the loudest, LU; nil where either is missing.
+func spread(quietest, loudest *float64) *float64 {
+	if quietest == nil || loudest == nil {
+		return nil
+	}
+	d := *loudest - *quietest
+	return &d
+}
+
+// tolerance of a built-in profile, LU; nil for one we cannot look up here.
+func tolerance(name string) *float64 {
+	p, err := profile.Named(name)
+	if err != nil {
+		return nil
+	}
+	t := float64(p.Tolerance)
+	return &t
+}
+
+// told is what happened to a recording, in a sentence.
+func told(r store.Recording, run *store.Run, job *store.Job) string {
+	switch r.State {
+	case "":
+		if r.Before == nil {
+			return "Not measured yet: it waits for a first run."
+		}
+		return "Measured, not levelled yet."
+	case store.Waiting:
+		return "Waiting for its turn in the queue."
+	case store.Working:
+		return "Being worked on right now."
+	case store.Failed:
+		return "Could not be levelled: " + reasonOr(r.Reason, "the reason was not recorded") + ". The original is as it was."
+	case store.Cancelled:
+		return "Cancelled before its turn came. The original is as it was."
+	}
+	if run != nil && run.Delivery == store.Measure {
+		return "Measured only; nothing was written." + because(r.Reason)
+	}
+	did := action(r, job)
+	if r.State == store.Held {
+		return "Held for a listen: " + reasonOr(r.Reason, "something about the copy is in doubt") + ". " + did
+	}
+	return did + because(r.Reason)
+}
+
+// action is the levelling itself: "Lifted by 11.3 dB to −18.0 LUFS; peaks held under −1.0 dBTP."
+func action(r store.Recording, job *store.Job) string {
+	if job == nil || job.Plan == nil {
+		if r.After != nil && r.After.Integrated != nil {
+			return fmt.Sprintf("Now at %s LUFS.", number(*r.After.Integrated, 1))
+		}
+		return "Finished."
+	}
+	plan := job.Plan
+	if plan.Untouched {
+		return "Already within the profile: copied byte for byte, nothing changed."
+	}
+	gain := float64(plan.Gain)
+	var b strings.Builder
+	switch {
+	case math.Abs(gain) < 0.05:
+		b.WriteString("Left at its level")
+	case gain > 0:
+		fmt.Fprintf(&b, "Lifted by %s dB", number(gain, 1))
+	default:
+		fmt.Fprintf(&b, "Lowered by %s dB", number(-gain, 1))
+	}
+	if r.After != nil && r.After.Integrated != nil {
+		fmt.Fprintf(&b, " to %s LUFS", number(*r.After.Integrated, 1))
+	}
+	if plan.Limit {
+		fmt.Fprintf(&b, "; peaks held under %s dBTP", number(float64(plan.Ceiling), 1))
+	}
+	b.WriteString(".")
+	return b.String()
+}
+
+func reasonOr(reason, otherwise string) string {
+	if reason == "" {
+		return otherwise
+	}
+	return strings.TrimSuffix(reason, ".")
+}
+
+func because(reason string) string {
+	if reason == "" {
+		return ""
+	}
+	first, n := utf8.DecodeRuneInString(reason)
+	return " " + string(unicode.ToUpper(first)) + strings.TrimSuffix(reason[n:], ".") + "."
+}
