@@ -1,0 +1,152 @@
+package api
+
+import (
+	"context"
+	"errors"
+	"net/http"
+
+	"github.com/gin-gonic/gin"
+
+	"evenshelf/engine/meter"
+	"evenshelf/store"
+)
+
+func (a *API) listRecordings(c *gin.Context) (int, any, error) {
+	q, err := queryOf(c)
+	if err != nil {
+		return 0, nil, err
+	}
+	folder, err := folderOf(q.text("folder"))
+	if err != nil {
+		q.complain("folder", "%s", err)
+	}
+	asked := store.RecordingQuery{
+		ShelfID: q.number("shelf", 1, maxID),
+		RunID:   q.number("run", 1, maxID),
+		Folder:  folder,
+		State:   store.JobState(q.choice("state", append(jobStates(), "never")...)),
+		Search:  q.text("q"),
+		Sort:    q.choice("sort", "path", "added", "state", "duration", "before", "after", "range", "peak"),
+		Desc:    q.choice("order", "asc", "desc") == "desc",
+		Limit:   int(q.number("limit", 1, pageLimit)),
+		Cursor:  q.text("cursor"),
+	}
+	if err := q.err(); err != nil {
+		return 0, nil, err
+	}
+	page, err := a.Store.Recordings(c.Request.Context(), asked)
+	page.Recordings = list(page.Recordings)
+	return http.StatusOK, page, err
+}
+
+const (
+	maxID     = 1<<63 - 1
+	pageLimit = 1000
+)
+
+func jobStates() []string {
+	return []string{string(store.Waiting), string(store.Working), string(store.Done),
+		string(store.Held), string(store.Failed), string(store.Cancelled)}
+}
+
+// recordingDetail is everything known about one recording.
+type recordingDetail struct {
+	Recording store.Recording `json:"recording"`
+	Before    *store.Reading  `json:"before"`
+	After     *store.Reading  `json:"after"`
+	Jobs      []store.Job     `json:"jobs"`
+	History   []store.Event   `json:"history"`
+}
+
+func (a *API) showRecording(c *gin.Context) (int, any, error) {
+	id, err := pathID(c)
+	if err != nil {
+		return 0, nil, err
+	}
+	ctx := c.Request.Context()
+	var d recordingDetail
+	if d.Recording, err = a.Store.Recording(ctx, id); err != nil {
+		return 0, nil, err
+	}
+	if d.Before, d.After, err = a.Store.Readings(ctx, id); err != nil {
+		return 0, nil, err
+	}
+	if d.Jobs, err = a.Store.RecordingJobs(ctx, id); err != nil {
+		return 0, nil, err
+	}
+	if d.History, err = a.Store.RecordingHistory(ctx, id); err != nil {
+		return 0, nil, err
+	}
+	d.Jobs, d.History = list(d.Jobs), list(d.History)
+	return http.StatusOK, d, nil
+}
+
+// timeline is the course of a recording before and after, on a common grid.
+type timeline struct {
+	Step   float64 `json:"step_s"`
+	Before *curves `json:"before"`
+	After  *curves `json:"after"`
+}
+
+type curves struct {
+	ShortTerm curve `json:"short_term"` // LUFS
+	Momentary curve `json:"momentary"`  // LUFS
+	Peak      curve `json:"peak"`       // dBFS
+}
+
+// curve is a series of levels; in JSON each has one decimal, and silence is null.
+type curve []float32
+
+// MarshalJSON writes the series compactly: an hour has 36,000 values in each of six of them.
+func (v curve) MarshalJSON() ([]byte, error) {
+	b := append(make([]byte, 0, 2+6*len(v)), '[')
+	for i, x := range v {
+		if i > 0 {
+			b = append(b, ',')
+		}
+		b = appendRounded(b, float64(x), 10)
+	}
+	return append(b, ']'), nil
+}
+
+func (a *API) showTimeline(c *gin.Context) (int, any, error) {
+	id, err := pathID(c)
+	if err != nil {
+		return 0, nil, err
+	}
+	ctx := c.Request.Context()
+	if _, err := a.Store.Recording(ctx, id); err != nil {
+		return 0, nil, err
+	}
+	before, after, err := a.Store.Readings(ctx, id)
+	if err != nil {
+		return 0, nil, err
+	}
+	t := timeline{Step: 0.1} // the meter's grid, also where there is no reading yet
+	if t.Before, err = a.curvesOf(ctx, before, &t.Step); err != nil {
+		return 0, nil, err
+	}
+	if t.After, err = a.curvesOf(ctx, after, &t.Step); err != nil {
+		return 0, nil, err
+	}
+	return http.StatusOK, t, nil
+}
+
+// curvesOf fetches a reading's timeline; nil if there is no reading or none was kept with it.
+func (a *API) curvesOf(ctx context.Context, r *store.Reading, step *float64) (*curves, error) {
+	if r == nil {
+		return nil, nil
+	}
+	var tl meter.Timeline
+	tl, err := a.Store.Timeline(ctx, r.ID)
+	if errors.Is(err, store.ErrNotFound) {
+		return nil, nil
+	}
+	if err != nil {
+		return nil, err
+	}
+	if tl.Step > 0 {
+		*step = tl.Step
+	}
+	return &curves{tl.ShortTerm, tl.Momentary, tl.Peak}, nil
+}

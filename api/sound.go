@@ -1,0 +1,166 @@
+package api
+
+import (
+	"errors"
+	"fmt"
+	"io/fs"
+	"mime"
+	"net/http"
+	"os"
+	"path"
+	"path/filepath"
+	"strings"
+
+	"github.com/gin-gonic/gin"
+
+	"evenshelf/store"
+)
+
+// sound is an open file on its way to the client, in whole or in ranges.
+type sound struct {
+	file        *os.File
+	info        fs.FileInfo
+	disposition string
+}
+
+// playSound sends the original or the copy for the dashboard's player.
+func (a *API) playSound(c *gin.Context) (int, any, error) {
+	version := c.DefaultQuery("version", "before")
+	if version != "before" && version != "after" {
+		return 0, nil, badRequest("", complaint{"version", fmt.Sprintf("%q is not one of before, after", version)})
+	}
+	return a.openSound(c, version == "before", "inline")
+}
+
+// fetchResult sends the delivered or held copy for keeping.
+func (a *API) fetchResult(c *gin.Context) (int, any, error) {
+	return a.openSound(c, false, "attachment")
+}
+
+func (a *API) openSound(c *gin.Context, original bool, disposition string) (int, any, error) {
+	id, err := pathID(c)
+	if err != nil {
+		return 0, nil, err
+	}
+	ctx := c.Request.Context()
+	recording, err := a.Store.Recording(ctx, id)
+	if err != nil {
+		return 0, nil, err
+	}
+	shelf, err := a.Store.Shelf(ctx, recording.ShelfID)
+	if err != nil {
+		return 0, nil, err
+	}
+	dir, name := shelf.Root, recording.Path
+	if !original {
+		jobs, err := a.Store.RecordingJobs(ctx, id)
+		if err != nil {
+			return 0, nil, err
+		}
+		if dir, name = shelf.Copies, latestOutput(jobs); name == "" {
+			return 0, nil, notFound(fmt.Sprintf("no copy of recording %d has been made", id))
+		}
+	}
+	if disposition == "attachment" {
+		// RFC 6266: FormatMediaType writes filename*, percent-encoded, where the name is not plain ASCII.
+		disposition = mime.FormatMediaType(disposition, map[string]string{"filename": path.Base(name)})
+	}
+	file, info, err := openInside(dir, name)
+	if err != nil {
+		a.Log.WarnContext(ctx, "sound cannot be opened", "recording_id", id, "folder", dir, "file", name, "error", err)
+		return 0, nil, notFound(fmt.Sprintf("the file of recording %d cannot be opened: %s", id, inWords(err)))
+	}
+	return http.StatusOK, sound{file, info, disposition}, nil
+}
+
+// latestOutput is the file that the recording's newest delivering job made, "" if there is none.
+func latestOutput(jobs []store.Job) (output string) {
+	newest := int64(-1)
+	for _, j := range jobs {
+		if j.Output != "" && j.ID > newest {
+			newest, output = j.ID, j.Output
+		}
+	}
+	return output
+}
+
+var errNotAFile = errors.New("not a regular file")
+
+// openInside opens a regular file strictly inside dir: absolute names, "..", and symbolic links that lead out
+// are errors. It looks before it opens, because opening a named pipe would wait for a writer.
+func openInside(dir, name string) (*os.File, fs.FileInfo, error) {
+	root, err := os.OpenRoot(dir)
+	if err != nil {
+		return nil, nil, err
+	}
+	defer root.Close()
+	name = filepath.FromSlash(name)
+	if info, err := root.Stat(name); err != nil {
+		return nil, nil, err
+	} else if !info.Mode().IsRegular() {
+		return nil, nil, errNotAFile
+	}
+	f, err := root.Open(name)
+	if err != nil {
+		return nil, nil, err
+	}
+	info, err := f.Stat() // of what was opened, not of what was looked at
+	if err == nil && !info.Mode().IsRegular() {
+		err = errNotAFile
+	}
+	if err != nil {
+		f.Close()
+		return nil, nil, err
+	}
+	return f, info, nil
+}
+
+// inWords says why a file did not open, without its path.
+func inWords(err error) string {
+	switch {
+	case errors.Is(err, fs.ErrNotExist):
+		return "it is no longer there"
+	case errors.Is(err, fs.ErrPermission):
+		return "permission denied"
+	case errors.Is(err, errNotAFile):
+		return "it is not a regular file"
+	}
+	return "it is not a readable file inside the shelf's folder"
+}
+
+func (s sound) send(c *gin.Context, _ int) error {
+	defer s.file.Close()
+	c.Header("Content-Type", soundType(s.info.Name()))
+	c.Header("Content-Disposition", s.disposition)
+	c.Header("Cache-Control", "no-cache") // the copy may be made again under the same address
+	c.Header("ETag", fmt.Sprintf(`"%x-%x"`, s.info.Size(), s.info.ModTime().UnixNano()))
+	http.ServeContent(patientResponse{c.Writer, patient(c)}, c.Request, "", s.info.ModTime(), s.file)
+	return nil
+}
+
+// patientResponse is a ResponseWriter whose body is written patiently.
+type patientResponse struct {
+	http.ResponseWriter
+	body patientWriter
+}
+
+func (p patientResponse) Write(b []byte) (int, error) { return p.body.Write(b) }
+
+// soundTypes gives the content types browsers know. The list is ours because the system's differs from
+// machine to machine; what is not on it is downloaded, never shown.
+var soundTypes = map[string]string{
+	".wav": "audio/wav", ".wave": "audio/wav", ".bwf": "audio/wav", ".rf64": "audio/wav",
+	".flac": "audio/flac", ".mp3": "audio/mpeg", ".mp2": "audio/mpeg",
+	".ogg": "audio/ogg", ".oga": "audio/ogg", ".opus": "audio/ogg",
+	".m4a": "audio/mp4", ".m4b": "audio/mp4", ".mp4": "audio/mp4", ".aac": "audio/aac",
+	".aif": "audio/aiff", ".aiff": "audio/aiff", ".aifc": "audio/aiff",
+	".mka": "audio/x-matroska", ".webm": "audio/webm", ".wma": "audio/x-ms-wma",
+	".ac3": "audio/ac3", ".eac3": "audio/eac3", ".caf": "audio/x-caf",
+}
+
+func soundType(name string) string {
+	if t, ok := soundTypes[strings.ToLower(path.Ext(name))]; ok {
+		return t
+	}
+	return "application/octet-stream"
+}
