@@ -1,0 +1,259 @@
+package worker
+
+import (
+	"context"
+	"fmt"
+	"log/slog"
+	"os"
+	"path/filepath"
+	"strings"
+	"sync"
+	"sync/atomic"
+	"testing"
+	"time"
+
+	"evenshelf/engine/audio"
+	"evenshelf/engine/faults"
+	"evenshelf/engine/level"
+	"evenshelf/engine/meter"
+	"evenshelf/engine/profile"
+	"evenshelf/store"
+)
+
+// engine is a small stand-in: it copies bytes and says it measured. Its hook runs first and may block,
+// fail or panic. The real engine has its own tests; here it is the queue that is tried.
+type engine struct {
+	hook func(ctx context.Context, source string) error
+
+	mu   sync.Mutex
+	seen map[string]int
+	busy atomic.Int32
+	peak atomic.Int32
+}
+
+func (e *engine) begin(ctx context.Context, source string) error {
+	e.mu.Lock()
+	if e.seen == nil {
+		e.seen = map[string]int{}
+	}
+	e.seen[filepath.Base(source)]++
+	e.mu.Unlock()
+	for n := e.busy.Add(1); ; {
+		if old := e.peak.Load(); n <= old || e.peak.CompareAndSwap(old, n) {
+			break
+		}
+	}
+	defer e.busy.Add(-1)
+	if e.hook != nil {
+		return e.hook(ctx, source)
+	}
+	return nil
+}
+
+func (e *engine) times(name string) int {
+	e.mu.Lock()
+	defer e.mu.Unlock()
+	return e.seen[name]
+}
+
+func (e *engine) Analyse(ctx context.Context, path string) (*level.Analysis, error) {
+	if err := e.begin(ctx, path); err != nil {
+		return nil, err
+	}
+	return reading(-30), nil
+}
+
+func (e *engine) Level(ctx context.Context, source string, _ profile.Profile, scratch string) (level.Outcome, error) {
+	if err := os.WriteFile(scratch, []byte("half a file"), 0o600); err != nil {
+		return level.Outcome{}, err
+	}
+	if err := e.begin(ctx, source); err != nil {
+		return level.Outcome{}, err
+	}
+	b, err := os.ReadFile(source)
+	if err != nil {
+		return level.Outcome{}, err
+	}
+	if err := os.WriteFile(scratch, append([]byte("levelled "), b...), 0o600); err != nil {
+		return level.Outcome{}, err
+	}
+	state := level.Done
+	if strings.Contains(source, "doubtful") {
+		state = level.Held
+	}
+	return level.Outcome{Before: reading(-30), After: reading(-18), Plan: &level.Plan{Gain: 12}, Renders: 1,
+		Verdict: level.Verdict{State: state}, Extension: filepath.Ext(source)}, nil
+}
+
+func reading(lufs audio.LUFS) *level.Analysis {
+	return &level.Analysis{FormatName: "wav", Decoder: "invented", Engine: level.Version, Faults: []faults.Fault{},
+		Reading:  meter.Reading{Duration: 60, Integrated: lufs},
+		Timeline: meter.Timeline{Step: 0.1, Momentary: []float32{-20}, ShortTerm: []float32{-20}, Peak: []float32{-3}}}
+}
+
+// bench is a store with a shelf on disk.
+type bench struct {
+	t      testing.TB
+	ctx    context.Context
+	dbPath string
+	store  *store.Store
+	shelf  store.Shelf
+}
+
+// deadline is far beyond what anything here takes; it ends a test that would hang.
+const deadline = 60 * time.Second
+
+func newBench(t testing.TB, names ...string) *bench {
+	t.Helper()
+	ctx, cancel := context.WithTimeout(t.Context(), deadline)
+	t.Cleanup(cancel)
+	b := &bench{t: t, ctx: ctx, dbPath: filepath.Join(t.TempDir(), "evenshelf.db")}
+	root := t.TempDir()
+	for _, name := range names {
+		path := filepath.Join(root, name)
+		if err := os.MkdirAll(filepath.Dir(path), 0o755); err != nil {
+			t.Fatal(err)
+		}
+		if err := os.WriteFile(path, []byte("sound of "+name), 0o644); err != nil {
+			t.Fatal(err)
+		}
+	}
+	b.open()
+	var err error
+	b.shelf, err = b.store.AddShelf(ctx, store.Shelf{Name: "music", Root: root, Copies: filepath.Join(t.TempDir(), "copies")})
+	if err != nil {
+		t.Fatal(err)
+	}
+	return b
+}
+
+func (b *bench) open() {
+	b.t.Helper()
+	s, err := store.Open(b.ctx, store.Options{Path: b.dbPath})
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	b.store = s
+	b.t.Cleanup(func() { s.Close() })
+}
+
+// testLog sends the log to the test.
+func testLog(t testing.TB) *slog.Logger {
+	return slog.New(slog.NewTextHandler(t.Output(), &slog.HandlerOptions{Level: slog.LevelInfo}))
+}
+
+func (b *bench) service(e Engine, workers int) *Service {
+	b.t.Helper()
+	s, err := New(Options{Store: b.store, Engine: e, Log: testLog(b.t), Workers: workers})
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	s.retryAfter = func(int) time.Duration { return 10 * time.Millisecond }
+	return s
+}
+
+func (b *bench) startService(e Engine, workers int) *Service {
+	b.t.Helper()
+	s := b.service(e, workers)
+	if err := s.Start(b.ctx); err != nil {
+		b.t.Fatal(err)
+	}
+	b.t.Cleanup(func() { s.Stop(context.Background()) })
+	return s
+}
+
+// begin scans the shelf and starts a run of all that is on it.
+func (b *bench) begin(s *Service, d store.Delivery) store.Run {
+	b.t.Helper()
+	if _, err := s.Scan(b.ctx, b.shelf.ID, ""); err != nil {
+		b.t.Fatal(err)
+	}
+	p, err := profile.Named("rotation")
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	run, err := s.StartRun(b.ctx, store.NewRun{ShelfID: b.shelf.ID, Profile: p, Delivery: d})
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	return run
+}
+
+// wait waits until the run satisfies ok, and returns it.
+func (b *bench) wait(id int64, ok func(store.Run) bool) store.Run {
+	b.t.Helper()
+	for {
+		changed := b.store.Changed()
+		run, err := b.store.Run(b.ctx, id)
+		if err != nil {
+			b.t.Fatal(err)
+		}
+		if ok(run) {
+			return run
+		}
+		select {
+		case <-changed:
+		case <-b.ctx.Done():
+			b.t.Fatalf("the run never got there: %+v", run)
+		}
+	}
+}
+
+func ended(r store.Run) bool { return r.State == store.RunFinished || r.State == store.RunCancelled }
+
+func (b *bench) jobs(run int64) map[string]store.Job {
+	b.t.Helper()
+	list, err := b.store.Jobs(b.ctx, store.JobQuery{RunID: run, Limit: 1000})
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	m := map[string]store.Job{}
+	for _, j := range list {
+		m[j.Path] = j
+	}
+	return m
+}
+
+// copies lists the files below the copies folder, scratch files included.
+func (b *bench) copies() (list []string) {
+	b.t.Helper()
+	filepath.WalkDir(b.shelf.Copies, func(p string, d os.DirEntry, err error) error {
+		if err == nil && !d.IsDir() {
+			rel, _ := filepath.Rel(b.shelf.Copies, p)
+			list = append(list, rel)
+		}
+		return nil
+	})
+	return list
+}
+
+func (b *bench) content(name string) string {
+	b.t.Helper()
+	c, err := os.ReadFile(filepath.Join(b.shelf.Copies, name))
+	if err != nil {
+		b.t.Error(err)
+	}
+	return string(c)
+}
+
+func numbered(n int) (names []string) {
+	for i := range n {
+		names = append(names, fmt.Sprintf("disc-%d/track-%03d.wav", i%3, i))
+	}
+	return names
+}
+
+// startRun starts a run without scanning and says how long that took.
+func (b *bench) startRun(s *Service) (store.Run, time.Duration) {
+	b.t.Helper()
+	p, err := profile.Named("rotation")
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	start := time.Now()
+	run, err := s.StartRun(b.ctx, store.NewRun{ShelfID: b.shelf.ID, Profile: p, Delivery: store.Copy})
+	if err != nil {
+		b.t.Fatal(err)
+	}
+	return run, time.Since(start)
+}
