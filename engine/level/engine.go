@@ -1,0 +1,124 @@
+package level
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io"
+	"os"
+	"path/filepath"
+	"strings"
+
+	"evenshelf/engine/media"
+	"evenshelf/engine/profile"
+)
+
+// mostRenders bounds the search for the target: with deep limiting, or an encoder that changes the
+// level, each rendering comes closer.
+const mostRenders = 5
+
+// Level measures source, plans, renders into the file scratch, reads that file back and judges it. The
+// outcome tells everything; an error means something that may heal (a full disk, a cancelled context)
+// and leaves no scratch behind. A source that cannot be read is an outcome with state Failed.
+func (e *Engine) Level(ctx context.Context, source string, p profile.Profile, scratch string) (o Outcome, err error) {
+	defer func() {
+		if err != nil || o.After == nil {
+			o.Extension = ""
+			os.Remove(scratch)
+		}
+	}()
+	before, err := e.Analyse(ctx, source)
+	if cause := context.Cause(ctx); cause != nil {
+		return Outcome{}, cause
+	}
+	if err != nil {
+		return failed(nil, nameOnly(err, source)), nil
+	}
+	plan, err := MakePlan(p, before)
+	if err != nil {
+		return failed(before, err), nil
+	}
+
+	o = Outcome{Before: before}
+	if plan.Untouched {
+		o.Extension = filepath.Ext(source)
+		err = e.copyUntouched(ctx, source, scratch, &o)
+	} else {
+		o.Extension, plan, err = e.renderToTarget(ctx, source, p, plan, scratch, &o)
+	}
+	if errors.Is(err, media.ErrUnsupported) {
+		return failed(before, nameOnly(err, source)), nil
+	}
+	if err != nil {
+		return Outcome{}, err
+	}
+	o.Plan = &plan
+	o.Verdict = Judge(p, before, o.After, plan)
+	return o, nil
+}
+
+func failed(before *Analysis, err error) Outcome {
+	return Outcome{Before: before, Verdict: Verdict{Failed, err.Error()}}
+}
+
+// nameOnly cuts the folders off a source's name in an error: a reason is shown beside the recording's
+// path, also to people who need not know where its shelf is.
+func nameOnly(err error, source string) error {
+	return errors.New(strings.ReplaceAll(err.Error(), source, filepath.Base(source)))
+}
+
+// renderToTarget renders until the delivered file is in tolerance or no rendering comes closer.
+func (e *Engine) renderToTarget(ctx context.Context, source string, p profile.Profile, plan Plan, scratch string, o *Outcome) (string, Plan, error) {
+	spec := e.Media.SpecFor(o.Before.Info)
+	spec.TagsFrom = source
+	for {
+		if err := e.renderFile(ctx, source, plan, spec, scratch); err != nil {
+			return "", plan, err
+		}
+		o.Renders++
+		after, err := e.Analyse(ctx, scratch)
+		if err != nil {
+			return "", plan, fmt.Errorf("reading the copy back: %w", err)
+		}
+		o.After = after
+		next, closer := plan.again(p, o.Before, after, spec.BitDepth > 0)
+		if !closer || o.Renders == mostRenders {
+			return spec.Extension, plan, nil
+		}
+		next.Reason = next.words(p, headroom(p, o.Before))
+		plan = next
+	}
+}
+
+func (e *Engine) renderFile(ctx context.Context, source string, plan Plan, spec media.Spec, scratch string) error {
+	src, err := e.Media.Open(ctx, source)
+	if err != nil {
+		return err
+	}
+	defer src.Close()
+	sink, err := e.Media.Create(ctx, scratch, spec)
+	if err != nil {
+		return err
+	}
+	return errors.Join(Render(ctx, src, plan, sink), sink.Close())
+}
+
+// copyUntouched copies source byte for byte and measures the copy, so that what is delivered is what
+// was measured here too.
+func (e *Engine) copyUntouched(ctx context.Context, source, scratch string, o *Outcome) (err error) {
+	in, err := os.Open(source)
+	if err != nil {
+		return err
+	}
+	defer in.Close()
+	out, err := os.Create(scratch)
+	if err != nil {
+		return err
+	}
+	_, err = io.Copy(out, in)
+	if err = errors.Join(err, out.Sync(), out.Close()); err != nil {
+		return err
+	}
+	o.After, err = e.Analyse(ctx, scratch)
+	return err
+}

@@ -1,0 +1,49 @@
+package level
+
+import (
+	"fmt"
+	"strings"
+
+	"evenshelf/engine/audio"
+	"evenshelf/engine/faults"
+	"evenshelf/engine/profile"
+)
+
+// Judge compares a delivered file, as read back from disk, with what the profile asks. What is doubtful
+// is held for a person; the reason says what to listen for.
+func Judge(p profile.Profile, before, after *Analysis, plan Plan) Verdict {
+	var doubts []string
+	doubt := func(format string, args ...any) { doubts = append(doubts, fmt.Sprintf(format, args...)) }
+
+	for _, f := range before.Faults {
+		if f.Severity != faults.Note {
+			doubt("%s", f.Words)
+		}
+	}
+	if plan.Gain > p.Lift {
+		doubt("it had to be lifted by %.1f dB, so its noise is louder too", plan.Gain)
+	}
+	if drift := abs(after.Duration - before.Duration); drift > 0.05 {
+		doubt("the copy is %.2f s shorter or longer than the original", drift)
+	}
+	if over := audio.DB(after.TruePeak - p.Ceiling); over > peakTolerance {
+		doubt("its true peak is %.2f dB over the ceiling of %s dBTP", over, signed(float64(p.Ceiling)))
+	}
+	short := p.Target.Sub(after.Integrated)
+	// Without dynamics the peaks decide how far the gain goes; that is what such a profile asks for.
+	asFarAsPeaksAllow := p.Limiting == 0 && short > 0 && after.TruePeak > p.Ceiling-0.2
+	if !(abs(short) <= p.Tolerance) && !asFarAsPeaksAllow {
+		doubt("%s LUFS could not be reached within the limiting allowed: it came out at %s LUFS",
+			signed(float64(p.Target)), signed(float64(after.Integrated)))
+	}
+	switch {
+	case len(doubts) > 0:
+		return Verdict{Held, strings.Join(doubts, "; ")}
+	case asFarAsPeaksAllow && abs(short) > p.Tolerance:
+		return Verdict{Done, fmt.Sprintf("%.1f LU short of the target: the peaks allow no more without dynamics", short)}
+	case plan.Untouched:
+		return Verdict{Done, plan.Reason}
+	default:
+		return Verdict{Done, ""}
+	}
+}

@@ -1,0 +1,97 @@
+package level
+
+import (
+	"errors"
+	"fmt"
+
+	"evenshelf/engine/audio"
+	"evenshelf/engine/profile"
+)
+
+const (
+	// peakTolerance is how far a true peak may read over the ceiling, dB: the meter's own error.
+	peakTolerance = 0.05
+	// leastGain is the smallest gain worth a new file, dB.
+	leastGain = 0.05
+	// limitedTolerance is how close to the target another rendering is worth while, LU.
+	limitedTolerance = 0.05
+)
+
+// MakePlan decides what to do to a recording so that it comes out as the profile asks. It is an error,
+// in words for a person, if the recording has no loudness to go by.
+func MakePlan(p profile.Profile, a *Analysis) (Plan, error) {
+	if !audio.Defined(a.Integrated) {
+		if !audio.Defined(a.SamplePeak) {
+			return Plan{}, errors.New("nothing to level: the recording is silent")
+		}
+		if a.Duration < 0.4 {
+			return Plan{}, fmt.Errorf("nothing to level: %.2f s is too short, loudness needs at least 0.4 s", a.Duration)
+		}
+		return Plan{}, errors.New("nothing to level: nothing in it is louder than −70 LUFS")
+	}
+	headroom := headroom(p, a)
+	wanted := audio.DB(p.Target - a.Integrated)
+	plan := Plan{Gain: wanted, Ceiling: p.Ceiling}
+	if most := headroom + p.Limiting; plan.Gain > most {
+		plan.Gain = most
+	}
+	switch {
+	case headroom >= -peakTolerance && audio.LU(abs(wanted)) <= p.Tolerance:
+		plan = Plan{Ceiling: p.Ceiling, Untouched: true, Reason: "already within the profile"}
+	case headroom >= -peakTolerance && abs(plan.Gain) < leastGain:
+		plan = Plan{Ceiling: p.Ceiling, Untouched: true, Reason: "already as loud as its peaks allow"}
+	default:
+		plan.Limit = plan.Gain > headroom
+		plan.Reason = plan.words(p, headroom)
+	}
+	return plan, nil
+}
+
+// headroom is how much gain the true peak leaves under the ceiling; negative if it is over already.
+func headroom(p profile.Profile, a *Analysis) audio.DB { return audio.DB(p.Ceiling - a.TruePeak) }
+
+func (plan Plan) words(p profile.Profile, headroom audio.DB) string {
+	s := fmt.Sprintf("lift by %.1f dB", plan.Gain)
+	if plan.Gain < 0 {
+		s = fmt.Sprintf("lower by %.1f dB", -plan.Gain)
+	}
+	switch {
+	case plan.Limit:
+		s += fmt.Sprintf(", peaks held %.1f dB lower to stay under %s dBTP", plan.Gain-headroom, signed(float64(p.Ceiling)))
+	case p.Limiting == 0 && plan.Gain == headroom:
+		s += ", as far as the peaks allow"
+	}
+	return s
+}
+
+func abs[F ~float64](v F) F {
+	if v < 0 {
+		return -v
+	}
+	return v
+}
+
+// signed writes a level to one decimal with a true minus sign.
+func signed(v float64) string {
+	if v < 0 {
+		return fmt.Sprintf("−%.1f", -v)
+	}
+	return fmt.Sprintf("%.1f", v)
+}
+
+// again returns the plan for another rendering, given how the last one came out. ok is false if another
+// would not come closer.
+func (plan Plan) again(p profile.Profile, before, after *Analysis, lossless bool) (next Plan, ok bool) {
+	next = plan
+	over := audio.DB(after.TruePeak - p.Ceiling)
+	if over > peakTolerance {
+		next.Ceiling = plan.Ceiling - audio.DBTP(over) - 0.02
+	}
+	room := audio.DB(next.Ceiling - before.TruePeak)
+	if plan.Limit || !lossless || over > peakTolerance {
+		next.Gain = min(plan.Gain+audio.DB(p.Target-after.Integrated), room+p.Limiting)
+	}
+	next.Limit = next.Gain > room
+	closer := abs(next.Gain-plan.Gain) > limitedTolerance
+	return next, closer || next.Ceiling != plan.Ceiling
+}
