@@ -5,6 +5,7 @@ import (
 	"database/sql"
 	"encoding/json"
 	"fmt"
+	"slices"
 	"strings"
 )
 
@@ -109,7 +110,7 @@ func (s *Store) CreateRun(ctx context.Context, n NewRun, enqueue func(ctx contex
 
 // pick returns which recordings the run is about.
 func (n NewRun) pick(ctx context.Context, tx *sql.Tx) (w conditions, err error) {
-	if n.Delivery != Measure && n.Delivery != Copy {
+	if !slices.Contains([]Delivery{Measure, Copy, Replace}, n.Delivery) {
 		return w, fmt.Errorf("delivery %q: %w", n.Delivery, ErrInvalid)
 	}
 	if err := checkFolder(n.Folder); err != nil {

@@ -30,8 +30,8 @@ func (s *Store) AddShelf(ctx context.Context, sh Shelf) (Shelf, error) {
 	if sh.Copies, err = resolveCopies(sh.Copies); err != nil {
 		return fail(err)
 	}
-	if overlap(sh.Root, sh.Copies) {
-		return fail(fmt.Errorf("the copies folder %s and the recordings in %s must be apart: %w", sh.Copies, sh.Root, ErrInvalid))
+	if overlap(sh.Root, sh.Copies) || overlap(sh.Root, sh.Attic()) {
+		return fail(fmt.Errorf("the copies folder %s, the attic beside it and the recordings in %s must be apart: %w", sh.Copies, sh.Root, ErrInvalid))
 	}
 	at := now()
 	err = s.write(ctx, func(tx *sql.Tx) error {
@@ -61,11 +61,11 @@ func (sh Shelf) clash(other Shelf) error {
 		return fmt.Errorf("the name is taken: %w", ErrExists)
 	case sh.Root == other.Root:
 		return fmt.Errorf("%s is the root of shelf %q: %w", sh.Root, other.Name, ErrExists)
-	case overlap(sh.Copies, other.Copies):
+	case overlap(sh.Copies, other.Copies) || overlap(sh.Copies, other.Attic()) || overlap(sh.Attic(), other.Copies):
 		return fmt.Errorf("the copies folder %s overlaps that of shelf %q: %w", sh.Copies, other.Name, ErrExists)
-	case overlap(sh.Copies, other.Root):
+	case overlap(sh.Copies, other.Root) || overlap(sh.Attic(), other.Root):
 		return fmt.Errorf("the copies folder %s overlaps the recordings of shelf %q: %w", sh.Copies, other.Name, ErrInvalid)
-	case overlap(sh.Root, other.Copies):
+	case overlap(sh.Root, other.Copies) || overlap(sh.Root, other.Attic()):
 		return fmt.Errorf("%s overlaps the copies folder of shelf %q: %w", sh.Root, other.Name, ErrInvalid)
 	}
 	return nil

@@ -33,6 +33,34 @@ type Shelf struct {
 	CreatedAt time.Time `json:"created_at"`
 }
 
+// UploadShelf is the name of the shelf that uploads go to.
+const UploadShelf = "uploads"
+
+// Attic is where originals are kept that a delivery replaced: a folder beside Copies.
+func (sh Shelf) Attic() string { return sh.Copies + ".attic" }
+
+// Original is a recording that is kept in the attic since its levelled copy took its place.
+type Original struct {
+	RecordingID int64     `json:"recording_id"`
+	ShelfID     int64     `json:"shelf_id"`
+	RunID       int64     `json:"run_id"`
+	JobID       int64     `json:"job_id"`
+	Path        string    `json:"path"` // of the recording, relative to the shelf's root
+	KeptAt      time.Time `json:"kept_at"`
+	SHA256      string    `json:"sha256"` // of the original
+	Stored      string    `json:"-"`      // where it is, relative to the attic
+	Levelled    string    `json:"-"`      // SHA-256 of the file that took its place
+	Size        int64     `json:"-"`      // of the file that took its place, bytes
+}
+
+// OriginalQuery selects a page of the attic, in order of the recordings' ids.
+type OriginalQuery struct {
+	ShelfID int64 // 0 = all
+	RunID   int64 // 0 = all; else those that run replaced last
+	After   int64 // recording id of the last one of the page before
+	Limit   int   // 1 … 1000, 0 = 100
+}
+
 // ShelfSummary is a shelf with what is known about its recordings, those missing from the disk left out.
 type ShelfSummary struct {
 	Shelf
@@ -146,6 +174,7 @@ type Delivery string
 const (
 	Measure Delivery = "measure" // nothing is written
 	Copy    Delivery = "copy"    // a mirrored tree under the shelf's Copies folder
+	Replace Delivery = "replace" // the copy takes the original's place; the original moves to the attic
 )
 
 // NewRun asks for work on recordings: all of a shelf, a folder of it, or a list.
@@ -249,6 +278,6 @@ type Event struct {
 	RunID       int64     `json:"run_id"`       // 0 if none
 	RecordingID int64     `json:"recording_id"` // 0 if it concerns the run as a whole
 	JobID       int64     `json:"job_id"`
-	What        string    `json:"what"` // a job state, or: found, changed, missing, run-started, run-finished, run-cancelled
+	What        string    `json:"what"` // a job state, or: found, changed, missing, restored, run-started, run-finished, run-cancelled
 	Words       string    `json:"words"`
 }

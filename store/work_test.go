@@ -266,7 +266,7 @@ func TestCreateRunRefuses(t *testing.T) {
 		"unknown recording":         {func(n *NewRun) { n.Recordings = []int64{m["a.wav"].ID, 99} }, ErrNotFound},
 		"another shelf's recording": {func(n *NewRun) { n.Recordings = []int64{3} }, ErrNotFound},
 		"recording out of folder":   {func(n *NewRun) { n.Folder, n.Recordings = "b", []int64{m["a.wav"].ID} }, ErrNotFound},
-		"delivery":                  {func(n *NewRun) { n.Delivery = "replace" }, ErrInvalid},
+		"delivery":                  {func(n *NewRun) { n.Delivery = "shred" }, ErrInvalid},
 		"no delivery":               {func(n *NewRun) { n.Delivery = "" }, ErrInvalid},
 		"no profile":                {func(n *NewRun) { n.Profile.Name = "" }, ErrInvalid},
 		"queue":                     {func(*NewRun) {}, broken},

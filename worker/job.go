@@ -136,11 +136,14 @@ func (s *Service) attempt(ctx context.Context, w store.Work) (o level.Outcome, o
 	case err != nil:
 		return o, "", err
 	}
-	if w.Delivery == store.Measure {
+	key := fmt.Sprintf("job-%d", w.Job.ID)
+	switch w.Delivery {
+	case store.Measure:
 		o, err = s.measure(ctx, source)
-	} else {
-		o, output, err = delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, w.Profile,
-			fmt.Sprintf("job-%d", w.Job.ID), delivery.Options{Overwrite: true})
+	case store.Replace:
+		o, output, err = s.replace(ctx, w, source, key)
+	default:
+		o, output, err = delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, w.Profile, key, delivery.Options{Overwrite: true})
 	}
 	switch {
 	case errors.Is(ctx.Err(), context.DeadlineExceeded):

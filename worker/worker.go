@@ -70,6 +70,7 @@ type Service struct {
 	client *river.Client[*store.Tx]
 
 	retryAfter func(attempt int) time.Duration
+	places     turnstile // one job or restore at a time may change a recording's own file
 
 	mu      sync.Mutex
 	started bool
@@ -90,7 +91,7 @@ func New(o Options) (*Service, error) {
 	workers := river.NewWorkers()
 	river.AddWorker(workers, &levelWorker{service: s})
 	client, err := river.NewClient(riversqlite.New(o.Store.Writer()), &river.Config{
-		Logger:            o.Log,
+		Logger:            slog.New(quiet{o.Log.Handler()}),
 		Workers:           workers,
 		Queues:            map[string]river.QueueConfig{river.QueueDefault: {MaxWorkers: o.Workers}},
 		MaxAttempts:       store.MaxAttempts,
@@ -154,12 +155,14 @@ func (s *Service) sweep(ctx context.Context) {
 		s.log.ErrorContext(ctx, "sweep", "error", err)
 	}
 	for _, shelf := range shelves {
-		removed, err := delivery.Sweep(shelf.Copies)
-		if err != nil {
-			s.log.WarnContext(ctx, "sweep", "folder", shelf.Copies, "error", err)
-		}
-		if removed > 0 {
-			s.log.InfoContext(ctx, "swept scratch files", "folder", shelf.Copies, "files", removed)
+		for _, folder := range []string{shelf.Copies, shelf.Root} {
+			removed, err := delivery.Sweep(folder)
+			if err != nil {
+				s.log.WarnContext(ctx, "sweep", "folder", folder, "error", err)
+			}
+			if removed > 0 {
+				s.log.InfoContext(ctx, "swept scratch files", "folder", folder, "files", removed)
+			}
 		}
 	}
 }

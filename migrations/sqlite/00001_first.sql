@@ -81,7 +81,7 @@ CREATE TABLE runs (
     shelf_id        INTEGER NOT NULL REFERENCES shelves (id) ON DELETE CASCADE,
     folder          TEXT    NOT NULL,
     profile_version TEXT    NOT NULL REFERENCES profiles (version),
-    delivery        TEXT    NOT NULL CHECK (delivery IN ('measure', 'copy')),
+    delivery        TEXT    NOT NULL CHECK (delivery IN ('measure', 'copy', 'replace')),
     created_at      INTEGER NOT NULL,
     started_at      INTEGER,
     cancelled_at    INTEGER,
@@ -173,6 +173,21 @@ CREATE TABLE timelines (
     curves     BLOB    NOT NULL  -- see store/timeline.go
 ) STRICT;
 
+-- Originals in the attic. A recording can have several, of different content: the last one kept is the one
+-- that the file on the shelf was made from.
+CREATE TABLE attic (
+    recording_id INTEGER NOT NULL REFERENCES recordings (id) ON DELETE RESTRICT,
+    sha256       TEXT    NOT NULL CHECK (length(sha256) = 64),
+    job_id       INTEGER NOT NULL REFERENCES jobs (id) ON DELETE RESTRICT,
+    stored       TEXT    NOT NULL CHECK (stored <> '' AND stored NOT LIKE '/%'),
+    levelled     TEXT    NOT NULL CHECK (length(levelled) = 64),
+    size         INTEGER NOT NULL,
+    kept_at      INTEGER NOT NULL,
+    PRIMARY KEY (recording_id, sha256)
+) STRICT, WITHOUT ROWID;
+
+CREATE INDEX attic_job ON attic (job_id);
+
 CREATE TABLE history (
     id           INTEGER PRIMARY KEY AUTOINCREMENT, -- never used twice, grows with time
     at           INTEGER NOT NULL,
@@ -180,7 +195,7 @@ CREATE TABLE history (
     recording_id INTEGER NOT NULL DEFAULT 0,
     job_id       INTEGER NOT NULL DEFAULT 0,
     what         TEXT    NOT NULL CHECK (what IN ('waiting', 'working', 'done', 'held', 'failed', 'cancelled',
-        'found', 'changed', 'missing', 'run-started', 'run-finished', 'run-cancelled')),
+        'found', 'changed', 'missing', 'restored', 'run-started', 'run-finished', 'run-cancelled')),
     words        TEXT    NOT NULL
 ) STRICT;
 
@@ -190,6 +205,7 @@ CREATE INDEX history_recording ON history (recording_id, id) WHERE recording_id 
 -- +goose Down
 
 DROP TABLE history;
+DROP TABLE attic;
 DROP TABLE timelines;
 UPDATE recordings SET before_id = NULL, after_id = NULL;
 DROP TABLE readings;

@@ -22,6 +22,7 @@ type leveller struct {
 	panics    bool
 	nothing   bool   // no file, no After
 	lies      bool   // After, but no file
+	untouched bool   // within the profile already
 	during    func() // while the engine is at work
 	scratch   string // where it was told to write
 }
@@ -47,6 +48,7 @@ func (l *leveller) Level(_ context.Context, source string, _ profile.Profile, sc
 		panic("engine")
 	}
 	o.After = &level.Analysis{}
+	o.Plan = &level.Plan{Untouched: l.untouched}
 	if o.Extension == "" {
 		o.Extension = filepath.Ext(source)
 	}

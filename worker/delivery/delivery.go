@@ -9,7 +9,8 @@
 //
 // A copy keeps the path of its recording. If the format differs, the new extension is added rather than
 // exchanged ("a.ogg.flac"), so that a.ogg and a.wav never meet in one file. What is held goes to a tree
-// of its own, so that nothing doubtful lands where a playout system looks.
+// of its own, so that nothing doubtful lands where a playout system looks. Replace (attic.go) puts the copy
+// in its recording's place instead, once the original is safe.
 //
 // A source is never written to: not under another name of it (hard link), not through a link, not by a
 // copies folder that turns out to be the source's own. All changes go through os.Root, which does not
@@ -42,8 +43,8 @@ type Leveller interface {
 
 // Options says what delivery may do.
 type Options struct {
-	// Overwrite says that the output folder is ours: a copy that is there already is replaced, and one
-	// that the new result makes out of date (held then, done now, or the other way round) is removed.
+	// Overwrite says that the output folder is ours: a copy that is there already is replaced, and a held
+	// one is removed when the new result is done.
 	// Otherwise a copy that is there already is never touched and the outcome is failed.
 	Overwrite bool
 }
@@ -60,14 +61,8 @@ func Deliver(ctx context.Context, eng Leveller, source, outDir, relPath string, 
 		return failed(level.Outcome{}, refusal), "", err
 	}
 	defer func() { err = errors.Join(err, d.close()) }()
-	if o, err = eng.Level(ctx, source, p, filepath.Join(outDir, filepath.FromSlash(d.scratch))); err != nil {
-		return o, "", fmt.Errorf("level %s: %w", relPath, err)
-	}
-	if err := Unchanged(source, d.info); err != nil {
+	if o, err = d.level(ctx, eng, p); err != nil || o.After == nil {
 		return o, "", err
-	}
-	if o.After == nil || o.Verdict.State != level.Done && o.Verdict.State != level.Held {
-		return o, "", nil
 	}
 	output, refusal, err = d.place(o)
 	if refusal != "" {
@@ -142,6 +137,26 @@ func (d *delivery) prepare() (refusal string, err error) {
 	return "", nil
 }
 
+// level has the engine make the scratch file. If there is nothing to deliver the outcome has no After.
+func (d *delivery) level(ctx context.Context, eng Leveller, p profile.Profile) (level.Outcome, error) {
+	o, err := eng.Level(ctx, d.source, p, d.path(d.scratch))
+	if err != nil {
+		return o, fmt.Errorf("level %s: %w", d.rel, err)
+	}
+	if err := Unchanged(d.source, d.info); err != nil {
+		return o, err
+	}
+	if o.Verdict.State != level.Done && o.Verdict.State != level.Held {
+		o.After = nil
+	}
+	return o, nil
+}
+
+// path is where a name relative to the output folder is.
+func (d *delivery) path(name string) string {
+	return filepath.Join(d.root.Name(), filepath.FromSlash(name))
+}
+
 // close removes the scratch file if it is still there: after any error, a panic, or a change of mind.
 func (d *delivery) close() error {
 	err := d.root.Remove(d.scratch)
@@ -160,9 +175,9 @@ func (d *delivery) place(o level.Outcome) (output, refusal string, err error) {
 			return "", fmt.Sprintf("its copy would take the name of another recording's, %s", name), nil
 		}
 	}
-	target, stale := name, path.Join(Held, name)
+	target, held := name, path.Join(Held, name)
 	if o.Verdict.State == level.Held {
-		target, stale = stale, target
+		target = held
 	}
 	if refusal := d.refuses(target); refusal != "" {
 		return "", refusal, nil
@@ -170,14 +185,15 @@ func (d *delivery) place(o level.Outcome) (output, refusal string, err error) {
 	if refusal, err := d.makeFolder(path.Dir(target)); refusal != "" || err != nil {
 		return "", refusal, err
 	}
-	if err := d.dress(); err != nil {
+	if err := d.dress(0o644); err != nil {
 		return "", "", fmt.Errorf("deliver %s: %w", name, err)
 	}
 	if refusal, err := d.move(target); refusal != "" || err != nil {
 		return "", refusal, err
 	}
-	if d.opt.Overwrite {
-		if err := d.removeStale(stale); err != nil {
+	// A copy that was done before stays where a playout system may need it, also when a new one is held.
+	if d.opt.Overwrite && target != held {
+		if err := d.removeStale(held); err != nil {
 			return "", "", err
 		}
 	}

@@ -111,9 +111,9 @@ func (d *delivery) syncFolder(name string) error {
 	return errors.Join(f.Sync(), f.Close())
 }
 
-// dress gives the scratch file the mode of a shared file and the time of its source, so that tools which
+// dress gives the scratch file its mode and the time of its source, so that tools which
 // copy what is newer see no change where there is none.
-func (d *delivery) dress() error {
+func (d *delivery) dress(mode fs.FileMode) error {
 	info, err := d.root.Lstat(d.scratch)
 	if err != nil {
 		return fmt.Errorf("the engine left no file: %w", err)
@@ -121,7 +121,7 @@ func (d *delivery) dress() error {
 	if !info.Mode().IsRegular() || info.Size() == 0 {
 		return fmt.Errorf("the engine left no sound in %s", d.scratch)
 	}
-	if err := d.root.Chmod(d.scratch, 0o644); err != nil {
+	if err := d.root.Chmod(d.scratch, mode); err != nil {
 		return err
 	}
 	return d.root.Chtimes(d.scratch, time.Time{}, d.info.ModTime())

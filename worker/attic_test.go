@@ -1,0 +1,92 @@
+package worker
+
+import (
+	"context"
+	"errors"
+	"os"
+	"path/filepath"
+	"sync"
+	"testing"
+
+	"evenshelf/store"
+)
+
+func (b *bench) onShelf(name string) string {
+	b.t.Helper()
+	c, err := os.ReadFile(filepath.Join(b.shelf.Root, name))
+	if err != nil {
+		b.t.Error(err)
+	}
+	return string(c)
+}
+
+func TestReplaceAndRestore(t *testing.T) {
+	b := newBench(t, "a.wav", "b.wav")
+	s := b.startService(&engine{}, 2)
+	run := b.wait(b.begin(s, store.Replace).ID, ended)
+	if run.Done != 2 || b.onShelf("a.wav") != "levelled sound of a.wav" {
+		t.Fatalf("%+v, %q", run, b.onShelf("a.wav"))
+	}
+	if scan, err := s.Scan(b.ctx, b.shelf.ID, ""); err != nil || scan.Changed != 0 || scan.Added != 0 {
+		t.Errorf("the next scan takes our copies for changes: %+v, %v", scan, err)
+	}
+	kept, err := b.store.Originals(b.ctx, store.OriginalQuery{RunID: run.ID})
+	if err != nil || len(kept) != 2 || kept[0].Path != "a.wav" || kept[0].RunID != run.ID {
+		t.Fatalf("attic: %+v, %v", kept, err)
+	}
+	// A second run levels the originals again, not the copies.
+	again := b.wait(b.begin(s, store.Replace).ID, ended)
+	if again.Done != 2 || b.onShelf("b.wav") != "levelled sound of b.wav" {
+		t.Errorf("%+v, %q", again, b.onShelf("b.wav"))
+	}
+	rec, err := s.Restore(b.ctx, kept[0].RecordingID)
+	if err != nil || rec.State != "" || rec.After != nil || b.onShelf("a.wav") != "sound of a.wav" {
+		t.Errorf("%+v, %v, %q", rec, err, b.onShelf("a.wav"))
+	}
+	if _, err := s.Restore(b.ctx, kept[0].RecordingID); !errors.Is(err, store.ErrNotFound) {
+		t.Errorf("restoring twice: %v", err)
+	}
+	if scan, err := s.Scan(b.ctx, b.shelf.ID, ""); err != nil || scan.Changed != 0 {
+		t.Errorf("the next scan takes the original for a change: %+v, %v", scan, err)
+	}
+	// Somebody put another file there: neither is lost.
+	if err := os.WriteFile(filepath.Join(b.shelf.Root, "b.wav"), []byte("new take"), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := s.Restore(b.ctx, kept[1].RecordingID); !errors.Is(err, store.ErrState) || b.onShelf("b.wav") != "new take" {
+		t.Errorf("%v, %q", err, b.onShelf("b.wav"))
+	}
+	if left, _ := b.store.Originals(b.ctx, store.OriginalQuery{}); len(left) != 1 {
+		t.Errorf("attic: %+v", left)
+	}
+}
+
+func TestTurnstileLetsOneThrough(t *testing.T) {
+	var turn turnstile
+	var wg sync.WaitGroup
+	inside, most := 0, 0
+	for range 50 {
+		wg.Go(func() {
+			leave, err := turn.enter(t.Context(), 7)
+			if err != nil {
+				t.Error(err)
+				return
+			}
+			inside++ // the race detector would see two at once
+			most = max(most, inside)
+			inside--
+			leave()
+		})
+	}
+	wg.Wait()
+	if most != 1 {
+		t.Errorf("%d were inside at once", most)
+	}
+	leave, _ := turn.enter(t.Context(), 8)
+	defer leave()
+	ctx, cancel := context.WithCancel(t.Context())
+	cancel()
+	if _, err := turn.enter(ctx, 8); !errors.Is(err, context.Canceled) {
+		t.Errorf("waiting does not heed the context: %v", err)
+	}
+}

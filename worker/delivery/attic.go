@@ -1,0 +1,222 @@
+package delivery
+
+import (
+	"context"
+	"crypto/sha256"
+	"encoding/hex"
+	"errors"
+	"fmt"
+	"io"
+	"io/fs"
+	"os"
+	"path"
+	"path/filepath"
+	"strings"
+
+	"evenshelf/engine/level"
+	"evenshelf/engine/profile"
+)
+
+// Original is a recording that was moved to the attic when its levelled copy took its place. Hashes are
+// SHA-256 of the files' bytes, in hexadecimal.
+type Original struct {
+	Stored   string // where it is, relative to the attic, with forward slashes
+	SHA256   string // of the original
+	Levelled string // of the file that took its place
+	Size     int64  // of the file that took its place, bytes
+}
+
+// ErrChanged is wrapped when a file is neither the levelled copy that was put there nor the original.
+var ErrChanged = errors.New("was changed since it was levelled")
+
+// Place says where a replacing delivery finds and puts things. All are absolute paths but Rel.
+type Place struct {
+	Root   string // the shelf's
+	Rel    string // the recording's path below Root, with forward slashes
+	Attic  string
+	Copies string // what is held goes to _held below it
+	Source string // the sound to level: Root/Rel itself, or its original in the attic
+}
+
+// Replace levels a recording and puts the copy in its place, in an order that can be cut short anywhere
+// without losing the original:
+//
+//	level into a scratch file ─▶ link or copy the original into the attic ─▶ record(…) ─▶ rename over it
+//
+// A recording that was replaced before is levelled from its original, so that no sound is ever levelled
+// twice. One that is within its profile stays as it is. What is held goes where held copies go, and the
+// recording stays. output is relative to Root, or to Copies if the outcome is held. Errors as for Deliver.
+func Replace(ctx context.Context, eng Leveller, at Place, p profile.Profile, key string,
+	record func(context.Context, Original) error) (o level.Outcome, output string, err error) {
+	d, refusal, err := open(at.Source, at.Root, at.Rel, key, Options{Overwrite: true})
+	if err != nil || refusal != "" {
+		return failed(level.Outcome{}, refusal), "", err
+	}
+	defer func() { err = errors.Join(err, d.close()) }()
+	if o, err = d.level(ctx, eng, p); err != nil || o.After == nil {
+		return o, "", err
+	}
+	first := at.Source == d.path(at.Rel)
+	switch {
+	case o.Verdict.State == level.Held:
+		output = path.Join(Held, at.Rel)
+		if !strings.EqualFold(path.Ext(at.Rel), o.Extension) {
+			output += o.Extension
+		}
+		return o, output, keep(d.path(d.scratch), filepath.Join(at.Copies, filepath.FromSlash(output)))
+	case !strings.EqualFold(path.Ext(at.Rel), o.Extension):
+		return failed(o, fmt.Sprintf("it can only be written as %s here, so the copy cannot take its place", o.Extension)), "", nil
+	case first && o.Plan != nil && o.Plan.Untouched:
+		return o, at.Rel, nil
+	}
+	kept, err := d.toAttic(at.Attic, first)
+	if err != nil {
+		return o, "", fmt.Errorf("attic: %w", err)
+	}
+	if kept.Levelled, kept.Size, err = digest(d.path(d.scratch)); err != nil {
+		return o, "", err
+	}
+	if err := d.dress(d.info.Mode().Perm()); err != nil {
+		return o, "", err
+	}
+	if err := record(ctx, kept); err != nil {
+		return o, "", err
+	}
+	if err := d.root.Rename(d.scratch, at.Rel); err != nil {
+		return o, "", err
+	}
+	return o, at.Rel, d.syncFolder(path.Dir(at.Rel))
+}
+
+// toAttic keeps the source in the attic, unless it is there already.
+func (d *delivery) toAttic(attic string, first bool) (Original, error) {
+	sum, _, err := digest(d.source)
+	if err != nil {
+		return Original{}, err
+	}
+	if !first {
+		stored, err := filepath.Rel(attic, d.source)
+		return Original{Stored: filepath.ToSlash(stored), SHA256: sum}, err
+	}
+	// The name carries the hash, so that another recording that comes to this path later has a place too.
+	ext := path.Ext(d.rel)
+	stored := strings.TrimSuffix(d.rel, ext) + "." + sum[:12] + ext
+	return Original{Stored: stored, SHA256: sum}, keep(d.source, filepath.Join(attic, filepath.FromSlash(stored)))
+}
+
+// Restore puts the original back at rel below root, bit for bit, and takes it out of the attic. It may be
+// repeated after it was cut short anywhere. ErrChanged if the file there is one that we do not know.
+func Restore(root, rel, attic string, kept Original, key string) error {
+	r, err := os.OpenRoot(root)
+	if err != nil {
+		return err
+	}
+	defer r.Close()
+	d := &delivery{root: r, rel: rel, scratch: path.Join(path.Dir(rel), scratchName(path.Base(rel), key))}
+	if refusal, err := d.makeFolder(path.Dir(rel)); refusal != "" || err != nil {
+		return errors.Join(errors.New(refusal), err)
+	}
+	stored := filepath.Join(attic, filepath.FromSlash(kept.Stored))
+	now, _, err := digest(d.path(rel))
+	switch {
+	case err == nil && now == kept.SHA256: // cut short after the rename: only the tidying is left to do
+		return removeIfThere(stored)
+	case err == nil && now != kept.Levelled:
+		return fmt.Errorf("%s %w", rel, ErrChanged)
+	case err != nil && !errors.Is(err, fs.ErrNotExist):
+		return err
+	}
+	if sum, _, err := digest(stored); err != nil {
+		return err
+	} else if sum != kept.SHA256 {
+		return fmt.Errorf("%s: the original in the attic is damaged: %s", rel, stored)
+	}
+	if err := errors.Join(removeIfThere(d.path(d.scratch)), keep(stored, d.path(d.scratch))); err != nil {
+		return err
+	}
+	if err := r.Rename(d.scratch, rel); err != nil {
+		return errors.Join(err, removeIfThere(d.path(d.scratch)))
+	}
+	return errors.Join(d.syncFolder(path.Dir(rel)), removeIfThere(stored))
+}
+
+// IsLevelled reports whether the file at path is the one that took the original's place.
+func (kept Original) IsLevelled(path string) bool {
+	sum, _, err := digest(path)
+	return err == nil && sum == kept.Levelled
+}
+
+func removeIfThere(path string) error {
+	if err := os.Remove(path); !errors.Is(err, fs.ErrNotExist) {
+		return err
+	}
+	return nil
+}
+
+// keep makes to the same file as from: by a second link, or where that cannot be (another file system)
+// by a copy that is read back and compared. A file that is there with the same bytes is left alone.
+func keep(from, to string) error {
+	sum, _, err := digest(from)
+	if err != nil {
+		return err
+	}
+	if there, _, err := digest(to); err == nil && there == sum {
+		return nil
+	}
+	folder := filepath.Dir(to)
+	if err := os.MkdirAll(folder, 0o755); err != nil {
+		return err
+	}
+	if err := removeIfThere(to); err != nil {
+		return err
+	}
+	if os.Link(from, to) != nil {
+		if err := copyFile(from, to); err != nil {
+			return errors.Join(err, removeIfThere(to))
+		}
+		if there, _, err := digest(to); err != nil || there != sum {
+			return errors.Join(fmt.Errorf("%s: the copy differs from its original", to), err, removeIfThere(to))
+		}
+	}
+	f, err := os.Open(folder)
+	if err != nil {
+		return err
+	}
+	return errors.Join(f.Sync(), f.Close())
+}
+
+// copyFile copies content, mode and time, and syncs.
+func copyFile(from, to string) error {
+	in, err := os.Open(from)
+	if err != nil {
+		return err
+	}
+	defer in.Close()
+	info, err := in.Stat()
+	if err != nil {
+		return err
+	}
+	out, err := os.OpenFile(to, os.O_WRONLY|os.O_CREATE|os.O_EXCL, info.Mode().Perm())
+	if err != nil {
+		return err
+	}
+	_, err = io.Copy(out, in)
+	if err = errors.Join(err, out.Sync(), out.Close()); err != nil {
+		return err
+	}
+	return os.Chtimes(to, info.ModTime(), info.ModTime())
+}
+
+// digest returns the SHA-256 of a file, in hexadecimal, and its length in bytes.
+func digest(path string) (sum string, size int64, err error) {
+	f, err := os.Open(path)
+	if err != nil {
+		return "", 0, err
+	}
+	defer f.Close()
+	h := sha256.New()
+	if size, err = io.Copy(h, f); err != nil {
+		return "", 0, err
+	}
+	return hex.EncodeToString(h.Sum(nil)), size, nil
+}

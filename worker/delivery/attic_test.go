@@ -1,0 +1,173 @@
+package delivery
+
+import (
+	"context"
+	"errors"
+	"os"
+	"path/filepath"
+	"slices"
+	"strings"
+	"testing"
+
+	"evenshelf/engine/level"
+	"evenshelf/engine/profile"
+)
+
+// atticBench is a shelf, its copies and its attic, and what was recorded.
+type atticBench struct {
+	*bench
+	place Place
+	kept  []Original
+}
+
+func newAtticBench(t *testing.T) *atticBench {
+	b := &atticBench{bench: newBench(t)}
+	here := b.source("m/a.wav")
+	b.place = Place{Root: b.src, Rel: "m/a.wav", Attic: b.out + ".attic", Copies: b.out, Source: here}
+	return b
+}
+
+var errCut = errors.New("the power went")
+
+// replace runs Replace; cut ends it right after the original was recorded.
+func (b *atticBench) replace(l *leveller, cut bool) (level.Outcome, string, error) {
+	b.t.Helper()
+	return Replace(b.t.Context(), l, b.place, profile.Profile{}, "job-7", func(_ context.Context, o Original) error {
+		b.kept = append(b.kept, o)
+		if cut {
+			return errCut
+		}
+		return nil
+	})
+}
+
+func (b *atticBench) check(shelf, attic []string) {
+	b.t.Helper()
+	if got := files(b.t, b.src); !slices.Equal(got, shelf) {
+		b.t.Errorf("shelf has %q, want %q", got, shelf)
+	}
+	got := files(b.t, b.place.Attic)
+	for i := range got {
+		name, text, _ := strings.Cut(got[i], "=")
+		got[i] = name[:4] + "*=" + text // without the hash
+	}
+	if !slices.Equal(got, attic) {
+		b.t.Errorf("attic has %q, want %q", got, attic)
+	}
+}
+
+func TestReplaceAndRestore(t *testing.T) {
+	b := newAtticBench(t)
+	must(t, os.Chmod(b.place.Source, 0o640))
+	if _, output, err := b.replace(&leveller{text: " one"}, false); output != "m/a.wav" || err != nil {
+		t.Fatalf("%q %v", output, err)
+	}
+	b.check([]string{"m/a.wav=levelled one"}, []string{"m/a.*=source"})
+	info, err := os.Stat(filepath.Join(b.src, "m/a.wav"))
+	if err != nil || info.Mode().Perm() != 0o640 || !info.ModTime().Equal(sourceTime) || info.Size() != b.kept[0].Size {
+		t.Errorf("mode %v, time %v, %v", info.Mode(), info.ModTime(), err)
+	}
+	// Levelled again, from the original.
+	b.place.Source = filepath.Join(b.place.Attic, b.kept[0].Stored)
+	if _, _, err := b.replace(&leveller{text: " two"}, false); err != nil {
+		t.Fatal(err)
+	}
+	b.check([]string{"m/a.wav=levelled two"}, []string{"m/a.*=source"})
+	if b.kept[1].Stored != b.kept[0].Stored || b.kept[1].SHA256 != b.kept[0].SHA256 || b.kept[1].Levelled == b.kept[0].Levelled {
+		t.Errorf("kept: %+v", b.kept)
+	}
+
+	if err := Restore(b.src, "m/a.wav", b.place.Attic, b.kept[0], "restore-1"); !errors.Is(err, ErrChanged) {
+		t.Errorf("a file we do not know was written over: %v", err)
+	}
+	for range 2 { // again, as after a crash in between
+		if err := Restore(b.src, "m/a.wav", b.place.Attic, b.kept[1], "restore-1"); err != nil {
+			t.Fatal(err)
+		}
+		b.check([]string{"m/a.wav=source"}, nil)
+	}
+	info, err = os.Stat(filepath.Join(b.src, "m/a.wav"))
+	if err != nil || info.Mode().Perm() != 0o640 || !info.ModTime().Equal(sourceTime) {
+		t.Errorf("restored with mode %v, time %v, %v", info.Mode(), info.ModTime(), err)
+	}
+}
+
+// Cut short between any two steps, the original is on the shelf or in the attic, and a repetition ends well.
+func TestReplaceCutShort(t *testing.T) {
+	b := newAtticBench(t)
+	if _, _, err := b.replace(&leveller{err: errCut}, false); !errors.Is(err, errCut) {
+		t.Error(err)
+	}
+	b.check([]string{"m/a.wav=source"}, nil)
+	if _, _, err := b.replace(&leveller{}, true); !errors.Is(err, errCut) {
+		t.Error(err)
+	}
+	b.check([]string{"m/a.wav=source"}, []string{"m/a.*=source"})
+	if _, output, err := b.replace(&leveller{}, false); output != "m/a.wav" || err != nil {
+		t.Errorf("%q %v", output, err)
+	}
+	b.check([]string{"m/a.wav=levelled"}, []string{"m/a.*=source"})
+	// After the rename, before the result was stored: the caller finds the copy in place and levels the original.
+	if !b.kept[1].IsLevelled(filepath.Join(b.src, "m/a.wav")) {
+		t.Error("the copy is not known again")
+	}
+	b.place.Source = filepath.Join(b.place.Attic, b.kept[1].Stored)
+	if _, output, err := b.replace(&leveller{}, false); output != "m/a.wav" || err != nil {
+		t.Errorf("%q %v", output, err)
+	}
+	b.check([]string{"m/a.wav=levelled"}, []string{"m/a.*=source"})
+}
+
+func TestReplaceLeavesTheRecordingWhereItHasTo(t *testing.T) {
+	for why, c := range map[string]struct {
+		l      leveller
+		output string
+		state  level.State
+		copies []string
+	}{
+		"held":               {leveller{state: level.Held}, "_held/m/a.wav", level.Held, []string{"_held/m/a.wav=levelled"}},
+		"held, other format": {leveller{state: level.Held, extension: ".flac"}, "_held/m/a.wav.flac", level.Held, []string{"_held/m/a.wav.flac=levelled"}},
+		"failed":             {leveller{state: level.Failed, nothing: true}, "", level.Failed, nil},
+		"another format":     {leveller{extension: ".flac"}, "", level.Failed, nil},
+		"within the profile": {leveller{untouched: true}, "m/a.wav", level.Done, nil},
+	} {
+		t.Run(why, func(t *testing.T) {
+			b := newAtticBench(t)
+			o, output, err := b.replace(&c.l, false)
+			if output != c.output || err != nil || o.Verdict.State != c.state {
+				t.Errorf("%q %v %+v", output, err, o.Verdict)
+			}
+			b.check([]string{"m/a.wav=source"}, nil)
+			b.want(c.copies...)
+			if len(b.kept) > 0 {
+				t.Errorf("recorded: %+v", b.kept)
+			}
+		})
+	}
+}
+
+func TestDamagedAtticIsNotRestored(t *testing.T) {
+	b := newAtticBench(t)
+	if _, _, err := b.replace(&leveller{}, false); err != nil {
+		t.Fatal(err)
+	}
+	b.write(filepath.Join(b.place.Attic, b.kept[0].Stored), "rotten")
+	if err := Restore(b.src, "m/a.wav", b.place.Attic, b.kept[0], "restore-1"); err == nil || !strings.Contains(err.Error(), "damaged") {
+		t.Errorf("got %v", err)
+	}
+	b.check([]string{"m/a.wav=levelled"}, []string{"m/a.*=rotten"})
+}
+
+// Where no link can be made, the copy is read back and has to be the same.
+func TestCopyInsteadOfLink(t *testing.T) {
+	b := newBench(t)
+	from, to := b.source("a.wav"), filepath.Join(b.src, "b.wav")
+	must(t, copyFile(from, to))
+	info, err := os.Stat(to)
+	if err != nil || !info.ModTime().Equal(sourceTime) {
+		t.Errorf("time %v, %v", info.ModTime(), err)
+	}
+	if got := files(t, b.src); !slices.Equal(got, []string{"a.wav=source", "b.wav=source"}) {
+		t.Errorf("%q", got)
+	}
+}
