@@ -1,0 +1,39 @@
+# Evenshelf. 'make try' shows it at work, 'make test' proves it; both install what is missing on
+# Debian and Ubuntu, or say exactly what to install.
+
+GO ?= go
+VERSION ?= $(shell git describe --tags --always --dirty 2>/dev/null || echo dev)
+BUILD = $(GO) build -trimpath -ldflags '-s -w -X evenshelf/command.Version=$(VERSION)'
+
+.PHONY: help build try test lint bench fuzz clean
+
+help: ## list the targets
+	@grep -hE '^[a-z]+:.*##' $(MAKEFILE_LIST) | sed -E 's/:[^#]*## /\t/' | expand -t 10
+
+build: ## build bin/evenshelf
+	@scripts/need build
+	$(BUILD) -o bin/evenshelf .
+
+try: build ## make a demo shelf, level it, open the dashboard (ARGS=--once to end by itself)
+	@scripts/need try
+	bin/evenshelf try $(ARGS)
+
+test: ## everything that has to pass: format, vet, lint, all tests with the race detector
+	@scripts/need test
+	@test -z "$$(gofmt -l $$(git ls-files '*.go'))" || { echo "not gofmt-ed:"; gofmt -l $$(git ls-files '*.go'); exit 1; }
+	$(GO) vet ./...
+	$(GO) tool staticcheck ./...
+	$(GO) test -race -timeout 9m ./...
+
+bench: ## run every benchmark (x-realtime is how much faster than listening)
+	$(GO) test -run '^$$' -bench . -benchmem ./engine/...
+
+fuzz: ## run each fuzz target for a minute
+	@for pkg in $$($(GO) list ./...); do \
+	  for target in $$($(GO) test -list '^Fuzz' $$pkg | grep '^Fuzz'); do \
+	    $(GO) test -run '^$$' -fuzz "^$$target$$" -fuzztime 60s $$pkg || exit 1; \
+	  done; \
+	done
+
+clean: ## remove what was built
+	rm -rf bin

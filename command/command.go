@@ -1,0 +1,149 @@
+// Package command is Evenshelf's command line: it reads the configuration, wires the rooms together and
+// prints results for people and for programs.
+package command
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io"
+	"log/slog"
+	"os"
+	"path/filepath"
+	"runtime"
+
+	"github.com/alecthomas/kong"
+
+	"evenshelf/engine/level"
+	"evenshelf/engine/media"
+)
+
+// Exit codes.
+const (
+	exitFine  = 0
+	exitSome  = 1 // the work was done, but not for every file
+	exitUsage = 2
+)
+
+// Version of the program; release builds set it with -ldflags -X.
+var Version = "0.1.0"
+
+// cli is every command with its options. Each option can also be given in the environment, as
+// EVENSHELF_ and its name in capitals, and in the TOML file named by --config, under its own name.
+type cli struct {
+	Config   kong.ConfigFlag `help:"TOML file with options, under the names they have here." placeholder:"FILE" type:"existingfile"`
+	Data     string          `help:"Folder for the database and delivered copies." default:"${data}" placeholder:"DIR" type:"path"`
+	Workers  int             `help:"How many recordings to work on at once (0: one a processor)." default:"0"`
+	FFmpeg   string          `name:"ffmpeg" help:"The ffmpeg program to decode and encode with; 'none' to do without." placeholder:"FILE"`
+	LogLevel slog.Level      `help:"How much to log: debug, info, warn or error." default:"info"`
+
+	Serve    serveCmd    `cmd:"" help:"Run the server: the dashboard, the HTTP API and the queue."`
+	Measure  measureCmd  `cmd:"" help:"Measure recordings and print their loudness, range and peaks. Nothing is written."`
+	Level    levelCmd    `cmd:"" help:"Make levelled copies of recordings in another folder. Originals are not touched."`
+	Runs     runsCmd     `cmd:"" help:"List the runs of a server, or show one run with its recordings."`
+	Restore  restoreCmd  `cmd:"" help:"Bring originals back from the attic after a run that replaced them."`
+	Profiles profilesCmd `cmd:"" help:"List the levelling profiles, or show one in words."`
+	Try      tryCmd      `cmd:"" help:"See it work: make a demo shelf, level it and open the dashboard."`
+	Version  versionCmd  `cmd:"" help:"Print the version."`
+}
+
+// app is what every command is handed.
+type app struct {
+	*cli
+	ctx    context.Context
+	stdout io.Writer
+	stderr io.Writer
+	log    *slog.Logger
+}
+
+// statusError carries an exit code that is not an error message's.
+type statusError int
+
+func (s statusError) Error() string { return fmt.Sprintf("exit status %d", int(s)) }
+
+func newParser(c *cli, stdout, stderr io.Writer, exit func(int)) (*kong.Kong, error) {
+	return kong.New(c,
+		kong.Name("evenshelf"),
+		kong.Description("Brings shelves full of recordings to one loudness, and keeps the originals safe."),
+		kong.Writers(stdout, stderr),
+		kong.Exit(exit),
+		kong.DefaultEnvars("EVENSHELF"),
+		kong.Configuration(tomlResolver),
+		kong.ConfigureHelp(kong.HelpOptions{Compact: true}),
+		kong.Vars{"data": dataFolder(), "server": defaultServer},
+	)
+}
+
+// Run reads args, does what they say and returns the exit code: 0 when all went well, 1 when some
+// recordings did not, 2 when the command line could not be understood.
+func Run(ctx context.Context, args []string, stdout, stderr io.Writer) int {
+	var c cli
+	exit := -1
+	parser, err := newParser(&c, stdout, stderr, func(code int) { exit = code })
+	if err != nil {
+		fmt.Fprintln(stderr, "evenshelf:", err)
+		return exitUsage
+	}
+	parsed, err := parser.Parse(args)
+	if exit >= 0 { // --help has been printed
+		return exit
+	}
+	if err != nil {
+		fmt.Fprintf(stderr, "evenshelf: %v\nTry: evenshelf --help\n", err)
+		return exitUsage
+	}
+	a := &app{cli: &c, ctx: ctx, stdout: stdout, stderr: stderr,
+		log: slog.New(slog.NewTextHandler(stderr, &slog.HandlerOptions{Level: c.LogLevel}))}
+	err = parsed.Run(a)
+	var status statusError
+	switch {
+	case err == nil:
+		return exitFine
+	case errors.As(err, &status):
+		return int(status)
+	case errors.As(err, new(usageError)):
+		fmt.Fprintln(stderr, "evenshelf:", err)
+		return exitUsage
+	default:
+		fmt.Fprintln(stderr, "evenshelf:", err)
+		return exitSome
+	}
+}
+
+// usageError is a command line that was understood but cannot be meant.
+type usageError string
+
+func (u usageError) Error() string { return string(u) }
+
+func (a *app) engine() (*level.Engine, error) {
+	tools := media.Find()
+	switch a.FFmpeg {
+	case "":
+	case "none":
+		tools = media.New("")
+	default:
+		if _, err := os.Stat(a.FFmpeg); err != nil {
+			return nil, fmt.Errorf("--ffmpeg: %w", err)
+		}
+		tools = media.New(a.FFmpeg)
+	}
+	return &level.Engine{Media: tools}, nil
+}
+
+func (a *app) workers() int {
+	if a.Workers > 0 {
+		return a.Workers
+	}
+	return runtime.GOMAXPROCS(0)
+}
+
+// dataFolder is evenshelf's own folder among the user's data (XDG Base Directory Specification).
+func dataFolder() string {
+	if dir := os.Getenv("XDG_DATA_HOME"); filepath.IsAbs(dir) {
+		return filepath.Join(dir, "evenshelf")
+	}
+	if home, err := os.UserHomeDir(); err == nil {
+		return filepath.Join(home, ".local", "share", "evenshelf")
+	}
+	return "evenshelf-data"
+}

@@ -1,0 +1,93 @@
+package command
+
+import (
+	"context"
+	"fmt"
+	"os"
+	"path/filepath"
+
+	"evenshelf/engine/level"
+	"evenshelf/store"
+	"evenshelf/worker/discover"
+)
+
+// input is one recording named on the command line, or found in a folder named there.
+type input struct {
+	path string // as it can be opened
+	rel  string // where its copy goes below the output folder, forward slashes
+	size int64
+	err  error // it could not even be looked at
+}
+
+// inputs lists the recordings below paths in order. Where several paths are given, each folder's
+// content keeps the folder's name, so that equal names in two folders stay apart.
+func inputs(ctx context.Context, paths []string) ([]input, error) {
+	var all []input
+	for _, path := range paths {
+		info, err := os.Stat(path)
+		switch {
+		case err != nil:
+			all = append(all, input{path: path, rel: filepath.Base(path), err: err})
+		case !info.IsDir():
+			all = append(all, input{path: path, rel: filepath.Base(path), size: info.Size()})
+		default:
+			prefix := ""
+			if len(paths) > 1 {
+				abs, err := filepath.Abs(path)
+				if err != nil {
+					return nil, err
+				}
+				prefix = filepath.Base(abs) + "/"
+			}
+			err := discover.Walk(ctx, path, "", func(f store.FoundFile) error {
+				all = append(all, input{path: filepath.Join(path, filepath.FromSlash(f.Path)), rel: prefix + f.Path, size: f.Size})
+				return nil
+			})
+			if err != nil {
+				return nil, err
+			}
+		}
+	}
+	return all, nil
+}
+
+// inOrder runs work on every item, n at a time, and hands the results to emit in the order of the items.
+func inOrder[T, R any](ctx context.Context, n int, items []T, work func(context.Context, T) R, emit func(T, R)) error {
+	type turn struct {
+		item   T
+		result chan R
+	}
+	queue := make(chan turn, n-1) // the one being waited for is outside the channel
+	go func() {
+		defer close(queue)
+		slots := make(chan struct{}, n)
+		for _, item := range items {
+			t := turn{item, make(chan R, 1)}
+			select {
+			case queue <- t:
+			case <-ctx.Done():
+				return
+			}
+			slots <- struct{}{}
+			go func() {
+				defer func() { <-slots }()
+				t.result <- work(ctx, t.item)
+			}()
+		}
+	}()
+	for t := range queue {
+		select {
+		case r := <-t.result:
+			emit(t.item, r)
+		case <-ctx.Done():
+			return context.Cause(ctx)
+		}
+	}
+	return context.Cause(ctx)
+}
+
+// summary is one line about a reading for people.
+func summary(a *level.Analysis) string {
+	return fmt.Sprintf("%s LUFS  %s LU range  %s dBTP  %s", figure(float64(a.Integrated), 6),
+		figure(float64(a.Range), 5), figure(float64(a.TruePeak), 6), duration(a.Duration))
+}

@@ -1,0 +1,39 @@
+package command
+
+import (
+	"fmt"
+	"math"
+	"strings"
+	"unicode/utf8"
+)
+
+// figure writes a number to one decimal with a true minus sign, right-aligned; an undefined one is a dash.
+func figure(v float64, width int) string {
+	s := "–"
+	if !math.IsNaN(v) && !math.IsInf(v, 0) {
+		s = strings.Replace(fmt.Sprintf("%.1f", v), "-", "−", 1)
+		if s == "−0.0" {
+			s = "0.0"
+		}
+	}
+	return strings.Repeat(" ", max(0, width-utf8.RuneCountInString(s))) + s
+}
+
+// duration writes seconds as m:ss, or h:mm:ss from an hour on.
+func duration(seconds float64) string {
+	s := int(math.Round(seconds))
+	if s >= 3600 {
+		return fmt.Sprintf("%d:%02d:%02d", s/3600, s/60%60, s%60)
+	}
+	return fmt.Sprintf("%d:%02d", s/60, s%60)
+}
+
+// printable replaces control characters, so that a hostile file name cannot drive the terminal.
+func printable(s string) string {
+	return strings.Map(func(r rune) rune {
+		if r < 0x20 || r == 0x7f || (r >= 0x80 && r < 0xa0) {
+			return '·'
+		}
+		return r
+	}, s)
+}
