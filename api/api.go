@@ -6,9 +6,9 @@
 // events), or into a problem document (problem.go, RFC 9457). An error nobody planned for becomes a bare
 // 500; its cause goes to the log only.
 //
-// The API reads and writes files in three places and no others: it serves sounds from inside a shelf's
-// root or its copies folder, and it takes uploads into the one shelf that lives in the upload folder. Every
-// such path goes through an os.Root, so that neither ".." nor a symbolic link leads out.
+// The API reads and writes files in four places and no others: it serves sounds from inside a shelf's root,
+// its copies folder or its attic, and it takes uploads into the one shelf that lives in the upload folder.
+// Every such path goes through an os.Root, so that neither ".." nor a symbolic link leads out.
 //
 // openapi.yaml describes every route; a test holds the document, the routes and real replies against each
 // other, so that none of the three can drift.
@@ -46,8 +46,12 @@ type Store interface {
 	RecordingHistory(ctx context.Context, recordingID int64) ([]store.Event, error)
 	RecordingJobs(ctx context.Context, recordingID int64) ([]store.Job, error)
 
+	Original(ctx context.Context, recordingID int64) (store.Original, error)
+	Originals(ctx context.Context, q store.OriginalQuery) ([]store.Original, error)
+
 	Runs(ctx context.Context, limit int, before int64) ([]store.Run, error)
 	Run(ctx context.Context, id int64) (store.Run, error)
+	Job(ctx context.Context, id int64) (store.Job, error)
 	Jobs(ctx context.Context, q store.JobQuery) ([]store.Job, error)
 	RunEvents(ctx context.Context, runID, after int64, limit int) ([]store.Event, error)
 	Changed() <-chan struct{}
@@ -59,6 +63,7 @@ type Queue interface {
 	StartRun(ctx context.Context, n store.NewRun) (store.Run, error)
 	CancelRun(ctx context.Context, id int64) (store.Run, error)
 	Scan(ctx context.Context, shelfID int64, folder string) (store.ScanResult, error)
+	Restore(ctx context.Context, recordingID int64) (store.Recording, error)
 }
 
 // Options are the parts the API is made of. Store and Queue are needed; the rest has a working zero value.
@@ -152,6 +157,9 @@ func (a *API) Register(r *gin.Engine) {
 	v1.HEAD("/recordings/:id/sound", a.handle(a.playSound))
 	v1.GET("/recordings/:id/result", a.handle(a.fetchResult))
 	v1.HEAD("/recordings/:id/result", a.handle(a.fetchResult))
+	v1.POST("/recordings/:id/restore", a.handle(a.restore))
+
+	v1.GET("/attic", a.handle(a.listAttic))
 
 	v1.GET("/runs", a.handle(a.listRuns))
 	v1.POST("/runs", a.handle(a.startRun))

@@ -22,6 +22,12 @@ type broken struct{ Store }
 var errDisk = errors.New("disk I/O error at sector 7")
 
 func (broken) Shelves(context.Context) ([]store.ShelfSummary, error) { return nil, errDisk }
+func (broken) Originals(context.Context, store.OriginalQuery) ([]store.Original, error) {
+	return nil, errDisk
+}
+func (broken) Original(context.Context, int64) (store.Original, error) {
+	return store.Original{}, errDisk
+}
 func (broken) HeldCount(context.Context) (int, error)                { return 0, errDisk }
 func (broken) Runs(context.Context, int, int64) ([]store.Run, error) { panic("a bug") }
 

@@ -15,6 +15,7 @@ import (
 	"github.com/goccy/go-yaml"
 
 	"evenshelf/engine/level"
+	"evenshelf/store"
 )
 
 // operations returns the document's operations by "METHOD /path", gin's way of writing the path.
@@ -142,6 +143,9 @@ func TestRepliesMatchDocument(t *testing.T) {
 	run, jobs := h.start()
 	h.finish(jobs[0], level.Done)
 	h.finish(jobs[1], level.Held)
+	replacing, jobs := h.startRun(store.Replace)
+	h.finish(jobs[0], level.Done)
+	h.finish(jobs[1], level.Held)
 	waiting, _ := h.start()
 	newRoot := t.TempDir()
 	done := jobs[0].RecordingID
@@ -175,9 +179,15 @@ func TestRepliesMatchDocument(t *testing.T) {
 		{"HEAD /api/v1/recordings/:id/sound", at("/recordings/%d/sound", done), "", "", 200},
 		{"GET /api/v1/recordings/:id/result", at("/recordings/%d/result", done), "", "", 200},
 		{"HEAD /api/v1/recordings/:id/result", at("/recordings/%d/result", done), "", "", 200},
+		{"GET /api/v1/attic", at("/attic?run=%d", replacing.ID), "", "", 200},
+		{"GET /api/v1/attic", at("/attic?shelf=x"), "", "", 400},
+		{"POST /api/v1/recordings/:id/restore", at("/recordings/%d/restore", done), "", "", 200},
+		{"POST /api/v1/recordings/:id/restore", at("/recordings/%d/restore", done), "", "", 404},
+		{"GET /api/v1/recordings/:id", at("/recordings/%d", done), "", "", 200},
 		{"GET /api/v1/runs", at("/runs"), "", "", 200},
 		{"POST /api/v1/runs", at("/runs"), fmt.Sprintf(`{"shelf_id":%d,"folder":"evening","profile":"rotation","delivery":"measure"}`, h.shelf.ID), "", 201},
 		{"POST /api/v1/runs", at("/runs"), fmt.Sprintf(`{"shelf_id":%d,"recordings":[%d],"profile":"untouched","delivery":"copy"}`, h.shelf.ID, done), "", 201},
+		{"POST /api/v1/runs", at("/runs"), fmt.Sprintf(`{"shelf_id":%d,"profile":"rotation","delivery":"replace"}`, h.shelf.ID), "", 201},
 		{"GET /api/v1/runs/:id", at("/runs/%d", run.ID), "", "", 200},
 		{"POST /api/v1/runs/:id/cancel", at("/runs/%d/cancel", waiting.ID), "", "", 200},
 		{"POST /api/v1/runs/:id/cancel", at("/runs/%d/cancel", waiting.ID), "", "", 409},

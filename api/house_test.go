@@ -3,6 +3,7 @@ package api
 import (
 	"bytes"
 	"context"
+	"crypto/sha256"
 	"encoding/json"
 	"fmt"
 	"io"
@@ -48,6 +49,9 @@ const (
 	loudSong  = "evening/Лодка.flac"
 )
 
+// arrived is what open puts on the shelf.
+var arrived = map[string]string{quietSong: "0123456789", loudSong: "abcdefghij"}
+
 // open starts a house; change may alter the options, for example to wrap the store.
 func open(t *testing.T, change func(*Options)) *house {
 	t.Helper()
@@ -71,8 +75,9 @@ func open(t *testing.T, change func(*Options)) *house {
 		return shelf
 	}
 	h.shelf, h.inbox = add("music"), add("uploads")
-	h.write(h.shelf.Root, quietSong, "0123456789")
-	h.write(h.shelf.Root, loudSong, "abcdefghij")
+	for path, content := range arrived {
+		h.write(h.shelf.Root, path, content)
+	}
 	workers := queue{h.db}
 	if _, err := workers.Scan(ctx, h.shelf.ID, ""); err != nil {
 		t.Fatal(err)
@@ -122,14 +127,19 @@ func (h *house) recording(path string) store.Recording {
 	return page.Recordings[i]
 }
 
-// start begins a run over the music shelf and returns it with its jobs.
+// start begins a run that makes copies of the music shelf and returns it with its jobs.
 func (h *house) start() (store.Run, []store.Job) {
+	h.t.Helper()
+	return h.startRun(store.Copy)
+}
+
+func (h *house) startRun(d store.Delivery) (store.Run, []store.Job) {
 	h.t.Helper()
 	rotation, err := profile.Named("rotation")
 	if err != nil {
 		h.t.Fatal(err)
 	}
-	run, err := queue{h.db}.StartRun(h.t.Context(), store.NewRun{ShelfID: h.shelf.ID, Profile: rotation, Delivery: store.Copy})
+	run, err := queue{h.db}.StartRun(h.t.Context(), store.NewRun{ShelfID: h.shelf.ID, Profile: rotation, Delivery: d})
 	if err != nil {
 		h.t.Fatal(err)
 	}
@@ -140,13 +150,34 @@ func (h *house) start() (store.Run, []store.Job) {
 	return run, jobs
 }
 
-// finish plays the worker for one job: a copy under the job's own path, and readings before and after.
+// finish plays the worker for one job: a file under the job's own path, and readings before and after. What
+// replaces an original is put in its place, and the original into the attic, where its hash names it.
 func (h *house) finish(job store.Job, state level.State) {
 	h.t.Helper()
-	if _, err := h.db.StartJob(h.t.Context(), job.ID); err != nil {
+	work, err := h.db.StartJob(h.t.Context(), job.ID)
+	if err != nil {
 		h.t.Fatal(err)
 	}
-	h.write(h.shelf.Copies, job.Path, "levelled "+job.Path)
+	levelled := "levelled " + job.Path
+	if work.Delivery == store.Replace && state == level.Done {
+		original, err := os.ReadFile(filepath.Join(h.shelf.Root, job.Path))
+		if err != nil {
+			h.t.Fatal(err)
+		}
+		o := store.Original{RecordingID: job.RecordingID, JobID: job.ID, SHA256: hash(string(original)), Levelled: hash(levelled), Size: int64(len(levelled))}
+		o.Stored = o.SHA256 + filepath.Ext(job.Path)
+		h.write(h.shelf.Attic(), o.Stored, string(original))
+		if err := h.db.KeepOriginal(h.t.Context(), o); err != nil {
+			h.t.Fatal(err)
+		}
+		h.write(h.shelf.Root, job.Path, levelled)
+		at := work.Recording.ModifiedAt // kept, so that a scan sees no change
+		if err := os.Chtimes(filepath.Join(h.shelf.Root, job.Path), at, at); err != nil {
+			h.t.Fatal(err)
+		}
+	} else {
+		h.write(h.shelf.Copies, job.Path, levelled)
+	}
 	outcome := level.Outcome{
 		Before:  analysis(-31.26, -12.5),
 		After:   analysis(-18.04, -3),
@@ -158,6 +189,8 @@ func (h *house) finish(job store.Job, state level.State) {
 		h.t.Fatal(err)
 	}
 }
+
+func hash(content string) string { return fmt.Sprintf("%x", sha256.Sum256([]byte(content))) }
 
 func analysis(loudness audio.LUFS, peak audio.DBTP) *level.Analysis {
 	silence := float32(math.Inf(-1))
@@ -185,6 +218,36 @@ func (q queue) StartRun(ctx context.Context, n store.NewRun) (store.Run, error) 
 
 func (q queue) CancelRun(ctx context.Context, id int64) (store.Run, error) {
 	return q.db.CancelRun(ctx, id)
+}
+
+// Restore puts the original back, unless the file in its place is not the levelled one.
+func (q queue) Restore(ctx context.Context, id int64) (store.Recording, error) {
+	fail := func(err error) (store.Recording, error) {
+		return store.Recording{}, fmt.Errorf("restore recording %d: %w", id, err)
+	}
+	o, err := q.db.Original(ctx, id)
+	if err != nil {
+		return fail(err)
+	}
+	shelf, err := q.db.Shelf(ctx, o.ShelfID)
+	if err != nil {
+		return fail(err)
+	}
+	place := filepath.Join(shelf.Root, o.Path)
+	if there, err := os.ReadFile(place); err != nil || hash(string(there)) != o.Levelled {
+		return fail(fmt.Errorf("the file was changed since it was levelled: %w", store.ErrState))
+	}
+	if err := os.Rename(filepath.Join(shelf.Attic(), o.Stored), place); err != nil {
+		return fail(err)
+	}
+	info, err := os.Stat(place)
+	if err != nil {
+		return fail(err)
+	}
+	if err := q.db.Restored(ctx, o, info.Size()); err != nil {
+		return fail(err)
+	}
+	return q.db.Recording(ctx, id)
 }
 
 // Scan takes every visible .wav, .flac and .mp3 for a recording.

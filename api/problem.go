@@ -38,7 +38,7 @@ type kind struct {
 var (
 	kindBadRequest  = kind{"bad-request", "The request cannot be read", http.StatusBadRequest}
 	kindCrossOrigin = kind{"cross-origin", "Another site asked for a change", http.StatusForbidden}
-	kindReadOnly    = kind{"read-only", "Originals are never written to", http.StatusForbidden}
+	kindReadOnly    = kind{"read-only", "This shelf takes no new files", http.StatusForbidden}
 	kindNotFound    = kind{"not-found", "Not found", http.StatusNotFound}
 	kindMethod      = kind{"method-not-allowed", "Method not allowed", http.StatusMethodNotAllowed}
 	kindExists      = kind{"exists", "Already exists", http.StatusConflict}

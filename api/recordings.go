@@ -56,6 +56,7 @@ type recordingDetail struct {
 	After     *store.Reading  `json:"after"`
 	Jobs      []store.Job     `json:"jobs"`
 	History   []store.Event   `json:"history"`
+	Original  *store.Original `json:"original"` // in the attic; nil if none is there
 }
 
 func (a *API) showRecording(c *gin.Context) (int, any, error) {
@@ -75,6 +76,9 @@ func (a *API) showRecording(c *gin.Context) (int, any, error) {
 		return 0, nil, err
 	}
 	if d.History, err = a.Store.RecordingHistory(ctx, id); err != nil {
+		return 0, nil, err
+	}
+	if d.Original, err = a.original(ctx, id); err != nil {
 		return 0, nil, err
 	}
 	d.Jobs, d.History = list(d.Jobs), list(d.History)

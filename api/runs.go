@@ -7,6 +7,7 @@ import (
 	"slices"
 
 	"github.com/gin-gonic/gin"
+	"golang.org/x/sys/unix"
 
 	"evenshelf/store"
 )
@@ -29,10 +30,16 @@ func (a *API) startRun(c *gin.Context) (int, any, error) {
 	ctx := c.Request.Context()
 	if asked.ShelfID >= 1 {
 		// A shelf that is not there is a mistake in the body, not a wrong address.
-		if _, err := a.Store.Shelf(ctx, asked.ShelfID); errors.Is(err, store.ErrNotFound) {
+		shelf, err := a.Store.Shelf(ctx, asked.ShelfID)
+		switch {
+		case errors.Is(err, store.ErrNotFound):
 			errs = append(errs, complaint{"shelf_id", fmt.Sprintf("there is no shelf %d", asked.ShelfID)})
-		} else if err != nil {
+		case err != nil:
 			return 0, nil, err
+		case asked.Delivery == store.Replace:
+			if err := writable(shelf.Root); err != nil {
+				errs = append(errs, complaint{"delivery", fmt.Sprintf("replace has to write to the folder of shelf %q, and that is not possible here (%s)", shelf.Name, err)})
+			}
 		}
 	}
 	if len(errs) > 0 {
@@ -49,6 +56,14 @@ func (a *API) startRun(c *gin.Context) (int, any, error) {
 	return http.StatusCreated, run, nil
 }
 
+var deliveries = []store.Delivery{store.Measure, store.Copy, store.Replace}
+
+// writable reports why this process cannot make and remove files in a folder, nil if it can: a shelf is often
+// mounted read-only, and a run should not start only for each of its recordings to fail.
+func writable(dir string) error {
+	return unix.Faccessat(unix.AT_FDCWD, dir, unix.W_OK|unix.X_OK, unix.AT_EACCESS)
+}
+
 // newRun checks all that can be checked without asking the store.
 func (a *API) newRun(asked runRequest) (n store.NewRun, errs []complaint) {
 	folder, err := folderOf(asked.Folder)
@@ -62,8 +77,8 @@ func (a *API) newRun(asked runRequest) (n store.NewRun, errs []complaint) {
 	if !ok {
 		errs = append(errs, complaint{"profile", fmt.Sprintf("no profile is called %q", asked.Profile)})
 	}
-	if asked.Delivery != store.Measure && asked.Delivery != store.Copy {
-		errs = append(errs, complaint{"delivery", fmt.Sprintf("%q is not one of measure, copy", asked.Delivery)})
+	if !slices.Contains(deliveries, asked.Delivery) {
+		errs = append(errs, complaint{"delivery", fmt.Sprintf("%q is not one of measure, copy, replace", asked.Delivery)})
 	}
 	ids := slices.Clone(asked.Recordings)
 	slices.Sort(ids)

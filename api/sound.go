@@ -1,6 +1,7 @@
 package api
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"io/fs"
@@ -23,7 +24,7 @@ type sound struct {
 	disposition string
 }
 
-// playSound sends the original or the copy for the dashboard's player.
+// playSound sends the recording before or after levelling for the dashboard's player.
 func (a *API) playSound(c *gin.Context) (int, any, error) {
 	version := c.DefaultQuery("version", "before")
 	if version != "before" && version != "after" {
@@ -32,12 +33,12 @@ func (a *API) playSound(c *gin.Context) (int, any, error) {
 	return a.openSound(c, version == "before", "inline")
 }
 
-// fetchResult sends the delivered or held copy for keeping.
+// fetchResult sends the delivered or held result for keeping.
 func (a *API) fetchResult(c *gin.Context) (int, any, error) {
 	return a.openSound(c, false, "attachment")
 }
 
-func (a *API) openSound(c *gin.Context, original bool, disposition string) (int, any, error) {
+func (a *API) openSound(c *gin.Context, before bool, disposition string) (int, any, error) {
 	id, err := pathID(c)
 	if err != nil {
 		return 0, nil, err
@@ -51,15 +52,14 @@ func (a *API) openSound(c *gin.Context, original bool, disposition string) (int,
 	if err != nil {
 		return 0, nil, err
 	}
-	dir, name := shelf.Root, recording.Path
-	if !original {
-		jobs, err := a.Store.RecordingJobs(ctx, id)
-		if err != nil {
-			return 0, nil, err
-		}
-		if dir, name = shelf.Copies, latestOutput(jobs); name == "" {
-			return 0, nil, notFound(fmt.Sprintf("no copy of recording %d has been made", id))
-		}
+	var dir, name string
+	if before {
+		dir, name, err = a.fileBefore(ctx, shelf.Shelf, recording)
+	} else {
+		dir, name, err = a.fileAfter(ctx, shelf.Shelf, recording)
+	}
+	if err != nil {
+		return 0, nil, err
 	}
 	if disposition == "attachment" {
 		// RFC 6266: FormatMediaType writes filename*, percent-encoded, where the name is not plain ASCII.
@@ -73,15 +73,77 @@ func (a *API) openSound(c *gin.Context, original bool, disposition string) (int,
 	return http.StatusOK, sound{file, info, disposition}, nil
 }
 
-// latestOutput is the file that the recording's newest delivering job made, "" if there is none.
-func latestOutput(jobs []store.Job) (output string) {
-	newest := int64(-1)
-	for _, j := range jobs {
-		if j.Output != "" && j.ID > newest {
-			newest, output = j.ID, j.Output
+// fileBefore is the file that the before reading is of, so that ear and eye judge the same sound: the one on
+// the shelf or, where a levelled file took its place, the original in the attic.
+func (a *API) fileBefore(ctx context.Context, shelf store.Shelf, r store.Recording) (dir, name string, err error) {
+	original, err := a.original(ctx, r.ID)
+	if err != nil {
+		return "", "", err
+	}
+	measured := false
+	if original != nil {
+		if measured, err = a.wasMeasured(ctx, r, *original); err != nil {
+			return "", "", err
 		}
 	}
-	return output
+	if measured {
+		return shelf.Attic(), original.Stored, nil
+	}
+	return shelf.Root, r.Path, nil
+}
+
+// wasMeasured reports whether the before reading is of the original in the attic: it was taken by the job that
+// moved it there, or by a later one that levelled the original again but was held or failed, and so left the
+// first levelled file in its place. Every other job measures the file on the shelf.
+func (a *API) wasMeasured(ctx context.Context, r store.Recording, original store.Original) (bool, error) {
+	reading, _, err := a.Store.Readings(ctx, r.ID)
+	if err != nil || reading == nil || reading.JobID == original.JobID {
+		return err == nil && reading != nil, err
+	}
+	job, err := a.Store.Job(ctx, reading.JobID)
+	if err != nil || job.State == store.Done || r.Size != original.Size { // another size: somebody's new file
+		return false, err
+	}
+	run, err := a.Store.Run(ctx, job.RunID)
+	return run.Delivery == store.Replace, err
+}
+
+// fileAfter is what the recording's newest delivering job made. What took the original's place is gone once
+// the original is brought back or the file is changed; both clear the after reading.
+func (a *API) fileAfter(ctx context.Context, shelf store.Shelf, r store.Recording) (dir, name string, err error) {
+	jobs, err := a.Store.RecordingJobs(ctx, r.ID)
+	if err != nil {
+		return "", "", err
+	}
+	job, ok := latestDelivery(jobs)
+	if !ok {
+		return "", "", notFound(fmt.Sprintf("no copy of recording %d has been made", r.ID))
+	}
+	run, err := a.Store.Run(ctx, job.RunID)
+	if err != nil {
+		return "", "", err
+	}
+	if run.Delivery != store.Replace || job.State != store.Done {
+		return shelf.Copies, job.Output, nil
+	}
+	_, reading, err := a.Store.Readings(ctx, r.ID)
+	if err != nil {
+		return "", "", err
+	}
+	if reading == nil || reading.JobID != job.ID {
+		return "", "", notFound(fmt.Sprintf("recording %d has no levelled file now", r.ID))
+	}
+	return shelf.Root, job.Output, nil
+}
+
+// latestDelivery is the recording's newest job that delivered a file.
+func latestDelivery(jobs []store.Job) (latest store.Job, ok bool) {
+	for _, j := range jobs {
+		if j.Output != "" && (!ok || j.ID > latest.ID) {
+			latest, ok = j, true
+		}
+	}
+	return latest, ok
 }
 
 var errNotAFile = errors.New("not a regular file")

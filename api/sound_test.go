@@ -72,15 +72,16 @@ func TestResultIsTheLatestCopy(t *testing.T) {
 			t.Errorf("sound after: %s", after.body)
 		}
 	}
-	if got := latestOutput([]store.Job{{ID: 3}, {ID: 2, Output: "b"}, {ID: 1, Output: "a"}}); got != "b" {
-		t.Errorf("latest output %q", got)
+	if got, ok := latestDelivery([]store.Job{{ID: 3}, {ID: 2, Output: "b"}, {ID: 1, Output: "a"}}); !ok || got.Output != "b" {
+		t.Errorf("latest delivery %+v", got)
 	}
 }
 
-// tampered is a store whose rows name files they should not.
+// tampered is a store whose rows name files they should not: one copied recording, or one that was replaced.
 type tampered struct {
 	Store
-	path *string
+	path     *string
+	delivery *store.Delivery
 }
 
 func (s tampered) Recording(ctx context.Context, id int64) (store.Recording, error) {
@@ -90,16 +91,32 @@ func (s tampered) Recording(ctx context.Context, id int64) (store.Recording, err
 }
 
 func (s tampered) RecordingJobs(context.Context, int64) ([]store.Job, error) {
-	return []store.Job{{ID: 1, Output: *s.path}}, nil
+	return []store.Job{{ID: 1, State: store.Done, Output: *s.path}}, nil
+}
+
+func (s tampered) Run(context.Context, int64) (store.Run, error) {
+	return store.Run{Delivery: *s.delivery}, nil
+}
+
+func (s tampered) Readings(context.Context, int64) (before, after *store.Reading, err error) {
+	return &store.Reading{JobID: 1}, &store.Reading{JobID: 1}, nil
+}
+
+func (s tampered) Original(context.Context, int64) (store.Original, error) {
+	if *s.delivery != store.Replace {
+		return store.Original{}, store.ErrNotFound
+	}
+	return store.Original{JobID: 1, Stored: *s.path}, nil
 }
 
 func TestNoWayOutOfTheShelf(t *testing.T) {
 	var path string
-	h := open(t, func(o *Options) { o.Store = tampered{o.Store, &path} })
+	var delivery store.Delivery
+	h := open(t, func(o *Options) { o.Store = tampered{o.Store, &path, &delivery} })
 	secret := filepath.Join(filepath.Dir(h.shelf.Root), "secret.wav")
 	h.write(filepath.Dir(secret), "secret.wav", "a secret")
-	for _, dir := range []string{h.shelf.Root, h.shelf.Copies} {
-		h.write(dir, "inside.wav", "fine")
+	for _, dir := range []string{h.shelf.Root, h.shelf.Copies, h.shelf.Attic()} {
+		h.write(dir, "inside.wav", "fine "+dir)
 		for name, target := range map[string]string{"link.wav": secret, "up.wav": "../secret.wav", "dir": filepath.Dir(secret), "loop.wav": "loop.wav",
 			"good.wav": "inside.wav", "device.wav": "/dev/zero"} {
 			if err := os.Symlink(target, filepath.Join(dir, name)); err != nil {
@@ -115,10 +132,22 @@ func TestNoWayOutOfTheShelf(t *testing.T) {
 		}
 		defer socket.Close()
 	}
-	id := int64(1)
-	for _, address := range []string{at("/recordings/%d/sound", id), at("/recordings/%d/sound?version=after", id), at("/recordings/%d/result", id)} {
+	for _, c := range []struct {
+		delivery store.Delivery
+		address  string
+		dir      string
+	}{
+		{store.Copy, at("/recordings/1/sound"), h.shelf.Root},
+		{store.Copy, at("/recordings/1/sound?version=after"), h.shelf.Copies},
+		{store.Copy, at("/recordings/1/result"), h.shelf.Copies},
+		{store.Replace, at("/recordings/1/sound"), h.shelf.Attic()},
+		{store.Replace, at("/recordings/1/sound?version=after"), h.shelf.Root},
+		{store.Replace, at("/recordings/1/result"), h.shelf.Root},
+	} {
+		address := c.address
+		delivery = c.delivery
 		for _, path = range []string{"inside.wav", "good.wav", "./inside.wav"} {
-			if r := h.get(address); r.status != 200 || string(r.body) != "fine" {
+			if r := h.get(address); r.status != 200 || string(r.body) != "fine "+c.dir {
 				t.Errorf("%s for %q: %d %s", address, path, r.status, r.body)
 			}
 		}

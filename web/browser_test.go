@@ -141,6 +141,8 @@ func TestInBrowser(t *testing.T) {
 		eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] button[type=submit]").click()`)
 		until(t, ctx, `location.pathname === "/runs/12"`)
 	})
+	t.Run("replacing takes a second step", func(t *testing.T) { testReplacing(t, ctx, url, f) })
+	t.Run("an original is brought back", func(t *testing.T) { testRestore(t, ctx) })
 	t.Run("timeline and player", func(t *testing.T) {
 		do(t, ctx, chromedp.Navigate(url+"/recordings/18"))
 		until(t, ctx, `!!document.querySelector(".uplot canvas") && !document.querySelector(".player-row").hidden`)
@@ -190,6 +192,65 @@ func TestInBrowser(t *testing.T) {
 		eval[chromedp.Void](t, ctx, `document.querySelector(".veil [data-part=again]").click()`)
 		until(t, ctx, drawn)
 	})
+}
+
+func testReplacing(t *testing.T, ctx context.Context, url string, f *fake) {
+	for len(f.asked) > 0 {
+		<-f.asked // those of other tests
+	}
+	do(t, ctx, chromedp.Navigate(url+"/"))
+	until(t, ctx, `!document.querySelector("[data-component=newrun]").disabled`)
+	open := func() {
+		eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=newrun]").click()`)
+		until(t, ctx, `document.querySelectorAll("dialog[open] input[name=profile]").length === 2 && !document.querySelector("dialog[open] [type=submit]").disabled`)
+	}
+	press := func(what string) {
+		eval[chromedp.Void](t, ctx, `document.querySelector('dialog[open] `+what+`').click()`)
+	}
+	sure := func(state string) bool {
+		return eval[bool](t, ctx, `(({ checked, required, offsetParent }) => `+state+`)(document.querySelector("[name=sure]"))`)
+	}
+	open()
+	if !sure("!offsetParent && !required") {
+		t.Error("the second step is asked for before replace is chosen")
+	}
+	press("[value=replace]")
+	press("[type=submit]")
+	if len(f.asked) > 0 || !sure("offsetParent && required && !checked") || !eval[bool](t, ctx, `document.querySelector("dialog").open`) {
+		t.Error("a run that replaces was started in one step")
+	}
+	// Neither another choice nor another look at the dialog leaves a yes behind.
+	press("[name=sure]")
+	press("[value=copy]")
+	press("[value=replace]")
+	if !sure("!checked") {
+		t.Error("the yes outlived another choice")
+	}
+	press("[name=sure]")
+	press("[data-part=close]")
+	open()
+	if !sure("offsetParent && required && !checked") {
+		t.Error("the yes outlived the dialog")
+	}
+	press("[name=sure]")
+	press("[type=submit]")
+	until(t, ctx, `location.pathname === "/runs/12"`)
+	if body := <-f.asked; !strings.Contains(body, `"delivery":"replace"`) || len(f.asked) > 0 {
+		t.Errorf("asked for %s and %d more", body, len(f.asked))
+	}
+}
+
+func testRestore(t *testing.T, ctx context.Context) {
+	f := newReplaced(40)
+	do(t, ctx, chromedp.Navigate(serve(t, f)+"/recordings/2"))
+	until(t, ctx, `document.querySelector("[data-component=restore]")?.disabled === false`)
+	eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=restore]").click()`)
+	f.apiDown.Store(true)
+	eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [type=submit]").click()`)
+	until(t, ctx, `document.querySelector("dialog[open] .says").textContent === "The file was changed since it was levelled."`)
+	f.apiDown.Store(false)
+	eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [type=submit]").click()`)
+	until(t, ctx, `!!document.querySelector(".lede")?.textContent.includes("The original is back in its place") && !document.querySelector("[data-component=restore]")`)
 }
 
 // testMaths runs the chart's pure functions in the engine that will run them.

@@ -13,6 +13,7 @@ import (
 	"slices"
 	"strconv"
 	"strings"
+	"sync"
 	"sync/atomic"
 	"time"
 
@@ -35,6 +36,9 @@ type fake struct {
 	recs      []store.Recording
 	runList   []store.Run
 	jobList   []store.Job
+	attic     []store.Original
+	asked     chan string // bodies of the runs that were asked for
+	mu        sync.Mutex  // held where a restore changes what a page shows
 	broken    error       // returned by every call when set
 	apiDown   atomic.Bool // the spines answer with a problem
 }
@@ -55,7 +59,7 @@ var hostile = []string{
 // newFake invents a shelf of n recordings, most of them levelled by one run that is still at work.
 func newFake(n int) *fake {
 	rng := rand.New(rand.NewPCG(7, uint64(n)))
-	f := &fake{}
+	f := &fake{asked: make(chan string, 9)}
 	run := store.Run{ID: 12, ShelfID: 1, ShelfName: "evening-music", Profile: "rotation", ProfileVersion: "5f0c2a91b3de", Target: -18,
 		Delivery: store.Copy, State: store.RunWorking, CreatedAt: noon.Add(-40 * time.Minute), Jobs: n, BytesTotal: int64(n) * 41e6}
 	started := noon.Add(-38 * time.Minute)
@@ -72,6 +76,51 @@ func newFake(n int) *fake {
 	f.runList = []store.Run{run}
 	f.shelfList = []store.ShelfSummary{sum}
 	return f
+}
+
+// newReplaced is newFake(n) after a run that put its results in the originals' place, and has ended. The
+// first recording's original was brought back since.
+func newReplaced(n int) *fake {
+	f := newFake(n)
+	run := &f.runList[0]
+	run.Delivery, run.State, run.FinishedAt = store.Replace, store.RunFinished, new(noon)
+	for _, j := range f.jobList {
+		if j.State == store.Done {
+			f.attic = append(f.attic, store.Original{RecordingID: j.RecordingID, ShelfID: 1, RunID: run.ID, JobID: j.ID, Path: j.Path, KeptAt: noon.Add(-29 * time.Minute)})
+		}
+	}
+	f.restore(f.attic[0].RecordingID)
+	return f
+}
+
+// restore plays the worker that brings an original back.
+func (f *fake) restore(id int64) bool {
+	f.mu.Lock()
+	defer f.mu.Unlock()
+	kept := len(f.attic)
+	f.attic = slices.DeleteFunc(f.attic, func(o store.Original) bool { return o.RecordingID == id })
+	for i := range f.recs {
+		if r := &f.recs[i]; r.ID == id {
+			r.State, r.Reason, r.After = "", "", nil
+		}
+	}
+	return len(f.attic) < kept
+}
+
+func (f *fake) Original(_ context.Context, id int64) (store.Original, error) {
+	f.mu.Lock()
+	defer f.mu.Unlock()
+	return pick(f.broken, f.attic, func(o store.Original) bool { return o.RecordingID == id })
+}
+
+func (f *fake) Originals(_ context.Context, q store.OriginalQuery) ([]store.Original, error) {
+	var list []store.Original
+	for _, o := range f.attic {
+		if o.RunID == q.RunID && len(list) < q.Limit {
+			list = append(list, o)
+		}
+	}
+	return list, f.broken
 }
 
 func (f *fake) invent(rng *rand.Rand, i, n int) (store.Recording, store.Job) {
@@ -175,6 +224,8 @@ func (f *fake) Shelf(_ context.Context, id int64) (store.ShelfSummary, error) {
 }
 
 func (f *fake) Recording(_ context.Context, id int64) (store.Recording, error) {
+	f.mu.Lock()
+	defer f.mu.Unlock()
 	return pick(f.broken, f.recs, func(r store.Recording) bool { return r.ID == id })
 }
 
@@ -233,10 +284,15 @@ func (f *fake) RecordingJobs(_ context.Context, id int64) ([]store.Job, error) {
 }
 
 func (f *fake) RecordingHistory(_ context.Context, id int64) ([]store.Event, error) {
-	return []store.Event{
+	events := []store.Event{
 		{ID: 1, At: noon.Add(-49 * time.Hour), RecordingID: id, What: "found", Words: "found on the shelf"},
 		{ID: 2, At: noon.Add(-29 * time.Minute), RunID: 12, RecordingID: id, What: "done", Words: "levelled with rotation by run 12"},
-	}, f.broken
+	}
+	r, err := f.Recording(context.Background(), id)
+	if err == nil && r.State == "" && f.runList[0].Delivery == store.Replace {
+		events = append(events, store.Event{ID: 3, At: noon.Add(-time.Minute), RecordingID: id, What: "restored", Words: "the original is back, bit for bit"})
+	}
+	return events, f.broken
 }
 
 func (f *fake) Readings(ctx context.Context, id int64) (before, after *store.Reading, err error) {
@@ -285,7 +341,19 @@ func (f *fake) api(r gin.IRouter) {
 			"before_p95", "before_peak", "after_lufs", "after_p10", "after_p95", "after_peak"}})
 	})
 	g.GET("/profiles", func(c *gin.Context) { c.JSON(200, gin.H{"profiles": profile.Builtin()}) })
-	g.POST("/runs", func(c *gin.Context) { c.JSON(201, f.runList[0]) })
+	g.POST("/runs", func(c *gin.Context) {
+		body, _ := c.GetRawData()
+		f.asked <- string(body)
+		c.JSON(201, f.runList[0])
+	})
+	g.POST("/recordings/:id/restore", func(c *gin.Context) {
+		n, _ := strconv.ParseInt(c.Param("id"), 10, 64)
+		if f.apiDown.Load() || !f.restore(n) {
+			c.Data(409, "application/problem+json", []byte(`{"title":"state","detail":"The file was changed since it was levelled."}`))
+			return
+		}
+		c.JSON(200, f.recs[0])
+	})
 	g.POST("/shelves/:id/scan", func(c *gin.Context) { c.JSON(200, store.ScanResult{Found: len(f.recs)}) })
 	g.GET("/recordings/:id/timeline", func(c *gin.Context) {
 		n, _ := strconv.ParseInt(c.Param("id"), 10, 64)

@@ -56,7 +56,7 @@ func TestWhen(t *testing.T) {
 
 func TestTold(t *testing.T) {
 	done := store.Recording{State: store.Done, Before: &store.Figures{}, After: &store.Figures{Integrated: new(-18.02)}}
-	copied := &store.Run{Delivery: store.Copy}
+	copied, replacing := &store.Run{Delivery: store.Copy}, &store.Run{Delivery: store.Replace}
 	for _, c := range []struct {
 		r    store.Recording
 		run  *store.Run
@@ -66,6 +66,7 @@ func TestTold(t *testing.T) {
 		{done, copied, &level.Plan{Gain: 11.3, Ceiling: -1, Limit: true}, "Lifted by 11.3 dB to −18.0 LUFS; peaks held under −1.0 dBTP."},
 		{done, copied, &level.Plan{Gain: -4.26}, "Lowered by 4.3 dB to −18.0 LUFS."},
 		{done, copied, &level.Plan{Untouched: true}, "Already within the profile: copied byte for byte, nothing changed."},
+		{done, replacing, &level.Plan{Untouched: true}, "Already within the profile: kept byte for byte, nothing changed."},
 		{done, copied, &level.Plan{Gain: 0.01}, "Left at its level to −18.0 LUFS."},
 		{done, &store.Run{Delivery: store.Measure}, nil, "Measured only; nothing was written."},
 		{store.Recording{}, nil, nil, "Not measured yet: it waits for a first run."},

@@ -1,6 +1,7 @@
 package web
 
 import (
+	"errors"
 	"net/http"
 	"net/url"
 	"strconv"
@@ -168,6 +169,7 @@ type recordingPage struct {
 	Last          *store.Job
 	Jobs          []store.Job
 	History       []store.Event
+	Original      *store.Original // in the attic; nil if none is there
 }
 
 func (s *Site) recording(c *gin.Context) {
@@ -196,6 +198,12 @@ func (s *Site) findRecording(c *gin.Context, n int64) (p recordingPage, err erro
 		return p, err
 	}
 	if p.History, err = s.store.RecordingHistory(ctx, n); err != nil {
+		return p, err
+	}
+	switch original, err := s.store.Original(ctx, n); {
+	case err == nil:
+		p.Original = &original
+	case !errors.Is(err, store.ErrNotFound):
 		return p, err
 	}
 	for i := range p.Jobs {

@@ -120,6 +120,7 @@ type runPage struct {
 	runView
 	List    []store.Job
 	AtWork  []store.Job
+	Attic   bool // originals that the run replaced are in the attic
 	Filters []filter
 	Only    store.JobState // the state the list is narrowed to
 	First   string
@@ -177,6 +178,13 @@ func (s *Site) findRun(c *gin.Context, n int64) (p runPage, err error) {
 		if p.AtWork, err = s.store.Jobs(ctx, store.JobQuery{RunID: n, State: store.Working, Limit: 12}); err != nil {
 			return p, err
 		}
+	}
+	if r.Delivery == store.Replace {
+		kept, err := s.store.Originals(ctx, store.OriginalQuery{RunID: n, Limit: 1})
+		if err != nil {
+			return p, err
+		}
+		p.Attic = len(kept) > 0
 	}
 	if after > 0 {
 		p.First = jobsURL(n, p.Only, 0)

@@ -8,10 +8,6 @@ import (
 	"evenshelf/store"
 )
 
-// uploadShelf is the one shelf that takes new files; every other holds originals and is only read. The server
-// makes it at its first start, so while it is empty it is a form rather than a shelf.
-const uploadShelf = "uploads"
-
 // shelfView is a shelf as its section of a page shows it.
 type shelfView struct {
 	store.ShelfSummary
@@ -22,7 +18,7 @@ type shelfView struct {
 	Tolerance    *float64 // of the profile that levelled it last, LU
 	Measurements bool     // the last run only measured
 	Whole        bool     // the shelf has a page, or the start page, to itself
-	TakesUploads bool
+	TakesUploads bool     // it is the one shelf that does
 }
 
 func viewShelf(s store.ShelfSummary) shelfView {
@@ -33,7 +29,7 @@ func viewShelf(s store.ShelfSummary) shelfView {
 		Spread:       spread(s.Quietest, s.Loudest),
 		SpreadAfter:  spread(s.QuietestAfter, s.LoudestAfter),
 	}
-	v.TakesUploads = s.Name == uploadShelf
+	v.TakesUploads = s.Name == store.UploadShelf
 	if s.LastRun != nil {
 		v.Tolerance = tolerance(s.LastRun.Profile)
 		v.Measurements = s.LastRun.Delivery == store.Measure
@@ -43,7 +39,9 @@ func viewShelf(s store.ShelfSummary) shelfView {
 
 type shelvesPage struct {
 	Shelves []shelfView
-	Uploads *shelfView // the upload shelf while it is empty
+	// Uploads is the upload shelf while it is empty: the server makes it at its first start, and until
+	// something is in it, it is a form rather than a shelf.
+	Uploads *shelfView
 }
 
 func (s *Site) shelves(c *gin.Context) {

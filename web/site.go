@@ -24,6 +24,8 @@ type Store interface {
 	Runs(ctx context.Context, limit int, before int64) ([]store.Run, error)
 	Run(ctx context.Context, id int64) (store.Run, error)
 	Jobs(ctx context.Context, q store.JobQuery) ([]store.Job, error)
+	Original(ctx context.Context, recordingID int64) (store.Original, error)
+	Originals(ctx context.Context, q store.OriginalQuery) ([]store.Original, error)
 }
 
 // Site serves the dashboard's pages and static files.

@@ -68,6 +68,7 @@ func everyPage() map[string]struct {
 			"/recordings?run=12&q=amber", "/recordings/1", "/recordings/2", "/recordings/3", "/recordings/14", "/recordings/18", "/recordings/42", "/recordings/41"}},
 		"finished":   {finished, []string{"/runs/12", "/"}},
 		"waiting":    {waiting, []string{"/runs/12"}},
+		"replaced":   {newReplaced(40), []string{"/", "/shelves/1", "/runs", "/runs/12", "/recordings/1", "/recordings/2", "/recordings/18"}},
 		"cancelled":  {cancelled, []string{"/runs/12"}},
 		"unmeasured": {unmeasured, []string{"/"}},
 		"fresh":      {fresh, []string{"/", "/shelves/1"}},
@@ -134,10 +135,19 @@ func TestSentences(t *testing.T) {
 		{"full", "/runs/12", "87 of 93 recordings ended, about 4 minutes left."},
 		{"full", "/runs/12?state=held", "clipped at the source 214 times; the copy may sound harsh"},
 		{"full", "/recordings/18", "Held for a listen: clipped at the source 214 times; the copy may sound harsh. Lowered by 6.4 dB to −17.9 LUFS."},
-		{"full", "/recordings/42", "Could not be levelled: the file ends in the middle of its header. The original is as it was."},
+		{"full", "/recordings/42", "Could not be levelled: the file ends in the middle of its header. The file on the shelf is as it was."},
 		{"full", "/recordings/14", "Measured, not levelled yet."},
 		{"full", "/recordings?run=12&q=amber", "of run 12"},
 		{"finished", "/runs/12", "34 of 39 recordings done, 1 held for a listen."},
+		{"full", "/shelves/1", "/srv/radio/evening-even.attic"},
+		{"full", "/runs/12", "levelled copies; originals not touched."},
+		{"replaced", "/runs/12", "levelled files in place of the originals, which go to the attic first."},
+		{"replaced", "/runs/12", "The originals it replaced are in the attic; a recording's page brings its own back, evenshelf restore --of-run 12 all of them."},
+		{"replaced", "/recordings/2", "The original is in the attic; the levelled file of run 12 took its place today at 11:31."},
+		{"replaced", "/recordings/2", "Delivered in the original's place."},
+		{"replaced", "/recordings/18", "The file on the shelf was not replaced."},
+		{"replaced", "/recordings/1", "The original is back in its place, bit for bit."},
+		{"replaced", "/recordings/1", "the original is back, bit for bit"},
 		{"waiting", "/runs/12", "recordings wait for the first free hand."},
 		{"cancelled", "/runs/12", "what was done stays done."},
 		{"unmeasured", "/", "5 recordings found, none measured yet."},
@@ -154,6 +164,34 @@ func TestSentences(t *testing.T) {
 		got := words(body)
 		if !strings.Contains(got, c.want) {
 			t.Errorf("%s %s does not say %q", c.state, c.path, c.want)
+		}
+	}
+}
+
+// Where a sentence would not be true, it is not said.
+func TestSentencesThatAreNotSaid(t *testing.T) {
+	empty := newReplaced(40)
+	empty.attic = nil
+	all := everyPage()
+	all["emptied"] = struct {
+		store *fake
+		paths []string
+	}{store: empty}
+	for _, c := range []struct{ state, path, not string }{
+		{"full", "/runs/12", "attic"},
+		{"full", "/recordings/18", "attic"},
+		{"full", "/recordings/18", "not replaced"},
+		{"replaced", "/runs/12", "not touched"},
+		{"replaced", "/recordings/1", "attic"},
+		{"replaced", "/recordings/1", "Delivered"},
+		{"replaced", "/recordings/18", "attic"},
+		{"replaced", "/recordings/18", "in the original's place"},
+		{"emptied", "/runs/12", "are in the attic"},
+		{"emptied", "/recordings/2", "Bring the original back"},
+	} {
+		w, body := fetch(t, newSite(t, all[c.state].store), c.path)
+		if w.Code != 200 || strings.Contains(words(body), c.not) {
+			t.Errorf("%s %s: status %d, and it says %q", c.state, c.path, w.Code, c.not)
 		}
 	}
 }

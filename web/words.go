@@ -31,6 +31,8 @@ func deliveryWords(d store.Delivery) string {
 		return "only measured; nothing written"
 	case store.Copy:
 		return "levelled copies; originals not touched"
+	case store.Replace:
+		return "levelled files in place of the originals, which go to the attic first"
 	}
 	return string(d)
 }
@@ -61,28 +63,35 @@ func told(r store.Recording, run *store.Run, job *store.Job) string {
 		if r.Before == nil {
 			return "Not measured yet: it waits for a first run."
 		}
+		if replaced(run) && job != nil && job.State == store.Done {
+			return "The original is back in its place, bit for bit."
+		}
 		return "Measured, not levelled yet."
 	case store.Waiting:
 		return "Waiting for its turn in the queue."
 	case store.Working:
 		return "Being worked on right now."
 	case store.Failed:
-		return "Could not be levelled: " + reasonOr(r.Reason, "the reason was not recorded") + ". The original is as it was."
+		return "Could not be levelled: " + reasonOr(r.Reason, "the reason was not recorded") + ". The file on the shelf is as it was."
 	case store.Cancelled:
-		return "Cancelled before its turn came. The original is as it was."
+		return "Cancelled before its turn came. The file on the shelf is as it was."
 	}
 	if run != nil && run.Delivery == store.Measure {
 		return "Measured only; nothing was written." + because(r.Reason)
 	}
-	did := action(r, job)
+	did := action(r, run, job)
 	if r.State == store.Held {
-		return "Held for a listen: " + reasonOr(r.Reason, "something about the copy is in doubt") + ". " + did
+		did = "Held for a listen: " + reasonOr(r.Reason, "something about the copy is in doubt") + ". " + did
+		if replaced(run) {
+			did += " The file on the shelf was not replaced."
+		}
+		return did
 	}
 	return did + because(r.Reason)
 }
 
 // action is the levelling itself: "Lifted by 11.3 dB to −18.0 LUFS; peaks held under −1.0 dBTP."
-func action(r store.Recording, job *store.Job) string {
+func action(r store.Recording, run *store.Run, job *store.Job) string {
 	if job == nil || job.Plan == nil {
 		if r.After != nil && r.After.Integrated != nil {
 			return fmt.Sprintf("Now at %s LUFS.", number(*r.After.Integrated, 1))
@@ -90,6 +99,9 @@ func action(r store.Recording, job *store.Job) string {
 		return "Finished."
 	}
 	plan := job.Plan
+	if plan.Untouched && replaced(run) {
+		return "Already within the profile: kept byte for byte, nothing changed."
+	}
 	if plan.Untouched {
 		return "Already within the profile: copied byte for byte, nothing changed."
 	}
@@ -112,6 +124,9 @@ func action(r store.Recording, job *store.Job) string {
 	b.WriteString(".")
 	return b.String()
 }
+
+// replaced says whether a run puts its results in the place of originals.
+func replaced(run *store.Run) bool { return run != nil && run.Delivery == store.Replace }
 
 func reasonOr(reason, otherwise string) string {
 	if reason == "" {

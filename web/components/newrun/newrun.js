@@ -22,9 +22,20 @@ export function mount(button) {
     }
   }
 
+  // Replacing is the one delivery that changes the shelf: it takes a second step, anew each time.
+  const { sure } = form.elements;
+  function ask() {
+    const replaces = form.elements.delivery.value === "replace";
+    part.sure.hidden = !replaces;
+    sure.required = replaces;
+    sure.checked = false;
+  }
+  for (const choice of form.elements.delivery) choice.addEventListener("change", ask);
+
   button.disabled = false;
   button.addEventListener("click", () => {
     say(says, "");
+    ask();
     dialog.showModal();
     offer();
   });

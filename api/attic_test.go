@@ -1,0 +1,186 @@
+package api
+
+import (
+	"errors"
+	"os"
+	"runtime"
+	"strings"
+	"syscall"
+	"testing"
+
+	"evenshelf/engine/level"
+	"evenshelf/store"
+)
+
+// The sound before is the one that was measured before, wherever the file has gone; likewise after.
+func TestReplacedRecordingPlaysItsOriginal(t *testing.T) {
+	h := open(t, nil)
+	_, jobs := h.startRun(store.Replace)
+	for i, j := range jobs { // the first is replaced, the second held
+		h.finish(j, []level.State{level.Done, level.Held}[i])
+	}
+	want := func(j store.Job, before, after string) {
+		t.Helper()
+		for address, want := range map[string]string{
+			at("/recordings/%d/sound", j.RecordingID):               before,
+			at("/recordings/%d/sound?version=after", j.RecordingID): after,
+			at("/recordings/%d/result", j.RecordingID):              after,
+		} {
+			r := h.get(address)
+			if want == "" {
+				r.wantProblem(t, kindNotFound, "no levelled file now")
+			} else if r.status != 200 || string(r.body) != want {
+				t.Errorf("%s: %d %q, want %q", address, r.status, r.body, want)
+			}
+		}
+	}
+	replaced, held := jobs[0], jobs[1]
+	want(replaced, arrived[replaced.Path], "levelled "+replaced.Path)
+	want(held, arrived[held.Path], "levelled "+held.Path)
+	if there, err := os.ReadFile(h.shelf.Root + "/" + held.Path); err != nil || string(there) != arrived[held.Path] {
+		t.Errorf("the held recording's place holds %q, %v", there, err)
+	}
+
+	// Replaced once more, it is levelled from its original; what is held then leaves the first result in its place.
+	_, jobs = h.startRun(store.Replace)
+	h.finish(jobs[0], level.Held)
+	want(replaced, arrived[replaced.Path], "levelled "+replaced.Path)
+	if there, err := os.ReadFile(h.shelf.Root + "/" + replaced.Path); err != nil || string(there) != "levelled "+replaced.Path {
+		t.Errorf("the replaced recording's place holds %q, %v", there, err)
+	}
+
+	// A copy made later is of the levelled file, and so is the reading before it.
+	_, jobs = h.start()
+	h.finish(jobs[0], level.Done)
+	want(replaced, "levelled "+replaced.Path, "levelled "+replaced.Path)
+}
+
+func TestRestoredRecordingIsAsItWas(t *testing.T) {
+	h := open(t, nil)
+	run, jobs := h.startRun(store.Replace)
+	h.finish(jobs[0], level.Done)
+	h.finish(jobs[1], level.Done)
+	path := at("/recordings/%d", jobs[0].RecordingID)
+	var d recordingDetail
+	h.get(path).into(t, 200, &d)
+	if o := d.Original; o == nil || o.Path != jobs[0].Path || o.RunID != run.ID || o.SHA256 != hash(arrived[o.Path]) {
+		t.Errorf("original %+v", o)
+	}
+
+	var back store.Recording
+	h.ask("POST", path+"/restore", "").into(t, 200, &back)
+	if back.State != "" || back.After != nil || back.Before == nil || back.Size != 10 {
+		t.Errorf("restored: %+v", back)
+	}
+	r := h.get(path)
+	d = recordingDetail{}
+	r.into(t, 200, &d)
+	if last := d.History[len(d.History)-1]; d.Original != nil || last.What != "restored" || !strings.Contains(string(r.body), `"original":null`) {
+		t.Errorf("after the restore: %s", r.body)
+	}
+	if r := h.get(path + "/sound"); string(r.body) != arrived[jobs[0].Path] {
+		t.Errorf("the sound before is %q", r.body)
+	}
+	h.get(path+"/sound?version=after").wantProblem(t, kindNotFound, "no levelled file now")
+	h.ask("POST", path+"/restore", "").wantProblem(t, kindNotFound, "original of recording")
+	h.ask("POST", at("/recordings/99/restore"), "").wantProblem(t, kindNotFound, "")
+	h.ask("POST", at("/recordings/x/restore"), "").wantProblem(t, kindBadRequest, "id")
+
+	h.write(h.shelf.Root, jobs[1].Path, "somebody's work")
+	h.ask("POST", at("/recordings/%d/restore", jobs[1].RecordingID), "").wantProblem(t, kindState, "changed since it was levelled")
+	h.ask("POST", path+"/restore", "", "Sec-Fetch-Site", "cross-site").wantProblem(t, kindCrossOrigin, "")
+}
+
+func TestAtticPageByPage(t *testing.T) {
+	h := open(t, nil)
+	if r := h.get(at("/attic")); strings.TrimSpace(string(r.body)) != `{"originals":[]}` {
+		t.Errorf("an empty attic: %d %s", r.status, r.body)
+	}
+	run, jobs := h.startRun(store.Replace)
+	h.finish(jobs[0], level.Done)
+	h.finish(jobs[1], level.Done)
+	first, second := min(jobs[0].RecordingID, jobs[1].RecordingID), max(jobs[0].RecordingID, jobs[1].RecordingID)
+	for _, c := range []struct {
+		address string
+		want    []int64
+	}{
+		{at("/attic"), []int64{first, second}},
+		{at("/attic?limit=1"), []int64{first}},
+		{at("/attic?limit=1&after=%d", first), []int64{second}},
+		{at("/attic?after=%d", second), nil},
+		{at("/attic?shelf=%d&run=%d", h.shelf.ID, run.ID), []int64{first, second}},
+		{at("/attic?shelf=%d", h.inbox.ID), nil},
+		{at("/attic?run=%d", run.ID+1), nil},
+	} {
+		var got struct{ Originals []store.Original }
+		r := h.get(c.address)
+		r.into(t, 200, &got)
+		if len(got.Originals) != len(c.want) {
+			t.Errorf("%s: %s", c.address, r.body)
+			continue
+		}
+		for i, o := range got.Originals {
+			if o.RecordingID != c.want[i] {
+				t.Errorf("%s: %s", c.address, r.body)
+			}
+		}
+		for _, secret := range []string{"stored", "levelled", h.shelf.Attic()} { // where it lies is no business of clients
+			if strings.Contains(strings.ToLower(string(r.body)), secret) {
+				t.Errorf("%s tells %q: %s", c.address, secret, r.body)
+			}
+		}
+	}
+	h.get(at("/attic?run=0&limit=1001")).wantProblem(t, kindBadRequest, "limit")
+	down := open(t, breakStore)
+	down.get(at("/attic")).wantProblem(t, kindInternal, "")
+	down.get(at("/recordings/%d", jobs[0].RecordingID)).wantProblem(t, kindInternal, "")
+}
+
+func TestReplaceWantsAFolderItCanWriteTo(t *testing.T) {
+	h := open(t, nil)
+	body := `{"shelf_id":1,"profile":"rotation","delivery":"replace"}`
+	var run store.Run
+	h.ask("POST", at("/runs"), body).into(t, 201, &run)
+	if run.Delivery != store.Replace {
+		t.Errorf("delivery %q", run.Delivery)
+	}
+	if err := os.RemoveAll(h.shelf.Root); err != nil {
+		t.Fatal(err)
+	}
+	h.ask("POST", at("/runs"), body).wantProblem(t, kindInvalid,
+		`delivery: replace has to write to the folder of shelf "music", and that is not possible here (no such file or directory)`)
+	h.ask("POST", at("/runs"), strings.Replace(body, "replace", "copy", 1)).into(t, 201, &run)
+
+	dir, err := os.MkdirTemp("", "evenshelf") // not t.TempDir, whose parent lets nobody else in
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer os.Remove(dir)
+	for mode, want := range map[os.FileMode]error{0o777: nil, 0o555: syscall.EACCES} {
+		if err := os.Chmod(dir, mode); err != nil {
+			t.Fatal(err)
+		}
+		if err := asNobody(func() error { return writable(dir) }); !errors.Is(err, want) {
+			t.Errorf("mode %o: %v, want %v", mode, err, want)
+		}
+	}
+}
+
+// asNobody runs fn on a thread that has given up the superuser's right to write everywhere, if the tests run as
+// superuser (in a container they do). The thread is not used again.
+func asNobody(fn func() error) error {
+	if syscall.Geteuid() != 0 {
+		return fn()
+	}
+	result := make(chan error)
+	go func() {
+		runtime.LockOSThread() // never unlocked: the thread ends with the goroutine
+		const nobody = 65534
+		if _, _, errno := syscall.RawSyscall(syscall.SYS_SETFSUID, nobody, 0, 0); errno != 0 {
+			result <- errno
+			return
+		}
+		result <- fn()
+	}()
+	return <-result
+}
