@@ -32,7 +32,7 @@ var Version = "0.1.0"
 // EVENSHELF_ and its name in capitals, and in the TOML file named by --config, under its own name.
 type cli struct {
 	Config   kong.ConfigFlag `help:"TOML file with options, under the names they have here." placeholder:"FILE" type:"existingfile"`
-	Data     string          `help:"Folder for the database and delivered copies." default:"${data}" placeholder:"DIR" type:"path"`
+	Data     string          `help:"Folder for the database and delivered copies (default: ${data})." default:"${data}" placeholder:"DIR" type:"path"`
 	Workers  int             `help:"How many recordings to work on at once (0: one a processor)." default:"0"`
 	FFmpeg   string          `name:"ffmpeg" help:"The ffmpeg program to decode and encode with; 'none' to do without." placeholder:"FILE"`
 	LogLevel slog.Level      `help:"How much to log: debug, info, warn or error." default:"info"`

@@ -8,6 +8,7 @@ import (
 	"os/exec"
 	"path/filepath"
 	"regexp"
+	"slices"
 	"strings"
 	"testing"
 
@@ -187,7 +188,8 @@ func TestLevelMirrorsTheTreeAndKeepsOriginals(t *testing.T) {
 
 // The same names in three places, the more deliberate one winning: command line, environment, file.
 func TestOptionsFromThreePlaces(t *testing.T) {
-	file := write(t, filepath.Join(t.TempDir(), "evenshelf.toml"), "data = '/from/file'\nworkers = 3\nlog-level = 'warn'\n")
+	file := write(t, filepath.Join(t.TempDir(), "evenshelf.toml"), "data = '/from/file'\nworkers = 3\nlog-level = 'warn'\n"+
+		"shelf = { radio = '/srv/radio', old = '/srv/old' }\nshelf-roots = ['/srv', '/mnt']\n")
 	parse := func(args ...string) cli {
 		t.Helper()
 		var c cli
@@ -195,13 +197,21 @@ func TestOptionsFromThreePlaces(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		if _, err := parser.Parse(append(args, "version")); err != nil {
+		if _, err := parser.Parse(append(args, "serve")); err != nil {
 			t.Fatal(err)
 		}
 		return c
 	}
-	if c := parse("--config", file); c.Data != "/from/file" || c.Workers != 3 {
+	c := parse("--config", file)
+	if c.Data != "/from/file" || c.Workers != 3 {
 		t.Errorf("from the file: data %q, workers %d", c.Data, c.Workers)
+	}
+	if len(c.Serve.Shelf) != 2 || c.Serve.Shelf["old"] != "/srv/old" || !slices.Equal(c.Serve.ShelfRoots, []string{"/srv", "/mnt"}) {
+		t.Errorf("from the file: shelves %v, roots %v", c.Serve.Shelf, c.Serve.ShelfRoots)
+	}
+	t.Setenv("EVENSHELF_CONFIG", file)
+	if c := parse(); c.Workers != 3 {
+		t.Errorf("a file named in the environment is not read: workers %d", c.Workers)
 	}
 	t.Setenv("EVENSHELF_DATA", "/from/environment")
 	if c := parse("--config", file); c.Data != "/from/environment" || c.Workers != 3 {

@@ -3,7 +3,9 @@ package command
 import (
 	"fmt"
 	"io"
+	"maps"
 	"os"
+	"slices"
 	"strings"
 
 	"github.com/alecthomas/kong"
@@ -48,12 +50,20 @@ func (r resolver) Resolve(_ *kong.Context, _ *kong.Path, flag *kong.Flag) (any, 
 	if !ok {
 		return nil, nil
 	}
-	if list, ok := v.([]any); ok {
-		parts := make([]string, len(list))
-		for i, e := range list {
+	switch v := v.(type) {
+	case []any: // kong takes lists and tables the way the command line writes them
+		parts := make([]string, len(v))
+		for i, e := range v {
 			parts[i] = fmt.Sprint(e)
 		}
 		return strings.Join(parts, ","), nil
+	case map[string]any:
+		parts := make([]string, 0, len(v))
+		for _, k := range slices.Sorted(maps.Keys(v)) {
+			parts = append(parts, fmt.Sprintf("%s=%v", k, v[k]))
+		}
+		return strings.Join(parts, ";"), nil
+	default:
+		return fmt.Sprint(v), nil
 	}
-	return fmt.Sprint(v), nil
 }

@@ -13,28 +13,48 @@ import (
 	"evenshelf/worker/delivery"
 )
 
-// replace puts the levelled copy in the recording's place. If what is there is a copy we made, the original
-// in the attic is levelled instead, so that no sound is ever levelled twice; a job that a crash cut short
-// after the copy was in place is repeated the same way and makes the same file.
-func (s *Service) replace(ctx context.Context, w store.Work, source, key string) (level.Outcome, string, error) {
+// firstGeneration returns the sound to level: what is on the shelf, or if that is a copy we put there, its
+// original in the attic, so that no sound is ever levelled twice. A replacing job that a crash cut short
+// after its copy was in place is repeated the same way and makes the same file.
+func (s *Service) firstGeneration(ctx context.Context, w store.Work, onShelf string) (string, error) {
+	kept, err := s.store.Original(ctx, w.Recording.ID)
+	switch {
+	case errors.Is(err, store.ErrNotFound):
+		return onShelf, nil
+	case err != nil:
+		return "", err
+	case inAttic(kept).IsLevelled(onShelf):
+		return filepath.Join(w.Shelf.Attic(), filepath.FromSlash(kept.Stored)), nil
+	default:
+		return onShelf, nil
+	}
+}
+
+// replace puts the levelled copy in the recording's place.
+func (s *Service) replace(ctx context.Context, w store.Work, onShelf, key string) (level.Outcome, string, error) {
 	leave, err := s.places.enter(ctx, w.Recording.ID)
 	if err != nil {
 		return level.Outcome{}, "", err
 	}
 	defer leave()
-	at := delivery.Place{Root: w.Shelf.Root, Rel: w.Recording.Path, Attic: w.Shelf.Attic(), Copies: w.Shelf.Copies, Source: source}
-	kept, err := s.store.Original(ctx, w.Recording.ID)
-	switch {
-	case errors.Is(err, store.ErrNotFound):
-	case err != nil:
+	source, err := s.firstGeneration(ctx, w, onShelf)
+	if err != nil {
 		return level.Outcome{}, "", err
-	case inAttic(kept).IsLevelled(source):
-		at.Source = filepath.Join(at.Attic, filepath.FromSlash(kept.Stored))
 	}
+	at := delivery.Place{Root: w.Shelf.Root, Rel: w.Recording.Path, Attic: w.Shelf.Attic(), Copies: w.Shelf.Copies, Source: source}
 	return delivery.Replace(ctx, s.engine, at, w.Profile, key, func(ctx context.Context, o delivery.Original) error {
 		return s.store.KeepOriginal(ctx, store.Original{RecordingID: w.Recording.ID, JobID: w.Job.ID,
 			SHA256: o.SHA256, Stored: o.Stored, Levelled: o.Levelled, Size: o.Size})
 	})
+}
+
+// deliverCopy puts a levelled copy into the shelf's copies folder.
+func (s *Service) deliverCopy(ctx context.Context, w store.Work, onShelf, key string) (level.Outcome, string, error) {
+	source, err := s.firstGeneration(ctx, w, onShelf)
+	if err != nil {
+		return level.Outcome{}, "", err
+	}
+	return delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, w.Profile, key, delivery.Options{Overwrite: true})
 }
 
 func inAttic(o store.Original) delivery.Original {

@@ -39,6 +39,10 @@ func TestReplaceAndRestore(t *testing.T) {
 	if again.Done != 2 || b.onShelf("b.wav") != "levelled sound of b.wav" {
 		t.Errorf("%+v, %q", again, b.onShelf("b.wav"))
 	}
+	b.wait(b.begin(s, store.Copy).ID, ended)
+	if got := b.content("b.wav"); got != "levelled sound of b.wav" {
+		t.Errorf("a copy of a replaced recording is %q", got)
+	}
 	rec, err := s.Restore(b.ctx, kept[0].RecordingID)
 	if err != nil || rec.State != "" || rec.After != nil || b.onShelf("a.wav") != "sound of a.wav" {
 		t.Errorf("%+v, %v, %q", rec, err, b.onShelf("a.wav"))

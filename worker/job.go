@@ -143,7 +143,7 @@ func (s *Service) attempt(ctx context.Context, w store.Work) (o level.Outcome, o
 	case store.Replace:
 		o, output, err = s.replace(ctx, w, source, key)
 	default:
-		o, output, err = delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, w.Profile, key, delivery.Options{Overwrite: true})
+		o, output, err = s.deliverCopy(ctx, w, source, key)
 	}
 	switch {
 	case errors.Is(ctx.Err(), context.DeadlineExceeded):
