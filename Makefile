@@ -18,12 +18,14 @@ try: build ## make a demo shelf, level it, open the dashboard (ARGS=--once to en
 	@scripts/need try
 	bin/evenshelf try $(ARGS)
 
-test: ## everything that has to pass: format, vet, lint, all tests with the race detector
+test: ## everything that has to pass: format, vet, lint, tests (with the race detector where time allows)
 	@scripts/need test
 	@test -z "$$(gofmt -l $$(git ls-files '*.go'))" || { echo "not gofmt-ed:"; gofmt -l $$(git ls-files '*.go'); exit 1; }
 	$(GO) vet ./...
 	$(GO) tool staticcheck ./...
 	$(GO) test -race -timeout 9m ./...
+	@# tests of the whole program and of long signals, which the race detector would make minutes longer
+	$(GO) test -timeout 9m ./command ./engine/demo ./engine/meter
 
 bench: ## run every benchmark (x-realtime is how much faster than listening)
 	$(GO) test -run '^$$' -bench . -benchmem ./engine/...

@@ -28,6 +28,7 @@ var mayImport = map[string][]string{
 	"worker/discover": {"engine", "store"},
 	"api":             {"engine", "store"},
 	"web":             {"engine", "store"},
+	"web/webtest":     {},
 	"command":         {"engine", "store", "worker", "api", "web"},
 	"":                {"command"},
 }

@@ -2,42 +2,17 @@ package web
 
 import (
 	"context"
-	"encoding/json"
 	"fmt"
 	"net/http/httptest"
-	"os/exec"
-	"slices"
 	"strings"
-	"sync"
 	"testing"
 	"time"
 
-	"github.com/chromedp/cdproto/log"
-	"github.com/chromedp/cdproto/runtime"
 	"github.com/chromedp/chromedp"
 	"github.com/chromedp/chromedp/kb"
-)
 
-// browser starts one headless Chromium for the tests of this file and gives it back with a tab.
-func browser(t *testing.T) context.Context {
-	t.Helper()
-	if _, err := exec.LookPath("chromium"); err != nil {
-		t.Fatal("these tests drive a real browser: install Debian's package chromium")
-	}
-	options := append(chromedp.DefaultExecAllocatorOptions[:], chromedp.ExecPath("chromium"), chromedp.NoSandbox, chromedp.DisableGPU, chromedp.NoFirstRun,
-		chromedp.UserDataDir(t.TempDir()))
-	for _, flag := range []string{"disable-quic", "disable-background-networking", "disable-component-update", "disable-sync"} {
-		options = append(options, chromedp.Flag(flag, true))
-	}
-	alloc, stop := chromedp.NewExecAllocator(context.Background(), options...)
-	ctx, cancel := chromedp.NewContext(alloc)
-	t.Cleanup(func() {
-		_ = chromedp.Cancel(ctx) // waits, so that the folder it writes to can be removed
-		cancel()
-		stop()
-	})
-	return ctx
-}
+	"evenshelf/web/webtest"
+)
 
 // serve runs the pages and the invented API on a real listener.
 func serve(t *testing.T, f *fake) string {
@@ -52,77 +27,27 @@ func serve(t *testing.T, f *fake) string {
 	return srv.URL
 }
 
-// complaints collects what the browser objects to: exceptions, refused styles and scripts, missing files.
-func complaints(t *testing.T, ctx context.Context) func() []string {
-	t.Helper()
-	var mu sync.Mutex
-	var all []string
-	err := chromedp.Listen(ctx, func(event any) {
-		mu.Lock()
-		defer mu.Unlock()
-		switch event := event.(type) {
-		case *runtime.EventExceptionThrown:
-			b, _ := json.Marshal(event.ExceptionDetails)
-			all = append(all, string(b))
-		case *log.EventEntryAdded:
-			if event.Entry.Level == log.EntryLevelError {
-				all = append(all, event.Entry.Text+" "+event.Entry.URL)
-			}
-		}
-	})
-	if err != nil {
-		t.Fatal(err)
-	}
-	return func() []string {
-		mu.Lock()
-		defer mu.Unlock()
-		return slices.Clone(all)
-	}
-}
-
-func do(t *testing.T, ctx context.Context, steps ...chromedp.Action[chromedp.Void]) {
-	t.Helper()
-	if err := chromedp.Do(ctx, steps...); err != nil {
-		t.Fatal(err)
-	}
-}
-
-func eval[T any](t *testing.T, ctx context.Context, script string) T {
-	t.Helper()
-	v, err := chromedp.Run(ctx, chromedp.Evaluate[T](script, chromedp.EvalAwaitPromise))
-	if err != nil {
-		t.Fatalf("%v in %s", err, script)
-	}
-	return v
-}
-
 // until waits for a condition in the page.
 func until(t *testing.T, ctx context.Context, condition string) {
 	t.Helper()
-	limit := time.Now().Add(10 * time.Second)
-	for !eval[bool](t, ctx, condition) {
-		if time.Now().After(limit) {
-			t.Fatalf("never came true: %s\n%s", condition, eval[string](t, ctx, "document.querySelector('main').innerText"))
-		}
-		time.Sleep(20 * time.Millisecond)
-	}
+	webtest.Until(t, ctx, 10*time.Second, condition)
 }
 
 const drawn = `document.querySelector(".veil")?.hidden === true`
 
 func TestInBrowser(t *testing.T) {
-	ctx := browser(t)
+	ctx := webtest.Browser(t)
 	f := newFake(96)
 	url := serve(t, f)
-	do(t, ctx, chromedp.EmulateViewport(1280, 980))
-	told := complaints(t, ctx)
+	webtest.Do(t, ctx, chromedp.EmulateViewport(1280, 980))
+	told := webtest.Complaints(t, ctx)
 
 	t.Run("maths", func(t *testing.T) { testMaths(t, ctx, url) })
 	t.Run("every page without complaint", func(t *testing.T) {
 		for _, path := range []string{"/", "/shelves/1", "/recordings", "/recordings/18", "/recordings/42", "/runs", "/runs/12"} {
-			do(t, ctx, chromedp.Navigate(url+path))
+			webtest.Do(t, ctx, chromedp.Navigate(url+path))
 			until(t, ctx, `document.readyState === "complete"`)
-			if wide := eval[int](t, ctx, `document.documentElement.scrollWidth - innerWidth`); wide > 0 {
+			if wide := webtest.Eval[int](t, ctx, `document.documentElement.scrollWidth - innerWidth`); wide > 0 {
 				t.Errorf("%s is %d px wider than the window", path, wide)
 			}
 		}
@@ -134,62 +59,62 @@ func TestInBrowser(t *testing.T) {
 	})
 	t.Run("chart", func(t *testing.T) { testChart(t, ctx, url) })
 	t.Run("a run is started", func(t *testing.T) {
-		do(t, ctx, chromedp.Navigate(url+"/"))
+		webtest.Do(t, ctx, chromedp.Navigate(url+"/"))
 		until(t, ctx, `!document.querySelector("[data-component=newrun]").disabled`)
-		eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=newrun]").click()`)
+		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=newrun]").click()`)
 		until(t, ctx, `document.querySelectorAll("dialog[open] input[name=profile]").length === 2`)
-		eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] button[type=submit]").click()`)
+		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] button[type=submit]").click()`)
 		until(t, ctx, `location.pathname === "/runs/12"`)
 	})
 	t.Run("replacing takes a second step", func(t *testing.T) { testReplacing(t, ctx, url, f) })
 	t.Run("an original is brought back", func(t *testing.T) { testRestore(t, ctx) })
 	t.Run("timeline and player", func(t *testing.T) {
-		do(t, ctx, chromedp.Navigate(url+"/recordings/18"))
+		webtest.Do(t, ctx, chromedp.Navigate(url+"/recordings/18"))
 		until(t, ctx, `!!document.querySelector(".uplot canvas") && !document.querySelector(".player-row").hidden`)
-		if got := eval[string](t, ctx, `document.querySelector("[data-part=percent]").textContent`); got != "20 %" {
+		if got := webtest.Eval[string](t, ctx, `document.querySelector("[data-part=percent]").textContent`); got != "20 %" {
 			t.Errorf("the player starts at %s", got)
 		}
 		place := `parseFloat(document.querySelector("[data-part=time]").textContent.slice(2))`
-		do(t, ctx, chromedp.Click(chromedp.CSS("[data-part=play]"))) // a real click: browsers let no script start sound
+		webtest.Do(t, ctx, chromedp.Click(chromedp.CSS("[data-part=play]"))) // a real click: browsers let no script start sound
 		until(t, ctx, place+` >= 0.4`)
-		do(t, ctx, chromedp.Click(chromedp.CSS("[data-version=after]")))
-		if at := eval[float64](t, ctx, place); at < 0.4 {
+		webtest.Do(t, ctx, chromedp.Click(chromedp.CSS("[data-version=after]")))
+		if at := webtest.Eval[float64](t, ctx, place); at < 0.4 {
 			t.Errorf("switching went back to %.1f s", at)
 		}
-		do(t, ctx, chromedp.Click(chromedp.CSS("[data-part=play]")))
+		webtest.Do(t, ctx, chromedp.Click(chromedp.CSS("[data-part=play]")))
 		until(t, ctx, `document.querySelector("[data-part=play]").textContent === "Listen"`)
-		if !eval[bool](t, ctx, `document.querySelector("[data-version=after]").getAttribute("aria-pressed") === "true" && document.querySelector("[data-version=before]").getAttribute("aria-pressed") === "false"`) {
+		if !webtest.Eval[bool](t, ctx, `document.querySelector("[data-version=after]").getAttribute("aria-pressed") === "true" && document.querySelector("[data-version=before]").getAttribute("aria-pressed") === "false"`) {
 			t.Error("the after version is not chosen")
 		}
 	})
 	t.Run("theme is kept", func(t *testing.T) {
 		ground := `getComputedStyle(document.documentElement).backgroundColor`
-		light := eval[string](t, ctx, ground)
-		eval[chromedp.Void](t, ctx, `(document.querySelector(".theme").click(), document.querySelector(".theme").click())`)
-		if dark := eval[string](t, ctx, ground); dark == light {
+		light := webtest.Eval[string](t, ctx, ground)
+		webtest.Eval[chromedp.Void](t, ctx, `(document.querySelector(".theme").click(), document.querySelector(".theme").click())`)
+		if dark := webtest.Eval[string](t, ctx, ground); dark == light {
 			t.Error("the dark theme looks like the light one")
 		}
-		do(t, ctx, chromedp.Reload())
-		if eval[string](t, ctx, `document.documentElement.dataset.theme`) != "dark" {
+		webtest.Do(t, ctx, chromedp.Reload())
+		if webtest.Eval[string](t, ctx, `document.documentElement.dataset.theme`) != "dark" {
 			t.Error("the theme was forgotten")
 		}
-		eval[chromedp.Void](t, ctx, `localStorage.clear()`)
+		webtest.Eval[chromedp.Void](t, ctx, `localStorage.clear()`)
 	})
 	t.Run("phone", func(t *testing.T) {
-		do(t, ctx, chromedp.EmulateViewport(390, 844, chromedp.EmulateMobile))
+		webtest.Do(t, ctx, chromedp.EmulateViewport(390, 844, chromedp.EmulateMobile))
 		for _, path := range []string{"/", "/recordings", "/recordings/18", "/recordings/3", "/runs", "/runs/12"} {
-			do(t, ctx, chromedp.Navigate(url+path))
-			if wide := eval[int](t, ctx, `document.documentElement.scrollWidth - 390`); wide > 0 {
+			webtest.Do(t, ctx, chromedp.Navigate(url+path))
+			if wide := webtest.Eval[int](t, ctx, `document.documentElement.scrollWidth - 390`); wide > 0 {
 				t.Errorf("%s is %d px wider than a phone", path, wide)
 			}
 		}
 	})
 	t.Run("the API fails", func(t *testing.T) {
 		f.apiDown.Store(true)
-		do(t, ctx, chromedp.Navigate(url+"/"))
+		webtest.Do(t, ctx, chromedp.Navigate(url+"/"))
 		until(t, ctx, `document.querySelector("[data-part=state]").textContent === "The database is being copied. Try again in a minute."`)
 		f.apiDown.Store(false)
-		eval[chromedp.Void](t, ctx, `document.querySelector(".veil [data-part=again]").click()`)
+		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector(".veil [data-part=again]").click()`)
 		until(t, ctx, drawn)
 	})
 }
@@ -198,17 +123,17 @@ func testReplacing(t *testing.T, ctx context.Context, url string, f *fake) {
 	for len(f.asked) > 0 {
 		<-f.asked // those of other tests
 	}
-	do(t, ctx, chromedp.Navigate(url+"/"))
+	webtest.Do(t, ctx, chromedp.Navigate(url+"/"))
 	until(t, ctx, `!document.querySelector("[data-component=newrun]").disabled`)
 	open := func() {
-		eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=newrun]").click()`)
+		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=newrun]").click()`)
 		until(t, ctx, `document.querySelectorAll("dialog[open] input[name=profile]").length === 2 && !document.querySelector("dialog[open] [type=submit]").disabled`)
 	}
 	press := func(what string) {
-		eval[chromedp.Void](t, ctx, `document.querySelector('dialog[open] `+what+`').click()`)
+		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector('dialog[open] `+what+`').click()`)
 	}
 	sure := func(state string) bool {
-		return eval[bool](t, ctx, `(({ checked, required, offsetParent }) => `+state+`)(document.querySelector("[name=sure]"))`)
+		return webtest.Eval[bool](t, ctx, `(({ checked, required, offsetParent }) => `+state+`)(document.querySelector("[name=sure]"))`)
 	}
 	open()
 	if !sure("!offsetParent && !required") {
@@ -216,7 +141,7 @@ func testReplacing(t *testing.T, ctx context.Context, url string, f *fake) {
 	}
 	press("[value=replace]")
 	press("[type=submit]")
-	if len(f.asked) > 0 || !sure("offsetParent && required && !checked") || !eval[bool](t, ctx, `document.querySelector("dialog").open`) {
+	if len(f.asked) > 0 || !sure("offsetParent && required && !checked") || !webtest.Eval[bool](t, ctx, `document.querySelector("dialog").open`) {
 		t.Error("a run that replaces was started in one step")
 	}
 	// Neither another choice nor another look at the dialog leaves a yes behind.
@@ -242,27 +167,27 @@ func testReplacing(t *testing.T, ctx context.Context, url string, f *fake) {
 
 func testRestore(t *testing.T, ctx context.Context) {
 	f := newReplaced(40)
-	do(t, ctx, chromedp.Navigate(serve(t, f)+"/recordings/2"))
+	webtest.Do(t, ctx, chromedp.Navigate(serve(t, f)+"/recordings/2"))
 	until(t, ctx, `document.querySelector("[data-component=restore]")?.disabled === false`)
-	eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=restore]").click()`)
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=restore]").click()`)
 	f.apiDown.Store(true)
-	eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [type=submit]").click()`)
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [type=submit]").click()`)
 	until(t, ctx, `document.querySelector("dialog[open] .says").textContent === "The file was changed since it was levelled."`)
 	f.apiDown.Store(false)
-	eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [type=submit]").click()`)
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [type=submit]").click()`)
 	until(t, ctx, `!!document.querySelector(".lede")?.textContent.includes("The original is back in its place") && !document.querySelector("[data-component=restore]")`)
 }
 
 // testMaths runs the chart's pure functions in the engine that will run them.
 func testMaths(t *testing.T, ctx context.Context, url string) {
-	do(t, ctx, chromedp.Navigate(url+"/"))
-	base := eval[string](t, ctx, `document.querySelector("script[type=module]").src.replace("app.js", "")`)
+	webtest.Do(t, ctx, chromedp.Navigate(url+"/"))
+	base := webtest.Eval[string](t, ctx, `document.querySelector("script[type=module]").src.replace("app.js", "")`)
 	call := func(module, body string) string {
 		return fmt.Sprintf(`import(%q).then((m) => { %s })`, base+module, body)
 	}
 	// Every place is taken once, in order, by bars of almost the same size.
 	for _, c := range [][3]int{{0, 10, 300}, {0, 96, 300}, {0, 10000, 117}, {0, 100000, 117}, {40, 49, 4}, {7, 8, 1}, {3, 3, 5}} {
-		got := eval[[]int](t, ctx, call("components/spine/maths.js", fmt.Sprintf(`return [...m.slots(%d, %d, %d)]`, c[0], c[1], c[2])))
+		got := webtest.Eval[[]int](t, ctx, call("components/spine/maths.js", fmt.Sprintf(`return [...m.slots(%d, %d, %d)]`, c[0], c[1], c[2])))
 		if got[0] != c[0] || got[len(got)-1] != c[1] || len(got)-1 != min(c[2], c[1]-c[0]) {
 			t.Errorf("slots(%v) runs from %d to %d in %d bars", c, got[0], got[len(got)-1], len(got)-1)
 		}
@@ -273,7 +198,7 @@ func testMaths(t *testing.T, ctx context.Context, url string) {
 		}
 	}
 	// numpy.quantile([1, 2, 4, 8], [0, .1, .5, .9, 1]) = 1, 1.3, 3, 6.8, 8
-	q := eval[[]float64](t, ctx, call("components/spine/maths.js", `return [0, 0.1, 0.5, 0.9, 1].map((q) => m.quantile([1, 2, 4, 8], q))`))
+	q := webtest.Eval[[]float64](t, ctx, call("components/spine/maths.js", `return [0, 0.1, 0.5, 0.9, 1].map((q) => m.quantile([1, 2, 4, 8], q))`))
 	for i, want := range []float64{1, 1.3, 3, 6.8, 8} {
 		if d := q[i] - want; d > 1e-9 || d < -1e-9 {
 			t.Errorf("quantile %d is %g, want %g", i, q[i], want)
@@ -289,7 +214,7 @@ func testMaths(t *testing.T, ctx context.Context, url string) {
 		"zoom never passes the least":         `const v = m.zoomed({ from: 0, to: 9 }, 1000, 0.01, 0.5); return v.to - v.from === 8`,
 		"within counts the edge":              `return m.within(Float32Array.of(-18.3, -17.7, -18.31, -18), -18, 0.3) === 3`,
 	} {
-		if !eval[bool](t, ctx, call("components/spine/maths.js", body)) {
+		if !webtest.Eval[bool](t, ctx, call("components/spine/maths.js", body)) {
 			t.Errorf("not so: %s", what)
 		}
 	}
@@ -298,7 +223,7 @@ func testMaths(t *testing.T, ctx context.Context, url string) {
 			rows: [[5, "b/x.wav", "done", -20, -30, -10, -1, -18, -20, -15, -1], [6, "a/y.wav", "", null, null, null, null, null, null, null, null], [7, "a/b.wav", "held", -30, -31, -29, -3, null, null, null, null]] });
 			return ["folder", "name", "loudness", "range"].map((by) => [...s.order(by)].join("")).join() === "210,201,201,201"`,
 	} {
-		if !eval[bool](t, ctx, call("components/spine/data.js", body)) {
+		if !webtest.Eval[bool](t, ctx, call("components/spine/data.js", body)) {
 			t.Errorf("not so: %s", what)
 		}
 	}
@@ -306,37 +231,37 @@ func testMaths(t *testing.T, ctx context.Context, url string) {
 		"a true minus":          `return m.number(-18) === "−18.0" && m.number(-0.01) === "0.0" && m.number(null) === "–"`,
 		"places in a recording": `return m.clock(3.2) === "0:03.2" && m.clock(3723.44) === "1:02:03.4" && m.clock(59.96) === "1:00.0" && m.clock(65, 0) === "1:05"`,
 	} {
-		if !eval[bool](t, ctx, call("figures.js", body)) {
+		if !webtest.Eval[bool](t, ctx, call("figures.js", body)) {
 			t.Errorf("not so: %s", what)
 		}
 	}
-	if !eval[bool](t, ctx, call("components/timeline/curves.js", `const c = m.columns({ step_s: 0.1, before: { short_term: [-20, null], momentary: [-19, null], peak: [-3, null] }, after: null });
+	if !webtest.Eval[bool](t, ctx, call("components/timeline/curves.js", `const c = m.columns({ step_s: 0.1, before: { short_term: [-20, null], momentary: [-19, null], peak: [-3, null] }, after: null });
 		const [low, high] = m.extent(c, false); return c.x.length === 2 && c.before.shortTerm[1] === null && !c.hasAfter && low === -30 && high <= 3`)) {
 		t.Error("silence in a timeline is not a gap")
 	}
 }
 
 func testChart(t *testing.T, ctx context.Context, url string) {
-	do(t, ctx, chromedp.Navigate(url+"/"))
+	webtest.Do(t, ctx, chromedp.Navigate(url+"/"))
 	until(t, ctx, drawn)
-	ink := eval[int](t, ctx, `(() => { const c = document.querySelector("canvas[data-part=before]"); const d = c.getContext("2d").getImageData(0, 0, c.width, c.height).data; let n = 0; for (let i = 3; i < d.length; i += 4) n += d[i] > 0; return n; })()`)
+	ink := webtest.Eval[int](t, ctx, `(() => { const c = document.querySelector("canvas[data-part=before]"); const d = c.getContext("2d").getImageData(0, 0, c.width, c.height).data; let n = 0; for (let i = 3; i < d.length; i += 4) n += d[i] > 0; return n; })()`)
 	if ink < 5000 {
 		t.Errorf("only %d pixels of the chart are drawn", ink)
 	}
-	told := eval[string](t, ctx, `document.querySelector("[data-part=told-after]").textContent`)
+	told := webtest.Eval[string](t, ctx, `document.querySelector("[data-part=told-after]").textContent`)
 	if !strings.HasSuffix(told, "within 0.3 LU of the target, 3 held for a listen, 1 failed") {
 		t.Errorf("the after panel says %q", told)
 	}
 	// The keyboard walks, tells, zooms and opens.
-	do(t, ctx, chromedp.Focus(chromedp.CSS(".spines-sheet")), chromedp.KeyEvent(kb.ArrowRight), chromedp.KeyEvent(kb.ArrowRight))
-	if said := eval[string](t, ctx, `document.querySelector("[data-part=live]").textContent`); !strings.Contains(said, "Spine 2 of 96") || !strings.Contains(said, "LUFS") {
+	webtest.Do(t, ctx, chromedp.Focus(chromedp.CSS(".spines-sheet")), chromedp.KeyEvent(kb.ArrowRight), chromedp.KeyEvent(kb.ArrowRight))
+	if said := webtest.Eval[string](t, ctx, `document.querySelector("[data-part=live]").textContent`); !strings.Contains(said, "Spine 2 of 96") || !strings.Contains(said, "LUFS") {
 		t.Errorf("two steps to the right say %q", said)
 	}
-	do(t, ctx, chromedp.KeyEvent("+"))
+	webtest.Do(t, ctx, chromedp.KeyEvent("+"))
 	until(t, ctx, `document.querySelector("[data-part=window]").textContent.endsWith("of 96")`)
-	do(t, ctx, chromedp.KeyEvent(kb.Escape), chromedp.KeyEvent(kb.Home))
+	webtest.Do(t, ctx, chromedp.KeyEvent(kb.Escape), chromedp.KeyEvent(kb.Home))
 	until(t, ctx, `document.querySelector("[data-part=live]").textContent.includes("Spine 1 of 96")`)
-	eval[chromedp.Void](t, ctx, `document.querySelector("[data-sort=loudness]").click()`)
-	do(t, ctx, chromedp.Focus(chromedp.CSS(".spines-sheet")), chromedp.KeyEvent(kb.Home), chromedp.KeyEvent(kb.Enter))
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-sort=loudness]").click()`)
+	webtest.Do(t, ctx, chromedp.Focus(chromedp.CSS(".spines-sheet")), chromedp.KeyEvent(kb.Home), chromedp.KeyEvent(kb.Enter))
 	until(t, ctx, `location.pathname.startsWith("/recordings/")`)
 }

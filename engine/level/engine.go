@@ -71,6 +71,12 @@ func nameOnly(err error, source string) error {
 func (e *Engine) renderToTarget(ctx context.Context, source string, p profile.Profile, plan Plan, scratch string, o *Outcome) (string, Plan, error) {
 	spec := e.Media.SpecFor(o.Before.Info)
 	spec.TagsFrom = source
+	if plan.Limit {
+		var err error
+		if plan, err = e.approach(ctx, source, p, plan, o.Before); err != nil {
+			return "", plan, err
+		}
+	}
 	for {
 		if err := e.renderFile(ctx, source, plan, spec, scratch); err != nil {
 			return "", plan, err
@@ -81,11 +87,10 @@ func (e *Engine) renderToTarget(ctx context.Context, source string, p profile.Pr
 			return "", plan, fmt.Errorf("reading the copy back: %w", err)
 		}
 		o.After = after
-		next, closer := plan.again(p, o.Before, after, spec.BitDepth > 0)
+		next, closer := plan.again(p, o.Before, after)
 		if !closer || o.Renders == mostRenders {
 			return spec.Extension, plan, nil
 		}
-		next.Reason = next.words(p, headroom(p, o.Before))
 		plan = next
 	}
 }

@@ -13,8 +13,8 @@ const (
 	peakTolerance = 0.05
 	// leastGain is the smallest gain worth a new file, dB.
 	leastGain = 0.05
-	// limitedTolerance is how close to the target another rendering is worth while, LU.
-	limitedTolerance = 0.05
+	// anotherRender is the change of gain from which on another rendering is worth while, dB.
+	anotherRender = 0.05
 )
 
 // MakePlan decides what to do to a recording so that it comes out as the profile asks. It is an error,
@@ -79,19 +79,18 @@ func signed(v float64) string {
 	return fmt.Sprintf("%.1f", v)
 }
 
-// again returns the plan for another rendering, given how the last one came out. ok is false if another
-// would not come closer.
-func (plan Plan) again(p profile.Profile, before, after *Analysis, lossless bool) (next Plan, ok bool) {
+// again returns the plan for another rendering, given how the last one came out; ok is false if another
+// would not come closer. Encoders move loudness and peaks, and even a plain gain can miss: it lifts quiet
+// passages over the −70 LUFS gate.
+func (plan Plan) again(p profile.Profile, before, after *Analysis) (next Plan, ok bool) {
 	next = plan
 	over := audio.DB(after.TruePeak - p.Ceiling)
 	if over > peakTolerance {
 		next.Ceiling = plan.Ceiling - audio.DBTP(over) - 0.02
 	}
 	room := audio.DB(next.Ceiling - before.TruePeak)
-	if plan.Limit || !lossless || over > peakTolerance {
-		next.Gain = min(plan.Gain+audio.DB(p.Target-after.Integrated), room+p.Limiting)
-	}
+	next.Gain = min(plan.Gain+audio.DB(p.Target-after.Integrated), room+p.Limiting)
 	next.Limit = next.Gain > room
-	closer := abs(next.Gain-plan.Gain) > limitedTolerance
-	return next, closer || next.Ceiling != plan.Ceiling
+	next.Reason = next.words(p, headroom(p, before))
+	return next, abs(next.Gain-plan.Gain) > anotherRender || next.Ceiling != plan.Ceiling
 }
