@@ -11,6 +11,19 @@ import (
 	"evenshelf/worker/discover"
 )
 
+// recordings returns the engine and the recordings that a command is to work on.
+func (a *app) recordings(paths []string) (*level.Engine, []input, error) {
+	e, err := a.engine()
+	if err != nil {
+		return nil, nil, err
+	}
+	files, err := inputs(a.ctx, paths)
+	if err == nil && len(files) == 0 {
+		err = usageError("no recordings found there")
+	}
+	return e, files, err
+}
+
 // input is one recording named on the command line, or found in a folder named there.
 type input struct {
 	path string // as it can be opened

@@ -37,16 +37,9 @@ func (c *levelCmd) Run(a *app) error {
 	if err != nil {
 		return usageError(err.Error() + "; see 'evenshelf profiles'")
 	}
-	e, err := a.engine()
+	e, files, err := a.recordings(c.Paths)
 	if err != nil {
 		return err
-	}
-	files, err := inputs(a.ctx, c.Paths)
-	if err != nil {
-		return err
-	}
-	if len(files) == 0 {
-		return usageError("no recordings found there")
 	}
 	if err := c.refuseUnsafe(files); err != nil {
 		return err

@@ -48,16 +48,9 @@ func (m measured) MarshalJSON() ([]byte, error) {
 }
 
 func (c *measureCmd) Run(a *app) error {
-	e, err := a.engine()
+	e, files, err := a.recordings(c.Paths)
 	if err != nil {
 		return err
-	}
-	files, err := inputs(a.ctx, c.Paths)
-	if err != nil {
-		return err
-	}
-	if len(files) == 0 {
-		return usageError("no recordings found there")
 	}
 	unread := 0
 	err = inOrder(a.ctx, a.workers(), files, func(ctx context.Context, in input) measured {
