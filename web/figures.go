@@ -23,6 +23,7 @@ func functions(a *assets, now func() time.Time) template.FuncMap {
 		"sheets":   a.sheets,
 		"figure":   func(v any, unit string) figure { return newFigure(v, unit) },
 		"number":   func(v any) string { f, _ := value(v); return number(f, 1) },
+		"spread":   func(v any) string { f, _ := value(v); return spreadWords(f) },
 		"signed":   func(v any) string { f, _ := value(v); return signed(f) },
 		"count":    func(n any) string { return count(reflect.ValueOf(n).Int()) },
 		"plural":   plural,
@@ -52,6 +53,14 @@ func value(v any) (float64, bool) {
 	}
 	f := r.Float()
 	return f, !math.IsNaN(f) && !math.IsInf(f, 0)
+}
+
+// spreadWords writes a difference to one decimal; one that would read 0.0 is said to be small, not none.
+func spreadWords(f float64) string {
+	if f < 0.05 {
+		return "less than 0.1"
+	}
+	return number(f, 1)
 }
 
 // figure is a number with its unit, or the dash that stands for one that is not defined.

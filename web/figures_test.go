@@ -96,3 +96,11 @@ func TestRunPaceAndBar(t *testing.T) {
 		t.Errorf("a run that has not begun foretells %q, %q", v.Pace, v.Left)
 	}
 }
+
+func TestSpreadIsNeverNone(t *testing.T) {
+	for v, want := range map[float64]string{0: "less than 0.1", 0.049: "less than 0.1", 0.05: "0.1", 37.2: "37.2"} {
+		if got := spreadWords(v); got != want {
+			t.Errorf("%g is %q, want %q", v, got, want)
+		}
+	}
+}
