@@ -40,14 +40,7 @@ func (c *tryCmd) Run(a *app) error {
 	if c.Once {
 		listen = "127.0.0.1:0"
 	}
-	// Only what an earlier try made is here: the folder is Evenshelf's own.
-	if err := os.RemoveAll(dir); err != nil {
-		return err
-	}
-	root := filepath.Join(dir, "shelf")
-	fmt.Fprintf(a.stdout, "Making the recordings of an invented radio station in %s …\n", root)
-	items, err := demo.Write(a.ctx, engine.Media, root, nil)
-	if err != nil {
+	if err := clearTry(a.ctx, dir); err != nil {
 		return err
 	}
 	s, err := a.startServer(serverOptions{data: dir, listen: listen})
@@ -55,6 +48,12 @@ func (c *tryCmd) Run(a *app) error {
 		return err
 	}
 	defer s.stop()
+	root := filepath.Join(dir, "shelf")
+	fmt.Fprintf(a.stdout, "Making the recordings of an invented radio station in %s …\n", root)
+	items, err := demo.Write(a.ctx, engine.Media, root, nil)
+	if err != nil {
+		return err
+	}
 	run, err := c.levelShelf(a, s, root, p)
 	if err != nil {
 		return err
@@ -77,6 +76,22 @@ func (c *tryCmd) Run(a *app) error {
 		return errors.New(report.verdict())
 	}
 	return nil
+}
+
+// clearTry removes what an earlier try made: the folder is Evenshelf's own. A try that is still running
+// there is left in peace.
+func clearTry(ctx context.Context, dir string) error {
+	database := filepath.Join(dir, "evenshelf.db")
+	if _, err := os.Stat(database); err == nil {
+		st, err := store.Open(ctx, store.Options{Path: database})
+		if errors.Is(err, store.ErrState) {
+			return err
+		}
+		if err == nil {
+			st.Close()
+		}
+	}
+	return os.RemoveAll(dir)
 }
 
 // levelShelf puts the shelf through the real queue and waits for the run to end.
