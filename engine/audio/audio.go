@@ -9,6 +9,7 @@ package audio
 import (
 	"fmt"
 	"io"
+	"math"
 	"math/bits"
 )
 
@@ -99,6 +100,12 @@ type Format struct {
 
 // Seconds returns the duration of a number of frames.
 func (f Format) Seconds(frames int64) float64 { return float64(frames) / float64(f.Rate) }
+
+// Clock writes a time in seconds as people do, minutes and seconds to a tenth: 3:07.5.
+func Clock(seconds float64) string {
+	tenths := int64(math.Round(seconds * 10))
+	return fmt.Sprintf("%d:%02d.%d", tenths/600, tenths/10%60, tenths%10)
+}
 
 // Block is planar sound: Block[c][i] is frame i of channel c. All channels have the same length.
 type Block [][]float32

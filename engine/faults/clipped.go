@@ -164,7 +164,7 @@ func (k *clipped) faults(e extent) []Fault {
 	}
 	at, share := e.Seconds(first), float64(bad)/float64(max(1, k.sounding))
 	f := Fault{Code: "clipped", Severity: Note, At: at, Length: e.Seconds(flat)}
-	f.Words = fmt.Sprintf("clipped %s, first at %s", times(plateaus), clock(at))
+	f.Words = fmt.Sprintf("clipped %s, first at %s", times(plateaus), audio.Clock(at))
 	if bad >= seriousLeast && share >= seriousBad {
 		f.Severity = Serious
 		f.Words += fmt.Sprintf(", badly in %.0f%% of the time", 100*share)

@@ -71,7 +71,7 @@ func New(f audio.Format) *Detector {
 		view:   make(audio.Block, f.Layout.Channels),
 		peak:   make([]float32, f.Layout.Channels),
 		peaks:  make([]float32, f.Layout.Channels),
-		checks: []check{newClipped(f), newOffset(f), new(silences), newDropouts(f), newPair(f)},
+		checks: []check{newClipped(f), newOffset(f), new(silences), newDropouts(f), newPair(f), scale{}},
 	}
 }
 
@@ -136,12 +136,6 @@ func largest(x []float32) float32 {
 
 // linear returns the amplitude of a level in dBFS.
 func linear(dbfs float64) float64 { return math.Pow(10, dbfs/20) }
-
-// clock writes a time as minutes and seconds, 3:07.5.
-func clock(seconds float64) string {
-	tenths := int64(math.Round(seconds * 10))
-	return fmt.Sprintf("%d:%02d.%d", tenths/600, tenths/10%60, tenths%10)
-}
 
 // times writes a count as people say it.
 func times(n int64) string {

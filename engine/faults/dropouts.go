@@ -153,6 +153,6 @@ func (d *dropouts) faults(e extent) []Fault {
 	return []Fault{{
 		Code: "dropouts", Severity: Doubt, At: at, Length: e.Seconds(d.total),
 		Words: fmt.Sprintf("the sound breaks off %s, first at %s; the longest hole lasts %.0f ms",
-			times(d.count), clock(at), 1000*e.Seconds(d.long.frames)),
+			times(d.count), audio.Clock(at), 1000*e.Seconds(d.long.frames)),
 	}}
 }

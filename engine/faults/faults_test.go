@@ -295,8 +295,8 @@ func TestBlocksDoNotMatter(t *testing.T) {
 
 func TestClock(t *testing.T) {
 	for seconds, want := range map[float64]string{0: "0:00.0", 3.24: "0:03.2", 59.96: "1:00.0", 754.5: "12:34.5", 4503.2: "75:03.2"} {
-		if got := clock(seconds); got != want {
-			t.Errorf("clock(%g) = %s, want %s", seconds, got, want)
+		if got := audio.Clock(seconds); got != want {
+			t.Errorf("audio.Clock(%g) = %s, want %s", seconds, got, want)
 		}
 	}
 }
@@ -312,4 +312,28 @@ func BenchmarkDetector(b *testing.B) {
 		}
 	}
 	b.ReportMetric(float64(r.sound.Frames())/float64(r.rate)*float64(b.N)/b.Elapsed().Seconds(), "x-realtime")
+}
+
+// An absurd sample and samples in units of 16-bit integers are doubtful; a mix 20 dB too hot is not.
+func TestScale(t *testing.T) {
+	tone := audio.NewBlock(1, 48000)
+	for i := range tone[0] {
+		tone[0][i] = float32(0.5 * math.Sin(float64(i)/20))
+	}
+	if found := codes(look(48000, each(tone, func(_, _ int, v float64) float64 { return 20 * v }))); strings.Contains(found, "scale") {
+		t.Errorf("20 dB over full scale: %s", found)
+	}
+	for name, b := range map[string]audio.Block{
+		"integers": each(tone, func(_, _ int, v float64) float64 { return 32768 * v }),
+		"one sample": each(tone, func(_, i int, v float64) float64 {
+			if i == 20000 {
+				return 1e30
+			}
+			return v
+		}),
+	} {
+		if f := find(t, look(48000, b), "scale"); f.Severity != Doubt {
+			t.Errorf("%s: %+v", name, f)
+		}
+	}
 }

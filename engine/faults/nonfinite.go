@@ -3,6 +3,8 @@ package faults
 import (
 	"fmt"
 	"math"
+
+	"evenshelf/engine/audio"
 )
 
 // nonFinite counts samples that are infinite or not numbers at all. Floating-point files carry them when
@@ -41,9 +43,9 @@ func (n *nonFinite) faults(e extent) []Fault {
 		return nil
 	}
 	at := e.Seconds(n.first)
-	words := fmt.Sprintf("%d samples are not numbers, first at %s; they were taken as silence", n.samples, clock(at))
+	words := fmt.Sprintf("%d samples are not numbers, first at %s; they were taken as silence", n.samples, audio.Clock(at))
 	if n.samples == 1 {
-		words = fmt.Sprintf("one sample, at %s, is not a number; it was taken as silence", clock(at))
+		words = fmt.Sprintf("one sample, at %s, is not a number; it was taken as silence", audio.Clock(at))
 	}
 	return []Fault{{Code: "not-numbers", Severity: Serious, At: at, Length: e.Seconds(n.frames), Words: words}}
 }

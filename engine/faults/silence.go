@@ -1,6 +1,10 @@
 package faults
 
-import "fmt"
+import (
+	"fmt"
+
+	"evenshelf/engine/audio"
+)
 
 // How much silence at the ends is worth a word: it leaves a hole in a playout. Common practice, no source.
 const (
@@ -52,7 +56,7 @@ func (s *silences) faults(e extent) []Fault {
 		found = append(found, Fault{Code: "head-silence", Severity: Note, Length: head, Words: words})
 	}
 	if at := e.Seconds(s.last + 1); whole-at >= longTail {
-		words := fmt.Sprintf("%.1f s of silence after the last sound, from %s on", whole-at, clock(at))
+		words := fmt.Sprintf("%.1f s of silence after the last sound, from %s on", whole-at, audio.Clock(at))
 		found = append(found, Fault{Code: "tail-silence", Severity: Note, At: at, Length: whole - at, Words: words})
 	}
 	return found

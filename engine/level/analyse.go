@@ -70,9 +70,9 @@ func damageOf(src media.Reader, frames int64, readErr error) ([]faults.Fault, er
 	switch {
 	case readErr == nil:
 	case errors.Is(readErr, io.ErrUnexpectedEOF):
-		words := fmt.Sprintf("the file breaks off after %s", clock(at))
+		words := fmt.Sprintf("the file breaks off after %s", audio.Clock(at))
 		if promised := src.Info().Frames; promised > frames {
-			words += fmt.Sprintf(" of %s", clock(src.Format().Seconds(promised)))
+			words += fmt.Sprintf(" of %s", audio.Clock(src.Format().Seconds(promised)))
 		}
 		found = append(found, faults.Fault{Code: "truncated", Severity: faults.Serious, At: at, Words: words})
 	default:
@@ -85,10 +85,4 @@ func damageOf(src media.Reader, frames int64, readErr error) ([]faults.Fault, er
 		}
 	}
 	return found, nil
-}
-
-// clock writes a time in seconds as minutes, seconds and tenths.
-func clock(seconds float64) string {
-	m := int(seconds) / 60
-	return fmt.Sprintf("%d:%04.1f", m, seconds-float64(60*m))
 }

@@ -13,8 +13,8 @@ import (
 	"evenshelf/engine/profile"
 )
 
-// mostRenders bounds the search for the target: with deep limiting, or an encoder that changes the
-// level, each rendering comes closer.
+// mostRenders bounds the search for the target with deep limiting or an encoder that changes the level.
+// Going back to the best of them is one rendering more.
 const mostRenders = 5
 
 // Level measures source, plans, renders into the file scratch, reads that file back and judges it. The
@@ -30,6 +30,9 @@ func (e *Engine) Level(ctx context.Context, source string, p profile.Profile, sc
 	before, err := e.Analyse(ctx, source)
 	if cause := context.Cause(ctx); cause != nil {
 		return Outcome{}, cause
+	}
+	if errors.Is(err, media.ErrKilled) {
+		return Outcome{}, err
 	}
 	if err != nil {
 		return failed(nil, nameOnly(err, source)), nil
@@ -67,7 +70,8 @@ func nameOnly(err error, source string) error {
 	return errors.New(strings.ReplaceAll(err.Error(), source, filepath.Base(source)))
 }
 
-// renderToTarget renders until the delivered file is in tolerance or no rendering comes closer.
+// renderToTarget renders until no rendering comes closer to the target, and delivers the one that came
+// closest: a lossy encoder may answer the smallest change of gain with a jump.
 func (e *Engine) renderToTarget(ctx context.Context, source string, p profile.Profile, plan Plan, scratch string, o *Outcome) (string, Plan, error) {
 	spec := e.Media.SpecFor(o.Before.Info)
 	spec.TagsFrom = source
@@ -77,35 +81,53 @@ func (e *Engine) renderToTarget(ctx context.Context, source string, p profile.Pr
 			return "", plan, err
 		}
 	}
-	for {
-		if err := e.renderFile(ctx, source, plan, spec, scratch); err != nil {
+	best, latest := plan, plan
+	for more := true; more && o.Renders < mostRenders; {
+		after, err := e.renderFile(ctx, source, plan, spec, scratch)
+		if err != nil {
 			return "", plan, err
 		}
 		o.Renders++
-		after, err := e.Analyse(ctx, scratch)
-		if err != nil {
-			return "", plan, fmt.Errorf("reading the copy back: %w", err)
+		latest = plan
+		if o.After == nil || closer(p, after, o.After) {
+			best, o.After = plan, after
 		}
-		o.After = after
-		next, closer := plan.again(p, o.Before, after)
-		if !closer || o.Renders == mostRenders {
-			return spec.Extension, plan, nil
-		}
-		plan = next
+		plan, more = plan.again(p, o.Before, after)
 	}
+	if best != latest {
+		after, err := e.renderFile(ctx, source, best, spec, scratch)
+		if err != nil {
+			return "", best, err
+		}
+		o.Renders++
+		o.After = after
+	}
+	return spec.Extension, best, nil
 }
 
-func (e *Engine) renderFile(ctx context.Context, source string, plan Plan, spec media.Spec, scratch string) error {
+// renderFile renders into the file scratch and measures what is there then.
+func (e *Engine) renderFile(ctx context.Context, source string, plan Plan, spec media.Spec, scratch string) (*Analysis, error) {
 	src, err := e.Media.Open(ctx, source)
 	if err != nil {
-		return err
+		return nil, err
 	}
 	defer src.Close()
 	sink, err := e.Media.Create(ctx, scratch, spec)
 	if err != nil {
-		return err
+		return nil, err
 	}
-	return errors.Join(Render(ctx, src, plan, sink), sink.Close())
+	err = Render(ctx, src, plan, sink)
+	if e := sink.Close(); err == nil { // else a sink that failed only says so again
+		err = e
+	}
+	if err != nil {
+		return nil, err
+	}
+	after, err := e.Analyse(ctx, scratch)
+	if err != nil {
+		return nil, fmt.Errorf("reading the copy back: %w", err)
+	}
+	return after, nil
 }
 
 // copyUntouched copies source byte for byte and measures the copy, so that what is delivered is what

@@ -13,8 +13,9 @@ const (
 	peakTolerance = 0.05
 	// leastGain is the smallest gain worth a new file, dB.
 	leastGain = 0.05
-	// anotherRender is the change of gain from which on another rendering is worth while, dB.
-	anotherRender = 0.05
+	// anotherRender is the change of gain from which on another rendering is worth while, dB: what a lossy
+	// encoder answers to less is as likely to be a jump away as a step closer.
+	anotherRender = 0.1
 )
 
 // MakePlan decides what to do to a recording so that it comes out as the profile asks. It is an error,
@@ -93,4 +94,14 @@ func (plan Plan) again(p profile.Profile, before, after *Analysis) (next Plan, o
 	next.Limit = next.Gain > room
 	next.Reason = next.words(p, headroom(p, before))
 	return next, abs(next.Gain-plan.Gain) > anotherRender || next.Ceiling != plan.Ceiling
+}
+
+// closer reports whether one rendering came out closer to the profile than another: first by how far its
+// peaks pass the ceiling, then by its distance from the target.
+func closer(p profile.Profile, a, b *Analysis) bool {
+	over := func(x *Analysis) audio.DB { return max(0, audio.DB(x.TruePeak-p.Ceiling)-peakTolerance) }
+	if over(a) != over(b) {
+		return over(a) < over(b)
+	}
+	return abs(p.Target.Sub(a.Integrated)) < abs(p.Target.Sub(b.Integrated))
 }

@@ -42,11 +42,16 @@ func Render(ctx context.Context, src audio.Source, plan Plan, sink audio.Sink) e
 	return nil
 }
 
-// amplify multiplies every sample of b, in place.
+// amplify multiplies every sample of b, in place. What is not a finite number becomes silence, as it was
+// to the meter: nobody should have to listen to it.
 func amplify(b audio.Block, gain float64) {
 	for _, x := range b {
 		for i, v := range x {
-			x[i] = float32(float64(v) * gain)
+			y := float32(float64(v) * gain)
+			if y-y != 0 {
+				y = 0
+			}
+			x[i] = y
 		}
 	}
 }

@@ -3,6 +3,7 @@ package media
 import (
 	"bytes"
 	"context"
+	"fmt"
 	"io"
 	"maps"
 	"os"
@@ -111,7 +112,8 @@ func stale(name string) bool {
 		strings.HasSuffix(name, "NORM") || strings.HasSuffix(name, "SMPB")
 }
 
-// technical tags describe the file they were in, not the recording.
+// technical tags describe the file they were in, not the recording. Where people name the tags, as in FLAC,
+// Ogg and MP3, the names after the first mean what they say and are kept.
 var technical = []string{
 	"encoder", "major_brand", "minor_version", "compatible_brands", "handler_name", "vendor_id", "language",
 	"duration", "creation_time", "number_of_frames", "number_of_bytes", "bps",
@@ -131,27 +133,39 @@ func (t *Toolbox) ffmpegTags(ctx context.Context, src *tagSource, pictures bool)
 	}
 	args := []string{"-map_metadata", "-1", "-map_chapters", "1"}
 	tags := map[string]string{}
-	if s := p.sound(); s != nil { // Ogg keeps its tags on the stream, the others on the file
-		keepTags(tags, s.Tags)
+	leaveOut := technical
+	if slices.Contains([]string{"flac", "ogg", "mp3"}, src.kind.container) {
+		leaveOut = technical[:1]
 	}
-	keepTags(tags, p.Format.Tags)
+	if s := p.sound(); s != nil { // Ogg keeps its tags on the stream, the others on the file
+		keepTags(tags, s.Tags, leaveOut)
+		if language := s.Tags["language"]; src.kind.demuxer == "mov" && language != "" {
+			args = append(args, "-metadata:s:a:0", "language="+language)
+		}
+	}
+	keepTags(tags, p.Format.Tags, leaveOut)
 	for _, name := range slices.Sorted(maps.Keys(tags)) {
 		args = append(args, "-metadata", name+"="+tags[name])
 	}
 	if pictures {
-		for _, index := range p.pictures() {
-			args = append(args, "-map", "1:"+strconv.Itoa(index))
+		for n, picture := range p.pictures() {
+			args = append(args, "-map", "1:"+strconv.Itoa(picture.Index))
+			for _, name := range []string{"comment", "title"} { // what it shows: "Cover (front)"; and a caption
+				if value := picture.Tags[name]; value != "" && len(value) <= maxTag {
+					args = append(args, fmt.Sprintf("-metadata:s:v:%d", n), name+"="+strings.ReplaceAll(value, "\x00", ""))
+				}
+			}
 		}
 		args = append(args, "-c:v", "copy", "-disposition:v", "attached_pic")
 	}
 	return args, nil
 }
 
-func keepTags(dst, src map[string]string) {
+func keepTags(dst, src map[string]string, leaveOut []string) {
 	for name, value := range src {
 		name, value = strings.ReplaceAll(name, "\x00", ""), strings.ReplaceAll(value, "\x00", "")
 		lower := strings.ToLower(name)
-		if name == "" || strings.Contains(name, "=") || len(value) > maxTag || stale(name) || slices.Contains(technical, lower) || strings.HasPrefix(lower, "_statistics") {
+		if name == "" || strings.Contains(name, "=") || len(value) > maxTag || stale(name) || slices.Contains(leaveOut, lower) || strings.HasPrefix(lower, "_statistics") {
 			continue
 		}
 		dst[name] = value

@@ -8,6 +8,7 @@ import (
 	"os/exec"
 	"strings"
 	"sync"
+	"syscall"
 	"time"
 )
 
@@ -24,6 +25,7 @@ type child struct {
 	stderr  headBuffer
 	stall   time.Duration
 	stopped func() error
+	hung    error // why it was ended from here
 	waited  sync.Once
 	err     error
 }
@@ -90,8 +92,9 @@ func (c *child) Write(p []byte) (int, error) {
 
 func (c *child) explain(err error) error {
 	if errors.Is(err, os.ErrDeadlineExceeded) {
+		c.hung = fmt.Errorf("FFmpeg stood still for %v and was stopped", c.stall)
 		c.kill()
-		return fmt.Errorf("FFmpeg stood still for %v and was stopped", c.stall)
+		return c.hung
 	}
 	return err
 }
@@ -106,6 +109,10 @@ func (c *child) wait() error {
 		case err == nil:
 		case cause != nil:
 			c.err = cause
+		case c.hung != nil:
+			c.err = c.hung
+		case killed(c.cmd.ProcessState):
+			c.err = ErrKilled
 		case c.stderr.Len() > 0:
 			c.err = fmt.Errorf("FFmpeg says: %s", c.stderr.text())
 		default:
@@ -113,6 +120,13 @@ func (c *child) wait() error {
 		}
 	})
 	return c.err
+}
+
+// killed tells the signals that come from a person or the system from those of a crash, which the file
+// may have caused. FFmpeg catches SIGTERM and then exits with 255.
+func killed(state *os.ProcessState) bool {
+	s, ok := state.Sys().(syscall.WaitStatus)
+	return ok && (s.Signaled() && (s.Signal() == syscall.SIGKILL || s.Signal() == syscall.SIGTERM) || s.ExitStatus() == 255)
 }
 
 // kill ends the child at once and reaps it.

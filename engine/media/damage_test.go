@@ -284,8 +284,40 @@ func TestStalledChildIsStopped(t *testing.T) {
 		if err == nil || !strings.Contains(err.Error(), "stood still") || time.Since(start) > 5*time.Second {
 			t.Errorf("after %v: %v", time.Since(start), err)
 		}
+		if again := c.wait(); again == nil || !strings.Contains(again.Error(), "stood still") {
+			t.Errorf("asked again: %v", again)
+		}
 		if c.cmd.ProcessState == nil {
 			t.Error("the child was not reaped")
 		}
+	}
+}
+
+// A decoder or encoder that is killed from outside says nothing about the recording.
+func TestKilledChildIsNotDamage(t *testing.T) {
+	box := withFFmpeg(t)
+	long := filepath.Join(t.TempDir(), "long.flac")
+	run(t, "ffmpeg", "-v", "error", "-f", "lavfi", "-i", "anoisesrc=d=120:r=48000", long)
+	for _, sig := range []syscall.Signal{syscall.SIGKILL, syscall.SIGTERM} {
+		r := open(t, box, long)
+		if err := r.(*ffReader).child.cmd.Process.Signal(sig); err != nil {
+			t.Fatal(err)
+		}
+		if _, err := drain(r, 4096); !errors.Is(err, ErrKilled) || errors.Is(err, io.ErrUnexpectedEOF) || !strings.Contains(err.Error(), long) {
+			t.Errorf("decoder, %v: %v", sig, err)
+		}
+	}
+	s, err := box.Create(context.Background(), filepath.Join(t.TempDir(), "x"), Spec{Container: "mp3", Codec: "mp3", Format: stereo(44100)})
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := s.(*sink).w.(*ffWriter).child.cmd.Process.Kill(); err != nil {
+		t.Fatal(err)
+	}
+	for block := audio.NewBlock(2, 4096); err == nil; {
+		err = s.WriteBlock(block)
+	}
+	if closing := s.Close(); !errors.Is(err, ErrKilled) || closing != err {
+		t.Errorf("encoder: %v, then %v", err, closing)
 	}
 }

@@ -13,6 +13,9 @@ var (
 	// ErrUnsupported is wrapped when a file is of a kind that cannot be read or written here, perhaps
 	// because FFmpeg is missing. Trying again cannot help.
 	ErrUnsupported = errors.New("not supported")
+	// ErrKilled is wrapped when FFmpeg was ended from outside, as by a system short of memory. That says
+	// nothing about the file; trying again may help.
+	ErrKilled = errors.New("FFmpeg was killed from outside")
 	// ErrEmpty is wrapped when a file has no bytes at all.
 	ErrEmpty = errors.New("the file is empty")
 )

@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"context"
 	"encoding/json"
+	"errors"
 	"fmt"
 	"os"
 	"strconv"
@@ -74,6 +75,9 @@ func (t *Toolbox) runProbe(ctx context.Context, f *os.File, k kind) (*probe, err
 		if stop := stopped(ctx)(); stop != nil {
 			return nil, stop
 		}
+		if errors.Is(err, ErrKilled) {
+			return nil, err
+		}
 		return nil, &FormatError{-1, "the file cannot be read: " + err.Error()}
 	}
 	var p probe
@@ -93,12 +97,12 @@ func (p *probe) sound() *probeStream {
 	return nil
 }
 
-// pictures returns the stream numbers of cover art, of the kinds every container takes.
-func (p *probe) pictures() []int {
-	var list []int
+// pictures returns the streams of cover art, of the kinds every container takes.
+func (p *probe) pictures() []probeStream {
+	var list []probeStream
 	for _, s := range p.Streams {
 		if s.Type == "video" && s.Disposition["attached_pic"] == 1 && (s.Codec == "mjpeg" || s.Codec == "png") {
-			list = append(list, s.Index)
+			list = append(list, s)
 		}
 	}
 	return list

@@ -127,7 +127,10 @@ func (r *ffReader) begin(g gapless) error {
 	var bad *FormatError
 	switch {
 	case errors.As(err, &bad): // no head, no sound: the child has said why
-		if said := r.child.wait(); said != nil {
+		switch said := r.child.wait(); {
+		case errors.Is(said, ErrKilled):
+			return said
+		case said != nil:
 			return &FormatError{-1, "its sound cannot be decoded: " + said.Error()}
 		}
 		return &FormatError{-1, strings.TrimSuffix("its sound cannot be decoded: "+r.child.stderr.text(), ": ")}
@@ -204,7 +207,11 @@ func (r *ffReader) finish() error {
 	if _, err := io.Copy(io.Discard, r.ahead); err != nil { // the padding that is left out
 		return about(r.path, err)
 	}
-	if err := r.child.wait(); err != nil {
+	err := r.child.wait()
+	switch {
+	case errors.Is(err, ErrKilled):
+		return about(r.path, err)
+	case err != nil:
 		return fmt.Errorf("%s: the recording breaks off after %.2f s: %w: %w", r.path, r.info.Format.Seconds(r.got), err, io.ErrUnexpectedEOF)
 	}
 	r.damage = r.child.stderr.text()

@@ -16,6 +16,8 @@ import (
 type ffWriter struct {
 	child *child
 	pack  *packer
+	f     *os.File
+	head  []byte // metadata to put in front of a FLAC's sound; nil: FFmpeg's stays
 }
 
 func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *tagSource) (*ffWriter, error) {
@@ -40,12 +42,21 @@ func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *
 		files = []*os.File{tags.f, f}
 	}
 	args = append(args, "-map", "0:a:0")
-	carried, err := t.ffmpegTags(ctx, tags, muxer != "ogg" && muxer != "aiff")
+	var head []byte
+	var carried []string
+	var err error
+	if spec.Codec == "flac" && tags != nil && tags.kind.container == "flac" {
+		if head, err = flacHead(spec, tags); err == nil {
+			carried = []string{"-map_metadata", "-1", "-metadata_header_padding", strconv.Itoa(len(head) + flacPadding)}
+		}
+	} else {
+		carried, err = t.ffmpegTags(ctx, tags, muxer != "ogg" && muxer != "aiff")
+	}
 	if err != nil {
 		return nil, err
 	}
 	args = append(args, carried...)
-	if mask := unusualMask(spec.Format.Layout); spec.Codec == "flac" {
+	if mask := unusualMask(spec.Format.Layout); spec.Codec == "flac" && head == nil {
 		args = append(args, "-metadata", maskComment+"="+mask) // empty: none, not even the source's
 	}
 	args = append(args, t.encoderArgs(spec)...)
@@ -54,7 +65,7 @@ func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *
 	if err != nil {
 		return nil, err
 	}
-	w := &ffWriter{child: c, pack: newPacker(pcm.Format.Layout.Channels, pcm.BitDepth, pcm.Float)}
+	w := &ffWriter{child: c, pack: newPacker(pcm.Format.Layout.Channels, pcm.BitDepth, pcm.Float), f: f, head: head}
 	if err := w.send(streamHead(pcm)); err != nil {
 		c.kill()
 		return nil, err
@@ -127,5 +138,11 @@ func (w *ffWriter) send(b []byte) error {
 	return fmt.Errorf("FFmpeg stopped listening: %w", err)
 }
 
-func (w *ffWriter) finish() error { return w.child.wait() }
-func (w *ffWriter) abort()        { w.child.kill() }
+func (w *ffWriter) finish() error {
+	if err := w.child.wait(); err != nil || w.head == nil {
+		return err
+	}
+	return putHead(w.f, w.head)
+}
+
+func (w *ffWriter) abort() { w.child.kill() }
