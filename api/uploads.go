@@ -11,6 +11,7 @@ import (
 	"net/http"
 	"os"
 	"path/filepath"
+	"syscall"
 	"time"
 
 	"github.com/gin-gonic/gin"
@@ -107,13 +108,15 @@ func wholeLimit(one int64) int64 {
 // receive stores the files of a form and returns the names they got. An error ends the form, but the names
 // that were reached before it count.
 func (a *API) receive(root *os.Root, parts *multipart.Reader) (names []string, refused []refusal, err error) {
-	for range maxFiles {
+	for n := 0; ; n++ {
 		part, err := parts.NextPart()
-		if err == io.EOF {
+		switch {
+		case err == io.EOF:
 			return names, refused, nil
-		}
-		if err != nil {
+		case err != nil:
 			return names, refused, brokenUpload(err)
+		case n == maxFiles:
+			return names, refused, kindTooLarge.with(fmt.Sprintf("more than %d files in one upload; the first ones were taken", maxFiles))
 		}
 		name, reason, err := a.keep(root, part)
 		if err != nil {
@@ -125,7 +128,6 @@ func (a *API) receive(root *os.Root, parts *multipart.Reader) (names []string, r
 		}
 		names = append(names, name)
 	}
-	return names, refused, kindTooLarge.with(fmt.Sprintf("more than %d files in one upload; the first ones were taken", maxFiles))
 }
 
 // keep stores one file under a free name, or says why it is not taken.
@@ -251,6 +253,8 @@ func brokenUpload(err error) error {
 	switch {
 	case errors.As(err, &tooLarge):
 		return err
+	case errors.Is(err, syscall.ENOSPC), errors.Is(err, syscall.EDQUOT):
+		return unavailable("there is no space left for uploads; files that had arrived whole are kept")
 	case errors.As(err, &disk), errors.As(err, new(*os.LinkError)):
 		return fmt.Errorf("write upload: %w", err)
 	}

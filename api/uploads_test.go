@@ -2,7 +2,9 @@ package api
 
 import (
 	"bytes"
+	"fmt"
 	"io"
+	"io/fs"
 	"mime/multipart"
 	"net"
 	"net/http"
@@ -10,6 +12,7 @@ import (
 	"path/filepath"
 	"slices"
 	"strings"
+	"syscall"
 	"testing"
 	"time"
 	"unicode"
@@ -214,4 +217,25 @@ func FuzzCleanName(f *testing.F) {
 			t.Errorf("%q becomes %q, then %q", in, out, again)
 		}
 	})
+}
+
+// As many files as one upload may hold are taken.
+func TestUploadAsManyAsAllowed(t *testing.T) {
+	h := open(t, nil)
+	var parts []string
+	for i := range maxFiles {
+		parts = append(parts, "files", fmt.Sprintf("%04d.wav", i), "sound")
+	}
+	if got := h.send(parts...); got.status != http.StatusCreated || len(h.onDisk()) != maxFiles {
+		t.Errorf("%d, %d on disk: %.200s", got.status, len(h.onDisk()), got.body)
+	}
+}
+
+// The person who uploads can do something about a full disk, if told.
+func TestUploadOntoAFullDisk(t *testing.T) {
+	full := &fs.PathError{Op: "write", Path: "/secret/place", Err: syscall.ENOSPC}
+	p := problemOf(brokenUpload(fmt.Errorf("keep: %w", full)))
+	if p.Status != http.StatusServiceUnavailable || !strings.Contains(p.Detail, "no space") || strings.Contains(p.Detail, "secret") {
+		t.Errorf("%+v", p)
+	}
 }

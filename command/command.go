@@ -9,8 +9,10 @@ import (
 	"io"
 	"log/slog"
 	"os"
+	"os/signal"
 	"path/filepath"
 	"runtime"
+	"syscall"
 
 	"github.com/alecthomas/kong"
 
@@ -89,10 +91,13 @@ func Run(ctx context.Context, args []string, stdout, stderr io.Writer) int {
 		return exit
 	}
 	if err != nil {
-		fmt.Fprintf(stderr, "evenshelf: %v\nTry: evenshelf --help\n", err)
+		fmt.Fprintf(stderr, "evenshelf: %s\nTry: evenshelf --help\n", oneLine(err))
 		return exitUsage
 	}
-	a := &app{cli: &c, ctx: ctx, stdout: stdout, stderr: stderr,
+	ctx, stop := context.WithCancelCause(ctx)
+	defer stop(nil)
+	signal.Notify(make(chan os.Signal, 1), syscall.SIGPIPE) // a write fails then, instead of ending the program on the spot
+	a := &app{cli: &c, ctx: ctx, stdout: heard{stdout, stop}, stderr: stderr,
 		log: slog.New(slog.NewTextHandler(stderr, &slog.HandlerOptions{Level: c.LogLevel}))}
 	err = parsed.Run(a)
 	var status statusError
@@ -102,12 +107,27 @@ func Run(ctx context.Context, args []string, stdout, stderr io.Writer) int {
 	case errors.As(err, &status):
 		return int(status)
 	case errors.As(err, new(usageError)):
-		fmt.Fprintln(stderr, "evenshelf:", err)
+		fmt.Fprintln(stderr, "evenshelf:", oneLine(err))
 		return exitUsage
 	default:
-		fmt.Fprintln(stderr, "evenshelf:", err)
+		fmt.Fprintln(stderr, "evenshelf:", oneLine(err))
 		return exitSome
 	}
+}
+
+// heard is an output that stops the work once nobody reads it any more ("| head -1"), so that what is at work
+// can put its things away.
+type heard struct {
+	io.Writer
+	stop context.CancelCauseFunc
+}
+
+func (h heard) Write(b []byte) (int, error) {
+	n, err := h.Writer.Write(b)
+	if err != nil {
+		h.stop(fmt.Errorf("the output cannot be written: %w", err))
+	}
+	return n, err
 }
 
 // usageError is a command line that was understood but cannot be meant.

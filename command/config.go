@@ -6,7 +6,6 @@ import (
 	"maps"
 	"os"
 	"slices"
-	"strings"
 
 	"github.com/alecthomas/kong"
 	"github.com/pelletier/go-toml/v2"
@@ -56,13 +55,13 @@ func (r resolver) Resolve(_ *kong.Context, _ *kong.Path, flag *kong.Flag) (any, 
 		for i, e := range v {
 			parts[i] = fmt.Sprint(e)
 		}
-		return strings.Join(parts, ","), nil
+		return kong.JoinEscaped(parts, ','), nil
 	case map[string]any:
 		parts := make([]string, 0, len(v))
 		for _, k := range slices.Sorted(maps.Keys(v)) {
 			parts = append(parts, fmt.Sprintf("%s=%v", k, v[k]))
 		}
-		return strings.Join(parts, ";"), nil
+		return kong.JoinEscaped(parts, ';'), nil
 	default:
 		return fmt.Sprint(v), nil
 	}

@@ -64,7 +64,8 @@ func inputs(ctx context.Context, paths []string) ([]input, error) {
 	return all, nil
 }
 
-// inOrder runs work on every item, n at a time, and hands the results to emit in the order of the items.
+// inOrder runs work on every item, n at a time, and hands the results to emit in the order of the items. When
+// ctx is done it begins nothing more, and returns once what was at work has ended and put its things away.
 func inOrder[T, R any](ctx context.Context, n int, items []T, work func(context.Context, T) R, emit func(T, R)) error {
 	type turn struct {
 		item   T
@@ -75,12 +76,11 @@ func inOrder[T, R any](ctx context.Context, n int, items []T, work func(context.
 		defer close(queue)
 		slots := make(chan struct{}, n)
 		for _, item := range items {
-			t := turn{item, make(chan R, 1)}
-			select {
-			case queue <- t:
-			case <-ctx.Done():
+			if ctx.Err() != nil {
 				return
 			}
+			t := turn{item, make(chan R, 1)}
+			queue <- t
 			slots <- struct{}{}
 			go func() {
 				defer func() { <-slots }()
@@ -89,11 +89,8 @@ func inOrder[T, R any](ctx context.Context, n int, items []T, work func(context.
 		}
 	}()
 	for t := range queue {
-		select {
-		case r := <-t.result:
+		if r := <-t.result; ctx.Err() == nil {
 			emit(t.item, r)
-		case <-ctx.Done():
-			return context.Cause(ctx)
 		}
 	}
 	return context.Cause(ctx)

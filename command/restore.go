@@ -1,6 +1,7 @@
 package command
 
 import (
+	"context"
 	"fmt"
 	"net/http"
 
@@ -46,10 +47,13 @@ func (c *restoreCmd) Run(a *app) error {
 	}
 	failures := 0
 	for _, id := range ids {
+		if a.ctx.Err() != nil {
+			return context.Cause(a.ctx)
+		}
 		var r store.Recording
 		if err := c.call(a.ctx, http.MethodPost, fmt.Sprintf("/api/v1/recordings/%d/restore", id), &r); err != nil {
 			failures++
-			fmt.Fprintf(a.stderr, "recording %d: %v\n", id, err)
+			fmt.Fprintf(a.stderr, "recording %d: %s\n", id, oneLine(err))
 			continue
 		}
 		fmt.Fprintf(a.stdout, "restored  %s\n", printable(r.Path))

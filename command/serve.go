@@ -32,7 +32,7 @@ func (c *serveCmd) Run(a *app) error {
 	fmt.Fprintf(a.stdout, "Evenshelf is at %s  (Ctrl-C stops it)\n", s.url)
 	select {
 	case <-a.ctx.Done():
-		a.log.Info("stopping: recordings being worked on will be taken up again at the next start")
+		a.log.Info("stopping: recordings being worked on are finished if that is soon, or taken up again at the next start")
 		return s.stop()
 	case err := <-s.failed:
 		s.stop()

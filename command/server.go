@@ -80,7 +80,7 @@ func (a *app) startServer(o serverOptions) (_ *server, err error) {
 		ShelfRoots: o.shelfRoots, UploadDir: uploads, CopiesDir: copies,
 	}
 	if !o.anyHost {
-		options.Hosts = loopbackHosts
+		options.Hosts = append([]string{listener.Addr().(*net.TCPAddr).IP.String()}, loopbackHosts...)
 	}
 	service, err := api.New(options)
 	if err != nil {
@@ -113,8 +113,8 @@ func (a *app) startServer(o serverOptions) (_ *server, err error) {
 	return s, nil
 }
 
-// loopbackHosts are the names a browser on this machine may use; any other name is a page elsewhere
-// that had its own name pointed here.
+// loopbackHosts are the names a browser on this machine may use beside the address that was asked for; any other
+// name is a page elsewhere that had its own name pointed here.
 var loopbackHosts = []string{"localhost", "127.0.0.1", "::1"}
 
 // ensureShelf registers a shelf unless one of that name is there with the same root.
@@ -136,6 +136,9 @@ func (a *app) ensureShelf(st *store.Store, name, root, copies string) error {
 	return nil
 }
 
+// lastReplies is how long requests that are being answered get to end once the server is told to stop.
+const lastReplies = 3 * time.Second
+
 // stop ends everything in reverse order: no new requests, then the queue (jobs at work are put back),
 // then the database. It may be called on a half-started server.
 func (s *server) stop() error {
@@ -144,7 +147,11 @@ func (s *server) stop() error {
 	var errs []error
 	if s.http != nil {
 		s.hangUp()
-		errs = append(errs, s.http.Shutdown(ctx))
+		soon, cancel := context.WithTimeout(ctx, lastReplies)
+		defer cancel()
+		if s.http.Shutdown(soon) != nil { // somebody's player is paused in the middle of a recording
+			errs = append(errs, s.http.Close())
+		}
 	}
 	if s.queue != nil {
 		errs = append(errs, s.queue.Stop(ctx))

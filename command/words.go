@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"strings"
+	"unicode"
 	"unicode/utf8"
 )
 
@@ -28,12 +29,18 @@ func duration(seconds float64) string {
 	return fmt.Sprintf("%d:%02d", s/60, s%60)
 }
 
-// printable replaces control characters, so that a hostile file name cannot drive the terminal.
+// printable replaces control characters and those that turn the direction of writing, so that a hostile file
+// name can neither drive the terminal nor look like another.
 func printable(s string) string {
 	return strings.Map(func(r rune) rune {
-		if r < 0x20 || r == 0x7f || (r >= 0x80 && r < 0xa0) {
+		if unicode.IsControl(r) || unicode.Is(unicode.Bidi_Control, r) {
 			return '·'
 		}
 		return r
 	}, s)
+}
+
+// oneLine is an error for a terminal. Errors that were joined are lines of their own until then.
+func oneLine(err error) string {
+	return printable(strings.ReplaceAll(err.Error(), "\n", "; "))
 }

@@ -18,11 +18,11 @@ func scanOriginal(row scanner) (o Original, err error) {
 }
 
 // KeepOriginal records that a recording's original is in the attic, before its place is taken: whatever
-// happens next, it can be found. Of o it takes RecordingID, JobID, SHA256, Stored, Levelled and Size.
+// happens next, it can be found. It counts as the last one kept even if the clock was set back. Of o it takes RecordingID, JobID, SHA256, Stored, Levelled and Size.
 func (s *Store) KeepOriginal(ctx context.Context, o Original) error {
 	err := s.write(ctx, func(tx *sql.Tx) error {
 		_, err := tx.ExecContext(ctx, `INSERT INTO attic (recording_id, sha256, job_id, stored, levelled, size, kept_at)
-			VALUES (?, ?, ?, ?, ?, ?, ?) ON CONFLICT (recording_id, sha256)
+			VALUES (?1, ?2, ?3, ?4, ?5, ?6, max(?7, (SELECT coalesce(max(kept_at), 0) + 1 FROM attic WHERE recording_id = ?1))) ON CONFLICT (recording_id, sha256)
 			DO UPDATE SET job_id = excluded.job_id, stored = excluded.stored, levelled = excluded.levelled, size = excluded.size, kept_at = excluded.kept_at`,
 			o.RecordingID, o.SHA256, o.JobID, o.Stored, o.Levelled, o.Size, now())
 		if err != nil {

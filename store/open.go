@@ -70,9 +70,8 @@ func (s *Store) open(ctx context.Context, path string) error {
 
 // Settings belong in the data source name: a PRAGMA sent once to a pool reaches one of its connections.
 //
-// synchronous=NORMAL does not sync at each commit, only at checkpoints. In write-ahead mode that cannot
-// damage the file, and the death of the program loses nothing; a power cut can lose the last commits.
-// A job whose end was lost that way is done again, which changes nothing but the time it takes.
+// synchronous=FULL syncs at each commit, because files depend on rows: an original's place is taken as soon as
+// the row that says where in the attic it is has been stored, and a power cut must not lose that row.
 //
 // txlock=immediate takes the write lock when a transaction begins. A deferred one that reads first and
 // writes later fails at once, whatever the busy timeout, if anybody wrote in between.
@@ -81,7 +80,7 @@ var (
 		"_journal_mode": {"WAL"},
 		"_foreign_keys": {"on"},
 		"_busy_timeout": {"5000"}, // ms; only a person with another tool can hold the lock
-		"_synchronous":  {"NORMAL"},
+		"_synchronous":  {"FULL"},
 		"_txlock":       {"immediate"},
 		"_cache_size":   {"-64000"}, // KiB, most of what a first scan of 100,000 recordings touches
 	}

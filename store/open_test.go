@@ -81,7 +81,7 @@ func TestConnectionSettings(t *testing.T) {
 	if err := f.writer.QueryRow("PRAGMA synchronous").Scan(&sync); err != nil {
 		t.Fatal(err)
 	}
-	if journal != "wal" || foreign != 1 || sync != 1 { // 1 = NORMAL, sqlite.org/pragma.html
+	if journal != "wal" || foreign != 1 || sync != 2 { // 2 = FULL, sqlite.org/pragma.html
 		t.Errorf("writer: journal %s, foreign keys %d, synchronous %d", journal, foreign, sync)
 	}
 	for range 4 {

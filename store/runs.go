@@ -191,7 +191,8 @@ func (s *Store) CancelRun(ctx context.Context, id int64) (run Run, err error) {
 	return run, nil
 }
 
-// cancelWaiting takes a run's waiting jobs out of the queue. A recording with an earlier verdict gets it back.
+// cancelWaiting takes a run's waiting jobs out of the queue. A recording that an earlier run is still to work on
+// shows that run's job again, and later its end; one with an earlier verdict gets that back.
 func cancelWaiting(ctx context.Context, tx *sql.Tx, runID, at int64) error {
 	if err := dequeue(ctx, tx, runID); err != nil {
 		return err
@@ -206,6 +207,10 @@ func cancelWaiting(ctx context.Context, tx *sql.Tx, runID, at int64) error {
 		{`UPDATE recordings SET state = CASE levelled WHEN '' THEN 'cancelled' ELSE levelled END, reason = levelled_reason
 			WHERE job_id IN (SELECT id FROM jobs WHERE run_id = ? AND state = 'waiting')`, []any{runID}},
 		{`UPDATE jobs SET state = 'cancelled', finished_at = ? WHERE run_id = ? AND state = 'waiting'`, []any{at, runID}},
+		{`UPDATE recordings SET state = still.state, reason = still.reason, job_id = still.id
+			FROM (SELECT id, recording_id, state, reason FROM jobs AS j WHERE state IN ('waiting', 'working')
+				AND NOT EXISTS (SELECT 1 FROM jobs WHERE recording_id = j.recording_id AND id > j.id AND state <> 'cancelled')) AS still
+			WHERE recordings.id = still.recording_id AND recordings.job_id IN (SELECT id FROM jobs WHERE run_id = ? AND state = 'cancelled')`, []any{runID}},
 	} {
 		if _, err := tx.ExecContext(ctx, step.query, step.args...); err != nil {
 			return err

@@ -130,11 +130,15 @@ func endJob(ctx context.Context, tx *sql.Tx, job Job, o level.Outcome, output st
 	return err
 }
 
-// storeReadings stores what was measured and shows it on the recording, unless a newer job has the say
-// there. A levelling that delivered nothing clears the after figures; measuring leaves them alone.
+// newestEnded is the condition that no newer job of the recording has ended, so that this one's result is the
+// latest there is. A newer job that waits has the say over the state only: it may yet be cancelled.
+const newestEnded = `NOT EXISTS (SELECT 1 FROM jobs WHERE recording_id = recordings.id AND id > ? AND state IN ('done', 'held', 'failed'))`
+
+// storeReadings stores what was measured and shows it on the recording if it is the latest. A levelling that
+// delivered nothing clears the after figures; measuring leaves them alone.
 func storeReadings(ctx context.Context, tx *sql.Tx, w Work, o level.Outcome, at int64) error {
 	show := func(query string, args ...any) error {
-		_, err := tx.ExecContext(ctx, `UPDATE recordings SET `+query+` WHERE id = ? AND job_id <= ?`, append(args, w.Recording.ID, w.Job.ID)...)
+		_, err := tx.ExecContext(ctx, `UPDATE recordings SET `+query+` WHERE id = ? AND `+newestEnded, append(args, w.Recording.ID, w.Job.ID)...)
 		return err
 	}
 	if a := o.Before; a != nil {
@@ -168,8 +172,11 @@ func showVerdict(ctx context.Context, tx *sql.Tx, w Work, end JobState, reason s
 	var err error
 	switch {
 	case w.Delivery != Measure:
-		_, err = tx.ExecContext(ctx, `UPDATE recordings SET state = ?1, reason = ?2, levelled = ?1, levelled_reason = ?2, profile = ?3
-			WHERE id = ?4 AND job_id <= ?5`, string(end), reason, w.Profile.Name, w.Recording.ID, w.Job.ID)
+		if err := showState(ctx, tx, w.Job, end, reason); err != nil {
+			return err
+		}
+		_, err = tx.ExecContext(ctx, `UPDATE recordings SET levelled = ?, levelled_reason = ?, profile = ? WHERE id = ? AND `+newestEnded,
+			string(end), reason, w.Profile.Name, w.Recording.ID, w.Job.ID)
 	case end == Done:
 		_, err = tx.ExecContext(ctx, `UPDATE recordings SET state = CASE levelled WHEN '' THEN ?1 ELSE levelled END,
 			reason = CASE levelled WHEN '' THEN ?2 ELSE levelled_reason END

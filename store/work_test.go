@@ -353,3 +353,35 @@ func TestReadingsAndTimeline(t *testing.T) {
 		t.Errorf("timeline: %+v", line)
 	}
 }
+
+// Two runs have asked for the same recording and the newer is cancelled: what the older makes of it is shown,
+// whether its job had ended, was at work, or still waited then.
+func TestCancelledRunHidesNoOlderOne(t *testing.T) {
+	for why, when := range map[string]int{"ended": 2, "at work": 1, "waiting": 0} {
+		t.Run(why, func(t *testing.T) {
+			f := open(t)
+			f.found("a.wav")
+			_, older := f.run(Copy)
+			newer, _ := f.run(Replace)
+			steps := []func(){
+				func() { f.start(older[0]) },
+				func() { f.finish(older[0], done(-30, -18), "a.wav") },
+			}
+			for _, step := range steps[:when] {
+				step()
+			}
+			if _, err := f.CancelRun(f.ctx, newer.ID); err != nil {
+				t.Fatal(err)
+			}
+			for i, step := range steps[when:] {
+				if got, want := f.byPath()["a.wav"].State, []JobState{Waiting, Working}[when+i]; got != want {
+					t.Errorf("shown as %q, want %q", got, want)
+				}
+				step()
+			}
+			if r := f.byPath()["a.wav"]; r.State != Done || r.Before == nil || r.After == nil || r.Profile != "rotation" {
+				t.Errorf("%+v", r)
+			}
+		})
+	}
+}

@@ -63,7 +63,8 @@ func inAttic(o store.Original) delivery.Original {
 
 // Restore puts a recording's original back in its place, bit for bit, and returns the recording as it is
 // then. It wraps store.ErrNotFound if the attic holds nothing of it, and store.ErrState if a job is waiting
-// for or working on it, or if the file was changed since it was levelled: then neither version is lost.
+// for or working on it, or if the files do not allow it: the one on the shelf was changed since it was levelled,
+// the one in the attic is damaged, the disk is full, read-only or away. No version is lost then.
 func (s *Service) Restore(ctx context.Context, recordingID int64) (store.Recording, error) {
 	fail := func(err error) (store.Recording, error) {
 		return store.Recording{}, fmt.Errorf("restore recording %d: %w", recordingID, err)
@@ -89,11 +90,8 @@ func (s *Service) Restore(ctx context.Context, recordingID int64) (store.Recordi
 		return fail(err)
 	}
 	err = delivery.Restore(shelf.Root, rec.Path, shelf.Attic(), inAttic(kept), fmt.Sprintf("restore-%d", recordingID))
-	if errors.Is(err, delivery.ErrChanged) {
-		err = fmt.Errorf("%w: %w", err, store.ErrState)
-	}
 	if err != nil {
-		return fail(err)
+		return fail(fmt.Errorf("%w: %w", err, store.ErrState))
 	}
 	info, err := os.Stat(filepath.Join(shelf.Root, filepath.FromSlash(rec.Path)))
 	if err != nil {

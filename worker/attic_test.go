@@ -5,6 +5,7 @@ import (
 	"errors"
 	"os"
 	"path/filepath"
+	"strings"
 	"sync"
 	"testing"
 
@@ -62,6 +63,32 @@ func TestReplaceAndRestore(t *testing.T) {
 	}
 	if left, _ := b.store.Originals(b.ctx, store.OriginalQuery{}); len(left) != 1 {
 		t.Errorf("attic: %+v", left)
+	}
+}
+
+// Why an original cannot be brought back is told to the person who asks, and going by it helps.
+func TestRestoreSaysWhatToDo(t *testing.T) {
+	b := newBench(t, "a.wav", "b.wav")
+	s := b.startService(&engine{}, 1)
+	run := b.wait(b.begin(s, store.Replace).ID, ended)
+	kept, err := b.store.Originals(b.ctx, store.OriginalQuery{RunID: run.ID})
+	if err != nil || len(kept) != 2 {
+		t.Fatal(kept, err)
+	}
+	for i, damage := range []string{filepath.Join(b.shelf.Root, "a.wav"), filepath.Join(b.shelf.Attic(), kept[1].Stored)} {
+		if err := os.WriteFile(damage, []byte("somebody's own"), 0o644); err != nil {
+			t.Fatal(err)
+		}
+		want := []string{"move the file away", "damaged"}[i]
+		if _, err := s.Restore(b.ctx, kept[i].RecordingID); !errors.Is(err, store.ErrState) || !strings.Contains(err.Error(), want) {
+			t.Errorf("%v, want ErrState that says %q", err, want)
+		}
+	}
+	if err := os.Rename(filepath.Join(b.shelf.Root, "a.wav"), filepath.Join(b.shelf.Root, "mine.wav")); err != nil {
+		t.Fatal(err)
+	}
+	if _, err := s.Restore(b.ctx, kept[0].RecordingID); err != nil || b.onShelf("a.wav") != "sound of a.wav" || b.onShelf("mine.wav") != "somebody's own" {
+		t.Errorf("%v, a.wav %q, mine.wav %q", err, b.onShelf("a.wav"), b.onShelf("mine.wav"))
 	}
 }
 

@@ -138,7 +138,7 @@ func (s *Service) Start(ctx context.Context) error {
 	if left > 0 || lost > 0 {
 		s.log.WarnContext(ctx, "the program was stopped in the middle of its work", "jobs_given_back", left, "jobs_requeued", lost)
 	}
-	if left > 0 { // only jobs that were at work can have left scratch files
+	if left > 0 { // jobs at work left scratch files; a restore clears its own away when it is repeated
 		s.sweep(ctx)
 	}
 	if err := s.client.Start(context.WithoutCancel(ctx)); err != nil {

@@ -53,15 +53,27 @@ func Replace(ctx context.Context, eng Leveller, at Place, p profile.Profile, key
 		return failed(level.Outcome{}, refusal), "", err
 	}
 	defer func() { err = errors.Join(err, d.close()) }()
+	target := d.path(at.Rel)
+	replaced, err := os.Lstat(target)
+	if err != nil {
+		return o, "", err
+	}
+	first := at.Source == target
+	if stored, err := filepath.Rel(at.Attic, at.Source); !replaced.Mode().IsRegular() || !first && (err != nil || !filepath.IsLocal(stored)) {
+		// The link would be replaced, and what it leads to be taken for the original in the attic.
+		return failed(level.Outcome{}, "a symbolic link leads to it now, so nothing can take its place"), "", nil
+	}
 	if o, err = d.level(ctx, eng, p); err != nil || o.After == nil {
 		return o, "", err
 	}
-	first := at.Source == d.path(at.Rel)
 	switch {
 	case o.Verdict.State == level.Held:
 		output = path.Join(Held, at.Rel)
 		if !strings.EqualFold(path.Ext(at.Rel), o.Extension) {
 			output += o.Extension
+		}
+		if err := d.dress(0o644); err != nil {
+			return o, "", err
 		}
 		return o, output, keep(d.path(d.scratch), filepath.Join(at.Copies, filepath.FromSlash(output)))
 	case !strings.EqualFold(path.Ext(at.Rel), o.Extension):
@@ -77,6 +89,11 @@ func Replace(ctx context.Context, eng Leveller, at Place, p profile.Profile, key
 		return o, "", err
 	}
 	if err := d.dress(d.info.Mode().Perm()); err != nil {
+		return o, "", err
+	}
+	d.own(replaced)
+	// The work took its time, and copying into the attic too: what somebody put there meanwhile is not in it.
+	if err := Unchanged(target, replaced); err != nil {
 		return o, "", err
 	}
 	if err := record(ctx, kept); err != nil {
@@ -112,6 +129,11 @@ func Restore(root, rel, attic string, kept Original, key string) error {
 		return err
 	}
 	defer r.Close()
+	if entries, err := os.ReadDir(root); err != nil {
+		return err
+	} else if len(entries) == 0 { // a mount point with nothing mounted looks like this, and takes files
+		return fmt.Errorf("%s is empty: is its disk mounted?", root)
+	}
 	d := &delivery{root: r, rel: rel, scratch: path.Join(path.Dir(rel), scratchName(path.Base(rel), key))}
 	if refusal, err := d.makeFolder(path.Dir(rel)); refusal != "" || err != nil {
 		return errors.Join(errors.New(refusal), err)
@@ -122,7 +144,7 @@ func Restore(root, rel, attic string, kept Original, key string) error {
 	case err == nil && now == kept.SHA256: // cut short after the rename: only the tidying is left to do
 		return removeIfThere(stored)
 	case err == nil && now != kept.Levelled:
-		return fmt.Errorf("%s %w", rel, ErrChanged)
+		return fmt.Errorf("%s %w; move the file away that is there now, and restore again", rel, ErrChanged)
 	case err != nil && !errors.Is(err, fs.ErrNotExist):
 		return err
 	}
@@ -131,7 +153,10 @@ func Restore(root, rel, attic string, kept Original, key string) error {
 	} else if sum != kept.SHA256 {
 		return fmt.Errorf("%s: the original in the attic is damaged: %s", rel, stored)
 	}
-	if err := errors.Join(removeIfThere(d.path(d.scratch)), keep(stored, d.path(d.scratch))); err != nil {
+	if err := removeIfThere(d.path(d.scratch)); err != nil {
+		return err
+	}
+	if err := keep(stored, d.path(d.scratch)); err != nil {
 		return err
 	}
 	if err := r.Rename(d.scratch, rel); err != nil {
@@ -164,7 +189,7 @@ func keep(from, to string) error {
 		return nil
 	}
 	folder := filepath.Dir(to)
-	if err := os.MkdirAll(folder, 0o755); err != nil {
+	if err := makeFolders(folder); err != nil {
 		return err
 	}
 	if err := removeIfThere(to); err != nil {
@@ -178,11 +203,7 @@ func keep(from, to string) error {
 			return errors.Join(fmt.Errorf("%s: the copy differs from its original", to), err, removeIfThere(to))
 		}
 	}
-	f, err := os.Open(folder)
-	if err != nil {
-		return err
-	}
-	return errors.Join(f.Sync(), f.Close())
+	return syncFolder(folder)
 }
 
 // copyFile copies content, mode and time, and syncs.

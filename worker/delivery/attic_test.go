@@ -7,6 +7,7 @@ import (
 	"path/filepath"
 	"slices"
 	"strings"
+	"syscall"
 	"testing"
 
 	"evenshelf/engine/level"
@@ -170,4 +171,88 @@ func TestCopyInsteadOfLink(t *testing.T) {
 	if got := files(t, b.src); !slices.Equal(got, []string{"a.wav=source", "b.wav=source"}) {
 		t.Errorf("%q", got)
 	}
+}
+
+// Somebody puts a file of their own in a recording's place while it is being levelled, for the first time or
+// again from its original: theirs stays, and nothing is recorded.
+func TestReplaceLeavesWhatWasPutThereMeanwhile(t *testing.T) {
+	for _, again := range []bool{false, true} {
+		b := newAtticBench(t)
+		if again {
+			if _, _, err := b.replace(&leveller{}, false); err != nil {
+				t.Fatal(err)
+			}
+			b.place.Source = filepath.Join(b.place.Attic, b.kept[0].Stored)
+			b.kept = nil
+		}
+		putThere := func() { b.write(filepath.Join(b.src, "m/a.wav"), "somebody's own") }
+		if _, output, err := b.replace(&leveller{text: " again", during: putThere}, false); err == nil || output != "" || len(b.kept) > 0 {
+			t.Errorf("again %v: %q, %v, recorded %+v", again, output, err, b.kept)
+		}
+		if got := files(t, b.src); !slices.Equal(got, []string{"m/a.wav=somebody's own"}) {
+			t.Errorf("again %v: the shelf has %q", again, got)
+		}
+	}
+}
+
+// A folder was renamed after the scan and a link left under its old name: nothing is replaced through it, or
+// the file it leads to would be taken for the original in the attic, and removed on restoring.
+func TestReplaceNothingThroughALink(t *testing.T) {
+	b := newAtticBench(t)
+	must(t, os.Rename(filepath.Join(b.src, "m"), filepath.Join(b.src, "n")))
+	must(t, os.Symlink("n", filepath.Join(b.src, "m")))
+	b.place.Source = filepath.Join(b.src, "n", "a.wav") // where links lead, as discover.Resolve returns it
+	o, output, err := b.replace(&leveller{}, false)
+	if err != nil || output != "" || o.Verdict.State != level.Failed || !strings.Contains(o.Verdict.Reason, "link") || len(b.kept) > 0 {
+		t.Errorf("%q, %v, %+v, recorded %+v", output, err, o.Verdict, b.kept)
+	}
+	if got := files(t, filepath.Join(b.src, "n")); !slices.Equal(got, []string{"a.wav=source"}) {
+		t.Errorf("the shelf has %q", got)
+	}
+}
+
+// Who could read the original has to be able to read what takes its place.
+func TestReplaceKeepsOwnerAndGroup(t *testing.T) {
+	b := newAtticBench(t)
+	uid, gid := os.Getuid(), os.Getgid()
+	if uid == 0 { // only root can make a file that is somebody else's
+		uid, gid = 1, 2
+	} else if groups, err := os.Getgroups(); err == nil && len(groups) > 0 {
+		gid = groups[len(groups)-1]
+	}
+	must(t, os.Chown(b.place.Source, uid, gid))
+	if _, _, err := b.replace(&leveller{}, false); err != nil {
+		t.Fatal(err)
+	}
+	info, err := os.Stat(filepath.Join(b.src, "m/a.wav"))
+	must(t, err)
+	if s := info.Sys().(*syscall.Stat_t); int(s.Uid) != uid || int(s.Gid) != gid {
+		t.Errorf("owner %d:%d, want %d:%d", s.Uid, s.Gid, uid, gid)
+	}
+}
+
+// A held copy is for people to listen to: readable, and of its recording's time, like one that is delivered.
+func TestReplaceDressesWhatIsHeld(t *testing.T) {
+	b := newAtticBench(t)
+	_, output, err := b.replace(&leveller{state: level.Held}, false)
+	must(t, err)
+	info, err := os.Stat(filepath.Join(b.out, output))
+	if err != nil || info.Mode().Perm() != 0o644 || !info.ModTime().Equal(sourceTime) {
+		t.Errorf("mode %v, time %v, %v", info.Mode(), info.ModTime(), err)
+	}
+}
+
+// A shelf whose disk is not mounted is an empty folder, and takes files. An original put there would be hidden
+// behind the disk later, and be gone from the attic.
+func TestRestoreNothingOntoAnEmptyShelf(t *testing.T) {
+	b := newAtticBench(t)
+	if _, _, err := b.replace(&leveller{}, false); err != nil {
+		t.Fatal(err)
+	}
+	must(t, os.Rename(b.src, b.src+"-away"))
+	must(t, os.Mkdir(b.src, 0o755))
+	if err := Restore(b.src, "m/a.wav", b.place.Attic, b.kept[0], "restore-1"); err == nil || !strings.Contains(err.Error(), "mounted") {
+		t.Errorf("got %v", err)
+	}
+	b.check(nil, []string{"m/a.*=source"})
 }

@@ -10,6 +10,7 @@ import (
 	"path"
 	"path/filepath"
 	"regexp"
+	"syscall"
 	"time"
 
 	"golang.org/x/sys/unix"
@@ -102,13 +103,47 @@ func (d *delivery) leaves(name string) bool {
 	return false
 }
 
-// syncFolder makes the names in a folder last through a power cut.
+// syncFolder is the same below the output folder.
 func (d *delivery) syncFolder(name string) error {
 	f, err := d.root.Open(name)
 	if err != nil {
 		return err
 	}
 	return errors.Join(f.Sync(), f.Close())
+}
+
+// makeFolders makes a folder anywhere and syncs those it had to make into their parents.
+func makeFolders(name string) error {
+	if info, err := os.Stat(name); err == nil && info.IsDir() {
+		return nil
+	}
+	parent := filepath.Dir(name)
+	if parent != name {
+		if err := makeFolders(parent); err != nil {
+			return err
+		}
+	}
+	if err := os.Mkdir(name, 0o755); err != nil && !errors.Is(err, fs.ErrExist) {
+		return err
+	}
+	return syncFolder(parent)
+}
+
+// syncFolder makes the names in a folder last through a power cut.
+func syncFolder(name string) error {
+	f, err := os.Open(name)
+	if err != nil {
+		return err
+	}
+	return errors.Join(f.Sync(), f.Close())
+}
+
+// own gives the scratch file the owner and group of the file it is to replace, so that whoever could use that
+// one can use the new one. Only root may give files away; others can do as much as a group they are in.
+func (d *delivery) own(like fs.FileInfo) {
+	if owner, ok := like.Sys().(*syscall.Stat_t); ok && d.root.Lchown(d.scratch, int(owner.Uid), int(owner.Gid)) != nil {
+		_ = d.root.Lchown(d.scratch, -1, int(owner.Gid))
+	}
 }
 
 // dress gives the scratch file its mode and the time of its source, so that tools which
