@@ -22,10 +22,12 @@ type runView struct {
 	store.Run
 	Parts    []part
 	Ended    int    // done, held, failed or cancelled
+	Reached  int    // those of them that had their turn: all but the cancelled
 	Delivers string // the delivery in words
 	Pace     string // audio done in a minute, in words; "" while not known
 	Left     string // time left in words, "" while not known or when finished
 	Going    bool   // waiting or working
+	Measures bool   // nothing is written, so there is no after
 }
 
 // part is one state's stretch of the progress bar, in thousandths of its length.
@@ -37,8 +39,10 @@ type part struct {
 
 func viewRun(r store.Run, now time.Time) runView {
 	v := runView{Run: r, Delivers: deliveryWords(r.Delivery)}
-	v.Ended = r.Done + r.Held + r.Failed + r.Cancelled
-	v.Going = r.State == store.RunWaiting || r.State == store.RunWorking
+	v.Reached = r.Done + r.Held + r.Failed
+	v.Ended = v.Reached + r.Cancelled
+	v.Going = going(r.State)
+	v.Measures = r.Delivery == store.Measure
 	at := 0.0
 	for _, p := range []part{
 		{State: store.Done, Jobs: r.Done}, {State: store.Held, Jobs: r.Held}, {State: store.Failed, Jobs: r.Failed},
@@ -56,6 +60,8 @@ func viewRun(r store.Run, now time.Time) runView {
 	v.pace(now)
 	return v
 }
+
+func going(s store.RunState) bool { return s == store.RunWaiting || s == store.RunWorking }
 
 // pace works out speed and time left. Bytes foretell the time left, as they are known before a file is opened.
 func (v *runView) pace(now time.Time) {

@@ -17,6 +17,7 @@ type shelfView struct {
 	SpreadAfter  *float64
 	Tolerance    *float64 // of the profile that levelled it last, LU
 	Measurements bool     // the last run only measured
+	Going        bool     // the last run has not ended yet
 	Whole        bool     // the shelf has a page, or the start page, to itself
 	TakesUploads bool     // it is the one shelf that does
 }
@@ -33,6 +34,7 @@ func viewShelf(s store.ShelfSummary) shelfView {
 	if s.LastRun != nil {
 		v.Tolerance = tolerance(s.LastRun.Profile)
 		v.Measurements = s.LastRun.Delivery == store.Measure
+		v.Going = going(s.LastRun.State)
 	}
 	return v
 }

@@ -57,9 +57,15 @@ func everyPage() map[string]struct {
 	}
 	full, finished, waiting := newFake(96), newFake(40), newFake(10)
 	finished.runList[0].State, finished.runList[0].FinishedAt = store.RunFinished, new(noon)
+	finished.shelfList[0].LastRun = &finished.runList[0]
+	measuring := newFake(40)
+	measuring.runList[0].Delivery = store.Measure
+	measuring.shelfList[0].LastRun = &measuring.runList[0]
 	waiting.runList[0].State, waiting.runList[0].StartedAt = store.RunWaiting, nil
 	cancelled := newFake(30)
-	cancelled.runList[0].State = store.RunCancelled
+	stopped := &cancelled.runList[0]
+	stopped.State, stopped.Jobs, stopped.Done, stopped.Held, stopped.Failed = store.RunCancelled, 30, 11, 2, 1
+	stopped.Waiting, stopped.Working, stopped.Cancelled = 0, 0, 16
 	fresh := &fake{shelfList: []store.ShelfSummary{{Shelf: store.Shelf{ID: 1, Name: "uploads"}}}}
 	unmeasured := newFake(5)
 	unmeasured.shelfList[0].Measured = 0
@@ -67,6 +73,7 @@ func everyPage() map[string]struct {
 		"full": {full, []string{"/", "/shelves/1", "/runs", "/runs/12", "/runs/12?state=held", "/recordings", "/recordings?state=held&sort=after&order=desc",
 			"/recordings?run=12&q=amber", "/recordings/1", "/recordings/2", "/recordings/3", "/recordings/14", "/recordings/18", "/recordings/42", "/recordings/41"}},
 		"finished":   {finished, []string{"/runs/12", "/"}},
+		"measuring":  {measuring, []string{"/", "/runs", "/runs/12"}},
 		"waiting":    {waiting, []string{"/runs/12"}},
 		"replaced":   {newReplaced(40), []string{"/", "/shelves/1", "/runs", "/runs/12", "/recordings/1", "/recordings/2", "/recordings/18"}},
 		"cancelled":  {cancelled, []string{"/runs/12"}},
@@ -131,7 +138,12 @@ func TestSentences(t *testing.T) {
 	for _, c := range []struct{ state, path, want string }{
 		{"full", "/", "Quietest to loudest differ by 41.0 LU as they arrived, and by 0.5 LU since they were levelled."},
 		{"full", "/", "83 levelled, 3 held for a listen, 1 failed"},
-		{"full", "/shelves/1", "Last levelled with rotation today at 11:20."},
+		{"full", "/shelves/1", "Run 12 is levelling it with rotation now."},
+		{"measuring", "/", "Run 12 is measuring it now."},
+		{"measuring", "/runs/12", "Run 12, started today at 11:20: only measuring, nothing is written."},
+		{"measuring", "/runs", "Run 12, today at 11:20: only measuring, nothing is written."},
+		{"measuring", "/runs/12", "RecordingLoudnessRangeTrue peakStateWhy"},
+		{"finished", "/", "Last levelled with rotation today at 11:20."},
 		{"full", "/runs/12", "87 of 93 recordings ended, about 4 minutes left."},
 		{"full", "/runs/12?state=held", "clipped at the source 214 times; the copy may sound harsh"},
 		{"full", "/recordings/18", "Held for a listen: clipped at the source 214 times; the copy may sound harsh. Lowered by 6.4 dB to −17.9 LUFS."},
@@ -149,7 +161,7 @@ func TestSentences(t *testing.T) {
 		{"replaced", "/recordings/1", "The original is back in its place, bit for bit."},
 		{"replaced", "/recordings/1", "the original is back, bit for bit"},
 		{"waiting", "/runs/12", "recordings wait for the first free hand."},
-		{"cancelled", "/runs/12", "what was done stays done."},
+		{"cancelled", "/runs/12", "Cancelled after 14 of 30 recordings; what was done stays done."},
 		{"unmeasured", "/", "5 recordings found, none measured yet."},
 		{"fresh", "/", "No shelf yet"},
 		{"fresh", "/", "They go to the shelf uploads and are kept as they are."},
@@ -179,6 +191,8 @@ func TestSentencesThatAreNotSaid(t *testing.T) {
 	}{store: empty}
 	for _, c := range []struct{ state, path, not string }{
 		{"full", "/runs/12", "attic"},
+		{"full", "/", "Last levelled"},
+		{"measuring", "/runs/12", "−18.0 LUFS"},
 		{"full", "/recordings/18", "attic"},
 		{"full", "/recordings/18", "not replaced"},
 		{"replaced", "/runs/12", "not touched"},

@@ -28,7 +28,7 @@ func stateWords(s store.JobState) string {
 func deliveryWords(d store.Delivery) string {
 	switch d {
 	case store.Measure:
-		return "only measured; nothing written"
+		return "only measuring, nothing is written"
 	case store.Copy:
 		return "levelled copies; originals not touched"
 	case store.Replace:

@@ -18,7 +18,7 @@ export function parts(root) {
 
 // say puts a sentence where a person and a screen reader find it.
 export function say(node, words, wrong = false) {
-  node.textContent = words;
+  if (node.textContent !== words) node.textContent = words; // the same again would be read out again
   node.classList.toggle("wrong", wrong);
 }
 
@@ -34,8 +34,8 @@ export function colours(...names) {
   return read;
 }
 
-// onTheme calls back when the colours change, by the switch or by the system.
+// onTheme calls back when the colours change: by the switch, by the system, or because paper is always light.
 export function onTheme(callback) {
-  matchMedia("(prefers-color-scheme: dark)").addEventListener("change", callback);
+  for (const query of ["(prefers-color-scheme: dark)", "print"]) matchMedia(query).addEventListener("change", callback);
   new MutationObserver(callback).observe(document.documentElement, { attributeFilter: ["data-theme"] });
 }

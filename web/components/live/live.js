@@ -3,6 +3,7 @@
 import { say } from "../../dom.js";
 
 const PAUSE = 1000; // ms between two looks, however fast the events come
+const RETRY = 5000; // ms until a refused stream is asked for again
 
 export function mount(root) {
   const says = document.getElementById(root.dataset.says);
@@ -27,24 +28,34 @@ export function mount(root) {
     busy = false;
   }
 
-  const stream = new EventSource(root.dataset.events);
+  // A lost connection is taken up again by the browser; an answer that is no stream ends its trying, and then
+  // it is up to us.
+  let stream;
+  function follow() {
+    stream = new EventSource(root.dataset.events);
+    stream.addEventListener("job", happened);
+    stream.addEventListener("run", happened);
+    stream.addEventListener("end", ended);
+    stream.addEventListener("open", () => say(says, ""));
+    stream.addEventListener("error", lost);
+  }
   const happened = () => {
     due = true;
     look();
   };
-  stream.addEventListener("job", happened);
-  stream.addEventListener("run", happened);
-  stream.addEventListener("end", async () => {
+  async function ended() {
     over = true;
     stream.close();
     await refresh().catch(() => {});
     root.querySelector("[data-component='cancel']")?.remove();
     say(says, "The run has ended.");
-  });
-  stream.addEventListener("error", () => {
-    if (!over) say(says, "The connection was lost; trying again.", true);
-  });
-  stream.addEventListener("open", () => say(says, ""));
+  }
+  function lost() {
+    if (over) return;
+    say(says, "The connection was lost; trying again.", true);
+    if (stream.readyState === EventSource.CLOSED) setTimeout(follow, RETRY);
+  }
+  follow();
 }
 
 async function refresh() {

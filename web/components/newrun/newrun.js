@@ -22,10 +22,12 @@ export function mount(button) {
     }
   }
 
-  // Replacing is the one delivery that changes the shelf: it takes a second step, anew each time.
+  // Measuring needs no profile to choose. Replacing is the one delivery that changes the shelf: it takes a
+  // second step, anew each time.
   const { sure } = form.elements;
   function ask() {
     const replaces = form.elements.delivery.value === "replace";
+    part.how.hidden = form.elements.delivery.value === "measure";
     part.sure.hidden = !replaces;
     sure.required = replaces;
     sure.checked = false;

@@ -71,13 +71,11 @@ export function mount(root) {
   for (const sound of Object.values(sounds)) {
     sound.addEventListener("play", () => {
       part.play.textContent = "Pause";
-      part.play.setAttribute("aria-pressed", "true");
       if (sound === sounds[heard]) requestAnimationFrame(frame);
     });
     sound.addEventListener("pause", () => {
       if (sound !== sounds[heard]) return;
       part.play.textContent = "Listen";
-      part.play.setAttribute("aria-pressed", "false");
     });
     sound.addEventListener("error", () => {
       pause();

@@ -9,7 +9,7 @@ const BOTTOM = 6;
 // frame gives the plot's edges inside a canvas. Narrow canvases have no room for a gutter at the right.
 export function frame(width, height, extra) {
   const narrow = width < 560;
-  return { left: narrow ? 38 : 52, right: width - (narrow ? 12 : 98), top: TOP, bottom: height - BOTTOM - extra, narrow, width, height };
+  return { left: narrow ? 42 : 52, right: width - (narrow ? 12 : 98), top: TOP, bottom: height - BOTTOM - extra, narrow, width, height };
 }
 
 export const EXTRA = 2 * ROW + LABELS;
@@ -47,13 +47,15 @@ export class Panel {
     this.pen.fillText(words, x, y);
   }
 
-  grid() {
+  // grid leaves out a figure that the target, where it stands in the same gutter, would touch.
+  grid(target) {
     const { pen, box } = this;
     pen.lineWidth = 1;
     pen.strokeStyle = this.ink.hair;
     for (const tick of this.scale.ticks) {
       const y = Math.round(this.y(tick)) + 0.5;
       line(pen, box.left, y, box.right, y);
+      if (this.box.narrow && Math.abs(y - this.y(target)) < 13) continue;
       this.text(tick < 0 ? `−${-tick}` : String(tick), box.left - 10, y, { align: "right" });
     }
   }
@@ -67,16 +69,12 @@ export class Panel {
     line(pen, box.left, y, box.right, y);
     pen.setLineDash([]);
     if (box.narrow) {
-      pen.font = `700 12px ${this.font}`;
-      const wide = pen.measureText(`target ${words}`).width;
-      pen.fillStyle = this.ink.sheet;
-      pen.fillRect(box.right - wide - 6, y - 18, wide + 6, 15);
-      this.text(`target ${words}`, box.right, y - 10, { align: "right", weight: 700, colour: this.ink.ink });
+      this.text(words, box.left - 7, y, { align: "right", weight: 700, colour: this.ink.ink });
       return;
     }
     line(pen, box.right, y, box.right + 6, y);
     this.text("target", box.right + 11, y - 8);
-    this.text(words, box.right + 11, y + 8, { weight: 700, colour: this.ink.ink, size: 13 });
+    this.text(`${words} LUFS`, box.right + 11, y + 8, { weight: 700, colour: this.ink.ink, size: 13 });
   }
 
   // snap moves an edge onto a device pixel, so that thin outlines stay crisp.

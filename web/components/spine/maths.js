@@ -58,10 +58,13 @@ export function axis(feet, highestPeak) {
   return { low, high, ticks };
 }
 
+// LEAST is how many places a window shows at its narrowest.
+export const LEAST = 8;
+
 // zoomed narrows or widens a window of places around `at` (0 … 1 of its width), never past the whole.
-export function zoomed(view, total, factor, at, least = 8) {
+export function zoomed(view, total, factor, at) {
   const width = view.to - view.from;
-  const next = Math.min(Math.max(Math.round(width * factor), Math.min(least, total)), total);
+  const next = Math.min(Math.max(Math.round(width * factor), Math.min(LEAST, total)), total);
   const from = Math.round(view.from + (width - next) * at);
   return clamped(from, next, total);
 }

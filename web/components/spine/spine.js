@@ -5,7 +5,7 @@ import { colours, onTheme, parts } from "../../dom.js";
 import { count, defined, number } from "../../figures.js";
 import { EXTRA, Panel, frame, prepare } from "./draw.js";
 import { Shelf } from "./data.js";
-import { axis, gather, panned, slots, spine, within, zoomed } from "./maths.js";
+import { LEAST, axis, gather, panned, slots, spine, within, zoomed } from "./maths.js";
 import { figuresTable } from "./table.js";
 import { listen } from "./gestures.js";
 import { fill, sentence } from "./tip.js";
@@ -163,12 +163,14 @@ export class SpineChart {
     this.font ??= getComputedStyle(this.root).fontFamily;
     for (const kind of ["before", "after"]) {
       const { pen, width, height } = prepare(this.part[kind]);
-      const panel = new Panel(pen, frame(width, height, kind === "after" ? EXTRA : 0), this.scale, this.ink, this.font);
+      const { shelf } = this;
+      const box = frame(width, height, kind === "after" ? EXTRA : 0);
+      const panel = new Panel(pen, box, this.scale, this.ink, this.font);
       this.backdrop(panel);
-      panel.grid();
+      panel.grid(shelf.target);
       const wide = panel.snap(Math.min(Math.max(this.pitch * 0.66, 2), 20));
       this.bars.forEach((bar, i) => this.paint(panel, kind, bar, panel.snap(this.left + i * this.pitch + (this.pitch - wide) / 2), wide));
-      if (defined(this.shelf.target)) panel.target(this.shelf.target, `${number(this.shelf.target)} LUFS`);
+      if (defined(shelf.target)) panel.target(shelf.target, number(shelf.target, box.narrow && Number.isInteger(shelf.target) ? 0 : 1));
       if (kind === "after") this.labels(panel);
     }
   }
@@ -225,6 +227,9 @@ export class SpineChart {
     const zoomed = width < shelf.total;
     part.track.hidden = !zoomed;
     part.thumb.style.left = `${(100 * view.from) / shelf.total}%`;
+    for (const button of part.tools.querySelectorAll("[data-zoom]")) {
+      button.disabled = button.dataset.zoom === "in" ? width <= Math.min(LEAST, shelf.total) : !zoomed;
+    }
     part.thumb.style.width = `${(100 * width) / shelf.total}%`;
     if (!part.figures) return;
     const each = Math.round(width / Math.max(this.bars.length, 1));
