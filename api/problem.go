@@ -80,14 +80,16 @@ func problemOf(err error) *problem {
 		return p
 	case errors.As(err, &tooLarge):
 		return kindTooLarge.with("the request is larger than " + bytesInWords(tooLarge.Limit))
-	case errors.Is(err, store.ErrNotFound):
-		return kindNotFound.with(err.Error())
-	case errors.Is(err, store.ErrExists):
-		return kindExists.with(err.Error())
-	case errors.Is(err, store.ErrState):
-		return kindState.with(err.Error())
-	case errors.Is(err, store.ErrInvalid):
-		return kindInvalid.with(err.Error())
+	}
+	for _, known := range []struct {
+		sentinel error
+		kind     kind
+	}{
+		{store.ErrNotFound, kindNotFound}, {store.ErrExists, kindExists}, {store.ErrState, kindState}, {store.ErrInvalid, kindInvalid},
+	} {
+		if errors.Is(err, known.sentinel) { // the title says it already
+			return known.kind.with(strings.TrimSuffix(err.Error(), ": "+known.sentinel.Error()))
+		}
 	}
 	return kindInternal.with("")
 }

@@ -5,6 +5,7 @@ import (
 	"database/sql"
 	"errors"
 	"fmt"
+	"io/fs"
 	"os"
 	"path/filepath"
 	"regexp"
@@ -83,12 +84,18 @@ func resolveRoot(root string) (string, error) {
 		return "", fmt.Errorf("the root %q is not an absolute path: %w", root, ErrInvalid)
 	}
 	real, err := filepath.EvalSymlinks(root)
-	if err != nil {
-		return "", fmt.Errorf("the root: %w: %w", err, ErrInvalid)
+	var info os.FileInfo
+	if err == nil {
+		info, err = os.Stat(real)
 	}
-	info, err := os.Stat(real)
-	if err != nil {
-		return "", fmt.Errorf("the root: %w: %w", err, ErrInvalid)
+	var failed *fs.PathError
+	switch {
+	case errors.Is(err, fs.ErrNotExist):
+		return "", fmt.Errorf("there is no folder %s: %w", root, ErrInvalid)
+	case errors.As(err, &failed):
+		return "", fmt.Errorf("the folder %s cannot be opened: %w: %w", root, failed.Err, ErrInvalid)
+	case err != nil:
+		return "", fmt.Errorf("the folder %s cannot be opened: %w: %w", root, err, ErrInvalid)
 	}
 	if !info.IsDir() {
 		return "", fmt.Errorf("the root %s is not a folder: %w", real, ErrInvalid)
