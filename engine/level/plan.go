@@ -11,6 +11,9 @@ import (
 const (
 	// peakTolerance is how far a true peak may read over the ceiling, dB: the meter's own error.
 	peakTolerance = 0.05
+	// peakAim is how far over the ceiling a peak may be before another rendering is worth while, dB: only
+	// a lossy encoder gets there.
+	peakAim = 0.01
 	// leastGain is the smallest gain worth a new file, dB.
 	leastGain = 0.05
 	// anotherRender is the change of gain from which on another rendering is worth while, dB: what a lossy
@@ -86,7 +89,7 @@ func signed(v float64) string {
 func (plan Plan) again(p profile.Profile, before, after *Analysis) (next Plan, ok bool) {
 	next = plan
 	over := audio.DB(after.TruePeak - p.Ceiling)
-	if over > peakTolerance {
+	if over > peakAim {
 		next.Ceiling = plan.Ceiling - audio.DBTP(over) - 0.02
 	}
 	room := audio.DB(next.Ceiling - before.TruePeak)
@@ -99,7 +102,7 @@ func (plan Plan) again(p profile.Profile, before, after *Analysis) (next Plan, o
 // closer reports whether one rendering came out closer to the profile than another: first by how far its
 // peaks pass the ceiling, then by its distance from the target.
 func closer(p profile.Profile, a, b *Analysis) bool {
-	over := func(x *Analysis) audio.DB { return max(0, audio.DB(x.TruePeak-p.Ceiling)-peakTolerance) }
+	over := func(x *Analysis) audio.DB { return max(0, audio.DB(x.TruePeak-p.Ceiling)-peakAim) }
 	if over(a) != over(b) {
 		return over(a) < over(b)
 	}

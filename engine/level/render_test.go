@@ -72,7 +72,8 @@ func TestCloser(t *testing.T) {
 		{reading(-18.1, -2), reading(-17.7, -2), true},
 		{reading(-17.7, -2), reading(-18.1, -2), false},
 		{reading(-18.2, -1), reading(-18, -0.5), true},    // over the ceiling is worse than any distance
-		{reading(-18, -0.98), reading(-18.1, -5), true},   // within the meter's error is not over
+		{reading(-18, -0.98), reading(-18.1, -5), false},  // over is over while there is a rendering that is not
+		{reading(-18, -0.995), reading(-18.1, -5), true},  // rounding is not
 		{reading(-18, -0.5), reading(-18.1, -0.9), false}, // less over goes before closer
 		{reading(-18, -2), reading(-18, -3), false},
 	} {
