@@ -37,6 +37,7 @@ type Store interface {
 	AddShelf(ctx context.Context, sh store.Shelf) (store.Shelf, error)
 	Shelves(ctx context.Context) ([]store.ShelfSummary, error)
 	Shelf(ctx context.Context, id int64) (store.ShelfSummary, error)
+	ShelfNamed(ctx context.Context, name string) (store.Shelf, error)
 	Spines(ctx context.Context, shelfID int64) ([]store.Spine, error)
 
 	Recording(ctx context.Context, id int64) (store.Recording, error)

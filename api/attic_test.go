@@ -49,9 +49,20 @@ func TestReplacedRecordingPlaysItsOriginal(t *testing.T) {
 		t.Errorf("the replaced recording's place holds %q, %v", there, err)
 	}
 
-	// A copy made later is of the levelled file, and so is the reading before it.
+	// A copy made later is levelled from the original too, and so is the reading before it.
 	_, jobs = h.start()
 	h.finish(jobs[0], level.Done)
+	want(replaced, arrived[replaced.Path], "levelled "+replaced.Path)
+
+	// Measuring alone reads the levelled file.
+	_, jobs = h.startRun(store.Measure)
+	if _, err := h.db.StartJob(t.Context(), jobs[0].ID); err != nil {
+		t.Fatal(err)
+	}
+	measured := level.Outcome{Before: analysis(-18.04, -3), Verdict: level.Verdict{State: level.Done}}
+	if err := h.db.FinishJob(t.Context(), jobs[0].ID, measured, "", nil); err != nil {
+		t.Fatal(err)
+	}
 	want(replaced, "levelled "+replaced.Path, "levelled "+replaced.Path)
 }
 

@@ -48,15 +48,15 @@ func (a *API) openSound(c *gin.Context, before bool, disposition string) (int, a
 	if err != nil {
 		return 0, nil, err
 	}
-	shelf, err := a.Store.Shelf(ctx, recording.ShelfID)
+	shelf, err := a.Store.ShelfNamed(ctx, recording.ShelfName) // Shelf would count all its recordings
 	if err != nil {
 		return 0, nil, err
 	}
 	var dir, name string
 	if before {
-		dir, name, err = a.fileBefore(ctx, shelf.Shelf, recording)
+		dir, name, err = a.fileBefore(ctx, shelf, recording)
 	} else {
-		dir, name, err = a.fileAfter(ctx, shelf.Shelf, recording)
+		dir, name, err = a.fileAfter(ctx, shelf, recording)
 	}
 	if err != nil {
 		return 0, nil, err
@@ -93,19 +93,19 @@ func (a *API) fileBefore(ctx context.Context, shelf store.Shelf, r store.Recordi
 }
 
 // wasMeasured reports whether the before reading is of the original in the attic: it was taken by the job that
-// moved it there, or by a later one that levelled the original again but was held or failed, and so left the
-// first levelled file in its place. Every other job measures the file on the shelf.
+// moved it there, or by a later one that levelled it again without taking the place of the first levelled file
+// (a copy, or a replacing that was held or failed). A job that only measures reads the file on the shelf.
 func (a *API) wasMeasured(ctx context.Context, r store.Recording, original store.Original) (bool, error) {
 	reading, _, err := a.Store.Readings(ctx, r.ID)
 	if err != nil || reading == nil || reading.JobID == original.JobID {
 		return err == nil && reading != nil, err
 	}
 	job, err := a.Store.Job(ctx, reading.JobID)
-	if err != nil || job.State == store.Done || r.Size != original.Size { // another size: somebody's new file
+	if err != nil || r.Size != original.Size { // another size: somebody's new file
 		return false, err
 	}
 	run, err := a.Store.Run(ctx, job.RunID)
-	return run.Delivery == store.Replace, err
+	return run.Delivery == store.Copy || run.Delivery == store.Replace && job.State != store.Done, err
 }
 
 // fileAfter is what the recording's newest delivering job made. What took the original's place is gone once
