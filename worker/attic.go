@@ -85,7 +85,7 @@ func (s *Service) Restore(ctx context.Context, recordingID int64) (store.Recordi
 	if err != nil {
 		return fail(err)
 	}
-	shelf, err := s.store.Shelf(ctx, rec.ShelfID)
+	shelf, err := s.store.ShelfNamed(ctx, rec.ShelfName) // Shelf would count all its recordings
 	if err != nil {
 		return fail(err)
 	}

@@ -75,7 +75,11 @@ func Replace(ctx context.Context, eng Leveller, at Place, p profile.Profile, key
 		if err := d.dress(0o644); err != nil {
 			return o, "", err
 		}
-		return o, output, keep(d.path(d.scratch), filepath.Join(at.Copies, filepath.FromSlash(output)))
+		sum, _, err := digest(d.path(d.scratch))
+		if err != nil {
+			return o, "", err
+		}
+		return o, output, keep(d.path(d.scratch), sum, filepath.Join(at.Copies, filepath.FromSlash(output)))
 	case !strings.EqualFold(path.Ext(at.Rel), o.Extension):
 		return failed(o, fmt.Sprintf("it can only be written as %s here, so the copy cannot take its place", o.Extension)), "", nil
 	case first && o.Plan != nil && o.Plan.Untouched:
@@ -118,7 +122,7 @@ func (d *delivery) toAttic(attic string, first bool) (Original, error) {
 	// The name carries the hash, so that another recording that comes to this path later has a place too.
 	ext := path.Ext(d.rel)
 	stored := strings.TrimSuffix(d.rel, ext) + "." + sum[:12] + ext
-	return Original{Stored: stored, SHA256: sum}, keep(d.source, filepath.Join(attic, filepath.FromSlash(stored)))
+	return Original{Stored: stored, SHA256: sum}, keep(d.source, sum, filepath.Join(attic, filepath.FromSlash(stored)))
 }
 
 // Restore puts the original back at rel below root, bit for bit, and takes it out of the attic. It may be
@@ -135,8 +139,10 @@ func Restore(root, rel, attic string, kept Original, key string) error {
 		return fmt.Errorf("%s is empty: is its disk mounted?", root)
 	}
 	d := &delivery{root: r, rel: rel, scratch: path.Join(path.Dir(rel), scratchName(path.Base(rel), key))}
-	if refusal, err := d.makeFolder(path.Dir(rel)); refusal != "" || err != nil {
-		return errors.Join(errors.New(refusal), err)
+	if refusal, err := d.makeFolder(path.Dir(rel)); err != nil {
+		return err
+	} else if refusal != "" {
+		return errors.New(refusal)
 	}
 	stored := filepath.Join(attic, filepath.FromSlash(kept.Stored))
 	now, _, err := digest(d.path(rel))
@@ -156,7 +162,7 @@ func Restore(root, rel, attic string, kept Original, key string) error {
 	if err := removeIfThere(d.path(d.scratch)); err != nil {
 		return err
 	}
-	if err := keep(stored, d.path(d.scratch)); err != nil {
+	if err := keep(stored, kept.SHA256, d.path(d.scratch)); err != nil {
 		return err
 	}
 	if err := r.Rename(d.scratch, rel); err != nil {
@@ -178,13 +184,10 @@ func removeIfThere(path string) error {
 	return nil
 }
 
-// keep makes to the same file as from: by a second link, or where that cannot be (another file system)
-// by a copy that is read back and compared. A file that is there with the same bytes is left alone.
-func keep(from, to string) error {
-	sum, _, err := digest(from)
-	if err != nil {
-		return err
-	}
+// keep makes to the same file as from, whose digest is sum: by a second link, or where that cannot be
+// (another file system) by a copy that is read back and compared. A file that is there with the same bytes
+// is left alone.
+func keep(from, sum, to string) error {
 	if there, _, err := digest(to); err == nil && there == sum {
 		return nil
 	}
