@@ -136,16 +136,18 @@ type usageError string
 func (u usageError) Error() string { return string(u) }
 
 func (a *app) engine() (*level.Engine, error) {
-	tools := media.Find()
 	switch a.FFmpeg {
 	case "":
+		return &level.Engine{Media: media.Find()}, nil
 	case "none":
-		tools = media.New("")
-	default:
-		if _, err := os.Stat(a.FFmpeg); err != nil {
-			return nil, fmt.Errorf("--ffmpeg: %w", err)
-		}
-		tools = media.New(a.FFmpeg)
+		return &level.Engine{Media: media.New("")}, nil
+	}
+	if _, err := os.Stat(a.FFmpeg); err != nil {
+		return nil, fmt.Errorf("--ffmpeg: %w", err)
+	}
+	tools := media.New(a.FFmpeg)
+	if tools.FFmpeg() == "" {
+		return nil, fmt.Errorf("--ffmpeg: %s cannot be run, or has no ffprobe", a.FFmpeg)
 	}
 	return &level.Engine{Media: tools}, nil
 }

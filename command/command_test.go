@@ -69,6 +69,14 @@ func TestWrongUsageIsTwo(t *testing.T) {
 	}
 }
 
+// A codec that was asked for by name and cannot be run is an error, not a reason to do without in silence.
+func TestFFmpegThatCannotRunIsSaid(t *testing.T) {
+	path := write(t, filepath.Join(t.TempDir(), "ffmpeg"), "not a program")
+	if code, _, stderr := run(t, "--ffmpeg", path, "version"); code != exitSome || !strings.Contains(stderr, path) {
+		t.Errorf("exit code %d, %q", code, stderr)
+	}
+}
+
 func TestHelpNamesEveryCommand(t *testing.T) {
 	code, out, _ := run(t, "--help")
 	if code != exitFine {

@@ -29,8 +29,7 @@ import (
 // TestMain lets this test program play the part of the real one, so that a test can kill it.
 func TestMain(m *testing.M) {
 	if os.Getenv("EVENSHELF_TEST_CHILD") != "" {
-		main := context.Background()
-		os.Exit(Run(main, os.Args[1:], os.Stdout, os.Stderr))
+		os.Exit(Run(context.Background(), os.Args[1:], os.Stdout, os.Stderr))
 	}
 	os.Exit(m.Run())
 }
