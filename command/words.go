@@ -6,16 +6,15 @@ import (
 	"strings"
 	"unicode"
 	"unicode/utf8"
+
+	"evenshelf/engine/audio"
 )
 
 // figure writes a number to one decimal with a true minus sign, right-aligned; an undefined one is a dash.
 func figure(v float64, width int) string {
 	s := "–"
 	if !math.IsNaN(v) && !math.IsInf(v, 0) {
-		s = strings.Replace(fmt.Sprintf("%.1f", v), "-", "−", 1)
-		if s == "−0.0" {
-			s = "0.0"
-		}
+		s = audio.Number(v, 1)
 	}
 	return strings.Repeat(" ", max(0, width-utf8.RuneCountInString(s))) + s
 }

@@ -9,12 +9,11 @@ import (
 	"strconv"
 	"strings"
 	"time"
+
+	"evenshelf/engine/audio"
 )
 
-const (
-	minus  = "−" // U+2212: as wide as a digit and as high as a plus
-	narrow = "\u202f"
-)
+const narrow = "\u202f" // a space that does not break
 
 // functions are what templates may call. Figures arrive as any float type or a pointer to one.
 func functions(a *assets, now func() time.Time) template.FuncMap {
@@ -22,7 +21,7 @@ func functions(a *assets, now func() time.Time) template.FuncMap {
 		"static":   a.url,
 		"sheets":   a.sheets,
 		"figure":   func(v any, unit string) figure { return newFigure(v, unit) },
-		"number":   func(v any) string { f, _ := value(v); return number(f, 1) },
+		"number":   func(v any) string { f, _ := value(v); return audio.Number(f, 1) },
 		"spread":   func(v any) string { f, _ := value(v); return spreadWords(f) },
 		"signed":   func(v any) string { f, _ := value(v); return signed(f) },
 		"count":    func(n any) string { return count(reflect.ValueOf(n).Int()) },
@@ -60,7 +59,7 @@ func spreadWords(f float64) string {
 	if f < 0.05 {
 		return "less than 0.1"
 	}
-	return number(f, 1)
+	return audio.Number(f, 1)
 }
 
 // figure is a number with its unit, or the dash that stands for one that is not defined.
@@ -74,21 +73,12 @@ func newFigure(v any, unit string) figure {
 	if !ok {
 		return figure{}
 	}
-	return figure{true, number(f, 1), unit}
+	return figure{true, audio.Number(f, 1), unit}
 }
 
-// number writes f with a true minus and a fixed count of decimals. What rounds to zero has no sign.
-func number(f float64, decimals int) string {
-	s := strconv.FormatFloat(math.Abs(f), 'f', decimals, 64)
-	if f < 0 && strings.Trim(s, "0.") != "" {
-		return minus + s
-	}
-	return s
-}
-
-// signed is number with a plus where it is one: for differences and gains.
+// signed is audio.Number with a plus where it is one: for differences and gains.
 func signed(f float64) string {
-	s := number(f, 1)
+	s := audio.Number(f, 1)
 	if f > 0 && strings.Trim(s, "0.") != "" {
 		return "+" + s
 	}
@@ -118,9 +108,9 @@ func length(s float64, ok bool) string {
 	case !ok || s < 0:
 		return "–"
 	case s < 9.95:
-		return number(s, 1) + narrow + "s"
+		return audio.Number(s, 1) + narrow + "s"
 	case s < 59.5:
-		return number(s, 0) + narrow + "s"
+		return audio.Number(s, 0) + narrow + "s"
 	}
 	if t := int64(math.Round(s)); t < 3600 {
 		return fmt.Sprintf("%d%smin %d%ss", t/60, narrow, t%60, narrow)
@@ -150,11 +140,11 @@ func size(n int64) string {
 			if unit == "bytes" {
 				return count(n) + narrow + unit
 			}
-			return number(f, 1) + narrow + unit
+			return audio.Number(f, 1) + narrow + unit
 		}
 		f /= 1000
 	}
-	return number(f, 1) + narrow + "TB"
+	return audio.Number(f, 1) + narrow + "TB"
 }
 
 // moment takes a time or a pointer to one.

@@ -13,7 +13,7 @@ import (
 
 func TestNumbers(t *testing.T) {
 	for _, c := range []struct{ got, want string }{
-		{number(-18, 1), "−18.0"}, {number(-0.04, 1), "0.0"}, {number(11.25, 1), "11.2"}, {signed(0.04), "0.0"}, {signed(3), "+3.0"}, {signed(-3), "−3.0"},
+		{audio.Number(-18, 1), "−18.0"}, {audio.Number(-0.04, 1), "0.0"}, {audio.Number(11.25, 1), "11.2"}, {signed(0.04), "0.0"}, {signed(3), "+3.0"}, {signed(-3), "−3.0"},
 		{count(0), "0"}, {count(999), "999"}, {count(1000), "1,000"}, {count(100000), "100,000"}, {count(int64(-1234567)), "-1,234,567"},
 		{clock(3.2), "0:03.2"}, {clock(59.96), "1:00.0"}, {clock(3723.44), "1:02:03.4"}, {clock(-1), "0:00.0"}, {clock(math.NaN()), "0:00.0"},
 		{length(22320, true), "6 h 12 min"}, {length(204, true), "3 min 24 s"}, {length(8.16, true), "8.2 s"}, {length(59.7, true), "1 min 0 s"}, {length(0, false), "–"},

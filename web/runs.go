@@ -9,6 +9,7 @@ import (
 
 	"github.com/gin-gonic/gin"
 
+	"evenshelf/engine/audio"
 	"evenshelf/store"
 )
 
@@ -77,9 +78,9 @@ func (v *runView) pace(now time.Time) {
 		return
 	}
 	if minutes := v.SecondsDone / took; minutes < 60 {
-		v.Pace = number(minutes, 1) + " minutes"
+		v.Pace = audio.Number(minutes, 1) + " minutes"
 	} else {
-		v.Pace = number(minutes/60, 1) + " hours"
+		v.Pace = audio.Number(minutes/60, 1) + " hours"
 	}
 	if v.Going && v.BytesDone > 0 && v.BytesTotal > v.BytesDone {
 		v.Left = about(took * float64(v.BytesTotal-v.BytesDone) / float64(v.BytesDone))

@@ -7,6 +7,7 @@ import (
 	"unicode"
 	"unicode/utf8"
 
+	"evenshelf/engine/audio"
 	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
@@ -94,7 +95,7 @@ func told(r store.Recording, run *store.Run, job *store.Job) string {
 func action(r store.Recording, run *store.Run, job *store.Job) string {
 	if job == nil || job.Plan == nil {
 		if r.After != nil && r.After.Integrated != nil {
-			return fmt.Sprintf("Now at %s LUFS.", number(*r.After.Integrated, 1))
+			return fmt.Sprintf("Now at %s LUFS.", audio.Number(*r.After.Integrated, 1))
 		}
 		return "Finished."
 	}
@@ -111,15 +112,15 @@ func action(r store.Recording, run *store.Run, job *store.Job) string {
 	case math.Abs(gain) < 0.05:
 		b.WriteString("Left at its level")
 	case gain > 0:
-		fmt.Fprintf(&b, "Lifted by %s dB", number(gain, 1))
+		fmt.Fprintf(&b, "Lifted by %s dB", audio.Number(gain, 1))
 	default:
-		fmt.Fprintf(&b, "Lowered by %s dB", number(-gain, 1))
+		fmt.Fprintf(&b, "Lowered by %s dB", audio.Number(-gain, 1))
 	}
 	if r.After != nil && r.After.Integrated != nil {
-		fmt.Fprintf(&b, " to %s LUFS", number(*r.After.Integrated, 1))
+		fmt.Fprintf(&b, " to %s LUFS", audio.Number(*r.After.Integrated, 1))
 	}
 	if plan.Limit {
-		fmt.Fprintf(&b, "; peaks held under %s dBTP", number(float64(plan.Ceiling), 1))
+		fmt.Fprintf(&b, "; peaks held under %s dBTP", audio.Number(float64(plan.Ceiling), 1))
 	}
 	b.WriteString(".")
 	return b.String()

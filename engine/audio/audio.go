@@ -11,6 +11,8 @@ import (
 	"io"
 	"math"
 	"math/bits"
+	"strconv"
+	"strings"
 )
 
 // Speaker is a set of loudspeaker positions in the bit order of the WAVE_FORMAT_EXTENSIBLE channel mask.
@@ -105,6 +107,16 @@ func (f Format) Seconds(frames int64) float64 { return float64(frames) / float64
 func Clock(seconds float64) string {
 	tenths := int64(math.Round(seconds * 10))
 	return fmt.Sprintf("%d:%02d.%d", tenths/600, tenths/10%60, tenths%10)
+}
+
+// Number writes a figure with a fixed count of decimals and a true minus sign, as wide as a digit and as
+// high as a plus. What rounds to zero has no sign.
+func Number(v float64, decimals int) string {
+	s := strconv.FormatFloat(math.Abs(v), 'f', decimals, 64)
+	if v < 0 && strings.Trim(s, "0.") != "" {
+		return "−" + s
+	}
+	return s
 }
 
 // Block is planar sound: Block[c][i] is frame i of channel c. All channels have the same length.

@@ -104,3 +104,15 @@ func TestClock(t *testing.T) {
 		}
 	}
 }
+
+func TestNumber(t *testing.T) {
+	for _, c := range []struct {
+		v        float64
+		decimals int
+		want     string
+	}{{-18, 1, "−18.0"}, {-0.04, 1, "0.0"}, {0.05, 2, "0.05"}, {-0.25, 0, "0"}, {37.16, 1, "37.2"}} {
+		if got := Number(c.v, c.decimals); got != c.want {
+			t.Errorf("%g to %d decimals is %s, want %s", c.v, c.decimals, got, c.want)
+		}
+	}
+}

@@ -27,14 +27,14 @@ func Judge(p profile.Profile, before, after *Analysis, plan Plan) Verdict {
 		doubt("the copy is %.2f s shorter or longer than the original", drift)
 	}
 	if over := audio.DB(after.TruePeak - p.Ceiling); over > peakTolerance {
-		doubt("its true peak is %.2f dB over the ceiling of %s dBTP", over, signed(float64(p.Ceiling)))
+		doubt("its true peak is %.2f dB over the ceiling of %s dBTP", over, audio.Number(float64(p.Ceiling), 1))
 	}
 	short := p.Target.Sub(after.Integrated)
 	// Without dynamics the peaks decide how far the gain goes; that is what such a profile asks for.
 	asFarAsPeaksAllow := p.Limiting == 0 && short > 0 && after.TruePeak > p.Ceiling-0.2
 	if !(abs(short) <= p.Tolerance) && !asFarAsPeaksAllow {
 		doubt("%s LUFS could not be reached within the limiting allowed: it came out at %s LUFS",
-			signed(float64(p.Target)), signed(float64(after.Integrated)))
+			audio.Number(float64(p.Target), 1), audio.Number(float64(after.Integrated), 1))
 	}
 	switch {
 	case len(doubts) > 0:

@@ -35,10 +35,7 @@ func MakePlan(p profile.Profile, a *Analysis) (Plan, error) {
 	}
 	headroom := headroom(p, a)
 	wanted := audio.DB(p.Target - a.Integrated)
-	plan := Plan{Gain: wanted, Ceiling: p.Ceiling}
-	if most := headroom + p.Limiting; plan.Gain > most {
-		plan.Gain = most
-	}
+	plan := Plan{Gain: min(wanted, headroom+p.Limiting), Ceiling: p.Ceiling}
 	switch {
 	case headroom >= -peakTolerance && audio.LU(abs(wanted)) <= p.Tolerance:
 		plan = Plan{Ceiling: p.Ceiling, Untouched: true, Reason: "already within the profile"}
@@ -61,7 +58,7 @@ func (plan Plan) words(p profile.Profile, headroom audio.DB) string {
 	}
 	switch {
 	case plan.Limit:
-		s += fmt.Sprintf(", peaks held %.1f dB lower to stay under %s dBTP", plan.Gain-headroom, signed(float64(p.Ceiling)))
+		s += fmt.Sprintf(", peaks held %.1f dB lower to stay under %s dBTP", plan.Gain-headroom, audio.Number(float64(p.Ceiling), 1))
 	case p.Limiting == 0 && plan.Gain == headroom:
 		s += ", as far as the peaks allow"
 	}
@@ -73,14 +70,6 @@ func abs[F ~float64](v F) F {
 		return -v
 	}
 	return v
-}
-
-// signed writes a level to one decimal with a true minus sign.
-func signed(v float64) string {
-	if v < 0 {
-		return fmt.Sprintf("−%.1f", -v)
-	}
-	return fmt.Sprintf("%.1f", v)
 }
 
 // again returns the plan for another rendering, given how the last one came out; ok is false if another
