@@ -103,7 +103,7 @@ func (d *delivery) leaves(name string) bool {
 	return false
 }
 
-// syncFolder is the same below the output folder.
+// syncFolder makes the names in a folder below the output folder last through a power cut, like its namesake.
 func (d *delivery) syncFolder(name string) error {
 	f, err := d.root.Open(name)
 	if err != nil {
