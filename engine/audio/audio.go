@@ -80,7 +80,7 @@ func (l Layout) Position(i int) Speaker {
 	return Speaker(m & -m)
 }
 
-// String names the layout as people do: mono, stereo, 5.1, or a channel count.
+// String names the layout as people do: mono, stereo, 5.1, 7.1.4, or a channel count.
 func (l Layout) String() string {
 	switch {
 	case l.Channels == 1:
@@ -88,6 +88,10 @@ func (l Layout) String() string {
 	case l.Channels == 2:
 		return "stereo"
 	case l.Mask&LowFrequency != 0:
+		const overhead = TopCentre | TopFrontLeft | TopFrontCentre | TopFrontRight | TopBackLeft | TopBackCentre | TopBackRight
+		if tops := bits.OnesCount32(uint32(l.Mask & overhead)); tops > 0 {
+			return fmt.Sprintf("%d.1.%d", l.Channels-1-tops, tops)
+		}
 		return fmt.Sprintf("%d.1", l.Channels-1)
 	default:
 		return fmt.Sprintf("%d channels", l.Channels)

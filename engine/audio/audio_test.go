@@ -58,6 +58,9 @@ func TestPositionsFollowTheMask(t *testing.T) {
 			t.Errorf("%d channels are called %q, want %q", n, got, name)
 		}
 	}
+	if got := (Layout{12, 0x2D63F}).String(); got != "7.1.4" {
+		t.Errorf("7.1.4 is called %q", got)
+	}
 }
 
 // fitful is a source that gives few frames at a time, sometimes none, and ends with err.

@@ -21,6 +21,10 @@ type (
 	DBTP float64
 	// DBFS is a sample peak re full scale.
 	DBFS float64
+	// Ratio is a plain number, such as a correlation.
+	Ratio float64
+	// Seconds is a length of time.
+	Seconds float64
 )
 
 // Undefined is the figure that could not be measured.
@@ -59,6 +63,12 @@ func (p DBTP) MarshalJSON() ([]byte, error) { return marshalFigure(float64(p)) }
 // MarshalJSON writes the figure to four decimals, or null.
 func (p DBFS) MarshalJSON() ([]byte, error) { return marshalFigure(float64(p)) }
 
+// MarshalJSON writes the number to four decimals, or null.
+func (r Ratio) MarshalJSON() ([]byte, error) { return marshalFigure(float64(r)) }
+
+// MarshalJSON writes the time to four decimals, or null.
+func (s Seconds) MarshalJSON() ([]byte, error) { return marshalFigure(float64(s)) }
+
 // UnmarshalJSON reads a number; null becomes Undefined.
 func (l *LUFS) UnmarshalJSON(b []byte) error { return unmarshalFigure(b, (*float64)(l)) }
 
@@ -73,6 +83,12 @@ func (p *DBTP) UnmarshalJSON(b []byte) error { return unmarshalFigure(b, (*float
 
 // UnmarshalJSON reads a number; null becomes Undefined.
 func (p *DBFS) UnmarshalJSON(b []byte) error { return unmarshalFigure(b, (*float64)(p)) }
+
+// UnmarshalJSON reads a number; null becomes Undefined.
+func (r *Ratio) UnmarshalJSON(b []byte) error { return unmarshalFigure(b, (*float64)(r)) }
+
+// UnmarshalJSON reads a number; null becomes Undefined.
+func (s *Seconds) UnmarshalJSON(b []byte) error { return unmarshalFigure(b, (*float64)(s)) }
 
 func marshalFigure(v float64) ([]byte, error) {
 	if !Defined(v) {
