@@ -45,7 +45,7 @@ func (t *Toolbox) Create(ctx context.Context, path string, spec Spec) (audio.Sin
 	switch {
 	case spec.Container == "wav":
 		s.w, err = newWAVWriter(f, spec, tags)
-	case spec.Container == "flac" && t.ffmpeg == "":
+	case spec.Container == "flac" && t.FFmpeg() == "":
 		s.w, err = newFLACWriter(f, spec, tags)
 	default:
 		s.w, err = t.newFFWriter(ctx, f, spec, tags)
@@ -88,7 +88,7 @@ func (t *Toolbox) checkSpec(s Spec) error {
 	switch {
 	case !ok:
 		return fmt.Errorf("%w: %s with %s, %d bits, %s at %d Hz cannot be written", ErrUnsupported, s.Container, s.Codec, s.BitDepth, s.Format.Layout, s.Format.Rate)
-	case t.ffmpeg == "" && s.Container != "wav" && s.Container != "flac":
+	case s.Container != "wav" && s.Container != "flac" && t.FFmpeg() == "":
 		return fmt.Errorf("%w: writing %s needs FFmpeg, and %s", ErrUnsupported, s.Container, needFFmpeg)
 	}
 	return nil

@@ -145,6 +145,14 @@ func TestDamageInTheMiddleShows(t *testing.T) {
 			path := save(t, "damaged."+name, damaged)
 			r := open(t, withFFmpeg(t), path)
 			all, err := drain(r, 4096)
+			if name == "flac" { // what the library reads up to the damage and FFmpeg from there on is as FFmpeg reads it all
+				whole := byFFmpeg(t, path)
+				want, e := drain(whole, 4096)
+				sameSound(t, all, want)
+				if r.(Damaged).Damage() != whole.(Damaged).Damage() || (err == nil) != (e == nil) || r.Info().Decoder != whole.Info().Decoder {
+					t.Errorf("%v, %q; by FFmpeg alone: %v, %q", err, r.(Damaged).Damage(), e, whole.(Damaged).Damage())
+				}
+			}
 			complaint := r.(Damaged).Damage()
 			if err == nil && complaint == "" {
 				t.Error("nobody noticed")
@@ -156,6 +164,36 @@ func TestDamageInTheMiddleShows(t *testing.T) {
 				t.Errorf("complaint %q", complaint)
 			}
 		})
+	}
+}
+
+// A single wrong bit in a FLAC's sound is noticed by whichever decoder reads it: every frame has a checksum.
+// The fallback, with no FFmpeg to turn to, ends there.
+func TestOneWrongBitInFLACShows(t *testing.T) {
+	file := formats(t)["flac"]
+	file[len(file)/2] ^= 1
+	path := save(t, "bit.flac", file)
+	for name, r := range map[string]Reader{"chosen": open(t, withFFmpeg(t), path), "FFmpeg": byFFmpeg(t, path)} {
+		all, err := drain(r, 4096)
+		if err == nil && r.(Damaged).Damage() == "" || all.Frames() < formatFrames/2-4096 {
+			t.Errorf("%s: %d frames, nobody noticed", name, all.Frames())
+		}
+	}
+	all, err := drain(open(t, withoutFFmpeg(), path), 4096)
+	if !errors.Is(err, io.ErrUnexpectedEOF) || !strings.Contains(err.Error(), path) || all.Frames() < formatFrames/4 {
+		t.Errorf("without FFmpeg: %d frames, %v", all.Frames(), err)
+	}
+}
+
+// An ID3v1 tag behind the sound of a FLAC, where some programs put one, is no damage.
+func TestFLACWithID3Behind(t *testing.T) {
+	snd := programme(2, 9000, 16, 0.5)
+	path := filepath.Join(t.TempDir(), "a.flac")
+	run(t, "flac", "-s", "-o", path, writeWAV(t, snd, 44100))
+	path = save(t, "b.flac", append(load(t, path), "TAG"+strings.Repeat("\x00", 125)...))
+	for _, box := range []*Toolbox{withFFmpeg(t), withoutFFmpeg()} {
+		got, _ := decode(t, box, path)
+		sameSound(t, got, snd)
 	}
 }
 
@@ -279,7 +317,7 @@ func TestStalledChildIsStopped(t *testing.T) {
 		if decode {
 			_, err = c.Read(make([]byte, 1))
 		} else {
-			_, err = c.Write(make([]byte, 1<<20)) // more than a pipe holds
+			_, err = c.Write(make([]byte, 4<<20)) // more than a pipe holds
 		}
 		if err == nil || !strings.Contains(err.Error(), "stood still") || time.Since(start) > 5*time.Second {
 			t.Errorf("after %v: %v", time.Since(start), err)

@@ -151,6 +151,18 @@ func (p *probe) info(k kind) (Info, error) {
 	return info, nil
 }
 
+// wire says how the decoder's samples are best handed on (see wire16).
+func (s *probeStream) wire() string {
+	switch s.SampleFmt {
+	case "u8", "u8p", "s16", "s16p":
+		return wire16
+	case "s32", "s32p":
+		return wire32
+	default:
+		return wireFloat
+	}
+}
+
 // lossless codecs besides PCM, by FFmpeg's names.
 var lossless = map[string]bool{"flac": true, "alac": true, "wavpack": true, "ape": true, "tta": true, "tak": true, "mlp": true, "truehd": true}
 

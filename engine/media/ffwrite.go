@@ -117,7 +117,7 @@ func (t *Toolbox) encoderArgs(spec Spec) []string {
 // the last packet can be told from sound. Older FFmpegs cannot do it.
 func (t *Toolbox) exactLength(spec Spec) []string {
 	var major, minor int
-	fmt.Sscanf(t.version, "%d.%d", &major, &minor)
+	fmt.Sscanf(t.version(), "%d.%d", &major, &minor)
 	if major < 5 || major == 5 && minor < 1 {
 		return nil
 	}

@@ -60,7 +60,7 @@ func flacTags(spec Spec, tags *tagSource) []*meta.Block {
 	}
 	var pictures []*meta.Block
 	if tags != nil && tags.kind.container == "flac" {
-		if m, err := readFLACMeta(io.NewSectionReader(tags.f, tags.kind.start, tags.size-tags.kind.start), true); err == nil {
+		if m, err := readFLACBlocks(io.NewSectionReader(tags.f, tags.kind.start, tags.size-tags.kind.start), true); err == nil {
 			pictures = m.pictures
 			for _, c := range m.comments {
 				if !stale(c[0]) && !strings.EqualFold(c[0], maskComment) {

@@ -99,15 +99,47 @@ func drain(src audio.Source, block int) (audio.Block, error) {
 // decode opens and reads a whole file that must be in order.
 func decode(t testing.TB, box *Toolbox, path string) (audio.Block, Info) {
 	t.Helper()
-	r := open(t, box, path)
+	return drained(t, open(t, box, path))
+}
+
+// drained reads a whole recording that must be in order.
+func drained(t testing.TB, r Reader) (audio.Block, Info) {
+	t.Helper()
 	all, err := drain(r, audio.BlockFrames)
 	if err != nil {
 		t.Fatal(err)
 	}
 	if d, ok := r.(Damaged); ok && d.Damage() != "" {
-		t.Fatalf("%s: unexpected damage: %s", path, d.Damage())
+		t.Fatalf("unexpected damage: %s", d.Damage())
 	}
 	return all, r.Info()
+}
+
+// byFFmpeg opens a recording with FFmpeg whether it is long enough to be worth it or not.
+func byFFmpeg(t testing.TB, path string) Reader {
+	t.Helper()
+	f, _, err := openRegular(path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	k, err := sniff(f)
+	if err != nil {
+		t.Fatal(err)
+	}
+	r, err := withFFmpeg(t).openFFmpeg(context.Background(), f, path, k)
+	if err != nil {
+		t.Fatal(err)
+	}
+	t.Cleanup(func() { r.Close() })
+	return r
+}
+
+// flacDecoders are the ways to read a short FLAC.
+func flacDecoders(t testing.TB) map[string]func(path string) Reader {
+	return map[string]func(string) Reader{
+		"ffmpeg": func(path string) Reader { return byFFmpeg(t, path) },
+		"mewkiz": func(path string) Reader { return open(t, withoutFFmpeg(), path) },
+	}
 }
 
 // write makes a file of a block, in ragged pieces.

@@ -31,50 +31,37 @@ type mp3Reader struct {
 	err     error
 }
 
-func newMP3Reader(ctx context.Context, f *os.File, path string, start int64) (*mp3Reader, error) {
-	head, g, err := readGapless(f, start)
+func newMP3Reader(ctx context.Context, f *os.File, path string, k kind) (*mp3Reader, error) {
+	l, err := lookMPEG(f, k.start)
 	if err != nil {
 		return nil, err
 	}
-	if head.layer != 3 {
-		return nil, fmt.Errorf("%w: reading MPEG audio of layer %d needs FFmpeg, and %s", ErrUnsupported, head.layer, needFFmpeg)
+	if l.info.Codec != "mp3" {
+		return nil, fmt.Errorf("%w: reading %s needs FFmpeg, and %s", ErrUnsupported, l.info.Codec, needFFmpeg)
 	}
-	layout := audio.Stereo
-	if head.mono {
-		layout = audio.Mono
-	}
+	// A reader of the reading must know that overs are missing from it.
+	l.info.Decoder = "go-mp3 0.3.4, 16 bits, clips at full scale"
 	r := &mp3Reader{
-		f: f, path: path, mono: head.mono, exact: g.trimmed, stopped: stopped(ctx), left: math.MaxInt64,
-		wide: audio.NewBlock(2, audio.BlockFrames), cut: make(audio.Block, 2),
-		info: Info{
-			Container: "mp3", Codec: "mp3", Format: audio.Format{Rate: head.rate, Layout: layout},
-			Frames: g.frames, BitRate: head.bitRate, Decoder: "go-mp3 0.3.4",
-		},
+		f: f, path: path, info: l.info, mono: l.info.Format.Layout == audio.Mono, exact: l.gapless.trimmed, stopped: stopped(ctx),
+		left: math.MaxInt64, wide: audio.NewBlock(2, audio.BlockFrames), cut: make(audio.Block, 2),
 	}
-	if g.bitRate > 0 {
-		r.info.BitRate = g.bitRate
-	}
-	if g.trimmed {
-		r.left = g.frames
+	if r.exact {
+		r.left = l.info.Frames
 	}
 	// The decoder gets a Reader that begins at the sound: given a Seeker it would first read all
 	// of it to count frames, and given an ID3 tag it would take its word for how much memory it needs.
-	src := &plainStereo{r: bufio.NewReader(io.NewSectionReader(f, start, math.MaxInt64-start))}
+	src := &plainStereo{r: bufio.NewReader(io.NewSectionReader(f, k.start, math.MaxInt64-k.start))}
 	dec, err := guard(func() (*mp3.Decoder, error) { return mp3.NewDecoder(src) })
 	switch {
 	case errors.Is(err, ErrUnsupported):
 		return nil, err
 	case err != nil:
-		return nil, &FormatError{start, "its sound cannot be decoded: " + err.Error()}
+		return nil, &FormatError{k.start, "its sound cannot be decoded: " + err.Error()}
 	}
 	r.stream = newBlockStream(guardedReader{dec}, unpackS16, 4, math.MaxInt64)
-	skip := int64(g.skip)
-	if g.found {
-		skip += int64(head.frames)
-	}
-	_, err = io.CopyN(io.Discard, r.stream.r, 4*skip)
+	_, err = r.stream.r.Discard(4 * (l.gapless.note + l.gapless.skip))
 	if err != nil && err != io.EOF {
-		return nil, &FormatError{start, "its sound cannot be decoded: " + err.Error()}
+		return nil, &FormatError{k.start, "its sound cannot be decoded: " + err.Error()}
 	}
 	return r, nil
 }

@@ -2,7 +2,10 @@ package media
 
 import (
 	"encoding/binary"
+	"fmt"
 	"io"
+
+	"evenshelf/engine/audio"
 )
 
 // mpegHeader is the four-byte header of one MPEG audio frame (ISO/IEC 11172-3 2.4.2.3 and 13818-3).
@@ -71,7 +74,7 @@ func parseMPEG(b []byte) mpegHeader {
 // gapless is what an MP3's first frame says about the length of the sound. There is no standard for it;
 // the layout is common practice among encoders.
 type gapless struct {
-	found   bool  // the first frame is such a note, not sound
+	note    int   // PCM frames that the note itself would decode to; 0 if the first frame is sound
 	frames  int64 // PCM frames of the recording; −1 if not stated
 	bitRate int   // bit/s on average; 0 if not stated
 	skip    int   // PCM frames to leave out at the start, not counting the note itself
@@ -101,7 +104,7 @@ func readGapless(r io.ReaderAt, start int64) (mpegHeader, gapless, error) {
 	if len(b) < at+120+24 || string(b[at:at+4]) != "Xing" && string(b[at:at+4]) != "Info" {
 		return h, g, nil
 	}
-	g.found = true
+	g.note = h.frames
 	flags, p := b[at+7], at+8
 	var coded int64 // bytes of all MPEG frames
 	if flags&1 != 0 {
@@ -119,7 +122,7 @@ func readGapless(r io.ReaderAt, start int64) (mpegHeader, gapless, error) {
 		p += 4
 	}
 	if coded > 0 && g.frames > 0 && string(b[at:at+4]) == "Xing" { // "Info" is a constant rate: the header's
-		g.bitRate = int(8 * coded * int64(h.rate) / g.frames)
+		g.bitRate = int((8*coded*int64(h.rate) + g.frames/2) / g.frames)
 	}
 	if maker := string(b[p : p+4]); maker != "LAME" && maker != "Lavf" && maker != "Lavc" {
 		return h, g, nil // the figures behind an unknown name may mean anything
@@ -132,4 +135,40 @@ func readGapless(r io.ReaderAt, start int64) (mpegHeader, gapless, error) {
 		g.trimmed = true
 	}
 	return h, g, nil
+}
+
+// lookMPEG finds out what the headers of the MPEG audio that begins at offset start say.
+func lookMPEG(r io.ReaderAt, start int64) (finding, error) {
+	head, g, err := readGapless(r, start)
+	if err != nil {
+		return finding{}, err
+	}
+	format := audio.Format{Rate: head.rate, Layout: audio.Stereo}
+	if head.mono {
+		format.Layout = audio.Mono
+	}
+	bitRate := g.bitRate
+	if bitRate == 0 {
+		if g.note > 0 {
+			start += int64(head.length)
+		}
+		if bitRate, err = meanBitRate(r, start); err != nil {
+			return finding{}, err
+		}
+	}
+	return finding{gapless: g, wire: wireFloat, info: Info{
+		Container: "mp3", Codec: fmt.Sprintf("mp%d", head.layer), Format: format, Frames: g.frames, BitRate: bitRate,
+	}}, checkFormat(format, start)
+}
+
+// meanBitRate returns the bit rate of the first MPEG frames from an offset on, some seconds of sound: of
+// all there are where the rate is constant, an estimate where it is not.
+func meanBitRate(r io.ReaderAt, start int64) (int, error) {
+	b, err := readAt(r, start, 64<<10)
+	sum, n := 0, 0
+	for h := parseMPEG(b); h.length > 0; h = parseMPEG(b) {
+		sum, n = sum+h.bitRate, n+1
+		b = b[min(h.length, len(b)):]
+	}
+	return sum / max(1, n), err
 }

@@ -41,16 +41,37 @@ func unpackU8(dst [][]float32, raw []byte, n int) {
 	}
 }
 
+//go:norace
 func unpackS16(dst [][]float32, raw []byte, n int) {
+	const scale = 1.0 / (1 << 15)
+	if len(dst) == 2 { // by far the most frequent case: both samples in one read
+		l, r, raw := dst[0][:n], dst[1][:n], raw[:4*n]
+		for i := range l {
+			v := binary.LittleEndian.Uint32(raw[4*i:])
+			l[i], r[i] = float32(int16(v))*scale, float32(int32(v)>>16)*scale
+		}
+		return
+	}
 	step := 2 * len(dst)
 	for c, d := range dst {
 		for i, at := 0, 2*c; i < n; i, at = i+1, at+step {
-			d[i] = float32(int16(binary.LittleEndian.Uint16(raw[at:]))) * (1.0 / (1 << 15))
+			d[i] = float32(int16(binary.LittleEndian.Uint16(raw[at:]))) * scale
 		}
 	}
 }
 
+//go:norace
 func unpackS24(dst [][]float32, raw []byte, n int) {
+	if len(dst) == 2 { // each sample is in the upper three bytes of a 32-bit integer
+		const scale = 1.0 / (1 << 31)
+		l, r, raw := dst[0][:n], dst[1][:n], raw[:6*n]
+		for i := range l {
+			s := raw[6*i : 6*i+6]
+			a, b := binary.LittleEndian.Uint32(s)<<8, binary.LittleEndian.Uint32(s[2:])&^0xFF
+			l[i], r[i] = float32(int32(a))*scale, float32(int32(b))*scale
+		}
+		return
+	}
 	step := 3 * len(dst)
 	for c, d := range dst {
 		for i, at := 0, 3*c; i < n; i, at = i+1, at+step {
@@ -61,16 +82,35 @@ func unpackS24(dst [][]float32, raw []byte, n int) {
 	}
 }
 
+//go:norace
 func unpackS32(dst [][]float32, raw []byte, n int) {
+	const scale = 1.0 / (1 << 31)
+	if len(dst) == 2 {
+		l, r, raw := dst[0][:n], dst[1][:n], raw[:8*n]
+		for i := range l {
+			v := binary.LittleEndian.Uint64(raw[8*i:])
+			l[i], r[i] = float32(int32(v))*scale, float32(int32(v>>32))*scale
+		}
+		return
+	}
 	step := 4 * len(dst)
 	for c, d := range dst {
 		for i, at := 0, 4*c; i < n; i, at = i+1, at+step {
-			d[i] = float32(int32(binary.LittleEndian.Uint32(raw[at:]))) * (1.0 / (1 << 31))
+			d[i] = float32(int32(binary.LittleEndian.Uint32(raw[at:]))) * scale
 		}
 	}
 }
 
+//go:norace
 func unpackFloat32(dst [][]float32, raw []byte, n int) {
+	if len(dst) == 2 {
+		l, r, raw := dst[0][:n], dst[1][:n], raw[:8*n]
+		for i := range l {
+			v := binary.LittleEndian.Uint64(raw[8*i:])
+			l[i], r[i] = math.Float32frombits(uint32(v)), math.Float32frombits(uint32(v>>32))
+		}
+		return
+	}
 	step := 4 * len(dst)
 	for c, d := range dst {
 		for i, at := 0, 4*c; i < n; i, at = i+1, at+step {

@@ -95,7 +95,7 @@ func (t *Toolbox) lossySpec(info Info) (Spec, string) {
 func (t *Toolbox) cannot(encoder string, f audio.Format, rates []int, channels int) string {
 	usual := audio.UsualLayout(f.Layout.Channels)
 	switch {
-	case t.ffmpeg == "":
+	case t.FFmpeg() == "":
 		return needFFmpeg
 	case encoder != "" && !t.encoders()[encoder]:
 		return fmt.Sprintf("this FFmpeg has no encoder %s", encoder)

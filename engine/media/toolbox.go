@@ -3,21 +3,22 @@ package media
 import (
 	"context"
 	"fmt"
-	"io"
 	"os"
 	"os/exec"
 	"path/filepath"
 	"strings"
 	"sync"
 	"syscall"
-	"time"
 )
 
 // Toolbox knows which tools this machine has. It is safe for concurrent use; one serves the program.
+//
+// FFmpeg is asked about itself once, when an answer is first needed: starting it takes as long as decoding
+// a minute of sound, and who measures WAV files does not need it.
 type Toolbox struct {
-	ffmpeg, ffprobe string // paths; both are set or neither is
-	version         string
-	encoders        func() map[string]bool // asked of FFmpeg once, when first needed
+	ffmpeg, ffprobe string                 // paths; both are set or neither is
+	version         func() string          // "" if FFmpeg cannot be run
+	encoders        func() map[string]bool // by name
 }
 
 // Find returns a toolbox with the FFmpeg that is on PATH, if there is one.
@@ -30,9 +31,9 @@ func Find() *Toolbox {
 }
 
 // New returns a toolbox that uses the FFmpeg at a path, with the ffprobe beside it or on PATH. "" means
-// no FFmpeg; neither is there one if the two cannot be run.
+// no FFmpeg; neither is there one if the two cannot be run, which is tried when FFmpeg is first needed.
 func New(ffmpegPath string) *Toolbox {
-	t := &Toolbox{encoders: func() map[string]bool { return nil }}
+	t := &Toolbox{version: func() string { return "" }, encoders: func() map[string]bool { return nil }}
 	if ffmpegPath == "" {
 		return t
 	}
@@ -46,11 +47,14 @@ func New(ffmpegPath string) *Toolbox {
 			return t
 		}
 	}
-	first, err := ask(ffmpeg, "-version")
-	if err != nil {
-		return t
-	}
-	t.ffmpeg, t.ffprobe, t.version = ffmpeg, probe, versionIn(first)
+	t.ffmpeg, t.ffprobe = ffmpeg, probe
+	t.version = sync.OnceValue(func() string {
+		first, err := ask(ffmpeg, "-version")
+		if err != nil {
+			return ""
+		}
+		return versionIn(first)
+	})
 	t.encoders = sync.OnceValue(func() map[string]bool {
 		list, err := ask(ffmpeg, "-v", "error", "-encoders")
 		if err != nil {
@@ -68,14 +72,19 @@ func New(ffmpegPath string) *Toolbox {
 }
 
 // FFmpeg returns the path of the FFmpeg in use, or "".
-func (t *Toolbox) FFmpeg() string { return t.ffmpeg }
+func (t *Toolbox) FFmpeg() string {
+	if t.version() == "" {
+		return ""
+	}
+	return t.ffmpeg
+}
 
 // Version returns the version of the FFmpeg in use, e.g. "5.1.6", or "".
-func (t *Toolbox) Version() string { return t.version }
+func (t *Toolbox) Version() string { return t.version() }
 
 // ask runs one of FFmpeg's tools for a short answer.
 func ask(tool string, args ...string) (string, error) {
-	ctx, cancel := context.WithTimeout(context.Background(), 10*time.Second)
+	ctx, cancel := context.WithTimeout(context.Background(), stallLimit)
 	defer cancel()
 	cmd := exec.CommandContext(ctx, tool, args...)
 	cmd.Env = childEnv()
@@ -127,12 +136,12 @@ func (t *Toolbox) open(ctx context.Context, f *os.File, size int64, path string)
 		}
 	}
 	switch {
-	case t.ffmpeg != "":
+	case k.container == "flac":
+		return t.openFLAC(ctx, f, path, k)
+	case t.FFmpeg() != "":
 		return t.openFFmpeg(ctx, f, path, k)
 	case k.container == "mp3":
-		return newMP3Reader(ctx, f, path, k.start)
-	case k.container == "flac":
-		return newFLACReader(ctx, f, path, k.start)
+		return newMP3Reader(ctx, f, path, k)
 	default:
 		return nil, fmt.Errorf("%w: reading %s needs FFmpeg, and %s", ErrUnsupported, k.container, needFFmpeg)
 	}
@@ -161,40 +170,4 @@ func modeWord(m os.FileMode) string {
 		return "folder"
 	}
 	return "pipe or device"
-}
-
-// blockStream turns interleaved frames of one encoding into planar blocks. It is the heart of every
-// reader here; after it is made nothing is allocated.
-type blockStream struct {
-	r       io.Reader
-	unpack  unpacker
-	align   int // bytes a frame
-	raw     []byte
-	left    int64 // frames still to come; math.MaxInt64 if only the end of r tells
-	partial int   // bytes of an incomplete last frame, once the end was met
-}
-
-func newBlockStream(r io.Reader, unpack unpacker, align int, frames int64) *blockStream {
-	return &blockStream{r: r, unpack: unpack, align: align, raw: make([]byte, align*max(1, 1<<16/align)), left: frames}
-}
-
-// read fills dst as far as one buffer reaches. It returns io.EOF with or after the last frame and
-// io.ErrUnexpectedEOF if r ended before left frames had come.
-func (s *blockStream) read(dst [][]float32) (n int, err error) {
-	if s.left == 0 {
-		return 0, io.EOF
-	}
-	if len(dst) == 0 || len(dst[0]) == 0 {
-		return 0, nil
-	}
-	want := min(int64(len(dst[0])), int64(len(s.raw)/s.align), s.left)
-	m, err := io.ReadFull(s.r, s.raw[:int(want)*s.align])
-	n = m / s.align
-	s.unpack(dst, s.raw[:n*s.align], n)
-	s.left -= int64(n)
-	if err == io.EOF || err == io.ErrUnexpectedEOF {
-		s.partial = m % s.align
-		err = io.ErrUnexpectedEOF
-	}
-	return n, err
 }
