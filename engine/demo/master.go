@@ -15,7 +15,7 @@ import (
 // The curve never becomes flat, and a high-pass below hearing tilts what it presses together, so a loud
 // production has no flat tops and is not mistaken for a clipped one.
 func master(b audio.Block, f audio.Format, target audio.LUFS, top audio.DBFS) {
-	m, err := meter.New(f)
+	m, err := meter.New(f, audio.OneChannel)
 	if err != nil {
 		panic(err) // the shelf has no format that cannot be measured
 	}

@@ -57,7 +57,7 @@ func written(t *testing.T) (string, []Item) {
 // reading measures decoded sound.
 func reading(t *testing.T, f audio.Format, b audio.Block) meter.Reading {
 	t.Helper()
-	m, err := meter.New(f)
+	m, err := meter.New(f, audio.OneChannel)
 	if err != nil {
 		t.Fatal(err)
 	}

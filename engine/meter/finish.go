@@ -1,29 +1,28 @@
 package meter
 
-import "evenshelf/engine/audio"
+import (
+	"math"
+	"slices"
+
+	"evenshelf/engine/audio"
+)
 
 // Finish ends the programme and returns what was measured. Call it once; after Reset, once again.
 //
-// What is not defined is audio.Undefined or −Inf: everything but SampleRate to Duration for silence,
-// Integrated and MaxMomentary under 400 ms, MaxShortTerm and Range under 3 s.
+// What is not defined is audio.Undefined or infinite: every level for silence; Integrated, MaxMomentary and
+// NoiseFloor under 400 ms; MaxShortTerm, Range and MinPSR under 3 s.
 func (m *Meter) Finish() (Reading, Timeline) {
 	m.runOut()
 	f := m.format
 	steps := wholeSteps(m.written, f.Rate)
 	programme := course{f.Rate, m.energies[:steps]}
 	followed := course{f.Rate, m.energies[:steps+rangeTail]}
-	r := Reading{
-		SampleRate:   f.Rate,
-		Channels:     f.Layout.Channels,
-		Frames:       m.written,
-		Duration:     f.Seconds(m.written),
-		Integrated:   integrated(programme.whole(momentarySteps)),
-		Range:        audio.LU(audio.Undefined),
-		MaxMomentary: audio.LUFS(audio.Undefined),
-		MaxShortTerm: audio.LUFS(audio.Undefined),
-		TruePeak:     audio.DBTP(audio.ToDB(m.truePeak)),
-		SamplePeak:   audio.DBFS(audio.ToDB(m.samplePeak)),
-	}
+	r := Unmeasured()
+	r.SampleRate, r.Channels, r.MonoRule = f.Rate, f.Layout.Channels, m.mono
+	r.Frames, r.Duration = m.written, f.Seconds(m.written)
+	r.Integrated = integrated(programme.whole(momentarySteps))
+	r.TruePeak = audio.DBTP(audio.ToDB(m.truePeak))
+	r.SamplePeak = audio.DBFS(audio.ToDB(m.samplePeak))
 	if steps >= momentarySteps {
 		r.MaxMomentary = audio.LUFS(loudness(m.maxMoment))
 	}
@@ -34,7 +33,37 @@ func (m *Meter) Finish() (Reading, Timeline) {
 		r.ShortTerm10, r.ShortTerm50, r.ShortTerm95 = spread(programme.whole(shortTermSteps))
 	}
 	r.PLR = audio.LU(float64(r.TruePeak) - float64(r.Integrated))
+	r.MinPSR = audio.LU(-loudness(1 / m.minPSR)) // +Inf where no window counts
+	r.RMS, r.CrestFactor = m.rms()
+	r.NoiseFloor = noiseFloor(programme.whole(momentarySteps), m.peaks[:steps])
 	return r, m.timeline()
+}
+
+// rms returns the rms of all channels together, of which a full-scale sine has 0 dBFS, and the crest factor.
+func (m *Meter) rms() (audio.DBFS, audio.DB) {
+	sum := 0.0
+	for _, s := range m.squares {
+		sum += s
+	}
+	mean := sum / (float64(m.written) * float64(len(m.squares)))
+	return audio.DBFS(10 * math.Log10(2*mean)), audio.DB(10 * math.Log10(m.samplePeak*m.samplePeak/mean))
+}
+
+// noiseFloor returns the 5th percentile of the powers of full momentary windows. Windows in which a step is
+// digital silence are left out, so that neither a gap nor the edge of one passes for noise.
+func noiseFloor(momentary []float64, peaks []stepPeak) audio.LUFS {
+	nothing := audio.DB(digitalSilence).Linear()
+	var sounding []float64
+	for i, p := range momentary {
+		if !slices.ContainsFunc(peaks[i:i+momentarySteps], func(s stepPeak) bool { return s.sample < nothing }) {
+			sounding = append(sounding, p)
+		}
+	}
+	sounding = sortedAbove(sounding, power(digitalSilence))
+	if len(sounding) == 0 {
+		return audio.LUFS(audio.Undefined)
+	}
+	return audio.LUFS(loudness(percentile(sounding, 5)))
 }
 
 // spread returns the 10th, 50th and 95th percentile of the short-term powers above −70 LUFS.
@@ -80,12 +109,13 @@ func (m *Meter) timeline() Timeline {
 		Step:      1.0 / stepsPerSecond,
 		Momentary: make([]float32, n),
 		ShortTerm: make([]float32, n),
-		Peak:      append([]float32{}, m.peaks[:n]...),
+		Peak:      make([]float32, n),
 	}
 	c := course{m.format.Rate, m.energies}
 	for i := range n {
 		t.Momentary[i] = float32(loudness(c.mean(i, momentarySteps)))
 		t.ShortTerm[i] = float32(loudness(c.mean(i, shortTermSteps)))
+		t.Peak[i] = float32(audio.ToDB(m.peaks[i].sample))
 	}
 	return t
 }

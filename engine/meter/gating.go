@@ -20,6 +20,8 @@ const (
 	absoluteGate = -70.0 // LUFS, BS.1770 and Tech 3342
 	integratedLU = 10.0  // relative gate of BS.1770, below the mean
 	rangeLU      = 20.0  // relative gate of Tech 3342, below the mean
+
+	digitalSilence = -120.0 // dBFS or LUFS: what lies below has no sound in it, be it dithered to 20 bits
 )
 
 // hopsEnd returns the frame at which a number of hops ends at a rate in Hz.

@@ -14,17 +14,19 @@ import (
 // together stay below the peak found so far, nothing in between matters; elsewhere the middle is
 // computed and each half is judged again. The bound is exact, so the result is that of the whole grid.
 const (
-	taps   = 64          // samples under the kernel
-	reach  = taps / 2    // how many of them lie after the interval's left end
-	levels = 5           // halvings of an interval
-	phases = 1 << levels // grid points an interval: a tone at 0.45 of the rate is under-read by 0.008 dB
-	kaiser = 7.0         // β of the window: ripple and images near −72 dB
+	taps     = 64          // samples under the kernel
+	reach    = taps / 2    // how many of them lie after the interval's left end
+	nearTaps = 16          // those next to the interval
+	levels   = 5           // halvings of an interval
+	phases   = 1 << levels // grid points an interval: a tone at 0.45 of the rate is under-read by 0.008 dB
+	kaiser   = 7.0         // β of the window: ripple and images near −72 dB
 )
 
 // kernel is an interpolator on the grid.
 type kernel struct {
 	phase [phases + 1][taps]float64 // phase[p] gives the value p/phases after the left end
 	slack [levels]float64           // bend per unit of second difference, after so many halvings
+	far   float64                   // what the taps of the middle that near leaves out can add, per unit of magnitude
 }
 
 // interpolator returns the one kernel; it does not depend on the rate.
@@ -41,6 +43,11 @@ var interpolator = sync.OnceValue(func() *kernel {
 			}
 		}
 		k.slack[level] *= 1 + 1e-9 // for rounding in the dot products
+	}
+	for i, h := range k.phase[phases/2] {
+		if i < reach-nearTaps/2 || i >= reach+nearTaps/2 {
+			k.far += math.Abs(h) * (1 + 1e-9)
+		}
 	}
 	return k
 })
@@ -109,6 +116,19 @@ func (k *kernel) at(p int, w *[taps]float64) float64 {
 		d += h[i+3] * w[i+3]
 	}
 	return math.Abs((a + b) + (c + d))
+}
+
+// near returns the magnitude in the middle of the interval that the samples next to it, w, make.
+//
+//go:norace
+func (k *kernel) near(w *[nearTaps]float32) float64 {
+	h := (*[nearTaps]float64)(k.phase[phases/2][reach-nearTaps/2:])
+	var a, b float64
+	for i := 0; i < nearTaps; i += 2 {
+		a += h[i] * float64(w[i])
+		b += h[i+1] * float64(w[i+1])
+	}
+	return math.Abs(a + b)
 }
 
 // search returns the larger of best and the largest magnitude strictly inside the interval in the

@@ -41,6 +41,7 @@ func (l *lane) load() (bad int64) {
 			if a >= infinite {
 				bad++
 				v, a = 0, 0
+				src[j] = 0
 			}
 			x := float64(v)
 			dst[j] = x
@@ -53,20 +54,6 @@ func (l *lane) load() (bad int64) {
 		l.bend[s] = math.Float64frombits(bend >> 1)
 	}
 	return bad
-}
-
-// largest returns the largest magnitude of the new samples in [from, to).
-func (l *lane) largest(from, to int) (peak float64) {
-	for i := from; i < to; {
-		if i%stretch == 0 && i+stretch <= to { // a whole stretch
-			peak = max(peak, l.peak[(lead+i)/stretch])
-			i += stretch
-			continue
-		}
-		peak = max(peak, math.Abs(l.x[lead+i]))
-		i++
-	}
-	return peak
 }
 
 // advance makes the last samples the lead of those to come.
@@ -88,23 +75,3 @@ func (l *lane) sharpest(s int) float64 { return max(l.bend[s-1], l.bend[s], l.be
 
 // window returns the samples under the kernel for the interval that starts at x[i].
 func (l *lane) window(i int) *[taps]float64 { return (*[taps]float64)(l.x[i-(reach-1):]) }
-
-// truePeak returns the larger of best and the true peak of the stretches that can be searched.
-//
-//go:norace
-func (l *lane) truePeak(k *kernel, best float64) float64 {
-	for s := 1; s < len(l.peak)-1; s++ {
-		best = max(best, l.peak[s])
-		bend := l.sharpest(s)
-		slack := k.slack[0] * bend
-		if max(l.peak[s], math.Abs(l.x[(s+1)*stretch]))+slack <= best {
-			continue
-		}
-		for i := s * stretch; i < (s+1)*stretch; i++ {
-			if max(math.Abs(l.x[i]), math.Abs(l.x[i+1]))+slack > best {
-				best = k.search(l.window(i), bend, best)
-			}
-		}
-	}
-	return best
-}

@@ -17,7 +17,9 @@
 package meter
 
 import (
+	"cmp"
 	"fmt"
+	"math"
 
 	"evenshelf/engine/audio"
 )
@@ -34,9 +36,11 @@ const chunk = 32 * stretch
 // Meter takes one programme and gives its Reading. Make one with New. It is not safe for concurrent use.
 type Meter struct {
 	format  audio.Format
+	mono    audio.MonoRule
 	weights []float64
 	filters []weighting
 	lanes   []lane
+	recalls []recall
 	kernel  *kernel
 
 	filled  int   // frames waiting in the lanes
@@ -48,21 +52,23 @@ type Meter struct {
 	hop        int64     // index of the hop being summed
 	hopEnd     int64     // frame at which it ends
 	sums       []float64 // its energy, by channel
+	squares    []float64 // of all samples so far, by channel
 	recent     []float64 // energies of the last hops, a ring
 	momentary  float64   // energy of the last 400 ms
 	shortTerm  float64   // energy of the last 3 s
 	step       float64   // energy of the hops of the unfinished step
-	stepPeak   float64   // largest sample of the unfinished step
 	energies   []float64 // of every step
-	peaks      []float32 // largest sample of every step
+	peaks      []stepPeak
 	truePeak   float64
+	minPSR     float64 // squared true peak over mean power
 	samplePeak float64
 	maxMoment  float64 // mean power
 	maxShort   float64 // mean power
 }
 
-// New returns a Meter, or an error if the format cannot be measured.
-func New(f audio.Format) (*Meter, error) {
+// New returns a Meter, or an error if the format cannot be measured. mono says how a single
+// channel counts; "" is audio.OneChannel.
+func New(f audio.Format, mono audio.MonoRule) (*Meter, error) {
 	if f.Rate < MinRate || f.Rate > MaxRate {
 		return nil, fmt.Errorf("meter: a sampling rate of %d Hz is not between %d and %d", f.Rate, MinRate, MaxRate)
 	}
@@ -71,17 +77,21 @@ func New(f audio.Format) (*Meter, error) {
 	}
 	m := &Meter{
 		format:  f,
-		weights: weights(f.Layout),
+		mono:    cmp.Or(mono, audio.OneChannel),
+		weights: weights(f.Layout, mono),
 		filters: make([]weighting, f.Layout.Channels),
 		lanes:   make([]lane, f.Layout.Channels),
+		recalls: make([]recall, f.Layout.Channels),
 		kernel:  interpolator(),
 		sums:    make([]float64, f.Layout.Channels),
+		squares: make([]float64, f.Layout.Channels),
 		recent:  make([]float64, shortTermSteps*hopsPerStep),
 	}
 	k := newWeighting(f.Rate)
 	for c := range m.lanes {
 		m.filters[c] = k
 		m.lanes[c] = newLane(chunk)
+		m.recalls[c] = newRecall(recallFrames(f.Rate))
 	}
 	m.Reset()
 	return m, nil
@@ -91,13 +101,16 @@ func New(f audio.Format) (*Meter, error) {
 func (m *Meter) Reset() {
 	for c := range m.lanes {
 		m.lanes[c].reset()
+		m.recalls[c].reset()
 		m.filters[c].past = past{}
 	}
 	clear(m.sums)
+	clear(m.squares)
 	clear(m.recent)
 	*m = Meter{
-		format: m.format, weights: m.weights, filters: m.filters, lanes: m.lanes, kernel: m.kernel,
-		sums: m.sums, recent: m.recent, energies: m.energies[:0], peaks: m.peaks[:0],
+		format: m.format, mono: m.mono, weights: m.weights, filters: m.filters, lanes: m.lanes, recalls: m.recalls,
+		kernel: m.kernel, sums: m.sums, squares: m.squares, recent: m.recent, energies: m.energies[:0], peaks: m.peaks[:0],
+		minPSR: math.Inf(1),
 	}
 	m.hopEnd = hopsEnd(1, m.format.Rate)
 }
@@ -127,14 +140,16 @@ func (m *Meter) BadSamples() int64 { return m.bad }
 func (m *Meter) work() {
 	for c := range m.lanes {
 		m.bad += m.lanes[c].load()
+		m.recalls[c].keep(&m.lanes[c], m.weighed)
 	}
 	for at := 0; at < chunk; {
 		take := int(min(int64(chunk-at), m.hopEnd-m.weighed))
 		for c := range m.lanes {
-			l := &m.lanes[c]
-			m.stepPeak = max(m.stepPeak, l.largest(at, at+take))
+			x := m.lanes[c].x[lead+at:][:take]
 			if m.weights[c] != 0 {
-				m.sums[c] = m.filters[c].add(m.sums[c], l.x[lead+at:][:take])
+				m.sums[c], m.squares[c] = m.filters[c].add(m.sums[c], m.squares[c], x)
+			} else {
+				m.squares[c] = addSquares(m.squares[c], x)
 			}
 		}
 		at += take
@@ -144,10 +159,10 @@ func (m *Meter) work() {
 		}
 	}
 	for c := range m.lanes {
-		m.truePeak = m.lanes[c].truePeak(m.kernel, m.truePeak)
 		m.lanes[c].advance()
 	}
 	m.filled = 0
+	m.searchSteps()
 }
 
 // endHop closes a hop of 10 ms, and with every tenth a step.
@@ -169,9 +184,7 @@ func (m *Meter) endHop() {
 	m.step += energy
 	if m.hop%hopsPerStep == 0 {
 		m.energies = append(m.energies, m.step)
-		m.peaks = append(m.peaks, float32(audio.ToDB(m.stepPeak)))
-		m.samplePeak = max(m.samplePeak, m.stepPeak)
-		m.step, m.stepPeak = 0, 0
+		m.step = 0
 	}
 	m.hopEnd = hopsEnd(m.hop+1, m.format.Rate)
 }

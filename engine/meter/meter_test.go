@@ -33,14 +33,17 @@ func music(seed uint64, rate, frames int) audio.Block {
 	return b
 }
 
-// The fast meter reads what the slow one reads.
+// The fast meter reads what the slow one reads: gating is exact, also at rates of which 100 ms are not whole
+// samples. There the standard's "to the nearest sample" can be read in two ways, of the edges or of the
+// length of a block; they do not differ by as much as 0.005 LU.
 func TestAgainstTheSlowMeter(t *testing.T) {
-	for _, rate := range []int{8000, 16000, 44100, 48000} {
+	for _, rate := range []int{8000, 11025, 16000, 22050, 44100, 48000} {
 		for seed := range uint64(3) {
 			b := music(seed, rate, rate*6+int(seed)*3333)
 			r, _ := measure(t, rate, audio.Stereo, b)
 			slow := naiveMeasure(b, rate)
 			near(t, "integrated", r.Integrated, slow.integrated, 1e-6)
+			near(t, "integrated over blocks of one length", r.Integrated, slow.equalBlocks, 0.005)
 			near(t, "range", r.Range, slow.lra, 1e-6)
 			near(t, "max momentary", r.MaxMomentary, slow.maxMomentary, 1e-6)
 			near(t, "max short-term", r.MaxShortTerm, slow.maxShortTerm, 1e-6)
@@ -83,14 +86,7 @@ func TestGainShiftsTheReading(t *testing.T) {
 		scale(b[0], audio.DB(gain).Linear())
 		scale(b[1], audio.DB(gain).Linear())
 		s, _ := measure(t, 16000, audio.Stereo, b)
-		near(t, "integrated", s.Integrated.Sub(r.Integrated), gain, 1e-5)
-		near(t, "max momentary", s.MaxMomentary.Sub(r.MaxMomentary), gain, 1e-5)
-		near(t, "max short-term", s.MaxShortTerm.Sub(r.MaxShortTerm), gain, 1e-5)
-		near(t, "median", s.ShortTerm50.Sub(r.ShortTerm50), gain, 1e-5)
-		near(t, "true peak", s.TruePeak-r.TruePeak, gain, 1e-5)
-		near(t, "sample peak", s.SamplePeak-r.SamplePeak, gain, 1e-5)
-		near(t, "range", s.Range, float64(r.Range), 1e-5)
-		near(t, "PLR", s.PLR, float64(r.PLR), 1e-5)
+		compareReadings(t, "after the gain", s, r, gain, 1e-5)
 	})
 }
 
@@ -98,9 +94,7 @@ func TestChannelsChangePlaces(t *testing.T) {
 	b := music(1, 44100, 5*44100)
 	r, _ := measure(t, 44100, audio.Stereo, b)
 	s, _ := measure(t, 44100, audio.Stereo, audio.Block{b[1], b[0]})
-	if r != s {
-		t.Errorf("left and right exchanged: %+v, before %+v", s, r)
-	}
+	compareReadings(t, "left and right exchanged", s, r, 0, 0)
 }
 
 // LFE counts for peaks and for nothing else.
@@ -132,9 +126,9 @@ func TestSilenceAfterTheProgramme(t *testing.T) {
 	reference, _ := measure(t, 48000, audio.Stereo, followed(0.4))
 	for _, seconds := range []float64{0.5, 1, 10, 60} {
 		r, _ := measure(t, 48000, audio.Stereo, followed(seconds))
-		if r.Integrated != reference.Integrated {
-			t.Errorf("after %g s of silence: %v, after 0.4 s %v", seconds, r.Integrated, reference.Integrated)
-		}
+		r.RMS, r.CrestFactor, r.Range = reference.RMS, reference.CrestFactor, reference.Range // of more, and quieter, sound
+		r.ShortTerm10, r.ShortTerm50, r.ShortTerm95 = reference.ShortTerm10, reference.ShortTerm50, reference.ShortTerm95
+		compareReadings(t, fmt.Sprintf("after %g s of silence", seconds), r, reference, 0, 0)
 	}
 	for _, seconds := range []float64{0, 0.1, 0.2, 0.3} {
 		r, _ := measure(t, 48000, audio.Stereo, followed(seconds))
@@ -151,15 +145,17 @@ func TestUndefinedFigures(t *testing.T) {
 		}
 		var names []string
 		for _, pair := range strings.Split(strings.Trim(string(j), "{}"), ",") {
-			if name, value, _ := strings.Cut(pair, ":"); value != "null" {
+			if name, value, _ := strings.Cut(pair, ":"); value != "null" && name != `"mono_rule"` {
 				names = append(names, strings.Trim(name, `"`))
 			}
 		}
 		return strings.Join(names, " ")
 	}
 	const always = "sample_rate_hz channels frames duration_s"
+	const peaks = " true_peak_dbtp sample_peak_dbfs"
+	const percentiles = " short_term_p10_lufs short_term_p50_lufs short_term_p95_lufs"
 	const all = always + " integrated_lufs loudness_range_lu max_momentary_lufs max_short_term_lufs" +
-		" short_term_p10_lufs short_term_p50_lufs short_term_p95_lufs true_peak_dbtp sample_peak_dbfs plr_lu"
+		percentiles + peaks + " plr_lu min_psr_lu rms_dbfs crest_factor_db noise_floor_lufs"
 	tests := []struct {
 		name  string
 		parts []part
@@ -167,11 +163,12 @@ func TestUndefinedFigures(t *testing.T) {
 	}{
 		{"nothing at all", nil, always},
 		{"silence", []part{{10, silent}}, always},
-		{"399 ms", []part{{0.399, -20}}, always + " true_peak_dbtp sample_peak_dbfs"},
-		{"400 ms", []part{{0.4, -20}}, always + " integrated_lufs max_momentary_lufs short_term_p10_lufs" +
-			" short_term_p50_lufs short_term_p95_lufs true_peak_dbtp sample_peak_dbfs plr_lu"},
+		{"399 ms", []part{{0.399, -20}}, always + peaks + " rms_dbfs crest_factor_db"},
+		{"400 ms", []part{{0.4, -20}}, always + " integrated_lufs max_momentary_lufs" + percentiles + peaks +
+			" plr_lu rms_dbfs crest_factor_db noise_floor_lufs"},
 		{"3 s", []part{{3, -20}}, all},
-		{"3 s below the gate", []part{{3, -80}}, always + " max_momentary_lufs max_short_term_lufs true_peak_dbtp sample_peak_dbfs"},
+		{"3 s below the gate", []part{{3, -80}}, always + " max_momentary_lufs max_short_term_lufs" + peaks +
+			" rms_dbfs crest_factor_db noise_floor_lufs"},
 	}
 	for _, test := range tests {
 		for _, rate := range []int{8000, 11025, 44100} {

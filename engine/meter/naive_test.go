@@ -8,7 +8,7 @@ import (
 )
 
 // The slow meter: the standards' sentences, one after the other, with nothing shared with the fast one
-// but the K-filter's coefficients, which design_test.go checks on their own. Rates must be multiples of 100.
+// but the K-filter's coefficients, which design_test.go checks on their own.
 
 // naiveWeighted returns x through both sections in the textbook form.
 func naiveWeighted(x []float32, rate int) []float64 {
@@ -32,23 +32,29 @@ func naiveWeighted(x []float32, rate int) []float64 {
 	return y
 }
 
-type naiveReading struct{ integrated, lra, maxMomentary, maxShortTerm float64 }
+type naiveReading struct{ integrated, equalBlocks, lra, maxMomentary, maxShortTerm float64 }
+
+// naiveEdge returns the frame nearest to k hops of which a second has so many.
+func naiveEdge(k, rate, perSecond int) int {
+	return int(math.Round(float64(k) * float64(rate) / float64(perSecond)))
+}
 
 // naiveMeasure reads a programme with equal weights.
 func naiveMeasure(b audio.Block, rate int) naiveReading {
-	followed := b.Frames() + 3*rate/2 // Tech 3342: ≥ 1.5 s of silence after the file
+	followed := b.Frames() + 2*rate // Tech 3342: ≥ 1.5 s of silence after the file
 	total := make([]float64, followed+1)
 	for _, x := range b {
-		y := naiveWeighted(append(slices.Clone(x), make([]float32, 3*rate/2)...), rate)
+		y := naiveWeighted(append(slices.Clone(x), make([]float32, 2*rate)...), rate)
 		sum := 0.0
 		for i, v := range y {
 			sum += v * v
 			total[i+1] += sum
 		}
 	}
-	levels := func(end, window, hop int) (l []float64) {
-		for from := 0; from+window <= end; from += hop {
-			l = append(l, -0.691+10*math.Log10((total[from+window]-total[from])/float64(window)))
+	levels := func(end, width, perSecond int) (l []float64) { // of every full window of width hops
+		for k := width; naiveEdge(k, rate, perSecond) <= end; k++ {
+			from, to := naiveEdge(k-width, rate, perSecond), naiveEdge(k, rate, perSecond)
+			l = append(l, -0.691+10*math.Log10((total[to]-total[from])/float64(to-from)))
 		}
 		return l
 	}
@@ -63,31 +69,45 @@ func naiveMeasure(b audio.Block, rate int) naiveReading {
 		return slices.DeleteFunc(slices.Clone(l), func(v float64) bool { return !ok(v) })
 	}
 	n := b.Frames()
-	blocks := keep(levels(n, 4*rate/10, rate/10), func(v float64) bool { return v > -70 })
-	gate := meanPower(blocks) - 10
-	blocks = keep(blocks, func(v float64) bool { return v > gate })
-	short := keep(levels(n/(rate/10)*(rate/10)+3*rate/2, 3*rate, rate/10), func(v float64) bool { return v >= -70 })
+	gated := func(blocks []float64) float64 {
+		blocks = keep(blocks, func(v float64) bool { return v > -70 })
+		gate := meanPower(blocks) - 10
+		return meanPower(keep(blocks, func(v float64) bool { return v > gate }))
+	}
+	var equal []float64 // blocks of one length, every 100 ms to the nearest sample
+	for k, length := 0, naiveEdge(4, rate, 10); naiveEdge(k, rate, 10)+length <= n; k++ {
+		from := naiveEdge(k, rate, 10)
+		equal = append(equal, -0.691+10*math.Log10((total[from+length]-total[from])/float64(length)))
+	}
+	steps := 0
+	for naiveEdge(steps+1, rate, 10) <= n {
+		steps++
+	}
+	short := keep(levels(naiveEdge(steps+15, rate, 10), 30, 10), func(v float64) bool { return v >= -70 })
 	floor := meanPower(short) - 20
 	short = keep(short, func(v float64) bool { return v >= floor })
 	slices.Sort(short)
 	rank := func(p float64) float64 { return short[int(math.Round(float64(len(short)-1)*p/100+1))-1] }
 	return naiveReading{
-		integrated:   meanPower(blocks),
+		integrated:   gated(levels(n, 4, 10)),
+		equalBlocks:  gated(equal),
 		lra:          rank(95) - rank(10),
-		maxMomentary: slices.Max(levels(n, 4*rate/10, rate/100)),
-		maxShortTerm: slices.Max(levels(n, 3*rate, rate/100)),
+		maxMomentary: slices.Max(levels(n, 40, 100)),
+		maxShortTerm: slices.Max(levels(n, 300, 100)),
 	}
 }
 
 // naiveAt interpolates x at a position between samples: a sinc under a Kaiser window (β = 9) that
-// reaches 200 samples to each side, four times as far as anything in the engine.
+// reaches 200 samples to each side, six times as far as anything in the engine.
+//
+//go:norace
 func naiveAt(x []float32, position float64) float64 {
 	const half = 200
-	sum := 0.0
+	sum, norm := 0.0, 1/bessel0(9)
 	middle := int(math.Floor(position))
 	for i := max(0, middle-half+1); i <= min(len(x)-1, middle+half); i++ {
 		d := position - float64(i)
-		window := bessel0(9*math.Sqrt(1-d*d/(half*half))) / bessel0(9)
+		window := bessel0(9*math.Sqrt(1-d*d/(half*half))) * norm
 		if d != 0 {
 			window *= math.Sin(math.Pi*d) / (math.Pi * d)
 		}

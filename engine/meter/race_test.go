@@ -2,5 +2,5 @@
 
 package meter
 
-// The race detector has nothing to find in a rate; two of them walk all the paths.
-func init() { rates = []int{44100, 48000} }
+// The race detector has nothing to find in a rate or a depth; two rates walk all the paths.
+func init() { rates, depths = []int{32000, 48000}, []depth{16} }

@@ -4,6 +4,14 @@ import "evenshelf/engine/audio"
 
 // Reading is one complete set of measurements of a programme. Field names in JSON are the API's.
 // A figure that is not defined is non-finite here and null in JSON.
+//
+// MinPSR is the least ratio of true peak to short-term loudness: over all full 3 s windows, every 100 ms,
+// that are above −70 LUFS, the least of the window's true peak less its loudness. Heavy limiting shows in
+// it. It reads at most 0.001 LU too high. It needs no gate relative to the programme: the ratio of a quiet
+// passage is that of the same passage louder.
+//
+// NoiseFloor is the 5th percentile of the loudness of full 400 ms windows, every 100 ms, without those that
+// hold digital silence: 100 ms without a sample above −120 dBFS.
 type Reading struct {
 	SampleRate int     `json:"sample_rate_hz"`
 	Channels   int     `json:"channels"`
@@ -19,7 +27,26 @@ type Reading struct {
 	ShortTerm95  audio.LUFS `json:"short_term_p95_lufs"` // integrated value for all three
 	TruePeak     audio.DBTP `json:"true_peak_dbtp"`      // BS.1770 Annex 2, ≥ 192 kHz
 	SamplePeak   audio.DBFS `json:"sample_peak_dbfs"`
-	PLR          audio.LU   `json:"plr_lu"` // true peak − integrated
+	PLR          audio.LU   `json:"plr_lu"`           // true peak − integrated
+	MinPSR       audio.LU   `json:"min_psr_lu"`       // see below
+	RMS          audio.DBFS `json:"rms_dbfs"`         // of all channels together, LFE too; a full-scale sine reads 0 (AES17)
+	CrestFactor  audio.DB   `json:"crest_factor_db"`  // sample peak over rms; 3.01 for a sine
+	NoiseFloor   audio.LUFS `json:"noise_floor_lufs"` // see below
+
+	MonoRule audio.MonoRule `json:"mono_rule"` // how a single channel was counted
+}
+
+// Unmeasured returns a Reading in which no figure is known.
+func Unmeasured() Reading {
+	none := audio.Undefined
+	return Reading{
+		Integrated: audio.LUFS(none), Range: audio.LU(none),
+		MaxMomentary: audio.LUFS(none), MaxShortTerm: audio.LUFS(none),
+		ShortTerm10: audio.LUFS(none), ShortTerm50: audio.LUFS(none), ShortTerm95: audio.LUFS(none),
+		TruePeak: audio.DBTP(none), SamplePeak: audio.DBFS(none),
+		PLR: audio.LU(none), MinPSR: audio.LU(none),
+		RMS: audio.DBFS(none), CrestFactor: audio.DB(none), NoiseFloor: audio.LUFS(none),
+	}
 }
 
 // Timeline is the programme's course on a 100 ms grid: value i describes the window that ends at
@@ -30,4 +57,20 @@ type Timeline struct {
 	Momentary []float32 // LUFS, 400 ms window (shorter at the start)
 	ShortTerm []float32 // LUFS, 3 s window (shorter at the start)
 	Peak      []float32 // dBFS, largest sample of the 100 ms
+}
+
+// Loudness returns the loudness of the mean power of the full 400 ms windows that are above −70 LUFS and
+// that keep chooses by the step they end with; undefined if there is none.
+func (t Timeline) Loudness(keep func(step int) bool) audio.LUFS {
+	var powers []float64
+	for i, m := range t.Momentary {
+		if i >= momentarySteps-1 && keep(i) {
+			powers = append(powers, power(float64(m)))
+		}
+	}
+	mean, n := meanAbove(powers, power(absoluteGate))
+	if n == 0 {
+		return audio.LUFS(audio.Undefined)
+	}
+	return audio.LUFS(loudness(mean))
 }

@@ -76,7 +76,7 @@ func compare(t *testing.T, rate int, b audio.Block, o opinion) {
 const opinionSeconds = "45"
 
 // decoded returns the first part of a file as FFmpeg decodes it.
-func decoded(t *testing.T, path string, rate, channels int) audio.Block {
+func decoded(t testing.TB, path string, rate, channels int) audio.Block {
 	out := ffmpeg(t, "-t", opinionSeconds, "-i", path, "-map", "0:a:0", "-f", "f32le", "-ar", strconv.Itoa(rate), "-ac", strconv.Itoa(channels), "-")
 	b := audio.NewBlock(channels, len(out)/4/channels)
 	for i := range b.Frames() * channels {
@@ -122,7 +122,7 @@ func ffmpegReads(t *testing.T, path string) opinion {
 }
 
 // ffmpeg runs FFmpeg and returns what it writes.
-func ffmpeg(t *testing.T, args ...string) []byte {
+func ffmpeg(t testing.TB, args ...string) []byte {
 	t.Helper()
 	var complaint bytes.Buffer
 	cmd := exec.Command("ffmpeg", append([]string{"-v", "error", "-nostdin"}, args...)...)

@@ -1,6 +1,7 @@
 package meter
 
 import (
+	"fmt"
 	"math"
 
 	"evenshelf/engine/audio"
@@ -8,6 +9,42 @@ import (
 
 // rates are those the standards' signals are tried at.
 var rates = []int{32000, 44100, 48000, 96000}
+
+// depths are those the standards' signals are held at.
+var depths = []depth{16, 24, 0}
+
+// depth is the bits a file has for a sample; 0 is float32.
+type depth int
+
+func (d depth) String() string {
+	if d == 0 {
+		return "float"
+	}
+	return fmt.Sprintf("%d-bit", int(d))
+}
+
+// hold changes b into what a file of that depth gives back, and returns it: 16-bit with triangular dither
+// of its own in every channel, as careful software writes it, 24-bit rounded.
+//
+//go:norace
+func (d depth) hold(b audio.Block) audio.Block {
+	if d == 0 {
+		return b
+	}
+	full := float64(int64(1) << (d - 1))
+	random := uint64(1) // a linear congruence, Knuth's constants
+	for c := range b {
+		for i, v := range b[c] {
+			x := float64(v) * full
+			if d == 16 {
+				random = random*6364136223846793005 + 1442695040888963407
+				x += float64(random>>40)/(1<<24) - float64(random>>16&(1<<24-1))/(1<<24)
+			}
+			b[c][i] = float32(max(-full, min(full-1, math.RoundToEven(x))) / full)
+		}
+	}
+	return b
+}
 
 // front51 is 5.0 in the order of the channel mask: L R C Ls Rs.
 var front51 = audio.UsualLayout(5)
@@ -72,7 +109,7 @@ func measure(t fataler, rate int, layout audio.Layout, b audio.Block) (Reading, 
 
 func newMeter(t fataler, rate int, layout audio.Layout) *Meter {
 	t.Helper()
-	m, err := New(audio.Format{Rate: rate, Layout: layout})
+	m, err := New(audio.Format{Rate: rate, Layout: layout}, audio.OneChannel)
 	if err != nil {
 		t.Fatal(err)
 	}

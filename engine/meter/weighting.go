@@ -29,10 +29,11 @@ func newWeighting(rate int) weighting {
 	}
 }
 
-// add returns sum plus the squares of the weighted samples, before scale.
+// add returns sum plus the squares of the weighted samples, before scale, and squares plus those of the
+// samples themselves, which cost nothing while the recursion is waited for.
 //
 //go:norace
-func (k *weighting) add(sum float64, x []float64) float64 {
+func (k *weighting) add(sum, squares float64, x []float64) (weighted, plain float64) {
 	b1, b2, a1, a2, c1, c2 := k.b1, k.b2, k.a1, k.a2, k.c1, k.c2
 	x1, x2, u1, u2, d1, y1, y2 := k.x1, k.x2, k.u1, k.u2, k.d1, k.y1, k.y2
 	for len(x) >= 2 { // two at a time, so that the past changes places without being moved
@@ -46,6 +47,7 @@ func (k *weighting) add(sum float64, x []float64) float64 {
 		d1 = u1 - u2
 		y1 = (d1 - d - c2*y1) - c1*y2
 		sum += y1 * y1
+		squares += v*v + x2*x2
 		x1, x2 = x2, v
 		x = x[2:]
 	}
@@ -55,8 +57,19 @@ func (k *weighting) add(sum float64, x []float64) float64 {
 		y := (d - d1 - c2*y2) - c1*y1
 		x1, x2, u1, u2, d1, y1, y2 = v, x1, u, u1, d, y, y1
 		sum += y * y
+		squares += v * v
 	}
 	k.past = past{x1, x2, u1, u2, d1, y1, y2}
+	return sum, squares
+}
+
+// addSquares returns sum plus the squares of the samples.
+//
+//go:norace
+func addSquares(sum float64, x []float64) float64 {
+	for _, v := range x {
+		sum += v * v
+	}
 	return sum
 }
 
@@ -73,7 +86,12 @@ func (k *weighting) settle() {
 // height between 60° and 120° to the side, nothing for LFE, 1 elsewhere and where the position is not
 // known. The standard speaks of angles, a file of names: a "back" pair without a "side" pair is taken
 // for the one surround pair of 4.0 and 5.1 at ±110°, with a side pair for the rear pair of 7.1 at ±135°.
-func weights(l audio.Layout) []float64 {
+//
+// A single channel counts once, or twice where the rule is that it will be heard from two loudspeakers.
+func weights(l audio.Layout, mono audio.MonoRule) []float64 {
+	if l.Channels == 1 && mono == audio.TwoLoudspeakers {
+		return []float64{2}
+	}
 	const sides, backs = audio.SideLeft | audio.SideRight, audio.BackLeft | audio.BackRight
 	surround := sides
 	if l.Mask&sides == 0 {
