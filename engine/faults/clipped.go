@@ -9,20 +9,25 @@ import (
 )
 
 // Clipping cuts the tops off a waveform and leaves plateaus at the highest value the converter, the
-// mixer or a decoder could give. A later fade or gain moves that value but keeps the plateaus at the
-// recording's own extreme, which is where they are looked for, separately in each channel and direction.
+// mixer or a decoder could give. A later gain moves that value but keeps the plateaus where they are: at
+// the extreme of what was recorded together. So they are looked for at the extreme of every window,
+// separately in each channel and direction.
 //
 // Three neighbours of one value are not enough: the top of a deep note is that flat by itself. But the
 // top of a wave is round, so that one sample further on it has fallen little, while a cut wave drops at
-// once. A plateau therefore counts only if it ends abruptly on both sides.
+// once. A plateau therefore counts only if it ends abruptly on both sides; and if it lies below the
+// extreme of the whole recording, only if others lie at the same height.
 const (
 	flatSamples = 3    // neighbours at the extreme; common practice is 3 to 7
 	flatWithin  = 8e-5 // of full scale, how far they may differ: dither of 16 bits after a change of gain
 	// What the next sample must have dropped by. A parabola that stays within flatWithin over three
 	// samples has dropped by no more than 4·flatWithin one further on.
-	abrupt      = 5e-4 // of full scale
-	abruptRatio = 1e-3 // of the extreme
-	abruptSteps = 4    // of the recording's own steps, for 8-bit recordings
+	abrupt      = 5e-4      // of full scale
+	abruptRatio = 1e-3      // of the extreme
+	abruptSteps = 4         // of the recording's own steps, for 8-bit recordings
+	coarsest    = 1.0 / 128 // of full scale: 8 bits; there are no coarser steps
+	plateauLow  = 0.02      // of full scale: lower ones are not looked for
+	sameHeight  = 5         // plateaus below the recording's extreme
 )
 
 // Loud masters have flat tops of a few samples at drum hits and sound as they were meant to. What is heard
@@ -41,40 +46,39 @@ const (
 // clipped finds clipping.
 type clipped struct {
 	step     float32 // smallest difference of neighbours seen: the recording's own resolution
-	channels []clippedChannel
-	sounding int64 // windows
+	sides    []side  // two of each channel: its tops, its bottoms
+	sounding int64   // windows
 }
 
-// clippedChannel follows the two extremes of one channel.
-type clippedChannel struct {
-	up, down extreme
-	last     float32 // sample before the window
+// side is one end of a channel's swing, turned so that it is up.
+type side struct {
+	extreme  float32     // of the recording
+	ceilings [16]ceiling // heights at which there are plateaus
+	run      int         // samples of a plateau that reaches into the next window
+	level    float32     // its height
+	entry    float32     // the sample before it
 }
 
-// extreme is one end of a channel's swing, as magnitudes.
-type extreme struct {
-	level    float32 // the highest so far
-	run      int64   // samples of the plateau under way
-	entry    float32 // the sample before it
-	plateaus int64   // counted at this level
-	flat     int64   // samples on them
-	first    int64   // frame of the first
-	inWindow int64   // samples on plateaus that ended in this window
-	bad      int64   // windows
+// ceiling is a height at which waves were cut, unless chance made it so.
+type ceiling struct {
+	level    float32
+	plateaus int64
+	flat     int64 // samples on them
+	first    int64 // frame of the first
+	inWindow int64 // samples on plateaus that ended in this window
+	bad      int64 // windows
 }
 
 func newClipped(f audio.Format) *clipped {
-	return &clipped{step: math.MaxFloat32, channels: make([]clippedChannel, f.Layout.Channels)}
+	return &clipped{step: coarsest, sides: make([]side, 2*f.Layout.Channels)}
 }
 
 func (k *clipped) look(w window) {
-	for c, x := range w.Block {
-		k.learnStep(x[:min(len(x), 64)])
-		ch := &k.channels[c]
-		if w.peak[c] >= min(ch.up.floor(), ch.down.floor()) || ch.up.run+ch.down.run > 0 {
-			k.scan(ch, x, w.from)
-		}
-		ch.last = x[len(x)-1]
+	start := w.wide.Frames() - w.Frames()
+	for c, x := range w.wide {
+		k.learnStep(x[start:min(start+64, len(x))])
+		k.sides[2*c].look(x, 1, w.top[c], w.tops[c], start, w.from, k.step)
+		k.sides[2*c+1].look(x, -1, w.bottom[c], w.bottoms[c], start, w.from, k.step)
 	}
 	if float64(slices.Max(w.peak)) > linear(soundingPeak) {
 		k.sounding++
@@ -90,80 +94,115 @@ func (k *clipped) learnStep(x []float32) {
 	}
 }
 
-// scan follows both extremes through a window. Nearly every sample is far from either.
+// look takes a window that begins at index start of x, at a frame, and rises to top, each of its parts to one of
+// tops, when multiplied by sign. Of three neighbours one is met with even if only every third sample is looked at.
 //
 //go:norace
-func (k *clipped) scan(ch *clippedChannel, x []float32, from int64) {
-	top, bottom := ch.up.floor(), -ch.down.floor()
-	open := ch.up.run+ch.down.run > 0
-	before := ch.last
-	for i, v := range x {
-		if v >= top || v <= bottom || open {
-			ch.up.take(v, before, from+int64(i), k.step)
-			ch.down.take(-v, -before, from+int64(i), k.step)
-			top, bottom = ch.up.floor(), -ch.down.floor()
-			open = ch.up.run+ch.down.run > 0
+func (s *side) look(x []float32, sign, top float32, tops []float32, start int, from int64, step float32) {
+	s.extreme = max(s.extreme, top)
+	done := start
+	if s.run > 0 {
+		for done < len(x) && sign*x[done] >= s.level-flatWithin && sign*x[done] <= s.level+flatWithin {
+			done++
 		}
-		before = v
+		s.run += done - start
+		if done == len(x) {
+			return
+		}
+		s.plateau(s.run, sign*x[done], from+int64(done-start-s.run), step)
+		s.run = 0
 	}
-	ch.up.endWindow(len(x))
-	ch.down.endWindow(len(x))
-}
-
-// floor returns the lowest value that lies at the extreme.
-func (e *extreme) floor() float32 { return e.level - flatWithin }
-
-// take follows the extreme by one sample; before is the sample in front of it, at its frame.
-func (e *extreme) take(v, before float32, at int64, step float32) {
-	switch {
-	case v > e.level+flatWithin: // what was counted so far did not lie at the extreme
-		*e = extreme{level: v, run: 1, entry: before}
-	case v >= e.floor():
-		if e.run == 0 {
-			e.entry = before
+	floor := top - flatWithin
+	for p, t := range tops {
+		if t < floor || top < plateauLow {
+			continue
 		}
-		e.run++
-	case e.run > 0:
-		drop := max(abrupt, abruptRatio*e.level, abruptSteps*step)
-		if e.run >= flatSamples && e.level-e.entry >= drop && e.level-v >= drop {
-			if e.plateaus == 0 {
-				e.first = at - e.run
+		end := start + part(p+1, len(x)-start)
+		for i := max(done, start+part(p, len(x)-start)); i < end; i += flatSamples {
+			if sign*x[i] < floor {
+				continue
 			}
-			e.plateaus++
-			e.flat += e.run
-			e.inWindow += e.run
+			first := i
+			for first > 1 && sign*x[first-1] >= floor {
+				first--
+			}
+			for i < len(x) && sign*x[i] >= floor {
+				i++
+			}
+			s.level, s.entry, done = top, sign*x[first-1], i
+			if i == len(x) {
+				s.run = i - first
+				break
+			}
+			s.plateau(i-first, sign*x[i], from+int64(first-start), step)
 		}
-		e.run = 0
+	}
+	for i := range s.ceilings {
+		c := &s.ceilings[i]
+		if float64(c.inWindow) >= badWindow*float64(len(x)-start) {
+			c.bad++
+		}
+		c.inWindow = 0
 	}
 }
 
-// endWindow judges a window of a number of frames.
-func (e *extreme) endWindow(frames int) {
-	if float64(e.inWindow) >= badWindow*float64(frames) {
-		e.bad++
+// plateau judges a run of samples that lie at level, exit is the sample behind them.
+func (s *side) plateau(run int, exit float32, at int64, step float32) {
+	drop := max(abrupt, abruptRatio*s.level, abruptSteps*step)
+	if run < flatSamples || s.level-s.entry < drop || s.level-exit < drop {
+		return
 	}
-	e.inWindow = 0
+	c := s.ceiling()
+	if c.plateaus == 0 {
+		c.level, c.first = s.level, at
+	}
+	c.plateaus++
+	c.flat += int64(run)
+	c.inWindow += int64(run)
+}
+
+// ceiling returns the one at level, or makes room for it: the least confirmed has to go, but not the highest.
+func (s *side) ceiling() *ceiling {
+	var least, highest *ceiling
+	for i := range s.ceilings {
+		c := &s.ceilings[i]
+		if c.plateaus > 0 && float32(math.Abs(float64(c.level-s.level))) <= flatWithin {
+			return c
+		}
+		if highest == nil || c.level > highest.level {
+			highest = c
+		}
+	}
+	for i := range s.ceilings {
+		if c := &s.ceilings[i]; (least == nil || c.plateaus < least.plateaus) && (c != highest || c.plateaus == 0) {
+			least = c
+		}
+	}
+	*least = ceiling{}
+	return least
 }
 
 func (k *clipped) faults(e extent) []Fault {
 	var plateaus, flat, bad int64
 	first := e.frames
-	for _, ch := range k.channels {
-		for _, x := range []extreme{ch.up, ch.down} {
-			if x.plateaus == 0 {
+	for _, s := range k.sides {
+		var inSide int64
+		for _, c := range s.ceilings {
+			if c.plateaus == 0 || c.level < s.extreme-flatWithin && c.plateaus < sameHeight {
 				continue
 			}
-			plateaus += x.plateaus
-			flat += x.flat
-			first = min(first, x.first)
-			bad = max(bad, x.bad)
+			plateaus += c.plateaus
+			flat += c.flat
+			first = min(first, c.first)
+			inSide += c.bad
 		}
+		bad = max(bad, inSide)
 	}
 	if plateaus == 0 {
 		return nil
 	}
-	at, share := e.Seconds(first), float64(bad)/float64(max(1, k.sounding))
-	f := Fault{Code: "clipped", Severity: Note, At: at, Length: e.Seconds(flat)}
+	at, share := e.Seconds(first), min(1, float64(bad)/float64(max(1, k.sounding)))
+	f := Fault{Code: "clipped", Severity: Note, At: at, Length: e.Seconds(min(flat, e.frames))}
 	f.Words = fmt.Sprintf("clipped %s, first at %s", times(plateaus), audio.Clock(at))
 	if bad >= seriousLeast && share >= seriousBad {
 		f.Severity = Serious

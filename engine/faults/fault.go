@@ -18,3 +18,6 @@ type Fault struct {
 	Length   float64  `json:"length_s"` // how long it lasts in all, seconds
 	Words    string   `json:"words"`    // one sentence, e.g. "clipped 214 times, first at 0:03.2"
 }
+
+// Throughout reports whether the fault concerns the whole of a recording of so many seconds, not a place in it.
+func (f Fault) Throughout(duration float64) bool { return f.Length > 0 && f.Length >= 0.99*duration }

@@ -2,7 +2,6 @@ package faults
 
 import (
 	"fmt"
-	"math"
 
 	"evenshelf/engine/audio"
 )
@@ -17,11 +16,10 @@ type nonFinite struct {
 //
 //go:norace
 func (n *nonFinite) mend(w window) {
-	const exponent = 0x7f800000 // all ones: infinite or not a number
-	last := int64(-1)           // bad frame counted last
+	last := int64(-1) // bad frame counted last
 	for _, x := range w.Block {
 		for i, v := range x {
-			if math.Float32bits(v)&exponent != exponent {
+			if finite(v) {
 				continue
 			}
 			x[i] = 0

@@ -29,38 +29,24 @@ type leaning struct {
 }
 
 func newOffset(f audio.Format) *offset {
-	return &offset{int64(f.Rate), make([]leaning, f.Layout.Channels)}
+	o := &offset{int64(f.Rate), make([]leaning, f.Layout.Channels)}
+	for c := range o.channels {
+		o.channels[c].seconds = make([]float32, 0, 3600) // an hour before there must be more room
+	}
+	return o
 }
 
 func (o *offset) look(w window) {
-	for c, x := range w.Block {
+	for c, s := range w.sums {
 		l := &o.channels[c]
-		s := sum(x)
 		l.total += s
 		l.second += s
-		end := w.from + int64(len(x))
+		end := w.from + int64(w.Frames())
 		if end/o.rate > w.from/o.rate { // windows are tenths of a second, so seconds end with one or nearly
 			l.seconds = append(l.seconds, float32(l.second/float64(o.rate)))
 			l.second = 0
 		}
 	}
-}
-
-// sum adds samples in four lanes, which do not wait for each other.
-//
-//go:norace
-func sum(x []float32) float64 {
-	var a, b, c, d float64
-	for ; len(x) >= 4; x = x[4:] {
-		a += float64(x[0])
-		b += float64(x[1])
-		c += float64(x[2])
-		d += float64(x[3])
-	}
-	for _, v := range x {
-		a += float64(v)
-	}
-	return (a + b) + (c + d)
 }
 
 func (o *offset) faults(e extent) (found []Fault) {
@@ -92,4 +78,14 @@ func (o *offset) faults(e extent) (found []Fault) {
 		})
 	}
 	return found
+}
+
+func (o *offset) measure(e extent, c *Condition) {
+	mean := 0.0
+	for _, l := range o.channels {
+		if m := l.total / float64(e.frames); math.Abs(m) > math.Abs(mean) {
+			mean = m
+		}
+	}
+	c.Offset = audio.Ratio(mean)
 }

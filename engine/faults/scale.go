@@ -11,6 +11,12 @@ import (
 // for all of it may leave nothing to hear. Common practice, no source.
 const scaleMost = 60.0 // dBFS
 
+// nothing is a detector that a format leaves nothing to do.
+type nothing struct{}
+
+func (nothing) look(window)           {}
+func (nothing) faults(extent) []Fault { return nil }
+
 // scale finds recordings with samples that no full scale explains.
 type scale struct{}
 

@@ -2,6 +2,8 @@ package faults
 
 import (
 	"fmt"
+	"math"
+	"slices"
 
 	"evenshelf/engine/audio"
 )
@@ -12,7 +14,11 @@ const (
 	longTail = 3.0 // seconds
 )
 
-// silences finds recordings that are silent or empty, and long silence at their ends.
+// nearSilence is the level in dBFS a recording has no sample above if it is hardly there: whispering taken
+// carefully low still peaks 20 dB higher. Common practice, no source.
+const nearSilence = -40.0
+
+// silences finds recordings that are silent, nearly so, or empty, and long silence at their ends.
 type silences struct {
 	sounded     bool
 	first, last int64 // first and last frame above the level of silence
@@ -51,6 +57,10 @@ func (s *silences) faults(e extent) []Fault {
 		return []Fault{{Code: "silent", Severity: Serious, Length: whole, Words: words}}
 	}
 	var found []Fault
+	if peak := audio.ToDB(float64(slices.Max(e.peak))); peak < nearSilence {
+		words := fmt.Sprintf("almost silent: nothing in it is above %s dBFS", audio.Number(math.Ceil(peak), 0))
+		found = append(found, Fault{Code: "near-silent", Severity: Note, Length: whole, Words: words})
+	}
 	if head := e.Seconds(s.first); head >= longHead {
 		words := fmt.Sprintf("%.1f s of silence before the first sound", head)
 		found = append(found, Fault{Code: "head-silence", Severity: Note, Length: head, Words: words})
@@ -60,4 +70,13 @@ func (s *silences) faults(e extent) []Fault {
 		found = append(found, Fault{Code: "tail-silence", Severity: Note, At: at, Length: whole - at, Words: words})
 	}
 	return found
+}
+
+// measure counts a recording that is silent throughout as silence before the first sound, which never came.
+func (s *silences) measure(e extent, c *Condition) {
+	c.HeadSilence, c.TailSilence = audio.Seconds(e.Seconds(e.frames)), 0
+	if s.sounded {
+		c.HeadSilence = audio.Seconds(e.Seconds(s.first))
+		c.TailSilence = audio.Seconds(e.Seconds(e.frames - s.last - 1))
+	}
 }

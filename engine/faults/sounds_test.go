@@ -1,6 +1,7 @@
 package faults
 
 import (
+	"bytes"
 	"encoding/binary"
 	"fmt"
 	"math"
@@ -21,7 +22,7 @@ type recording struct {
 }
 
 // recordings returns the first half minute of the music of the package asc-music and the speech of
-// pocketsphinx-testdata. Tests must not change them.
+// pocketsphinx-testdata, at their own rates. Tests must not change them.
 func recordings(t testing.TB) []recording {
 	t.Helper()
 	all, err := decoded()
@@ -31,20 +32,24 @@ func recordings(t testing.TB) []recording {
 	return all
 }
 
+const (
+	musicFiles  = "/usr/share/games/asc/music/*.mp3"
+	speechFiles = "/usr/share/pocketsphinx/test/data/*/*.wav"
+	musicRate   = 22050
+	speechRate  = 16000
+)
+
 var decoded = sync.OnceValues(func() (all []recording, err error) {
 	for _, set := range []struct {
 		pattern        string
 		rate, channels int
-	}{
-		{"/usr/share/games/asc/music/*.mp3", 44100, 2},
-		{"/usr/share/pocketsphinx/test/data/*/*.wav", 16000, 1},
-	} {
+	}{{musicFiles, musicRate, 2}, {speechFiles, speechRate, 1}} {
 		paths, err := filepath.Glob(set.pattern)
 		if err != nil || len(paths) == 0 {
 			return nil, fmt.Errorf("no recordings at %s: the tests need the Debian packages asc-music and pocketsphinx-testdata", set.pattern)
 		}
 		for _, path := range paths {
-			sound, err := decode(path, set.rate, set.channels)
+			sound, err := decode(path, set.rate, set.channels, "-t", "30")
 			if err != nil {
 				return nil, err
 			}
@@ -54,12 +59,20 @@ var decoded = sync.OnceValues(func() (all []recording, err error) {
 	return all, nil
 })
 
-// decode reads the first half minute of a file through FFmpeg.
-func decode(path string, rate, channels int) (audio.Block, error) {
-	out, err := exec.Command("ffmpeg", "-v", "error", "-t", "30", "-i", path, "-map", "0:a:0", "-f", "f32le",
-		"-ar", strconv.Itoa(rate), "-ac", strconv.Itoa(channels), "-").Output()
+// decode reads a file through FFmpeg, which is told how much of it, or how.
+func decode(path string, rate, channels int, how ...string) (audio.Block, error) {
+	return ffmpeg(nil, rate, channels, append(how, "-i", path)...)
+}
+
+// ffmpeg returns what FFmpeg makes of its input, at a rate.
+func ffmpeg(input []byte, rate, channels int, args ...string) (audio.Block, error) {
+	args = append(append([]string{"-v", "error"}, args...), "-map", "0:a:0", "-f", "f32le",
+		"-ar", strconv.Itoa(rate), "-ac", strconv.Itoa(channels), "-")
+	command := exec.Command("ffmpeg", args...)
+	command.Stdin = bytes.NewReader(input)
+	out, err := command.Output()
 	if err != nil {
-		return nil, fmt.Errorf("ffmpeg cannot decode %s (is it installed?): %w", path, err)
+		return nil, fmt.Errorf("ffmpeg %v (is it installed?): %w", args, err)
 	}
 	b := audio.NewBlock(channels, len(out)/4/channels)
 	for i := range b.Frames() * channels {
