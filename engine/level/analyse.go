@@ -10,6 +10,7 @@ import (
 	"evenshelf/engine/faults"
 	"evenshelf/engine/media"
 	"evenshelf/engine/meter"
+	"evenshelf/engine/speech"
 )
 
 // Engine does the work on files it is handed. It is safe for concurrent use.
@@ -20,45 +21,54 @@ type Engine struct {
 // Analyse reads the recording at path to its end and measures it. A recording that ends early or that
 // the decoder complains about is measured as far as it goes and has a serious fault that says so; one
 // that cannot be read at all is an error that names the file and the reason.
-func (e *Engine) Analyse(ctx context.Context, path string) (*Analysis, error) {
+func (e *Engine) Analyse(ctx context.Context, path string, o Options) (*Analysis, error) {
 	src, err := e.Media.Open(ctx, path)
 	if err != nil {
 		return nil, err
 	}
 	defer src.Close()
-	return analyse(ctx, path, src)
-}
-
-func analyse(ctx context.Context, path string, src media.Reader) (*Analysis, error) {
-	m, err := meter.New(src.Format())
-	if err != nil {
-		return nil, fmt.Errorf("%s: %w", path, err)
-	}
-	detector := faults.New(src.Format())
-	frames, err := audio.Each(src, func(b audio.Block) error {
-		m.Write(b)
-		detector.Write(b)
-		return context.Cause(ctx)
-	})
+	a, err := analyse(ctx, src, o)
 	if cause := context.Cause(ctx); cause != nil {
 		return nil, cause
 	}
-	damage, err := damageOf(src, frames, err)
 	if err != nil {
 		return nil, fmt.Errorf("%s: %w", path, err)
 	}
-	if frames == 0 {
-		return nil, fmt.Errorf("%s: there is no sound in it", path)
-	}
+	return a, nil
+}
 
-	a := &Analysis{
-		FormatName: src.Info().FormatName(),
-		Decoder:    src.Info().Decoder,
-		Engine:     Version,
-		Info:       src.Info(),
+// analyse measures what is left of src. The meter has one goroutine, everything else another, and this one
+// decodes.
+func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error) {
+	m, err := meter.New(src.Format(), o.Mono)
+	if err != nil {
+		return nil, err
 	}
-	a.Reading, a.Timeline = m.Finish()
-	a.Faults = append(damage, detector.Finish()...)
+	listeners := []func(audio.Block){m.Write}
+	fault, talk := faults.New(src.Format()), speech.New(src.Format())
+	if !o.LoudnessOnly {
+		listeners = append(listeners, func(b audio.Block) { fault.Write(b); talk.Write(b) })
+	}
+	frames, err := audio.Spread(src, listeners...)
+	damage, err := damageOf(src, frames, err)
+	if err != nil {
+		return nil, err
+	}
+	if frames == 0 {
+		return nil, errors.New("there is no sound in it")
+	}
+	a := new(Unmeasured())
+	a.FormatName, a.Decoder, a.Engine, a.Info = src.Info().FormatName(), src.Info().Decoder, Version, src.Info()
+	a.Faults = damage
+	a.Reading, a.Timeline.Timeline = m.Finish()
+	if o.LoudnessOnly {
+		return a, nil
+	}
+	var found []faults.Fault
+	found, a.Condition = fault.Finish()
+	a.Faults = append(a.Faults, found...)
+	a.Timeline.Course = talk.Finish()
+	a.Dialogue = dialogue(a.Timeline)
 	return a, nil
 }
 

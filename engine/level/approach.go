@@ -18,7 +18,7 @@ func (e *Engine) approach(ctx context.Context, source string, p profile.Profile,
 	most := headroom(p, before) + p.Limiting
 	slope, lastGain, last := 0.9, plan.Gain, audio.LUFS(audio.Undefined)
 	for range mostRenders {
-		now, err := e.predict(ctx, source, plan)
+		now, err := e.predict(ctx, source, plan, p.Mono)
 		if err != nil {
 			return plan, err
 		}
@@ -37,13 +37,13 @@ func (e *Engine) approach(ctx context.Context, source string, p profile.Profile,
 }
 
 // predict returns the reading that a plan's rendering will have before it is encoded.
-func (e *Engine) predict(ctx context.Context, source string, plan Plan) (meter.Reading, error) {
+func (e *Engine) predict(ctx context.Context, source string, plan Plan, mono audio.MonoRule) (meter.Reading, error) {
 	src, err := e.Media.Open(ctx, source)
 	if err != nil {
 		return meter.Reading{}, err
 	}
 	defer src.Close()
-	m, err := meter.New(src.Format())
+	m, err := meter.New(src.Format(), mono)
 	if err != nil {
 		return meter.Reading{}, err
 	}

@@ -27,7 +27,8 @@ func (e *Engine) Level(ctx context.Context, source string, p profile.Profile, sc
 			os.Remove(scratch)
 		}
 	}()
-	before, err := e.Analyse(ctx, source)
+	how := Options{Mono: p.Mono}
+	before, err := e.Analyse(ctx, source, how)
 	if cause := context.Cause(ctx); cause != nil {
 		return Outcome{}, cause
 	}
@@ -45,7 +46,7 @@ func (e *Engine) Level(ctx context.Context, source string, p profile.Profile, sc
 	o = Outcome{Before: before}
 	if plan.Untouched {
 		o.Extension = filepath.Ext(source)
-		err = e.copyUntouched(ctx, source, scratch, &o)
+		err = e.copyUntouched(ctx, source, scratch, how, &o)
 	} else {
 		o.Extension, plan, err = e.renderToTarget(ctx, source, p, plan, scratch, &o)
 	}
@@ -75,6 +76,7 @@ func nameOnly(err error, source string) error {
 func (e *Engine) renderToTarget(ctx context.Context, source string, p profile.Profile, plan Plan, scratch string, o *Outcome) (string, Plan, error) {
 	spec := e.Media.SpecFor(o.Before.Info)
 	spec.TagsFrom = source
+	how := Options{Mono: p.Mono}
 	if plan.Limit {
 		var err error
 		if plan, err = e.approach(ctx, source, p, plan, o.Before); err != nil {
@@ -83,7 +85,7 @@ func (e *Engine) renderToTarget(ctx context.Context, source string, p profile.Pr
 	}
 	best, latest := plan, plan
 	for more := true; more && o.Renders < mostRenders; {
-		after, err := e.renderFile(ctx, source, plan, spec, scratch)
+		after, err := e.renderFile(ctx, source, plan, spec, scratch, how)
 		if err != nil {
 			return "", plan, err
 		}
@@ -95,7 +97,7 @@ func (e *Engine) renderToTarget(ctx context.Context, source string, p profile.Pr
 		plan, more = plan.again(p, o.Before, after)
 	}
 	if best != latest {
-		after, err := e.renderFile(ctx, source, best, spec, scratch)
+		after, err := e.renderFile(ctx, source, best, spec, scratch, how)
 		if err != nil {
 			return "", best, err
 		}
@@ -106,7 +108,7 @@ func (e *Engine) renderToTarget(ctx context.Context, source string, p profile.Pr
 }
 
 // renderFile renders into the file scratch and measures what is there then.
-func (e *Engine) renderFile(ctx context.Context, source string, plan Plan, spec media.Spec, scratch string) (*Analysis, error) {
+func (e *Engine) renderFile(ctx context.Context, source string, plan Plan, spec media.Spec, scratch string, how Options) (*Analysis, error) {
 	src, err := e.Media.Open(ctx, source)
 	if err != nil {
 		return nil, err
@@ -123,7 +125,7 @@ func (e *Engine) renderFile(ctx context.Context, source string, plan Plan, spec 
 	if err != nil {
 		return nil, err
 	}
-	after, err := e.Analyse(ctx, scratch)
+	after, err := e.Analyse(ctx, scratch, how)
 	if err != nil {
 		return nil, fmt.Errorf("reading the copy back: %w", err)
 	}
@@ -132,7 +134,7 @@ func (e *Engine) renderFile(ctx context.Context, source string, plan Plan, spec 
 
 // copyUntouched copies source byte for byte and measures the copy, so that what is delivered is what
 // was measured here too.
-func (e *Engine) copyUntouched(ctx context.Context, source, scratch string, o *Outcome) (err error) {
+func (e *Engine) copyUntouched(ctx context.Context, source, scratch string, how Options, o *Outcome) (err error) {
 	in, err := os.Open(source)
 	if err != nil {
 		return err
@@ -146,6 +148,6 @@ func (e *Engine) copyUntouched(ctx context.Context, source, scratch string, o *O
 	if err = errors.Join(err, out.Sync(), out.Close()); err != nil {
 		return err
 	}
-	o.After, err = e.Analyse(ctx, scratch)
+	o.After, err = e.Analyse(ctx, scratch, how)
 	return err
 }

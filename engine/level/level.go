@@ -6,21 +6,53 @@ import (
 	"evenshelf/engine/faults"
 	"evenshelf/engine/media"
 	"evenshelf/engine/meter"
+	"evenshelf/engine/speech"
 )
 
 // Version of the engine; it changes whenever a reading or a rendering could come out differently.
-const Version = "1"
+const Version = "2"
+
+// Options say how a recording is measured. The zero value measures everything, as the standards have it.
+type Options struct {
+	Mono         audio.MonoRule // "" is audio.OneChannel
+	LoudnessOnly bool           // loudness and peaks alone: no faults, no condition, no speech
+}
 
 // Analysis is everything known about one file's sound. Its JSON is a reading in the API and the CLI.
 type Analysis struct {
 	FormatName string `json:"format"`
 	meter.Reading
+	faults.Condition
+	Dialogue
 	Decoder string         `json:"decoder"`
 	Engine  string         `json:"engine"`
 	Faults  []faults.Fault `json:"faults"` // never nil
 
-	Info     media.Info     `json:"-"`
-	Timeline meter.Timeline `json:"-"`
+	Info     media.Info `json:"-"`
+	Timeline Timeline   `json:"-"`
+}
+
+// Dialogue is what is known about the speech in a recording.
+type Dialogue struct {
+	ActiveTime     audio.Seconds `json:"active_s"`    // programme is heard
+	SpeechTime     audio.Seconds `json:"speech_s"`    // and it is speech
+	SpeechLoudness audio.LUFS    `json:"speech_lufs"` // of the 400 ms blocks of speech; undefined without any
+}
+
+// Unmeasured returns an analysis in which no figure is known. Readings kept from an earlier version are
+// read into one, so that what they do not have stays undefined.
+func Unmeasured() Analysis {
+	none := audio.Undefined
+	return Analysis{Reading: meter.Unmeasured(), Condition: faults.Unmeasured(), Dialogue: Dialogue{
+		ActiveTime: audio.Seconds(none), SpeechTime: audio.Seconds(none), SpeechLoudness: audio.LUFS(none),
+	}}
+}
+
+// Timeline is a recording's course on the 100 ms grid. Active and Speech are as long as the other curves,
+// or nil if they were not looked for.
+type Timeline struct {
+	meter.Timeline
+	speech.Course
 }
 
 // Plan is what will be done to a recording: a value that can be shown, stored and rendered again.

@@ -21,7 +21,7 @@ import (
 // Real recordings from Debian packages: music from asc-music, read speech from pocketsphinx-testdata.
 const (
 	music  = "/usr/share/games/asc/music/frontiers.mp3"
-	speech = "/usr/share/pocketsphinx/test/data/librivox/sense_and_sensibility_01_austen_64kb-0870.wav"
+	spoken = "/usr/share/pocketsphinx/test/data/librivox/sense_and_sensibility_01_austen_64kb-0870.wav"
 )
 
 // ffmpeg runs the codec as an outside tool of these tests and returns what it wrote to its two outputs.
@@ -179,7 +179,7 @@ func samples(t *testing.T, path string) (x []float32) {
 
 func TestReadSpeech(t *testing.T) {
 	target := filepath.Join(t.TempDir(), "out.wav")
-	o := levelInto(t, "rotation", speech, target)
+	o := levelInto(t, "rotation", spoken, target)
 	if o.Verdict.State != Done || math.Abs(float64(o.After.Integrated+18)) > 0.1 {
 		t.Errorf("%s at %.2f LUFS: %s", o.Verdict.State, o.After.Integrated, o.Verdict.Reason)
 	}

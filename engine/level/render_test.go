@@ -30,7 +30,7 @@ func TestClosestRenderingIsDelivered(t *testing.T) {
 	ffmpeg(t, nil, "-i", wav, "-b:a", "192k", source)
 
 	e, ctx, p, scratch := &Engine{Media: media.Find()}, context.Background(), named(t, "rotation"), filepath.Join(dir, "x")
-	before, err := e.Analyse(ctx, source)
+	before, err := e.Analyse(ctx, source, Options{})
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -42,7 +42,7 @@ func TestClosestRenderingIsDelivered(t *testing.T) {
 	spec.TagsFrom = source
 	best, last := math.Inf(1), 0.0
 	for more, n := true, 0; more && n < mostRenders; n++ {
-		after, err := e.renderFile(ctx, source, plan, spec, scratch)
+		after, err := e.renderFile(ctx, source, plan, spec, scratch, Options{})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -57,7 +57,7 @@ func TestClosestRenderingIsDelivered(t *testing.T) {
 	if got := math.Abs(float64(o.After.Integrated - p.Target)); got != best {
 		t.Errorf("%.3f LU off the target, the closest of all was %.3f", got, best)
 	}
-	again, err := e.Analyse(ctx, scratch)
+	again, err := e.Analyse(ctx, scratch, Options{})
 	if err != nil || again.Integrated != o.After.Integrated {
 		t.Errorf("the file there is not the one that was measured: %v, %v, %v", again.Integrated, o.After.Integrated, err)
 	}

@@ -21,6 +21,8 @@ type Profile struct {
 	Target    audio.LUFS `json:"target_lufs" toml:"target_lufs"` // integrated loudness aimed at
 	Tolerance audio.LU   `json:"tolerance_lu" toml:"tolerance_lu"`
 	Ceiling   audio.DBTP `json:"ceiling_dbtp" toml:"ceiling_dbtp"` // highest true peak of the delivered file
+	// Mono says how the loudness of a recording with one channel is counted.
+	Mono audio.MonoRule `json:"mono" toml:"mono"`
 	// Limiting is the most the ceiling may take off the loudest moment, dB. At 0 there are no dynamics
 	// at all: the gain stops where the true peak meets the ceiling.
 	Limiting audio.DB `json:"limiting_db" toml:"limiting_db"`
@@ -37,6 +39,7 @@ var builtin = []Profile{
 		Summary:   "Music and jingles for a playout library: every recording at one loudness, peaks held under the ceiling.",
 		Target:    -18,
 		Tolerance: 0.3,
+		Mono:      audio.OneChannel,
 		Ceiling:   -1,
 		Limiting:  10,
 		Lift:      40,
@@ -46,6 +49,7 @@ var builtin = []Profile{
 		Summary:   "One steady gain and no dynamics at all: for archives and albums. Stops short of the target where a peak would pass the ceiling.",
 		Target:    -18,
 		Tolerance: 0.3,
+		Mono:      audio.OneChannel,
 		Ceiling:   -1,
 		Limiting:  0,
 		Lift:      40,
@@ -77,6 +81,9 @@ func (p Profile) Validate() error {
 	}
 	if !validName.MatchString(p.Name) {
 		errs = append(errs, fmt.Errorf("name: %q is not 1 to 40 of a-z, 0-9 and -", p.Name))
+	}
+	if _, err := audio.ParseMonoRule(string(p.Mono)); err != nil {
+		errs = append(errs, fmt.Errorf("mono: %w", err))
 	}
 	within("target_lufs", float64(p.Target), -40, -8)
 	within("tolerance_lu", float64(p.Tolerance), 0.05, 3)

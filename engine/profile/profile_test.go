@@ -4,6 +4,8 @@ import (
 	"errors"
 	"strings"
 	"testing"
+
+	"evenshelf/engine/audio"
 )
 
 func TestBuiltinProfilesAreValid(t *testing.T) {
@@ -25,7 +27,7 @@ func TestValidateNamesEveryWrongField(t *testing.T) {
 	if err == nil {
 		t.Fatal("nothing was found wrong")
 	}
-	for _, field := range []string{"name", "target_lufs", "tolerance_lu", "ceiling_dbtp", "limiting_db", "lift_db"} {
+	for _, field := range []string{"name", "target_lufs", "tolerance_lu", "ceiling_dbtp", "mono", "limiting_db", "lift_db"} {
 		if !strings.Contains(err.Error(), field+":") {
 			t.Errorf("no complaint about %s in:\n%v", field, err)
 		}
@@ -42,6 +44,7 @@ func TestVersionChangesWithEveryField(t *testing.T) {
 		"ceiling":   func(p *Profile) { p.Ceiling-- },
 		"limiting":  func(p *Profile) { p.Limiting++ },
 		"lift":      func(p *Profile) { p.Lift++ },
+		"mono":      func(p *Profile) { p.Mono = audio.TwoLoudspeakers },
 	} {
 		p := base
 		change(&p)
