@@ -1,6 +1,7 @@
 package store
 
 import (
+	"cmp"
 	"context"
 	"database/sql"
 	"encoding/json"
@@ -49,12 +50,14 @@ func scanReading(row scanner) (r Reading, err error) {
 		return r, err
 	}
 	r.MeasuredAt = fromMillis(measured)
+	r.Analysis = level.Unmeasured()
 	if err := json.Unmarshal(detail, &r.Analysis); err != nil {
 		return r, fmt.Errorf("reading %d: %w", r.ID, err)
 	}
 	if r.Faults == nil {
 		r.Faults = []faults.Fault{}
 	}
+	r.MonoRule = cmp.Or(r.MonoRule, audio.OneChannel) // the only rule there was when readings did not name it
 	return r, nil
 }
 
@@ -64,7 +67,11 @@ func insertReading(ctx context.Context, tx *sql.Tx, recordingID, jobID int64, ki
 	if err != nil {
 		return 0, fmt.Errorf("%s reading: %w: %w", kind, err, ErrInvalid)
 	}
-	curves, err := packTimeline(a.Timeline)
+	levels, err := packLevels(a.Timeline)
+	if err != nil {
+		return 0, fmt.Errorf("%s reading: %w: %w", kind, err, ErrInvalid)
+	}
+	course, err := packCourse(a.Timeline.Course, len(a.Timeline.Momentary))
 	if err != nil {
 		return 0, fmt.Errorf("%s reading: %w: %w", kind, err, ErrInvalid)
 	}
@@ -75,7 +82,7 @@ func insertReading(ctx context.Context, tx *sql.Tx, recordingID, jobID int64, ki
 	if err != nil {
 		return 0, err
 	}
-	_, err = tx.ExecContext(ctx, `INSERT INTO timelines (reading_id, step, curves) VALUES (?, ?, ?)`, id, a.Timeline.Step, curves)
+	_, err = tx.ExecContext(ctx, `INSERT INTO timelines (reading_id, step, curves, course) VALUES (?, ?, ?, ?)`, id, a.Timeline.Step, levels, course)
 	if err != nil {
 		return 0, fmt.Errorf("%s timeline: %w", kind, err)
 	}

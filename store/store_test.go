@@ -14,6 +14,7 @@ import (
 	"evenshelf/engine/level"
 	"evenshelf/engine/meter"
 	"evenshelf/engine/profile"
+	"evenshelf/engine/speech"
 )
 
 // fixture is a fresh store with one shelf.
@@ -150,9 +151,15 @@ func analysis(lufs float64) *level.Analysis {
 			SampleRate: 48000, Channels: 2, Frames: 48000 * 90, Duration: 90,
 			Integrated: audio.LUFS(lufs), Range: 7.25, TruePeak: audio.DBTP(lufs + 12), SamplePeak: audio.DBFS(lufs + 11.5),
 			ShortTerm10: audio.LUFS(lufs - 5), ShortTerm50: audio.LUFS(lufs), ShortTerm95: audio.LUFS(lufs + 4), PLR: 12,
-			MaxMomentary: audio.LUFS(lufs + 6), MaxShortTerm: audio.LUFS(lufs + 5),
+			MaxMomentary: audio.LUFS(lufs + 6), MaxShortTerm: audio.LUFS(lufs + 5), MinPSR: 8, RMS: audio.DBFS(lufs + 1),
+			CrestFactor: 10.5, NoiseFloor: audio.LUFS(lufs - 30), MonoRule: audio.TwoLoudspeakers,
 		},
-		Timeline: meter.Timeline{Step: 0.1, Momentary: []float32{inf, -23.456, -20}, ShortTerm: []float32{inf, -30, -25.004}, Peak: []float32{inf, -6.1, -0.004}},
+		Condition: faults.Condition{HeadSilence: 0.1, TailSilence: 0, Correlation: 0.93, Balance: -0.4, Offset: 0.0002},
+		Dialogue:  level.Dialogue{ActiveTime: 0.2, SpeechTime: 0.1, SpeechLoudness: audio.LUFS(lufs + 1)},
+		Timeline: level.Timeline{
+			Timeline: meter.Timeline{Step: 0.1, Momentary: []float32{inf, -23.456, -20}, ShortTerm: []float32{inf, -30, -25.004}, Peak: []float32{inf, -6.1, -0.004}},
+			Course:   speech.Course{Active: []bool{false, true, true}, Speech: []float32{0, 0.499, 0.876}},
+		},
 	}
 }
 

@@ -10,10 +10,11 @@ import (
 	"io"
 	"math"
 
-	"evenshelf/engine/meter"
+	"evenshelf/engine/level"
+	"evenshelf/engine/speech"
 )
 
-// A timeline is stored as the curves Momentary, ShortTerm and Peak one after another, each a little-endian
+// The levels of a timeline are stored as Momentary, ShortTerm and Peak one after another, each a little-endian
 // int16 a value: the difference, in hundredths of dB and wrapping round, from the value before it. Small
 // differences squeeze well (zlib), and an hour of speech takes some 90 kB instead of 430.
 //
@@ -48,7 +49,8 @@ func unpackLevel(n int16) float32 {
 	return float32(float64(n) / 100)
 }
 
-func packTimeline(t meter.Timeline) ([]byte, error) {
+// packLevels packs the three curves of levels.
+func packLevels(t level.Timeline) ([]byte, error) {
 	if len(t.ShortTerm) != len(t.Momentary) || len(t.Peak) != len(t.Momentary) {
 		return nil, fmt.Errorf("timeline: curves of %d, %d and %d values", len(t.Momentary), len(t.ShortTerm), len(t.Peak))
 	}
@@ -61,29 +63,19 @@ func packTimeline(t meter.Timeline) ([]byte, error) {
 			last = n
 		}
 	}
-	var out bytes.Buffer
-	w := zlib.NewWriter(&out)
-	if _, err := w.Write(raw); err != nil {
-		return nil, err
-	}
-	err := w.Close()
-	return out.Bytes(), err
+	return squeeze(raw)
 }
 
-func unpackTimeline(step float64, packed []byte) (t meter.Timeline, err error) {
-	z, err := zlib.NewReader(bytes.NewReader(packed))
+// unpackLevels adds the three curves of levels to t.
+func unpackLevels(t *level.Timeline, packed []byte) error {
+	raw, err := unsqueeze(packed)
 	if err != nil {
-		return t, err
-	}
-	raw, err := io.ReadAll(z)
-	if err != nil {
-		return t, err
+		return err
 	}
 	if len(raw)%6 != 0 {
-		return t, fmt.Errorf("timeline: %d bytes are not three curves of one length", len(raw))
+		return fmt.Errorf("timeline: %d bytes are not three curves of one length", len(raw))
 	}
 	n := len(raw) / 6
-	t.Step = step
 	for _, curve := range []*[]float32{&t.Momentary, &t.ShortTerm, &t.Peak} {
 		*curve = make([]float32, n)
 		last := int16(0)
@@ -93,22 +85,96 @@ func unpackTimeline(step float64, packed []byte) (t meter.Timeline, err error) {
 		}
 		raw = raw[2*n:]
 	}
-	return t, nil
+	return nil
 }
 
-// Timeline returns the curves of a reading, to 0.005 dB.
-func (s *Store) Timeline(ctx context.Context, readingID int64) (t meter.Timeline, err error) {
+// A course is stored as one byte a step, squeezed to some 8 kB an hour: the likelihood of speech in whole percents,
+// cut rather than rounded, so that no step passes the half from which it counts as speech; or storedPause.
+const storedPause = 255
+
+// packCourse packs a course of n steps; nil stays nil.
+func packCourse(c speech.Course, n int) ([]byte, error) {
+	if c.Active == nil && c.Speech == nil {
+		return nil, nil
+	}
+	if len(c.Active) != n || len(c.Speech) != n {
+		return nil, fmt.Errorf("timeline: a course of %d and %d values beside curves of %d", len(c.Active), len(c.Speech), n)
+	}
+	raw := make([]byte, n)
+	for i, likely := range c.Speech {
+		if !(likely >= 0 && likely <= 1) {
+			return nil, fmt.Errorf("timeline: speech with a likelihood of %g", likely)
+		}
+		raw[i] = byte(float64(likely) * 100)
+		if !c.Active[i] {
+			raw[i] = storedPause
+		}
+	}
+	return squeeze(raw)
+}
+
+// unpackCourse returns the course of n steps; nil stays nil.
+func unpackCourse(packed []byte, n int) (c speech.Course, err error) {
+	if packed == nil {
+		return c, nil
+	}
+	raw, err := unsqueeze(packed)
+	if err != nil {
+		return c, err
+	}
+	if len(raw) != n {
+		return c, fmt.Errorf("timeline: a course of %d steps beside curves of %d", len(raw), n)
+	}
+	c = speech.Course{Active: make([]bool, n), Speech: make([]float32, n)}
+	for i, b := range raw {
+		switch {
+		case b == storedPause:
+		case b > 100:
+			return speech.Course{}, fmt.Errorf("timeline: %d percent of speech", b)
+		default:
+			c.Active[i], c.Speech[i] = true, float32(b)/100
+		}
+	}
+	return c, nil
+}
+
+func squeeze(raw []byte) ([]byte, error) {
+	var out bytes.Buffer
+	w := zlib.NewWriter(&out)
+	if _, err := w.Write(raw); err != nil {
+		return nil, err
+	}
+	err := w.Close()
+	return out.Bytes(), err
+}
+
+func unsqueeze(packed []byte) ([]byte, error) {
+	z, err := zlib.NewReader(bytes.NewReader(packed))
+	if err != nil {
+		return nil, err
+	}
+	return io.ReadAll(z)
+}
+
+// Timeline returns the curves of a reading, levels to 0.005 dB and the likelihood of speech to 0.01. Active and
+// Speech are nil if they were not looked for.
+func (s *Store) Timeline(ctx context.Context, readingID int64) (t level.Timeline, err error) {
 	what := fmt.Sprintf("timeline of reading %d", readingID)
 	err = s.read(ctx, func(tx *sql.Tx) error {
-		t, err = one(ctx, tx, func(row scanner) (meter.Timeline, error) {
-			var step float64
-			var packed []byte
-			if err := row.Scan(&step, &packed); err != nil {
-				return meter.Timeline{}, err
-			}
-			return unpackTimeline(step, packed)
-		}, what, `SELECT step, curves FROM timelines WHERE reading_id = ?`, readingID)
+		t, err = one(ctx, tx, scanTimeline, what, `SELECT step, curves, course FROM timelines WHERE reading_id = ?`, readingID)
 		return err
 	})
+	return t, err
+}
+
+func scanTimeline(row scanner) (t level.Timeline, err error) {
+	var levels, course []byte
+	if err := row.Scan(&t.Step, &levels, &course); err != nil {
+		return t, err
+	}
+	if err := unpackLevels(&t, levels); err != nil {
+		return t, err
+	}
+	t.Course, err = unpackCourse(course, len(t.Momentary))
 	return t, err
 }

@@ -2,14 +2,11 @@ package store
 
 import (
 	"context"
-	"encoding/json"
 	"errors"
-	"math"
 	"reflect"
 	"slices"
 	"testing"
 
-	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
 )
 
@@ -315,42 +312,6 @@ func TestRunsPaging(t *testing.T) {
 	}
 	if !slices.Equal(got, want) {
 		t.Errorf("%v, want %v", got, want)
-	}
-}
-
-func TestReadingsAndTimeline(t *testing.T) {
-	f := open(t)
-	f.found("a.wav")
-	_, jobs := f.run(Copy)
-	f.start(jobs[0])
-	o := done(-30, -18)
-	o.After.Range, o.After.ShortTerm10 = audio.LU(audio.Undefined), audio.LUFS(math.Inf(-1))
-	f.finish(jobs[0], o, "a.wav")
-	r := f.byPath()["a.wav"]
-	if r.After.Range != nil || r.After.ShortTerm10 != nil {
-		t.Errorf("figures that are not defined: %+v", r.After)
-	}
-	before, after, err := f.Readings(f.ctx, r.ID)
-	if err != nil {
-		t.Fatal(err)
-	}
-	if before.Kind != "before" || before.JobID != jobs[0] || before.Integrated != -30 || before.Decoder != "invented 1" || len(before.Faults) != 1 {
-		t.Errorf("before: %+v", before)
-	}
-	if audio.Defined(after.Range) || after.Integrated != -18 {
-		t.Errorf("after: %+v", after)
-	}
-	if b, err := json.Marshal(after); err != nil || !json.Valid(b) {
-		t.Errorf("a reading must go out as JSON: %v", err)
-	}
-	line, err := f.Timeline(f.ctx, before.ID)
-	if err != nil {
-		t.Fatal(err)
-	}
-	inf := float32(math.Inf(-1))
-	if line.Step != 0.1 || !slices.Equal(line.Momentary, []float32{inf, -23.46, -20}) || !slices.Equal(line.ShortTerm, []float32{inf, -30, -25}) ||
-		!slices.Equal(line.Peak, []float32{inf, -6.1, 0}) {
-		t.Errorf("timeline: %+v", line)
 	}
 }
 

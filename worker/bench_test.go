@@ -27,6 +27,7 @@ type engine struct {
 
 	mu   sync.Mutex
 	seen map[string]int
+	how  level.Options // of the last Analyse
 	busy atomic.Int32
 	peak atomic.Int32
 }
@@ -56,7 +57,10 @@ func (e *engine) times(name string) int {
 	return e.seen[name]
 }
 
-func (e *engine) Analyse(ctx context.Context, path string) (*level.Analysis, error) {
+func (e *engine) Analyse(ctx context.Context, path string, o level.Options) (*level.Analysis, error) {
+	e.mu.Lock()
+	e.how = o
+	e.mu.Unlock()
 	if err := e.begin(ctx, path); err != nil {
 		return nil, err
 	}
@@ -88,7 +92,7 @@ func (e *engine) Level(ctx context.Context, source string, _ profile.Profile, sc
 func reading(lufs audio.LUFS) *level.Analysis {
 	return &level.Analysis{FormatName: "wav", Decoder: "invented", Engine: level.Version, Faults: []faults.Fault{},
 		Reading:  meter.Reading{Duration: 60, Integrated: lufs},
-		Timeline: meter.Timeline{Step: 0.1, Momentary: []float32{-20}, ShortTerm: []float32{-20}, Peak: []float32{-3}}}
+		Timeline: level.Timeline{Timeline: meter.Timeline{Step: 0.1, Momentary: []float32{-20}, ShortTerm: []float32{-20}, Peak: []float32{-3}}}}
 }
 
 // bench is a store with a shelf on disk.

@@ -11,6 +11,7 @@ import (
 	"github.com/riverqueue/river"
 	"github.com/riverqueue/river/riverdriver/riversqlite"
 
+	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
 	"evenshelf/store"
 	"evenshelf/worker/delivery"
@@ -139,7 +140,7 @@ func (s *Service) attempt(ctx context.Context, w store.Work) (o level.Outcome, o
 	key := fmt.Sprintf("job-%d", w.Job.ID)
 	switch w.Delivery {
 	case store.Measure:
-		o, err = s.measure(ctx, source)
+		o, err = s.measure(ctx, source, w.Profile.Mono)
 	case store.Replace:
 		o, output, err = s.replace(ctx, w, source, key)
 	default:
@@ -157,12 +158,12 @@ func (s *Service) attempt(ctx context.Context, w store.Work) (o level.Outcome, o
 }
 
 // measure only takes the before reading. A file that cannot be read will not be readable next time.
-func (s *Service) measure(ctx context.Context, source string) (level.Outcome, error) {
+func (s *Service) measure(ctx context.Context, source string, mono audio.MonoRule) (level.Outcome, error) {
 	first, err := os.Stat(source)
 	if err != nil {
 		return level.Outcome{}, err
 	}
-	a, err := s.engine.Analyse(ctx, source)
+	a, err := s.engine.Analyse(ctx, source, level.Options{Mono: mono})
 	if unchanged := delivery.Unchanged(source, first); unchanged != nil {
 		return level.Outcome{}, unchanged
 	}

@@ -34,7 +34,7 @@ import (
 // Engine measures and levels one file at a time. It may be used by several jobs at once.
 type Engine interface {
 	// Analyse returns an error for a file it cannot read, with words fit for a person.
-	Analyse(ctx context.Context, path string) (*level.Analysis, error)
+	Analyse(ctx context.Context, path string, o level.Options) (*level.Analysis, error)
 	// Level writes the levelled sound to scratch and syncs it; if the outcome has no After there is no
 	// scratch file. A damaged source is an outcome with the verdict failed; an error may heal.
 	Level(ctx context.Context, source string, p profile.Profile, scratch string) (level.Outcome, error)

@@ -10,7 +10,9 @@ import (
 	"sync/atomic"
 	"testing"
 
+	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
+	"evenshelf/engine/profile"
 	"evenshelf/store"
 	"evenshelf/worker/delivery"
 	"evenshelf/worker/discover"
@@ -68,6 +70,31 @@ func TestMeasure(t *testing.T) {
 	}
 	if got := b.copies(); len(got) != 0 {
 		t.Errorf("measuring wrote %q", got)
+	}
+}
+
+// A run that only measures counts a single channel as its profile says, and looks for everything. A recording that
+// was measured before, perhaps by another rule, is measured again: no reading is ever taken from an earlier run.
+func TestMeasureGoesByTheProfile(t *testing.T) {
+	b := newBench(t, "a.wav")
+	e := &engine{}
+	s := b.startService(e, 1)
+	b.wait(b.begin(s, store.Measure).ID, ended)
+	if want := (level.Options{Mono: audio.OneChannel}); e.how != want {
+		t.Errorf("measured with %+v, want %+v", e.how, want)
+	}
+	p, err := profile.Named("rotation")
+	if err != nil {
+		t.Fatal(err)
+	}
+	p.Mono = audio.TwoLoudspeakers
+	run, err := s.StartRun(b.ctx, store.NewRun{ShelfID: b.shelf.ID, Profile: p, Delivery: store.Measure})
+	if err != nil {
+		t.Fatal(err)
+	}
+	b.wait(run.ID, ended)
+	if want := (level.Options{Mono: audio.TwoLoudspeakers}); e.how != want || e.times("a.wav") != 2 {
+		t.Errorf("measured %d times, last with %+v, want twice and %+v", e.times("a.wav"), e.how, want)
 	}
 }
 
@@ -190,7 +217,7 @@ func TestUnstorableOutcomeFailsTheJob(t *testing.T) {
 
 type tornEngine struct{ engine }
 
-func (*tornEngine) Analyse(context.Context, string) (*level.Analysis, error) {
+func (*tornEngine) Analyse(context.Context, string, level.Options) (*level.Analysis, error) {
 	a := reading(-30)
 	a.Timeline.Peak, a.Timeline.ShortTerm = nil, nil
 	return a, nil
