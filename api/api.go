@@ -27,7 +27,7 @@ import (
 
 	"github.com/gin-gonic/gin"
 
-	"evenshelf/engine/meter"
+	"evenshelf/engine/level"
 	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
@@ -43,7 +43,7 @@ type Store interface {
 	Recording(ctx context.Context, id int64) (store.Recording, error)
 	Recordings(ctx context.Context, q store.RecordingQuery) (store.RecordingPage, error)
 	Readings(ctx context.Context, recordingID int64) (before, after *store.Reading, err error)
-	Timeline(ctx context.Context, readingID int64) (meter.Timeline, error)
+	Timeline(ctx context.Context, readingID int64) (level.Timeline, error)
 	RecordingHistory(ctx context.Context, recordingID int64) ([]store.Event, error)
 	RecordingJobs(ctx context.Context, recordingID int64) ([]store.Job, error)
 

@@ -26,6 +26,7 @@ import (
 	"evenshelf/engine/level"
 	"evenshelf/engine/meter"
 	"evenshelf/engine/profile"
+	"evenshelf/engine/speech"
 	"evenshelf/store"
 )
 
@@ -199,13 +200,19 @@ func analysis(loudness audio.LUFS, peak audio.DBTP) *level.Analysis {
 		Reading: meter.Reading{SampleRate: 48000, Channels: 2, Frames: 14400, Duration: 0.3, Integrated: loudness,
 			Range: audio.LU(audio.Undefined), MaxMomentary: loudness, MaxShortTerm: loudness,
 			ShortTerm10: loudness - 2, ShortTerm50: loudness, ShortTerm95: loudness + 2,
-			TruePeak: peak, SamplePeak: audio.DBFS(peak), PLR: audio.LU(float64(peak) - float64(loudness))},
+			TruePeak: peak, SamplePeak: audio.DBFS(peak), PLR: audio.LU(float64(peak) - float64(loudness)),
+			MinPSR: 8, RMS: audio.DBFS(loudness), CrestFactor: 12, NoiseFloor: loudness - 30, MonoRule: audio.OneChannel},
 		Decoder: "test", Engine: level.Version,
-		Faults: []faults.Fault{{Code: "clipped", Severity: faults.Note, At: 0.1, Length: 0.01, Words: "clipped once"}},
-		Timeline: meter.Timeline{Step: 0.1,
-			Momentary: []float32{silence, -31.26, -0.04},
-			ShortTerm: []float32{silence, -40, -31.25},
-			Peak:      []float32{silence, -12.34, -12.36}},
+		Faults:    []faults.Fault{{Code: "clipped", Severity: faults.Note, At: 0.1, Length: 0.01, Words: "clipped once"}},
+		Condition: faults.Condition{HeadSilence: 0.1, TailSilence: 0, Correlation: 0.93, Balance: -0.4, Offset: audio.Ratio(audio.Undefined)},
+		Dialogue:  level.Dialogue{ActiveTime: 0.2, SpeechTime: 0.1, SpeechLoudness: loudness + 1},
+		Timeline: level.Timeline{
+			Timeline: meter.Timeline{Step: 0.1,
+				Momentary: []float32{silence, -31.26, -0.04},
+				ShortTerm: []float32{silence, -40, -31.25},
+				Peak:      []float32{silence, -12.34, -12.36}},
+			Course: speech.Course{Active: []bool{false, true, true}, Speech: []float32{0, 0.07, 0.93}},
+		},
 	}
 }
 

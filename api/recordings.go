@@ -3,11 +3,12 @@ package api
 import (
 	"context"
 	"errors"
+	"math"
 	"net/http"
+	"strconv"
 
 	"github.com/gin-gonic/gin"
 
-	"evenshelf/engine/meter"
 	"evenshelf/store"
 )
 
@@ -96,6 +97,9 @@ type curves struct {
 	ShortTerm curve `json:"short_term"` // LUFS
 	Momentary curve `json:"momentary"`  // LUFS
 	Peak      curve `json:"peak"`       // dBFS
+	// Where programme is heard, and how likely it is speech; null if that was not looked for.
+	Active []bool   `json:"active"`
+	Speech percents `json:"speech"`
 }
 
 // curve is a series of levels; in JSON each has one decimal, and silence is null.
@@ -109,6 +113,24 @@ func (v curve) MarshalJSON() ([]byte, error) {
 			b = append(b, ',')
 		}
 		b = appendRounded(b, float64(x), 10)
+	}
+	return append(b, ']'), nil
+}
+
+// percents is a series of shares of 1; in JSON each is a whole percent, and a nil series is null.
+type percents []float32
+
+// MarshalJSON writes the series compactly.
+func (v percents) MarshalJSON() ([]byte, error) {
+	if v == nil {
+		return []byte("null"), nil
+	}
+	b := append(make([]byte, 0, 2+3*len(v)), '[')
+	for i, x := range v {
+		if i > 0 {
+			b = append(b, ',')
+		}
+		b = strconv.AppendInt(b, int64(math.Round(100*float64(x))), 10)
 	}
 	return append(b, ']'), nil
 }
@@ -141,7 +163,6 @@ func (a *API) curvesOf(ctx context.Context, r *store.Reading, step *float64) (*c
 	if r == nil {
 		return nil, nil
 	}
-	var tl meter.Timeline
 	tl, err := a.Store.Timeline(ctx, r.ID)
 	if errors.Is(err, store.ErrNotFound) {
 		return nil, nil
@@ -152,5 +173,5 @@ func (a *API) curvesOf(ctx context.Context, r *store.Reading, step *float64) (*c
 	if tl.Step > 0 {
 		*step = tl.Step
 	}
-	return &curves{tl.ShortTerm, tl.Momentary, tl.Peak}, nil
+	return &curves{tl.ShortTerm, tl.Momentary, tl.Peak, tl.Active, tl.Speech}, nil
 }

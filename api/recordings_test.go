@@ -76,10 +76,24 @@ func TestTimelineHasOneDecimalAndNullForSilence(t *testing.T) {
 		t.Errorf("%d %s", got.status, got.body)
 	}
 	h.finish(jobs[0], level.Done)
-	curves := `{"short_term":[null,-40,-31.3],"momentary":[null,-31.3,0],"peak":[null,-12.3,-12.4]}`
+	curves := `{"short_term":[null,-40,-31.3],"momentary":[null,-31.3,0],"peak":[null,-12.3,-12.4],"active":[false,true,true],"speech":[0,7,93]}`
 	want := `{"step_s":0.1,"before":` + curves + `,"after":` + curves + `}`
 	if got := h.get(at("/recordings/%d/timeline", jobs[0].RecordingID)); strings.TrimSpace(string(got.body)) != want {
 		t.Errorf("got  %s\nwant %s", got.body, want)
+	}
+}
+
+// A timeline kept before speech was looked for says so, rather than that nobody speaks.
+func TestTimelineWithoutSpeech(t *testing.T) {
+	h := open(t, nil)
+	_, jobs := h.start()
+	h.finish(jobs[0], level.Done)
+	if _, err := h.db.Writer().Exec(`UPDATE timelines SET course = NULL`); err != nil {
+		t.Fatal(err)
+	}
+	got := h.get(at("/recordings/%d/timeline", jobs[0].RecordingID))
+	if got.status != 200 || strings.Count(string(got.body), `"active":null,"speech":null`) != 2 {
+		t.Errorf("%d %s", got.status, got.body)
 	}
 }
 
