@@ -11,6 +11,7 @@ import (
 	"github.com/chromedp/chromedp"
 	"github.com/chromedp/chromedp/kb"
 
+	"evenshelf/engine/audio"
 	"evenshelf/web/webtest"
 )
 
@@ -67,6 +68,23 @@ func TestInBrowser(t *testing.T) {
 		until(t, ctx, `location.pathname === "/runs/12"`)
 	})
 	t.Run("replacing takes a second step", func(t *testing.T) { testReplacing(t, ctx, url, f) })
+	t.Run("measuring asks for a profile where it matters", func(t *testing.T) {
+		for _, c := range []struct {
+			rule audio.MonoRule
+			asks bool
+		}{{audio.OneChannel, false}, {audio.TwoLoudspeakers, true}} {
+			f := newFake(10)
+			f.profiles[1].Mono = c.rule
+			webtest.Do(t, ctx, chromedp.Navigate(serve(t, f)+"/"))
+			until(t, ctx, `document.querySelector("[data-component=newrun]")?.disabled === false`)
+			webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=newrun]").click()`)
+			until(t, ctx, `document.querySelectorAll("dialog[open] input[name=profile]").length === 2`)
+			webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [value=measure]").click()`)
+			if got := webtest.Eval[bool](t, ctx, `!!document.querySelector("dialog[open] [data-part=how]").offsetParent`); got != c.asks {
+				t.Errorf("with a second profile that counts %s: asks %v, want %v", c.rule, got, c.asks)
+			}
+		}
+	})
 	t.Run("an original is brought back", func(t *testing.T) { testRestore(t, ctx) })
 	t.Run("timeline and player", func(t *testing.T) {
 		webtest.Do(t, ctx, chromedp.Navigate(url+"/recordings/18"))
@@ -83,6 +101,7 @@ func TestInBrowser(t *testing.T) {
 		}
 		webtest.Do(t, ctx, chromedp.Click(chromedp.CSS("[data-part=play]")))
 		until(t, ctx, `document.querySelector("[data-part=play]").textContent === "Listen"`)
+		testMarks(t, ctx)
 		if !webtest.Eval[bool](t, ctx, `document.querySelector("[data-version=after]").getAttribute("aria-pressed") === "true" && document.querySelector("[data-version=before]").getAttribute("aria-pressed") === "false"`) {
 			t.Error("the after version is not chosen")
 		}
@@ -117,6 +136,29 @@ func TestInBrowser(t *testing.T) {
 		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector(".veil [data-part=again]").click()`)
 		until(t, ctx, drawn)
 	})
+}
+
+// testMarks looks under the curves: what is heard at a moment, and the faults at their places. Of the five faults
+// on the page one lies at the very start, two within a second of each other, and one concerns the whole recording.
+func testMarks(t *testing.T, ctx context.Context) {
+	reads := `document.querySelector(".reads")`
+	point := func(share float64) string {
+		return fmt.Sprintf(`(() => { const over = document.querySelector(".u-over"); const { left, top, width } = over.getBoundingClientRect();
+			over.dispatchEvent(new MouseEvent("mousemove", { clientX: left + %g * width, clientY: top + 9, bubbles: true })); return 0; })()`, share)
+	}
+	for share, heard := range map[float64]string{0.02: "speech", 0.14: "pause", 0.5: "no speech"} {
+		webtest.Eval[int](t, ctx, point(share))
+		until(t, ctx, fmt.Sprintf(`%s.textContent.endsWith(" LUFS, %s")`, reads, heard))
+	}
+	if n := webtest.Eval[int](t, ctx, `document.querySelectorAll(".fault-mark").length`); n != 3 {
+		t.Fatalf("%d marks, want 3", n)
+	}
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector(".fault-mark.is-many").focus()`)
+	until(t, ctx, reads+`.textContent === "1:23.2: clipped 214 times, first at 1:23.2\n1:24.1: the sound drops out for 50 ms at 1:24.1" && !`+reads+`.hidden`)
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector(".fault-mark.is-many").blur()`)
+	until(t, ctx, reads+`.hidden`)
+	webtest.Do(t, ctx, chromedp.Click(chromedp.CSS(".fault-mark:last-child")))
+	until(t, ctx, `document.querySelector("[data-part=time]").textContent.startsWith("0:02.0")`) // the end of the sound there is
 }
 
 func testReplacing(t *testing.T, ctx context.Context, url string, f *fake) {
@@ -238,6 +280,23 @@ func testMaths(t *testing.T, ctx context.Context, url string) {
 	if !webtest.Eval[bool](t, ctx, call("components/timeline/curves.js", `const c = m.columns({ step_s: 0.1, before: { short_term: [-20, null], momentary: [-19, null], peak: [-3, null] }, after: null });
 		const [low, high] = m.extent(c, false); return c.x.length === 2 && c.before.shortTerm[1] === null && !c.hasAfter && low === -30 && high <= 3`)) {
 		t.Error("silence in a timeline is not a gap")
+	}
+	for module, claims := range map[string]map[string]string{
+		"band": {
+			"steps of a kind are one stretch": `return JSON.stringify(m.stretches({ active: [true, true, false, true, true], speech: [50, 90, 0, 49, 50] }, 1)) ===
+				JSON.stringify([{ from: 0, to: 2, speech: true }, { from: 3, to: 4, speech: false }, { from: 4, to: 5, speech: true }])`,
+			"what was not looked for is not silence": `return m.stretches({ active: null, speech: null }, 1) === null && m.stretches(null, 1) === null`,
+			"a pause is what is left":                `const b = m.stretches({ active: [true, false, true], speech: [99, 0, 0] }, 1); return [1, 2, 3].map((s) => m.heardAt(b, s)).join() === "speech,pause,no speech"`,
+		},
+		"faults": {
+			"marks that would cover each other are one": `return m.clusters([{ at: 1 }, { at: 2 }, { at: 9 }], ({ at }) => 10 * at).map(({ x, faults }) => [x, faults.length]).join(";") === "10,2;90,1"`,
+		},
+	} {
+		for what, body := range claims {
+			if !webtest.Eval[bool](t, ctx, call("components/timeline/"+module+".js", body)) {
+				t.Errorf("not so: %s", what)
+			}
+		}
 	}
 }
 

@@ -4,10 +4,8 @@ import (
 	"bytes"
 	"cmp"
 	"context"
-	"encoding/binary"
 	"encoding/json"
 	"fmt"
-	"math"
 	"math/rand/v2"
 	"net/http"
 	"slices"
@@ -20,9 +18,7 @@ import (
 	"github.com/gin-gonic/gin"
 
 	"evenshelf/engine/audio"
-	"evenshelf/engine/faults"
 	"evenshelf/engine/level"
-	"evenshelf/engine/meter"
 	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
@@ -37,6 +33,7 @@ type fake struct {
 	runList   []store.Run
 	jobList   []store.Job
 	attic     []store.Original
+	profiles  []profile.Profile
 	asked     chan string // bodies of the runs that were asked for
 	mu        sync.Mutex  // held where a restore changes what a page shows
 	broken    error       // returned by every call when set
@@ -59,7 +56,7 @@ var hostile = []string{
 // newFake invents a shelf of n recordings, most of them levelled by one run that is still at work.
 func newFake(n int) *fake {
 	rng := rand.New(rand.NewPCG(7, uint64(n)))
-	f := &fake{asked: make(chan string, 9)}
+	f := &fake{asked: make(chan string, 9), profiles: profile.Builtin()}
 	run := store.Run{ID: 12, ShelfID: 1, ShelfName: "evening-music", Profile: "rotation", ProfileVersion: "5f0c2a91b3de", Target: -18,
 		Delivery: store.Copy, State: store.RunWorking, CreatedAt: noon.Add(-40 * time.Minute), Jobs: n, BytesTotal: int64(n) * 41e6}
 	started := noon.Add(-38 * time.Minute)
@@ -295,29 +292,6 @@ func (f *fake) RecordingHistory(_ context.Context, id int64) ([]store.Event, err
 	return events, f.broken
 }
 
-func (f *fake) Readings(ctx context.Context, id int64) (before, after *store.Reading, err error) {
-	r, err := f.Recording(ctx, id)
-	if err != nil {
-		return nil, nil, err
-	}
-	read := func(kind string, g *store.Figures) *store.Reading {
-		if g == nil {
-			return nil
-		}
-		a := level.Analysis{FormatName: "wav", Decoder: "native wav", Engine: level.Version, Faults: []faults.Fault{}, Reading: meter.Reading{
-			SampleRate: 44100, Channels: 2, Duration: *r.Duration, Integrated: audio.LUFS(*g.Integrated), Range: audio.LU(*g.Range),
-			TruePeak: audio.DBTP(*g.TruePeak), MaxMomentary: audio.LUFS(*g.ShortTerm95 + 2.4), MaxShortTerm: audio.LUFS(*g.ShortTerm95 + 0.8),
-			PLR: audio.LU(*g.TruePeak - *g.Integrated), SamplePeak: audio.DBFS(*g.TruePeak - 0.2)}}
-		if r.Faults > 0 && kind == "before" {
-			a.Faults = append(a.Faults,
-				faults.Fault{Code: "clipped", Severity: faults.Doubt, At: 83.24, Length: 1.2, Words: "clipped 214 times, first at 1:23.2"},
-				faults.Fault{Code: "dc", Severity: faults.Note, Words: "a constant offset of −52 dBFS in the left channel"})
-		}
-		return &store.Reading{ID: id, RecordingID: id, Kind: kind, MeasuredAt: noon, Analysis: a}
-	}
-	return read("before", r.Before), read("after", r.After), f.broken
-}
-
 // api mounts what the scripts call.
 func (f *fake) api(r gin.IRouter) {
 	g := r.Group("/api/v1")
@@ -340,7 +314,7 @@ func (f *fake) api(r gin.IRouter) {
 		c.JSON(200, gin.H{"target_lufs": -18, "rows": rows, "columns": []string{"id", "path", "state", "before_lufs", "before_p10",
 			"before_p95", "before_peak", "after_lufs", "after_p10", "after_p95", "after_peak"}})
 	})
-	g.GET("/profiles", func(c *gin.Context) { c.JSON(200, gin.H{"profiles": profile.Builtin()}) })
+	g.GET("/profiles", func(c *gin.Context) { c.JSON(200, gin.H{"profiles": f.profiles}) })
 	g.POST("/runs", func(c *gin.Context) {
 		body, _ := c.GetRawData()
 		f.asked <- string(body)
@@ -362,7 +336,7 @@ func (f *fake) api(r gin.IRouter) {
 			c.Status(404)
 			return
 		}
-		c.JSON(200, gin.H{"step_s": 0.1, "before": course(r.Before, r.Duration), "after": course(r.After, r.Duration)})
+		c.JSON(200, gin.H{"step_s": 0.1, "before": course(r.ID, r.Before, r.Duration), "after": course(r.ID, r.After, r.Duration)})
 	})
 	g.GET("/recordings/:id/sound", func(c *gin.Context) {
 		http.ServeContent(c.Writer, c.Request, "tone.wav", noon, bytes.NewReader(tone()))
@@ -374,47 +348,4 @@ func (f *fake) api(r gin.IRouter) {
 		c.Writer.Flush()
 		<-c.Request.Context().Done()
 	})
-}
-
-// course invents a timeline that wanders between a recording's foot and head, with a silent second.
-func course(g *store.Figures, length *float64) any {
-	if g == nil {
-		return nil
-	}
-	n := int(*length * 10)
-	short, moment, peak := make([]*float64, n), make([]*float64, n), make([]*float64, n)
-	rng := rand.New(rand.NewPCG(3, 9))
-	for i := range n {
-		t := float64(i) / 10
-		mid := (*g.ShortTerm10 + *g.ShortTerm95) / 2
-		half := (*g.ShortTerm95 - *g.ShortTerm10) / 2
-		s := mid + half*(0.6*math.Sin(t/17)+0.35*math.Sin(t/5.3+1)+0.2*math.Sin(t/2.1))
-		if i > n-12 {
-			continue
-		}
-		short[i], moment[i] = &s, new(s+1.6*rng.NormFloat64())
-		peak[i] = new(min(s+10+2*rng.NormFloat64(), *g.TruePeak))
-	}
-	return gin.H{"short_term": short, "momentary": moment, "peak": peak}
-}
-
-// tone is two seconds of a quiet 440 Hz sine as a WAV file.
-func tone() []byte {
-	const rate, n = 44100, 88200
-	var b bytes.Buffer
-	b.WriteString("RIFF")
-	_ = binary.Write(&b, binary.LittleEndian, uint32(36+2*n))
-	b.WriteString("WAVEfmt ")
-	_ = binary.Write(&b, binary.LittleEndian, struct {
-		Size             uint32
-		Tag, Channels    uint16
-		Rate, BytesASec  uint32
-		Align, BitsASamp uint16
-	}{16, 1, 1, rate, 2 * rate, 2, 16})
-	b.WriteString("data")
-	_ = binary.Write(&b, binary.LittleEndian, uint32(2*n))
-	for i := range n {
-		_ = binary.Write(&b, binary.LittleEndian, int16(1000*math.Sin(2*math.Pi*440*float64(i)/rate)))
-	}
-	return b.Bytes()
 }

@@ -69,11 +69,16 @@ type figure struct {
 }
 
 func newFigure(v any, unit string) figure {
-	f, ok := value(v)
-	if !ok {
+	f, _ := value(v)
+	return decimals(f, 1, unit)
+}
+
+// decimals is newFigure with another count of decimals.
+func decimals(f float64, n int, unit string) figure {
+	if !audio.Defined(f) {
 		return figure{}
 	}
-	return figure{true, audio.Number(f, 1), unit}
+	return figure{true, audio.Number(f, n), unit}
 }
 
 // signed is audio.Number with a plus where it is one: for differences and gains.

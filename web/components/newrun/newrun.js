@@ -9,11 +9,15 @@ export function mount(button) {
   const says = form.querySelector(".says");
   const start = form.querySelector("button[type=submit]");
 
+  let alike = true; // all profiles count a single channel by one rule
+
   async function offer() {
     start.disabled = true;
     try {
       const { profiles } = await get(form.dataset.profiles);
       part.profiles.replaceChildren(...profiles.map(option));
+      alike = new Set(profiles.map(({ mono }) => mono)).size < 2;
+      how();
       start.disabled = false;
     } catch (error) {
       const again = el("button", { type: "button" }, "Try again");
@@ -22,12 +26,16 @@ export function mount(button) {
     }
   }
 
-  // Measuring needs no profile to choose. Replacing is the one delivery that changes the shelf: it takes a
-  // second step, anew each time.
+  // Measuring needs no profile to choose, unless they count a single channel differently.
+  function how() {
+    part.how.hidden = alike && form.elements.delivery.value === "measure";
+  }
+
+  // Replacing is the one delivery that changes the shelf: it takes a second step, anew each time.
   const { sure } = form.elements;
   function ask() {
     const replaces = form.elements.delivery.value === "replace";
-    part.how.hidden = form.elements.delivery.value === "measure";
+    how();
     part.sure.hidden = !replaces;
     sure.required = replaces;
     sure.checked = false;
@@ -64,10 +72,13 @@ function option(profile, index) {
   const limits = profile.limiting_db > 0
     ? `peaks held under ${number(profile.ceiling_dbtp)} dBTP`
     : `stops where a peak would pass ${number(profile.ceiling_dbtp)} dBTP`;
+  const mono = profile.mono === "two-loudspeakers"
+    ? "A single channel counts as it is heard from two loudspeakers (3.01 LU more)"
+    : "A single channel counts as BS.1770 has it";
   return el("label", { class: "option" },
     el("input", { type: "radio", name: "profile", value: profile.name, checked: index === 0 }),
     el("span", {},
       el("b", {}, profile.name),
       el("small", {}, profile.summary),
-      el("small", {}, `Aims at ${number(profile.target_lufs)} LUFS, within ${number(profile.tolerance_lu)} LU; ${limits}.`)));
+      el("small", {}, `Aims at ${number(profile.target_lufs)} LUFS, within ${number(profile.tolerance_lu)} LU; ${limits}. ${mono}.`)));
 }

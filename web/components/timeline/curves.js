@@ -1,5 +1,6 @@
 // The API's timeline as columns of one length for the chart. A value that is not defined (silence) is null
 // and leaves a gap.
+import { stretches } from "./band.js";
 
 export function columns({ step_s: step, before, after }) {
   const length = Math.max(before?.short_term.length ?? 0, after?.short_term.length ?? 0);
@@ -11,6 +12,7 @@ export function columns({ step_s: step, before, after }) {
     before: reading(before),
     after: reading(after),
     hasAfter: Boolean(after),
+    band: stretches(before, step) ?? stretches(after, step),
   };
 }
 

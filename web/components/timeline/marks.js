@@ -1,4 +1,4 @@
-// What is drawn over the curves: target, ceiling, faults at their time, and the place being heard.
+// What is drawn over the curves: target, ceiling, a line at each fault, and the place being heard.
 import { defined, number } from "../../figures.js";
 
 export function marks(u, { ink, font, target, ceiling, faults, playhead }) {
@@ -37,7 +37,6 @@ export function marks(u, { ink, font, target, ceiling, faults, playhead }) {
     pen.setLineDash([2 * ratio, 3 * ratio]);
     line(pen, x, bbox.top, x, bottom);
     pen.setLineDash([]);
-    diamond(pen, x, bottom - 6 * ratio, 5 * ratio, ink.held, ink.sheet);
   }
 
   if (defined(playhead)) {
@@ -55,18 +54,5 @@ function line(pen, x1, y1, x2, y2) {
   pen.beginPath();
   pen.moveTo(x1, y1);
   pen.lineTo(x2, y2);
-  pen.stroke();
-}
-
-function diamond(pen, x, y, size, stroke, fill) {
-  pen.beginPath();
-  pen.moveTo(x, y - size);
-  pen.lineTo(x + size, y);
-  pen.lineTo(x, y + size);
-  pen.lineTo(x - size, y);
-  pen.closePath();
-  pen.fillStyle = fill;
-  pen.fill();
-  pen.strokeStyle = stroke;
   pen.stroke();
 }

@@ -4,10 +4,14 @@ import uPlot from "../../vendor/uplot/uPlot.esm.js";
 import { get } from "../../api.js";
 import { colours, el, onTheme, parts } from "../../dom.js";
 import { clock, number } from "../../figures.js";
+import { drawBand, heardAt } from "./band.js";
 import { columns, extent } from "./curves.js";
+import { FaultMarks, faultsOf } from "./faults.js";
 import { marks } from "./marks.js";
 
 const TOKENS = ["ink", "soft", "hair", "edge", "sheet", "before", "after", "held"];
+const AXIS = 30; // px for the times under the plot
+const BAND = { from: 14, height: 10 }; // px under the plot: the marks of faults reach down to there
 const FONT = '"Atkinson Hyperlegible", system-ui, sans-serif';
 
 export function mount(root) {
@@ -24,7 +28,7 @@ class Timeline {
     this.shown = { momentary: false, peak: false };
     this.target = parseFloat(root.dataset.target);
     this.ceiling = parseFloat(root.dataset.ceiling);
-    this.faults = [...document.querySelectorAll("[data-faults] [data-at]")].map((item) => ({ at: Number(item.dataset.at), words: item.dataset.words }));
+    this.faults = faultsOf(document);
   }
 
   async load() {
@@ -48,8 +52,14 @@ class Timeline {
   }
 
   start() {
-    const { tools, plot, whole } = this.part;
+    const { tools, plot, whole, band, faults } = this.part;
     this.reads = plot.appendChild(el("div", { class: "reads", hidden: true }));
+    this.marks = new FaultMarks(this.faults, (words, x) => {
+      this.atMark = Boolean(words);
+      this.tell(words, x);
+    });
+    band.hidden = !this.curves.band;
+    faults.hidden = !this.faults.length;
     this.build();
     tools.hidden = false;
     for (const box of tools.querySelectorAll("[data-series]")) {
@@ -81,11 +91,13 @@ class Timeline {
     const after = held ? { stroke: ink.held, width: 2, dash: [5, 3] } : { stroke: ink.after, width: 2 };
     const line = (style) => ({ points: { show: false }, ...style });
     const axis = { stroke: ink.soft, font: `12px ${FONT}`, grid: { stroke: ink.hair, width: 1 }, ticks: { show: false }, gap: 8 };
+    const { band } = this.curves;
+    const below = band ? BAND.from + BAND.height : this.faults.length ? BAND.from : 0;
     const options = {
       ...this.size(),
       padding: [14, 26, 0, 0],
       legend: { show: false },
-      scales: { x: { time: false }, y: { range: [low, high] } },
+      scales: { x: { time: false, range: (_, from, to) => [from <= this.curves.x[0] ? 0 : from, to] }, y: { range: [low, high] } },
       cursor: { y: false, points: { show: false }, drag: { x: true, y: false } },
       series: [{},
         line({ stroke: ink.before, width: 1, alpha: 0.55, show: momentary }),
@@ -96,11 +108,16 @@ class Timeline {
         line({ stroke: ink.sheet, width: 2 }),
         line(after)],
       axes: [
-        { ...axis, grid: { show: false }, size: 30, values: (_, splits) => splits.map((s) => clock(s, splits.length > 1 && splits[1] - splits[0] < 1 ? 1 : 0)), incrs: [0.1, 0.2, 0.5, 1, 2, 5, 10, 15, 30, 60, 120, 300, 600, 900, 1800, 3600] },
+        { ...axis, grid: { show: false }, size: AXIS + below, gap: axis.gap + below, values: (_, splits) => splits.map((s) => clock(s, splits.length > 1 && splits[1] - splits[0] < 1 ? 1 : 0)), incrs: [0.1, 0.2, 0.5, 1, 2, 5, 10, 15, 30, 60, 120, 300, 600, 900, 1800, 3600] },
         { ...axis, size: 48, space: 32, incrs: [5, 10, 20], values: (_, splits) => splits.map((v) => number(v, 0)) },
       ],
       hooks: {
-        draw: [(u) => marks(u, { ink, font: FONT, target: this.target, ceiling: peak ? this.ceiling : NaN, faults: this.faults, playhead: this.playhead })],
+        draw: [(u) => {
+          const ratio = devicePixelRatio;
+          if (band) drawBand(u, { band, ink, top: u.bbox.top + u.bbox.height + BAND.from * ratio, height: BAND.height * ratio });
+          marks(u, { ink, font: FONT, target: this.target, ceiling: peak ? this.ceiling : NaN, faults: this.faults, playhead: this.playhead });
+          this.marks.place(u);
+        }],
         setCursor: [(u) => this.read(u)],
         setScale: [(u, key) => { if (key === "x") this.part.whole.hidden = u.scales.x.max - u.scales.x.min > this.curves.x.at(-1) * 0.98; }],
         ready: [(u) => this.seekable(u)],
@@ -121,14 +138,26 @@ class Timeline {
   }
 
   read(u) {
+    if (this.atMark) return;
     const { idx, left } = u.cursor;
-    this.reads.hidden = idx == null || left < 0;
-    if (this.reads.hidden) return;
+    if (idx == null || left < 0) {
+      this.tell("");
+      return;
+    }
     const at = (curve) => number(curve.shortTerm[idx] ?? NaN);
     const c = this.curves;
-    this.reads.textContent = `${clock(c.x[idx])}: ${at(c.before)}${c.hasAfter ? ` → ${at(c.after)}` : ""} LUFS`;
-    const x = left + u.bbox.left / devicePixelRatio;
+    const heard = c.band ? `, ${heardAt(c.band, c.x[idx])}` : "";
+    this.tell(`${clock(c.x[idx])}: ${at(c.before)}${c.hasAfter ? ` → ${at(c.after)}` : ""} LUFS${heard}`, left + u.bbox.left / devicePixelRatio);
+  }
+
+  // tell shows words beside the place they are about, x from the left; "" shows none.
+  tell(words, x) {
+    this.reads.hidden = !words;
+    this.reads.textContent = words;
+    if (!words) return;
     const wide = this.reads.offsetWidth;
-    this.reads.style.left = `${x + wide + 24 > this.part.plot.clientWidth ? x - wide - 4 : x + 20}px`;
+    const room = this.part.plot.clientWidth;
+    const left = x + wide + 24 > room ? x - wide - 4 : x + 20;
+    this.reads.style.left = `${Math.max(Math.min(left, room - wide - 4), 4)}px`;
   }
 }

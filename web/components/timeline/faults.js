@@ -1,0 +1,62 @@
+// Marks of faults on the time axis: buttons that tell what is wrong there and play it.
+import { el } from "../../dom.js";
+import { clock } from "../../figures.js";
+
+const APART = 20; // px between two marks; closer ones become one
+
+// faultsOf reads the list on the page. A fault of the recording as a whole has no place on the axis.
+export function faultsOf(page) {
+  return [...page.querySelectorAll("[data-faults] [data-at]")]
+    .map((item) => ({ at: Number(item.dataset.at), words: item.dataset.words, listen: item.querySelector("[data-seek]") }))
+    .sort((a, b) => a.at - b.at);
+}
+
+// clusters puts marks that would cover each other together. place gives each fault's distance from the left.
+export function clusters(faults, place) {
+  const found = [];
+  for (const fault of faults) {
+    const x = place(fault);
+    const last = found.at(-1);
+    if (last && x - last.x < APART) last.faults.push(fault);
+    else found.push({ x, faults: [fault] });
+  }
+  return found;
+}
+
+export class FaultMarks {
+  // tip shows words at a distance from the left; no words, no tip.
+  constructor(faults, tip) {
+    Object.assign(this, { faults, tip, shown: "" });
+    this.box = el("div");
+  }
+
+  // place puts the marks that are in view where they belong on the chart.
+  place(u) {
+    const { over, scales: { x: { min, max } } } = u;
+    const inView = this.faults.filter(({ at }) => at >= min && at <= max);
+    const marks = clusters(inView, ({ at }) => over.offsetLeft + u.valToPos(at, "x"));
+    const shown = marks.map(({ faults }) => faults.map(({ at }) => at).join()).join(";");
+    if (shown !== this.shown || this.box.parentNode !== over.parentNode) { // a mark that goes takes its tip along
+      this.shown = shown;
+      this.tip("");
+      this.box.replaceChildren(...marks.map(({ faults }) => this.button(faults)));
+      over.parentNode.append(this.box);
+    }
+    marks.forEach(({ x }, i) => {
+      const { style } = this.box.children[i];
+      style.left = `${x}px`;
+      style.top = `${over.offsetTop + over.offsetHeight}px`;
+    });
+  }
+
+  button(faults) {
+    const many = faults.length > 1;
+    const words = faults.map((fault) => `${clock(fault.at)}: ${fault.words}`).join("\n");
+    const button = el("button", { type: "button", class: many ? "fault-mark is-many" : "fault-mark", "aria-label": `Listen to the fault at ${words}` },
+      many ? el("span", {}, String(faults.length)) : null);
+    for (const on of ["pointerenter", "focus"]) button.addEventListener(on, () => this.tip(words, parseFloat(button.style.left)));
+    for (const off of ["pointerleave", "blur"]) button.addEventListener(off, () => this.tip(""));
+    button.addEventListener("click", () => faults[0].listen.click());
+    return button;
+  }
+}

@@ -1,0 +1,120 @@
+package web
+
+import (
+	"fmt"
+
+	"evenshelf/engine/audio"
+	"evenshelf/engine/level"
+	"evenshelf/store"
+)
+
+// gauge is one figure of a recording as it arrived and as it is delivered, and what it means in plain words.
+type gauge struct {
+	Label, Meaning string
+	Before, After  figure
+	Asked          figure // by the profile
+	AtMost         bool   // what is asked for is a limit, not an aim
+}
+
+// gauges are figures of one kind.
+type gauges struct {
+	Title string
+	Asks  bool // the profile asks for one of them
+	Rows  []gauge
+}
+
+// Gauges puts both readings side by side, figures of one kind together. Without a reading there are none.
+func (p recordingPage) Gauges() []gauges {
+	if p.BeforeReading == nil {
+		return nil
+	}
+	groups := gaugesOf(&p.BeforeReading.Analysis)
+	if p.AfterReading != nil {
+		for g, after := range gaugesOf(&p.AfterReading.Analysis) {
+			for i, row := range after.Rows {
+				groups[g].Rows[i].After = row.Before
+			}
+		}
+	}
+	loudness, peaks := &groups[0], &groups[1]
+	loudness.Asks, peaks.Asks = p.Target != nil, p.Ceiling != nil
+	loudness.Rows[0].Asked = newFigure(p.Target, "LUFS")
+	peaks.Rows[0].Asked, peaks.Rows[0].AtMost = newFigure(p.Ceiling, "dBTP"), true
+	return groups
+}
+
+// gaugesOf lists the figures of one reading as Before.
+func gaugesOf(a *level.Analysis) []gauges {
+	row := func(label string, f figure, meaning string) gauge {
+		return gauge{Label: label, Meaning: meaning, Before: f}
+	}
+	return []gauges{
+		{Title: "Loudness", Rows: []gauge{
+			row("Integrated loudness", newFigure(a.Integrated, "LUFS"), "Loudness of the whole recording; passages far below the rest do not count (BS.1770)."),
+			row("Loudest 3 seconds", newFigure(a.MaxShortTerm, "LUFS"), "The highest short-term loudness."),
+			row("Loudest moment", newFigure(a.MaxMomentary, "LUFS"), "The highest momentary loudness, over 400 ms."),
+			row("Loud passages", newFigure(a.ShortTerm95, "LUFS"), "95 % of the short-term loudness lies below: the head of its spine."),
+			row("Usual passages", newFigure(a.ShortTerm50, "LUFS"), "Half of the short-term loudness lies below."),
+			row("Quiet passages", newFigure(a.ShortTerm10, "LUFS"), "10 % of the short-term loudness lies below: the foot of its spine."),
+			row("Noise floor", newFigure(a.NoiseFloor, "LUFS"), "Momentary loudness of the quietest twentieth: what is left where nobody plays or speaks."),
+		}},
+		{Title: "Peaks and dynamics", Rows: []gauge{
+			row("True peak", newFigure(a.TruePeak, "dBTP"), "The highest point of the wave, between the samples too."),
+			row("Sample peak", newFigure(a.SamplePeak, "dBFS"), "The largest sample."),
+			row("Loudness range", newFigure(a.Range, "LU"), "LRA: how far quiet and loud passages lie apart, the extremes left out (EBU Tech 3342)."),
+			row("Peak over loudness", newFigure(a.PLR, "LU"), "PLR: true peak minus integrated loudness."),
+			row("Least peak over loudness", newFigure(a.MinPSR, "LU"), "PSR: true peak minus short-term loudness, in the 3 seconds where they are closest."),
+			row("Crest factor", newFigure(a.CrestFactor, "dB"), "Sample peak over rms; 3.0 for a sine."),
+		}},
+		{Title: "Signal", Rows: []gauge{
+			row("Rms level", newFigure(a.RMS, "dBFS"), "Mean power of all channels together; a full-scale sine reads 0."),
+			row("Correlation", decimals(float64(a.Correlation), 2, ""), "How alike left and right are: 1 the same, 0 unrelated, −1 opposite polarity, which cancels in mono."),
+			row("Balance", newFigure(a.Balance, "dB"), "Right over left: positive where the right is stronger."),
+			row("DC offset", decimals(100*float64(a.Offset), 2, "%"), "How far the middle of the wave lies from zero, of full scale, in the channel where that is furthest."),
+			row("Silence at the head", newFigure(a.HeadSilence, "s"), "Before the first sample above −70 dBFS."),
+			row("Silence at the tail", newFigure(a.TailSilence, "s"), "After the last sample above −70 dBFS."),
+			row("Sample rate", figure{true, count(a.SampleRate), "Hz"}, "Samples a second in each channel."),
+			row("Channels", figure{Defined: true, Text: count(a.Channels)}, "Counted in the file."),
+		}},
+		{Title: "Speech", Rows: []gauge{
+			row("Programme heard", lasting(a.ActiveTime), "How long something is heard; the rest is pauses."),
+			row("Of which speech", decimals(100*share(a), 0, "%"), "The part of what is heard that is speech."),
+			row("Speech loudness", newFigure(a.SpeechLoudness, "LUFS"), "Loudness of the speech alone."),
+		}},
+	}
+}
+
+// share is how much of what is heard is speech; undefined if that is not known.
+func share(a *level.Analysis) float64 { return float64(a.SpeechTime / a.ActiveTime) }
+
+func lasting(s audio.Seconds) figure {
+	if !audio.Defined(s) {
+		return figure{}
+	}
+	return figure{Defined: true, Text: length(float64(s), true)}
+}
+
+// SpeechSays tells how much speech there is, for those who do not see the chart; "" if it was not looked for.
+func (p recordingPage) SpeechSays() string {
+	r := p.BeforeReading
+	switch {
+	case r == nil || !audio.Defined(r.ActiveTime):
+		return ""
+	case !audio.Defined(r.SpeechLoudness):
+		return "No speech was found."
+	}
+	return fmt.Sprintf("Speech in %s %% of what is heard.", audio.Number(100*share(&r.Analysis), 0))
+}
+
+// MonoSays tells how the single channel of a recording was counted; "" for one with more.
+func (p recordingPage) MonoSays() string {
+	mono := func(r *store.Reading) bool { return r != nil && r.Channels == 1 }
+	b, a := p.BeforeReading, p.AfterReading
+	switch {
+	case mono(b) && mono(a) && b.MonoRule != a.MonoRule:
+		return fmt.Sprintf("Its single channel was counted %s before, and %s after: these loudnesses do not compare.", b.MonoRule.Words(), a.MonoRule.Words())
+	case mono(b):
+		return fmt.Sprintf("Its single channel is counted %s.", b.MonoRule.Words())
+	}
+	return ""
+}
