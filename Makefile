@@ -5,7 +5,7 @@ GO ?= go
 VERSION ?= $(shell git describe --tags --always --dirty 2>/dev/null || echo dev)
 BUILD = $(GO) build -trimpath -ldflags '-s -w -X evenshelf/command.Version=$(VERSION)'
 
-.PHONY: help build try test lint bench fuzz clean
+.PHONY: help build try test lint bench ratios fuzz clean
 
 help: ## list the targets
 	@grep -hE '^[a-z]+:.*##' $(MAKEFILE_LIST) | sed -E 's/:[^#]*## /\t/' | expand -t 10
@@ -25,15 +25,19 @@ test: ## everything that has to pass: format, vet, lint, tests (with the race de
 	$(GO) tool staticcheck ./...
 	$(GO) test -race -timeout 9m ./...
 	@# tests of the whole program and of long signals, which the race detector would make minutes longer
-	$(GO) test -timeout 9m ./command ./engine/demo ./engine/meter
+	$(GO) test -timeout 9m ./command ./engine/demo ./engine/faults ./engine/meter ./engine/speech
 
 bench: ## run every benchmark (x-realtime is how much faster than listening)
 	$(GO) test -run '^$$' -bench . -benchmem ./engine/...
 
+ratios: build ## print what measuring costs, as ratios to FFmpeg's decoding and metering from one run
+	@scripts/need test
+	scripts/ratios
+
 fuzz: ## run each fuzz target for a minute
 	@for pkg in $$($(GO) list ./...); do \
 	  for target in $$($(GO) test -list '^Fuzz' $$pkg | grep '^Fuzz'); do \
-	    $(GO) test -run '^$$' -fuzz "^$$target$$" -fuzztime 60s $$pkg || exit 1; \
+	    $(GO) test -run '^$$' -fuzz "^$$target$$" -fuzztime 60s -fuzzminimizetime 10x $$pkg || exit 1; \
 	  done; \
 	done
 

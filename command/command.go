@@ -40,7 +40,7 @@ type cli struct {
 	LogLevel slog.Level      `help:"How much to log: debug, info, warn or error." default:"info"`
 
 	Serve    serveCmd    `cmd:"" help:"Run the server: the dashboard, the HTTP API and the queue."`
-	Measure  measureCmd  `cmd:"" help:"Measure recordings and print their loudness, range and peaks. Nothing is written."`
+	Measure  measureCmd  `cmd:"" help:"Measure recordings and print their loudness, range, peaks, speech and faults. Nothing is written."`
 	Level    levelCmd    `cmd:"" help:"Make levelled copies of recordings in another folder. Originals are not touched."`
 	Runs     runsCmd     `cmd:"" help:"List the runs of a server, or show one run with its recordings."`
 	Restore  restoreCmd  `cmd:"" help:"Bring originals back from the attic after a run that replaced them."`
@@ -152,6 +152,10 @@ func (a *app) engine() (*level.Engine, error) {
 	return &level.Engine{Media: tools}, nil
 }
 
+// workers is how many recordings are worked on at once. One recording takes a decoder, a meter and a search for
+// faults and speech, which wait for each other, so one a processor is what it takes to keep all of them busy, and more
+// gains little: with 4 FLAC and 4 MP3 files on two processors, one at a time took 1.5 times as long as two, and four
+// at a time 0.9 times, for twice the memory and twice the FFmpeg processes. The processor time was the same for all.
 func (a *app) workers() int {
 	if a.Workers > 0 {
 		return a.Workers

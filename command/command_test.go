@@ -110,7 +110,8 @@ func TestMeasureReadsWhatItCanAndSaysWhatItCannot(t *testing.T) {
 		}
 		for _, field := range []string{"path", "format", "sample_rate_hz", "channels", "frames", "duration_s", "integrated_lufs",
 			"loudness_range_lu", "max_momentary_lufs", "max_short_term_lufs", "true_peak_dbtp", "sample_peak_dbfs", "plr_lu",
-			"decoder", "faults", "error"} {
+			"min_psr_lu", "rms_dbfs", "crest_factor_db", "noise_floor_lufs", "mono_rule", "head_silence_s", "tail_silence_s", "correlation",
+			"balance_db", "dc_offset", "active_s", "speech_s", "speech_lufs", "decoder", "faults", "error"} {
 			if _, ok := m[field]; !ok {
 				t.Errorf("%v has no field %s", m["path"], field)
 			}
@@ -137,7 +138,7 @@ func TestUndefinedFiguresAreNull(t *testing.T) {
 		if err := json.Unmarshal([]byte(out), &m); err != nil {
 			t.Fatal(err)
 		}
-		if m["integrated_lufs"] != nil || m["loudness_range_lu"] != nil || m["plr_lu"] != nil {
+		if m["integrated_lufs"] != nil || m["loudness_range_lu"] != nil || m["plr_lu"] != nil || m["speech_lufs"] != nil {
 			t.Errorf("%s: %s", name, out)
 		}
 	}

@@ -5,13 +5,17 @@ import (
 	"encoding/json"
 	"fmt"
 
+	"evenshelf/engine/audio"
 	"evenshelf/engine/faults"
 	"evenshelf/engine/level"
 )
 
 type measureCmd struct {
-	JSON  bool     `name:"json" help:"Print one JSON object a line instead."`
-	Paths []string `arg:"" name:"path" help:"Recordings, or folders of recordings."`
+	JSON         bool           `name:"json" xor:"form" help:"Print one JSON object a line instead."`
+	Details      bool           `xor:"form" help:"Print every figure with its name and unit instead."`
+	LoudnessOnly bool           `help:"Loudness and peaks alone: no faults, no speech; faster."`
+	Mono         audio.MonoRule `enum:"one-channel,two-loudspeakers" default:"one-channel" placeholder:"RULE" help:"How a recording with a single channel is counted: one-channel, as BS.1770 has it, or two-loudspeakers, as it will be heard from two of them, 3.01 LU more (default: ${default})."`
+	Paths        []string       `arg:"" name:"path" help:"Recordings, or folders of recordings."`
 }
 
 // measured is a file's reading as JSON. Every field of a reading is there; those that are not known are null.
@@ -54,11 +58,7 @@ func (c *measureCmd) Run(a *app) error {
 	}
 	unread := 0
 	err = inOrder(a.ctx, a.workers(), files, func(ctx context.Context, in input) measured {
-		m := measured{Path: in.path, Error: in.err}
-		if in.err == nil {
-			m.Analysis, m.Error = e.Analyse(ctx, in.path)
-		}
-		return m
+		return c.measure(ctx, e, in)
 	}, func(_ input, m measured) {
 		if m.Error != nil {
 			unread++
@@ -75,16 +75,40 @@ func (c *measureCmd) Run(a *app) error {
 	return nil
 }
 
+func (c *measureCmd) measure(ctx context.Context, e *level.Engine, in input) measured {
+	m := measured{Path: in.path, Error: in.err}
+	if m.Error == nil {
+		m.Analysis, m.Error = e.Analyse(ctx, in.path, level.Options{Mono: c.Mono, LoudnessOnly: c.LoudnessOnly})
+	}
+	if m.Error == nil && c.LoudnessOnly && len(m.Faults) == 0 {
+		m.Faults = nil // not looked for, which is not the same as none found; damage met while decoding is told
+	}
+	return m
+}
+
 func (c *measureCmd) print(a *app, m measured) {
 	switch {
 	case c.JSON:
 		json.NewEncoder(a.stdout).Encode(m)
 	case m.Error != nil:
 		fmt.Fprintf(a.stdout, "could not be read: %s\n", printable(m.Error.Error()))
+	case c.Details:
+		fmt.Fprintf(a.stdout, "%s\n%s\n", printable(m.Path), details(m.Analysis))
 	default:
-		fmt.Fprintf(a.stdout, "%s  %s\n", summary(m.Analysis), printable(m.Path))
+		fmt.Fprintf(a.stdout, "%s  %s%s\n", summary(m.Analysis), printable(m.Path), spoken(m.Analysis))
 		for _, f := range m.Faults {
 			fmt.Fprintf(a.stdout, "      %s: %s\n", f.Severity, f.Words)
 		}
 	}
 }
+
+// spoken tells how much of a recording is speech and how loud that is, to follow its name; "" without speech.
+func spoken(a *level.Analysis) string {
+	if !audio.Defined(a.SpeechLoudness) {
+		return ""
+	}
+	return fmt.Sprintf("  (speech: %s, %s LUFS)", share(a), figure(float64(a.SpeechLoudness), 0))
+}
+
+// share says how much of what is heard is speech.
+func share(a *level.Analysis) string { return fmt.Sprintf("%.0f %%", 100*a.SpeechTime/a.ActiveTime) }

@@ -39,6 +39,7 @@ func (c *profilesCmd) Run(a *app) error {
 func describe(p profile.Profile) string {
 	s := fmt.Sprintf("%s (version %s)\n%s\n\n", p.Name, p.Version(), p.Summary)
 	s += fmt.Sprintf("  brings each recording to   %s LUFS integrated, within %.1f LU\n", figure(float64(p.Target), 0), p.Tolerance)
+	s += fmt.Sprintf("  a single channel counts    %s\n", p.Mono.Words())
 	s += fmt.Sprintf("  true peak at the most      %s dBTP\n", figure(float64(p.Ceiling), 0))
 	if p.Limiting == 0 {
 		s += "  peaks                      not touched: the gain stops where they meet the ceiling\n"

@@ -151,7 +151,7 @@ func visible(t *testing.T, dir string) (seen, hidden []string) {
 // inTolerance reads a delivered file as a new pair of ears would.
 func inTolerance(t *testing.T, path string) {
 	t.Helper()
-	a, err := (&level.Engine{Media: media.Find()}).Analyse(context.Background(), path)
+	a, err := (&level.Engine{Media: media.Find()}).Analyse(context.Background(), path, level.Options{})
 	if err != nil {
 		t.Errorf("a delivered file cannot be read: %v", err)
 		return
