@@ -50,6 +50,7 @@ type features [featureCount]float64
 const (
 	windowSteps = 3 * StepsPerSecond // a window is three seconds
 	windowLong  = windowSteps * framesPerStep
+	windowHop   = 2    // steps from one window to the next: they differ little
 	deepest     = 45.0 // dB
 	rhythmSteps = 5 * StepsPerSecond
 	rhythmHop   = 4    // steps after which the rhythm is looked at again
@@ -63,14 +64,15 @@ type analyst struct {
 	rises [rhythmSteps * framesPerStep]float64
 }
 
-// eachWindow calls yield with the features of the three seconds around every step of the programme. A window
-// does not reach over a pause of a second or more, since what comes after one may be something else.
-func (d *Detector) eachWindow(active []bool, yield func(step int, f *features)) {
+// eachWindow calls yield with the features of the three seconds around every hop of the programme and the steps
+// [from, to) of that. A window does not reach over a pause of a second or more, since what comes after one may be
+// something else.
+func (d *Detector) eachWindow(active []bool, hop int, yield func(from, to int, f *features)) {
 	var a analyst
 	var f features
 	stretches(active, func(from, to int) {
 		beat := 0.0
-		for i := from; i < to; i++ {
+		for i := from; i < to; i += hop {
 			first := max(from, min(i-windowSteps/2, to-windowSteps))
 			last := min(to, first+windowSteps)
 			a.compute(&f, d.framer.frames[first*framesPerStep:last*framesPerStep])
@@ -79,7 +81,7 @@ func (d *Detector) eachWindow(active []bool, yield func(step int, f *features)) 
 				beat = a.rhythm(d.framer.frames[first*framesPerStep : min(to, first+rhythmSteps)*framesPerStep])
 			}
 			f[rhythm] = beat
-			yield(i, &f)
+			yield(i, min(to, i+hop), &f)
 		}
 	})
 }

@@ -4,7 +4,7 @@ import "math"
 
 // spectrum computes power spectra of real frames of a fixed even length, a power of two. It is a
 // decimation in time with radix 4 (and one step of radix 2 where the length asks for it) over half as
-// many complex numbers. Half of what the detector does at recording speed is this, and the library's general
+// many complex numbers. A quarter of the time goes into this, and the library's general
 // transform takes five times as long, so it is spelled out; the test compares the two.
 type spectrum struct {
 	order    []int // where each complex sample comes from

@@ -104,7 +104,12 @@ func (d *Detector) Finish() Course {
 	d.end()
 	active := activity(d.levels.levels)
 	odds := make([]float32, len(active))
-	d.eachWindow(active, func(step int, f *features) { odds[step] = float32(logOdds(f)) })
+	d.eachWindow(active, windowHop, func(from, to int, f *features) {
+		o := float32(logOdds(f))
+		for i := from; i < to; i++ {
+			odds[i] = o
+		}
+	})
 	c := Course{active, likelihoods(odds)}
 	placeTurns(c.Speech, d.framer.frames)
 	for i, on := range active {
@@ -125,6 +130,6 @@ func (d *Detector) Features() (active []bool, steps [][]float64) {
 	for i := range steps {
 		steps[i] = make([]float64, len(features{}))
 	}
-	d.eachWindow(active, func(step int, f *features) { copy(steps[step], f[:]) })
+	d.eachWindow(active, 1, func(step, _ int, f *features) { copy(steps[step], f[:]) })
 	return active, steps
 }
