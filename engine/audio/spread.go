@@ -15,27 +15,30 @@ type shared struct {
 	left        atomic.Int32 // listeners that have not had it yet
 }
 
-// Spread reads src to its end and lets every listener hear all of it in order, as Each does, but each on a
-// goroutine of its own while the next blocks are being read: one recording keeps as many cores busy as
-// there are listeners, and decoding goes on meanwhile. Listeners share the blocks, so they must neither
-// keep nor change them. Spread returns when all have heard everything that was read. It returns the number
-// of frames and nil at io.EOF, or the error that reading ended with.
-func Spread(src Source, listeners ...func(Block)) (frames int64, err error) {
+// Spread reads src to its end and lets every listener hear all of it in order, as Each does, but at the same
+// time: the first on the goroutine that reads, since a block is nearest to the processor that made it, each of
+// the others on one of its own. Listeners share the blocks, so they must neither keep nor change them. Spread
+// returns when all have heard everything that was read. It returns the number of frames and nil at io.EOF, or
+// the error that reading ended with.
+func Spread(src Source, first func(Block), others ...func(Block)) (frames int64, err error) {
 	channels := src.Format().Layout.Channels
 	free := make(chan *shared, ahead)
 	for range ahead {
 		free <- &shared{block: NewBlock(channels, BlockFrames), view: make(Block, channels)}
 	}
+	heard := func(s *shared) {
+		if s.left.Add(-1) == 0 {
+			free <- s
+		}
+	}
 	var running sync.WaitGroup
-	queues := make([]chan *shared, len(listeners))
-	for i, listen := range listeners {
+	queues := make([]chan *shared, len(others))
+	for i, listen := range others {
 		queues[i] = make(chan *shared, ahead)
 		running.Go(func() {
 			for s := range queues[i] {
 				listen(s.view)
-				if s.left.Add(-1) == 0 {
-					free <- s
-				}
+				heard(s)
 			}
 		})
 	}
@@ -43,16 +46,14 @@ func Spread(src Source, listeners ...func(Block)) (frames int64, err error) {
 		s := <-free
 		var n int
 		n, err = src.ReadBlock(s.block)
-		if n == 0 {
-			free <- s
-			continue
-		}
 		frames += int64(n)
 		s.block.Cut(s.view, 0, n)
-		s.left.Store(int32(len(listeners)))
+		s.left.Store(int32(1 + len(others)))
 		for _, q := range queues {
 			q <- s
 		}
+		first(s.view)
+		heard(s)
 	}
 	for _, q := range queues {
 		close(q)

@@ -48,7 +48,7 @@ func TestSpread(t *testing.T) {
 				}
 			}
 		}
-		n, err := Spread(&counting{end: frames, err: test.with}, listeners...)
+		n, err := Spread(&counting{end: frames, err: test.with}, listeners[0], listeners[1:]...)
 		if n != frames || err != test.want {
 			t.Errorf("%d frames and %v, want %d and %v", n, err, frames, test.want)
 		}

@@ -37,19 +37,18 @@ func (e *Engine) Analyse(ctx context.Context, path string, o Options) (*Analysis
 	return a, nil
 }
 
-// analyse measures what is left of src. The meter has one goroutine, everything else another, and this one
-// decodes.
+// analyse measures what is left of src. Decoding and the meter share one goroutine, everything else has another.
 func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error) {
 	m, err := meter.New(src.Format(), o.Mono)
 	if err != nil {
 		return nil, err
 	}
-	listeners := []func(audio.Block){m.Write}
+	var others []func(audio.Block)
 	fault, talk := faults.New(src.Format()), speech.New(src.Format())
 	if !o.LoudnessOnly {
-		listeners = append(listeners, func(b audio.Block) { fault.Write(b); talk.Write(b) })
+		others = append(others, func(b audio.Block) { fault.Write(b); talk.Write(b) })
 	}
-	frames, err := audio.Spread(src, listeners...)
+	frames, err := audio.Spread(src, m.Write, others...)
 	damage, err := damageOf(src, frames, err)
 	if err != nil {
 		return nil, err
