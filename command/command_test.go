@@ -117,11 +117,25 @@ func TestMeasureReadsWhatItCanAndSaysWhatItCannot(t *testing.T) {
 			}
 		}
 		path := m["path"].(string)
-		if broken := strings.HasSuffix(path, "c.mp3"); broken != (m["error"] != nil) || broken != (m["integrated_lufs"] == nil) {
-			t.Errorf("%s: error %v, integrated %v", path, m["error"], m["integrated_lufs"])
+		if broken := strings.HasSuffix(path, "c.mp3"); broken != (m["error"] != nil) || broken != (m["integrated_lufs"] == nil) || broken != (m["faults"] == nil) {
+			t.Errorf("%s: error %v, integrated %v, faults %v", path, m["error"], m["integrated_lufs"], m["faults"])
 		} else if broken && !strings.Contains(m["error"].(string), "c.mp3") {
 			t.Errorf("the error does not name the file: %v", m["error"])
 		}
+	}
+}
+
+// A path that leads nowhere stands in nobody's way, and is told once, by its name.
+func TestPathsThatLeadNowhere(t *testing.T) {
+	dir := t.TempDir()
+	song, gone := excerpt(t, filepath.Join(dir, "a.wav")), filepath.Join(dir, "gone.wav")
+	code, out, stderr := run(t, "measure", gone, song)
+	if code != exitSome || !strings.HasPrefix(out, "could not be read: "+gone+": no such file or directory\n") || !strings.Contains(out, " LUFS ") || !strings.Contains(stderr, "1 of 2") {
+		t.Errorf("measure: exit code %d\n%s%s", code, out, stderr)
+	}
+	code, out, stderr = run(t, "level", "--profile", "rotation", "--out", filepath.Join(dir, "out"), gone, gone, song)
+	if code != exitSome || strings.Count(out, "failed  "+gone+": no such file or directory\n") != 2 || !strings.Contains(out, "done ") {
+		t.Errorf("level: exit code %d\n%s%s", code, out, stderr)
 	}
 }
 

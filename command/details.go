@@ -3,38 +3,52 @@ package command
 import (
 	"fmt"
 	"strings"
+	"unicode/utf8"
 
 	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
 )
 
-// detail is one line of details: what it is, and the figure with its unit.
-type detail struct{ name, figure string }
+// detail is one line of details: what it is, and the figure with its unit, cut before its decimal point.
+type detail struct{ name, whole, rest string }
 
-// detailed writes a figure so that the decimal points of all stand below one another.
+// detailed tells a figure, or a dash where there is none.
 func detailed[F ~float64](name string, v F, decimals int, unit string) detail {
 	whole, rest := "–", ""
 	if audio.Defined(v) {
-		whole, rest, _ = strings.Cut(audio.Number(float64(v), decimals), ".")
-		rest = "." + rest
+		whole, rest = cut(audio.Number(float64(v), decimals))
 	}
-	return detail{name, fmt.Sprintf("%4s%-3s %s", whole, rest, unit)}
+	return detail{name, whole, fmt.Sprintf("%-3s %s", rest, unit)}
+}
+
+// cut parts a figure before its decimal point.
+func cut(figure string) (whole, rest string) {
+	whole, rest, _ = strings.Cut(figure, ".")
+	return whole, "." + rest
+}
+
+// String puts the decimal points of all lines below one another.
+func (d detail) String() string {
+	if d.whole == "" {
+		return d.name
+	}
+	return fmt.Sprintf("%-*s%s%s", 43-utf8.RuneCountInString(d.whole), d.name, d.whole, d.rest)
 }
 
 // details is everything a reading says, for an engineer at a terminal: figures of one kind together, a dash for
 // what is not defined.
 func details(a *level.Analysis) string {
 	var b strings.Builder
-	channels := fmt.Sprintf("%d channels", a.Channels)
+	channels, counted := fmt.Sprintf("%d channels", a.Channels), ""
 	if a.Channels == 1 {
-		channels = "1 channel, counted " + a.MonoRule.Words()
+		channels, counted = "1 channel", "  its channel is counted "+a.MonoRule.Words()+"\n"
 	}
-	fmt.Fprintf(&b, "  %s, %d Hz, %s, %s, read by %s, engine %s\n", printable(a.FormatName), a.SampleRate, channels,
-		audio.Clock(a.Duration), printable(a.Decoder), a.Engine)
+	fmt.Fprintf(&b, "  %s, %d Hz, %s, %s, read by %s, engine %s\n%s", printable(a.FormatName), a.SampleRate, channels,
+		audio.Clock(a.Duration), printable(a.Decoder), a.Engine, counted)
 	group := func(title string, lines ...detail) {
 		fmt.Fprintf(&b, "\n  %s\n", title)
 		for _, l := range lines {
-			fmt.Fprintln(&b, strings.TrimRight(fmt.Sprintf("    %-38s %s", l.name, l.figure), " "))
+			fmt.Fprintln(&b, strings.TrimRight("    "+l.String(), " "))
 		}
 	}
 	group("Loudness",
@@ -52,7 +66,7 @@ func details(a *level.Analysis) string {
 		detailed("loudness range (LRA)", a.Range, 1, "LU"),
 		detailed("true peak over integrated (PLR)", a.PLR, 1, "LU"),
 		detailed("least peak over short-term (min. PSR)", a.MinPSR, 1, "LU"),
-		detailed("sample peak over rms (crest factor)", a.CrestFactor, 1, "dB"))
+		detailed("crest factor (a sine reads 3.0)", a.CrestFactor, 1, "dB"))
 	group("Signal",
 		detailed("rms (a full-scale sine reads 0)", a.RMS, 1, "dBFS"),
 		detailed("correlation of left and right", a.Correlation, 2, "(1 alike, −1 opposite polarity)"),
@@ -70,12 +84,15 @@ func speechDetails(a *level.Analysis) []detail {
 	if !audio.Defined(a.ActiveTime) {
 		return []detail{{name: "not looked for"}}
 	}
-	lines := []detail{{"programme is heard for", fmt.Sprintf("%6s", audio.Clock(float64(a.ActiveTime)))}}
-	if !audio.Defined(a.SpeechLoudness) {
+	lasting := func(name string, s audio.Seconds, more string) detail {
+		whole, rest := cut(audio.Clock(float64(s)))
+		return detail{name, whole, rest + more}
+	}
+	lines := []detail{lasting("programme is heard for", a.ActiveTime, "")}
+	if a.SpeechTime == 0 {
 		return append(lines, detail{name: "no speech found"})
 	}
-	return append(lines,
-		detail{"of which speech", fmt.Sprintf("%6s  (%s)", audio.Clock(float64(a.SpeechTime)), share(a))},
+	return append(lines, lasting("of which speech", a.SpeechTime, "  ("+share(a)+")"),
 		detailed("speech loudness", a.SpeechLoudness, 1, "LUFS"))
 }
 
@@ -84,9 +101,9 @@ func faultDetails(a *level.Analysis) (lines []detail) {
 	for _, f := range a.Faults {
 		at := audio.Clock(f.At)
 		if f.Throughout(a.Duration) {
-			at = "all of it"
+			at = "throughout"
 		}
-		lines = append(lines, detail{name: fmt.Sprintf("%9s  %-8s %s", at, f.Severity, f.Words)})
+		lines = append(lines, detail{name: fmt.Sprintf("%10s  %-8s %s", at, f.Severity, f.Words)})
 	}
 	switch looked := audio.Defined(a.ActiveTime); {
 	case !looked:

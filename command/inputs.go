@@ -2,9 +2,11 @@ package command
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"os"
 	"path/filepath"
+	"syscall"
 
 	"evenshelf/engine/level"
 	"evenshelf/store"
@@ -33,14 +35,15 @@ type input struct {
 }
 
 // inputs lists the recordings below paths in order. Where several paths are given, each folder's
-// content keeps the folder's name, so that equal names in two folders stay apart.
+// content keeps the folder's name, so that equal names in two folders stay apart. What cannot be looked at is
+// listed with its error, after what its folder holds besides.
 func inputs(ctx context.Context, paths []string) ([]input, error) {
 	var all []input
 	for _, path := range paths {
 		info, err := os.Stat(path)
 		switch {
 		case err != nil:
-			all = append(all, input{path: path, rel: filepath.Base(path), err: err})
+			all = append(all, unread(path, filepath.Base(path), err))
 		case !info.IsDir():
 			all = append(all, input{path: path, rel: filepath.Base(path), size: info.Size()})
 		default:
@@ -56,12 +59,29 @@ func inputs(ctx context.Context, paths []string) ([]input, error) {
 				all = append(all, input{path: filepath.Join(path, filepath.FromSlash(f.Path)), rel: prefix + f.Path, size: f.Size})
 				return nil
 			})
-			if err != nil {
-				return nil, err
+			var locked *discover.Unread
+			switch {
+			case ctx.Err() != nil:
+				return nil, context.Cause(ctx)
+			case errors.As(err, &locked):
+				for i, folder := range locked.Folders {
+					all = append(all, unread(filepath.Join(path, filepath.FromSlash(folder)), prefix+folder, locked.Reasons[i]))
+				}
+			case err != nil:
+				all = append(all, unread(path, prefix, err))
 			}
 		}
 	}
 	return all, nil
+}
+
+// unread is an input that cannot be looked at. Its error names it, and not the system call that failed.
+func unread(path, rel string, err error) input {
+	var why syscall.Errno
+	if errors.As(err, &why) {
+		err = why
+	}
+	return input{path: path, rel: rel, err: fmt.Errorf("%s: %w", path, err)}
 }
 
 // inOrder runs work on every item, n at a time, and hands the results to emit in the order of the items. When

@@ -95,6 +95,9 @@ func (c *levelCmd) refuseUnsafe(files []input) error {
 	}
 	taken := map[string]string{}
 	for _, f := range files {
+		if f.err != nil {
+			continue // it will have no copy
+		}
 		if other, ok := taken[f.rel]; ok {
 			return usageError(fmt.Sprintf("%s and %s would have the same copy, %s", other, f.path, f.rel))
 		}
@@ -160,7 +163,7 @@ func (c *levelCmd) print(a *app, r levelled) {
 	}
 	line += "  " + printable(r.Path)
 	if r.Reason != "" {
-		line += ": " + printable(r.Reason)
+		line += ": " + reasonFor(r.Path, r.Reason)
 	}
 	fmt.Fprintln(a.stdout, line)
 }

@@ -6,7 +6,6 @@ import (
 	"fmt"
 
 	"evenshelf/engine/audio"
-	"evenshelf/engine/faults"
 	"evenshelf/engine/level"
 )
 
@@ -42,7 +41,6 @@ func (m measured) MarshalJSON() ([]byte, error) {
 		for k := range fields {
 			fields[k] = nil
 		}
-		fields["faults"] = []faults.Fault{}
 	}
 	fields["path"], fields["error"] = m.Path, nil
 	if m.Error != nil {
@@ -103,12 +101,22 @@ func (c *measureCmd) print(a *app, m measured) {
 }
 
 // spoken tells how much of a recording is speech and how loud that is, to follow its name; "" without speech.
+// Less than a second of it has no loudness.
 func spoken(a *level.Analysis) string {
-	if !audio.Defined(a.SpeechLoudness) {
+	switch {
+	case !(a.SpeechTime > 0):
 		return ""
+	case !audio.Defined(a.SpeechLoudness):
+		return fmt.Sprintf("  (speech: %s)", share(a))
 	}
 	return fmt.Sprintf("  (speech: %s, %s LUFS)", share(a), figure(float64(a.SpeechLoudness), 0))
 }
 
-// share says how much of what is heard is speech.
-func share(a *level.Analysis) string { return fmt.Sprintf("%.0f %%", 100*a.SpeechTime/a.ActiveTime) }
+// share says how much of what is heard is speech. A little is said to be little, not none.
+func share(a *level.Analysis) string {
+	s := 100 * a.SpeechTime / a.ActiveTime
+	if s < 0.5 {
+		return "under 1 %"
+	}
+	return fmt.Sprintf("%.0f %%", s)
+}

@@ -281,6 +281,11 @@ func testMaths(t *testing.T, ctx context.Context, url string) {
 		const [low, high] = m.extent(c, false); return c.x.length === 2 && c.before.shortTerm[1] === null && !c.hasAfter && low === -30 && high <= 3`)) {
 		t.Error("silence in a timeline is not a gap")
 	}
+	if !webtest.Eval[bool](t, ctx, call("components/timeline/curves.js", `const n = 40, late = new Array(n).fill(-20); late[0] = -69; late[1] = -4;
+		const ends = (short_term) => m.extent(m.columns({ step_s: 0.1, before: { short_term, momentary: [], peak: [] }, after: null }), false).join();
+		return ends(late) === "-30,0" && ends(late.slice(0, 20)) === "-70,0" && ends([...late, -51]) === "-60,0"`)) {
+		t.Error("the first three seconds set the foot of the scale, or not its head")
+	}
 	for module, claims := range map[string]map[string]string{
 		"band": {
 			"steps of a kind are one stretch": `return JSON.stringify(m.stretches({ active: [true, true, false, true, true], speech: [50, 90, 0, 49, 50] }, 1)) ===

@@ -67,9 +67,11 @@ func TestTold(t *testing.T) {
 		{done, copied, &level.Plan{Gain: -4.26}, "Lowered by 4.3 dB to −18.0 LUFS."},
 		{done, copied, &level.Plan{Untouched: true}, "Already within the profile: copied byte for byte, nothing changed."},
 		{done, replacing, &level.Plan{Untouched: true}, "Already within the profile: kept byte for byte, nothing changed."},
-		{done, copied, &level.Plan{Gain: 0.01}, "Left at its level to −18.0 LUFS."},
+		{done, copied, &level.Plan{Gain: 0.01}, "Left at its level, −18.0 LUFS."},
 		{done, &store.Run{Delivery: store.Measure}, nil, "Measured only; nothing was written."},
 		{store.Recording{}, nil, nil, "Not measured yet: it waits for a first run."},
+		{store.Recording{Path: "a/b.mp3", State: store.Failed, Reason: "b.mp3: the file is empty"}, copied, nil,
+			"Could not be levelled: the file is empty. The file on the shelf is as it was."},
 		{store.Recording{State: store.Done, Reason: "écho found."}, copied, nil, "Finished. Écho found."},
 	} {
 		if got := told(c.r, c.run, &store.Job{Plan: c.plan}); got != c.want {

@@ -54,20 +54,20 @@ func gaugesOf(a *level.Analysis) []gauges {
 			row("Loudest 3 seconds", newFigure(a.MaxShortTerm, "LUFS"), "The highest short-term loudness."),
 			row("Loudest moment", newFigure(a.MaxMomentary, "LUFS"), "The highest momentary loudness, over 400 ms."),
 			row("Loud passages", newFigure(a.ShortTerm95, "LUFS"), "95 % of the short-term loudness lies below: the head of its spine."),
-			row("Usual passages", newFigure(a.ShortTerm50, "LUFS"), "Half of the short-term loudness lies below."),
+			row("Usual passages", newFigure(a.ShortTerm50, "LUFS"), "Half of the short-term loudness lies below: its median."),
 			row("Quiet passages", newFigure(a.ShortTerm10, "LUFS"), "10 % of the short-term loudness lies below: the foot of its spine."),
-			row("Noise floor", newFigure(a.NoiseFloor, "LUFS"), "Momentary loudness of the quietest twentieth: what is left where nobody plays or speaks."),
+			row("Noise floor", newFigure(a.NoiseFloor, "LUFS"), "5 % of the momentary loudness lies below, digital silence left out: the noise, if there are pauses in which to hear it."),
 		}},
 		{Title: "Peaks and dynamics", Rows: []gauge{
 			row("True peak", newFigure(a.TruePeak, "dBTP"), "The highest point of the wave, between the samples too."),
 			row("Sample peak", newFigure(a.SamplePeak, "dBFS"), "The largest sample."),
-			row("Loudness range", newFigure(a.Range, "LU"), "LRA: how far quiet and loud passages lie apart, the extremes left out (EBU Tech 3342)."),
-			row("Peak over loudness", newFigure(a.PLR, "LU"), "PLR: true peak minus integrated loudness."),
-			row("Least peak over loudness", newFigure(a.MinPSR, "LU"), "PSR: true peak minus short-term loudness, in the 3 seconds where they are closest."),
-			row("Crest factor", newFigure(a.CrestFactor, "dB"), "Sample peak over rms; 3.0 for a sine."),
+			row("Loudness range (LRA)", newFigure(a.Range, "LU"), "How far quiet and loud passages lie apart, the extremes left out (EBU Tech 3342)."),
+			row("Peak over loudness (PLR)", newFigure(a.PLR, "LU"), "True peak minus integrated loudness."),
+			row("Least peak over 3 s (PSR)", newFigure(a.MinPSR, "LU"), "True peak minus short-term loudness, in the 3 seconds where they are closest."),
+			row("Crest factor", newFigure(a.CrestFactor, "dB"), "How far the largest sample lies above the root mean square: 3.0 for a sine."),
 		}},
 		{Title: "Signal", Rows: []gauge{
-			row("Rms level", newFigure(a.RMS, "dBFS"), "Mean power of all channels together; a full-scale sine reads 0."),
+			row("RMS level", newFigure(a.RMS, "dBFS"), "Mean power of all channels together, on a scale where a full-scale sine reads 0."),
 			row("Correlation", decimals(float64(a.Correlation), 2, ""), "How alike left and right are: 1 the same, 0 unrelated, −1 opposite polarity, which cancels in mono."),
 			row("Balance", newFigure(a.Balance, "dB"), "Right over left: positive where the right is stronger."),
 			row("DC offset", decimals(100*float64(a.Offset), 2, "%"), "How far the middle of the wave lies from zero, of full scale, in the channel where that is furthest."),
@@ -78,14 +78,20 @@ func gaugesOf(a *level.Analysis) []gauges {
 		}},
 		{Title: "Speech", Rows: []gauge{
 			row("Programme heard", lasting(a.ActiveTime), "How long something is heard; the rest is pauses."),
-			row("Of which speech", decimals(100*share(a), 0, "%"), "The part of what is heard that is speech."),
-			row("Speech loudness", newFigure(a.SpeechLoudness, "LUFS"), "Loudness of the speech alone."),
+			row("Of which speech", share(a), "The part of what is heard that is speech."),
+			row("Speech loudness", newFigure(a.SpeechLoudness, "LUFS"), "Loudness of the speech alone; it takes a second of it to tell."),
 		}},
 	}
 }
 
-// share is how much of what is heard is speech; undefined if that is not known.
-func share(a *level.Analysis) float64 { return float64(a.SpeechTime / a.ActiveTime) }
+// share is how much of what is heard is speech. A little is said to be little, not none.
+func share(a *level.Analysis) figure {
+	percent := 100 * float64(a.SpeechTime/a.ActiveTime)
+	if percent > 0 && percent < 0.5 {
+		return figure{true, "under 1", "%"}
+	}
+	return decimals(percent, 0, "%")
+}
 
 func lasting(s audio.Seconds) figure {
 	if !audio.Defined(s) {
@@ -100,10 +106,21 @@ func (p recordingPage) SpeechSays() string {
 	switch {
 	case r == nil || !audio.Defined(r.ActiveTime):
 		return ""
-	case !audio.Defined(r.SpeechLoudness):
+	case r.SpeechTime == 0:
 		return "No speech was found."
 	}
-	return fmt.Sprintf("Speech in %s %% of what is heard.", audio.Number(100*share(&r.Analysis), 0))
+	s := share(&r.Analysis)
+	return fmt.Sprintf("Speech in %s %s of what is heard.", s.Text, s.Unit)
+}
+
+// OldSays tells why figures are missing from readings of an engine that knew fewer; "" if none are.
+func (p recordingPage) OldSays() string {
+	for _, r := range []*store.Reading{p.BeforeReading, p.AfterReading} {
+		if r != nil && r.Engine != level.Version && !audio.Defined(r.ActiveTime) {
+			return fmt.Sprintf("It was read by engine %s, which knew fewer figures and faults: the next run fills in the dashes.", r.Engine)
+		}
+	}
+	return ""
 }
 
 // MonoSays tells how the single channel of a recording was counted; "" for one with more.

@@ -57,6 +57,10 @@ func TestOldReadingHasDashes(t *testing.T) {
 	if strings.Contains(words(old), "peech was found") || strings.Contains(words(old), "Speech in") {
 		t.Error("the page tells of speech that was not looked for")
 	}
+	const why = "It was read by engine 1, which knew fewer figures and faults"
+	if _, now := fetch(t, e, "/recordings/1"); !strings.Contains(words(old), why) || strings.Contains(words(now), why) {
+		t.Error("the old reading does not say why there are dashes, or the new one does")
+	}
 	if _, now := fetch(t, e, "/recordings/1"); strings.Count(now, dash) != 2 { // speech loudness, without speech
 		t.Errorf("%d dashes in readings that are complete", strings.Count(now, dash))
 	}
@@ -94,6 +98,10 @@ func TestSpeechSays(t *testing.T) {
 	p.BeforeReading.ActiveTime, p.BeforeReading.SpeechTime = 100, 0
 	if got := p.SpeechSays(); got != "No speech was found." {
 		t.Errorf("none found: %q", got)
+	}
+	p.BeforeReading.SpeechTime = 0.4 // too little to have a loudness
+	if got := p.SpeechSays(); got != "Speech in under 1 % of what is heard." {
+		t.Errorf("a word between songs: %q", got)
 	}
 	p.BeforeReading.SpeechTime, p.BeforeReading.SpeechLoudness = 84.4, -20
 	if got := p.SpeechSays(); got != "Speech in 84 % of what is heard." {

@@ -3,6 +3,7 @@ package web
 import (
 	"fmt"
 	"math"
+	"path"
 	"strings"
 	"unicode"
 	"unicode/utf8"
@@ -73,7 +74,7 @@ func told(r store.Recording, run *store.Run, job *store.Job) string {
 	case store.Working:
 		return "Being worked on right now."
 	case store.Failed:
-		return "Could not be levelled: " + reasonOr(r.Reason, "the reason was not recorded") + ". The file on the shelf is as it was."
+		return "Could not be levelled: " + reasonOr(strings.TrimPrefix(r.Reason, path.Base(r.Path)+": "), "the reason was not recorded") + ". The file on the shelf is as it was."
 	case store.Cancelled:
 		return "Cancelled before its turn came. The file on the shelf is as it was."
 	}
@@ -108,16 +109,18 @@ func action(r store.Recording, run *store.Run, job *store.Job) string {
 	}
 	gain := float64(plan.Gain)
 	var b strings.Builder
+	to := " to"
 	switch {
 	case math.Abs(gain) < 0.05:
 		b.WriteString("Left at its level")
+		to = ","
 	case gain > 0:
 		fmt.Fprintf(&b, "Lifted by %s dB", audio.Number(gain, 1))
 	default:
 		fmt.Fprintf(&b, "Lowered by %s dB", audio.Number(-gain, 1))
 	}
 	if r.After != nil && r.After.Integrated != nil {
-		fmt.Fprintf(&b, " to %s LUFS", audio.Number(*r.After.Integrated, 1))
+		fmt.Fprintf(&b, "%s %s LUFS", to, audio.Number(*r.After.Integrated, 1))
 	}
 	if plan.Limit {
 		fmt.Fprintf(&b, "; peaks held under %s dBTP", audio.Number(float64(plan.Ceiling), 1))

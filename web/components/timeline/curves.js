@@ -22,15 +22,18 @@ function padded(values, length) {
   return all;
 }
 
+const FILLING = 29; // steps until a passage of 3 seconds is whole; the quiet it begins with would stretch the scale
+
 // extent gives the loudness scale: whole tens, no lower than −70, with room for peaks when they are shown.
 export function extent({ before, after }, peaks) {
   let [low, high] = [0, -70];
   for (const reading of [before, after]) {
-    for (const value of reading.shortTerm) {
-      if (value == null) continue;
-      low = Math.min(low, value);
+    const { length } = reading.shortTerm;
+    reading.shortTerm.forEach((value, i) => {
+      if (value == null) return;
+      if (i >= FILLING || length <= FILLING) low = Math.min(low, value);
       high = Math.max(high, value);
-    }
+    });
   }
   if (low > high) [low, high] = [-60, -10];
   return [Math.max(Math.floor((low - 1) / 10) * 10, -70), peaks ? 3 : Math.min(Math.ceil((high + 4) / 5) * 5, 3)];

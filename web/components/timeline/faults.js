@@ -2,7 +2,8 @@
 import { el } from "../../dom.js";
 import { clock } from "../../figures.js";
 
-const APART = 20; // px between two marks; closer ones become one
+const APART = 26; // px between two marks; closer ones become one, for neither would be easy to press
+const TOLD = 4; // faults a tip has words for; more would cover the chart
 
 // faultsOf reads the list on the page. A fault of the recording as a whole has no place on the axis.
 export function faultsOf(page) {
@@ -26,15 +27,16 @@ export function clusters(faults, place) {
 export class FaultMarks {
   // tip shows words at a distance from the left; no words, no tip.
   constructor(faults, tip) {
-    Object.assign(this, { faults, tip, shown: "" });
+    Object.assign(this, { faults, tip, shown: "", heads: [] });
     this.box = el("div");
   }
 
-  // place puts the marks that are in view where they belong on the chart.
+  // place puts the marks that are in view where they belong on the chart. heads are the first faults of each.
   place(u) {
     const { over, scales: { x: { min, max } } } = u;
     const inView = this.faults.filter(({ at }) => at >= min && at <= max);
     const marks = clusters(inView, ({ at }) => over.offsetLeft + u.valToPos(at, "x"));
+    this.heads = marks.map(({ faults: [first] }) => first);
     const shown = marks.map(({ faults }) => faults.map(({ at }) => at).join()).join(";");
     if (shown !== this.shown || this.box.parentNode !== over.parentNode) { // a mark that goes takes its tip along
       this.shown = shown;
@@ -51,7 +53,8 @@ export class FaultMarks {
 
   button(faults) {
     const many = faults.length > 1;
-    const words = faults.map((fault) => `${clock(fault.at)}: ${fault.words}`).join("\n");
+    const told = faults.slice(0, TOLD).map((fault) => `${clock(fault.at)}: ${fault.words}`);
+    const words = [...told, ...(faults.length > TOLD ? [`and ${faults.length - TOLD} more`] : [])].join("\n");
     const button = el("button", { type: "button", class: many ? "fault-mark is-many" : "fault-mark", "aria-label": `Listen to the fault at ${words}` },
       many ? el("span", {}, String(faults.length)) : null);
     for (const on of ["pointerenter", "focus"]) button.addEventListener(on, () => this.tip(words, parseFloat(button.style.left)));

@@ -1,4 +1,4 @@
-// What is drawn over the curves: target, ceiling, a line at each fault, and the place being heard.
+// What is drawn over the curves: target, ceiling, a line at each mark of a fault, and the place being heard.
 import { defined, number } from "../../figures.js";
 
 export function marks(u, { ink, font, target, ceiling, faults, playhead }) {
@@ -10,6 +10,15 @@ export function marks(u, { ink, font, target, ceiling, faults, playhead }) {
   pen.lineWidth = ratio;
   pen.textBaseline = "alphabetic";
   pen.font = `700 ${12 * ratio}px ${font}`;
+
+  for (const { at } of faults) {
+    const x = Math.round(u.valToPos(at, "x", true)) + 0.5;
+    if (x < bbox.left || x > right) continue;
+    pen.strokeStyle = ink.held;
+    pen.setLineDash([2 * ratio, 3 * ratio]);
+    line(pen, x, bbox.top, x, bottom);
+    pen.setLineDash([]);
+  }
 
   const level = (value, words, dash) => {
     if (!defined(value)) return;
@@ -29,15 +38,6 @@ export function marks(u, { ink, font, target, ceiling, faults, playhead }) {
   };
   level(target, `target ${number(target)} LUFS`, [1, 3]);
   level(ceiling, `ceiling ${number(ceiling)} dBTP`, [6, 3]);
-
-  for (const { at } of faults) {
-    const x = Math.round(u.valToPos(at, "x", true)) + 0.5;
-    if (x < bbox.left || x > right) continue;
-    pen.strokeStyle = ink.held;
-    pen.setLineDash([2 * ratio, 3 * ratio]);
-    line(pen, x, bbox.top, x, bottom);
-    pen.setLineDash([]);
-  }
 
   if (defined(playhead)) {
     const x = Math.round(u.valToPos(playhead, "x", true)) + 0.5;

@@ -109,14 +109,14 @@ class Timeline {
         line(after)],
       axes: [
         { ...axis, grid: { show: false }, size: AXIS + below, gap: axis.gap + below, values: (_, splits) => splits.map((s) => clock(s, splits.length > 1 && splits[1] - splits[0] < 1 ? 1 : 0)), incrs: [0.1, 0.2, 0.5, 1, 2, 5, 10, 15, 30, 60, 120, 300, 600, 900, 1800, 3600] },
-        { ...axis, size: 48, space: 32, incrs: [5, 10, 20], values: (_, splits) => splits.map((v) => number(v, 0)) },
+        { ...axis, size: 48, gap: 14, space: 32, incrs: [5, 10, 20], values: (_, splits) => splits.map((v) => number(v, 0)) },
       ],
       hooks: {
         draw: [(u) => {
           const ratio = devicePixelRatio;
           if (band) drawBand(u, { band, ink, top: u.bbox.top + u.bbox.height + BAND.from * ratio, height: BAND.height * ratio });
-          marks(u, { ink, font: FONT, target: this.target, ceiling: peak ? this.ceiling : NaN, faults: this.faults, playhead: this.playhead });
           this.marks.place(u);
+          marks(u, { ink, font: FONT, target: this.target, ceiling: peak ? this.ceiling : NaN, faults: this.marks.heads, playhead: this.playhead });
         }],
         setCursor: [(u) => this.read(u)],
         setScale: [(u, key) => { if (key === "x") this.part.whole.hidden = u.scales.x.max - u.scales.x.min > this.curves.x.at(-1) * 0.98; }],
