@@ -107,10 +107,14 @@ type Format struct {
 // Seconds returns the duration of a number of frames.
 func (f Format) Seconds(frames int64) float64 { return float64(frames) / float64(f.Rate) }
 
-// Clock writes a time in seconds as people do, minutes and seconds to a tenth: 3:07.5.
+// Clock writes a place in a recording, in seconds, as people do, to a tenth: 3:07.5, 1:02:03.4.
 func Clock(seconds float64) string {
-	tenths := int64(math.Round(seconds * 10))
-	return fmt.Sprintf("%d:%02d.%d", tenths/600, tenths/10%60, tenths%10)
+	tenths := int64(math.Round(max(0, seconds) * 10))
+	h, m, s := tenths/36000, tenths/600%60, tenths/10%60
+	if h > 0 {
+		return fmt.Sprintf("%d:%02d:%02d.%d", h, m, s, tenths%10)
+	}
+	return fmt.Sprintf("%d:%02d.%d", m, s, tenths%10)
 }
 
 // Number writes a figure with a fixed count of decimals and a true minus sign, as wide as a digit and as

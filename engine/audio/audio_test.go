@@ -101,7 +101,7 @@ func TestEachReadsToTheEnd(t *testing.T) {
 }
 
 func TestClock(t *testing.T) {
-	for s, want := range map[float64]string{0: "0:00.0", 59.94: "0:59.9", 59.96: "1:00.0", 187.5: "3:07.5", 3600: "60:00.0"} {
+	for s, want := range map[float64]string{0: "0:00.0", 59.94: "0:59.9", 59.96: "1:00.0", 187.5: "3:07.5", 3599.96: "1:00:00.0", 3723.44: "1:02:03.4", -1: "0:00.0"} {
 		if got := Clock(s); got != want {
 			t.Errorf("%g s is written %s, want %s", s, got, want)
 		}

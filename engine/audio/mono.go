@@ -22,9 +22,9 @@ var MonoRules = []MonoRule{OneChannel, TwoLoudspeakers}
 // Words say how a single channel is counted.
 func (r MonoRule) Words() string {
 	if r == TwoLoudspeakers {
-		return "as it is heard from two loudspeakers (3.01 LU more)"
+		return "as two loudspeakers play it (3.01 LU more)"
 	}
-	return "as BS.1770 has it"
+	return "as one loudspeaker (BS.1770)"
 }
 
 // ParseMonoRule returns the rule of that name. The error lists the names there are.

@@ -19,7 +19,7 @@ type shared struct {
 // time: the first on the goroutine that reads, since a block is nearest to the processor that made it, each of
 // the others on one of its own. Listeners share the blocks, so they must neither keep nor change them. Spread
 // returns when all have heard everything that was read. It returns the number of frames and nil at io.EOF, or
-// the error that reading ended with.
+// the error that reading ended with. A panic of the reader or of any listener is the caller's.
 func Spread(src Source, first func(Block), others ...func(Block)) (frames int64, err error) {
 	channels := src.Format().Layout.Channels
 	free := make(chan *shared, ahead)
@@ -32,17 +32,27 @@ func Spread(src Source, first func(Block), others ...func(Block)) (frames int64,
 		}
 	}
 	var running sync.WaitGroup
+	var fell atomic.Pointer[any] // what a listener panicked with
 	queues := make([]chan *shared, len(others))
 	for i, listen := range others {
 		queues[i] = make(chan *shared, ahead)
 		running.Go(func() {
 			for s := range queues[i] {
-				listen(s.view)
+				hear(listen, s.view, &fell)
 				heard(s)
 			}
 		})
 	}
-	for err == nil {
+	defer func() { // also when reading or the first listener panics
+		for _, q := range queues {
+			close(q)
+		}
+		running.Wait()
+		if p := fell.Load(); p != nil {
+			panic(*p)
+		}
+	}()
+	for err == nil && fell.Load() == nil {
 		s := <-free
 		var n int
 		n, err = src.ReadBlock(s.block)
@@ -55,12 +65,20 @@ func Spread(src Source, first func(Block), others ...func(Block)) (frames int64,
 		first(s.view)
 		heard(s)
 	}
-	for _, q := range queues {
-		close(q)
-	}
-	running.Wait()
 	if err == io.EOF {
 		err = nil
 	}
 	return frames, err
+}
+
+// hear lets a listener have a block, unless one has panicked already.
+func hear(listen func(Block), b Block, fell *atomic.Pointer[any]) {
+	defer func() {
+		if p := recover(); p != nil {
+			fell.CompareAndSwap(nil, &p)
+		}
+	}()
+	if fell.Load() == nil {
+		listen(b)
+	}
 }

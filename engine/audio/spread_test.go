@@ -3,6 +3,7 @@ package audio
 import (
 	"errors"
 	"io"
+	"runtime"
 	"testing"
 	"time"
 )
@@ -57,5 +58,45 @@ func TestSpread(t *testing.T) {
 				t.Errorf("listener %d heard %d frames of %d", i, h, frames)
 			}
 		}
+	}
+}
+
+// broken is a source that panics at its third block.
+type broken struct{ counting }
+
+func (s *broken) ReadBlock(dst Block) (int, error) {
+	if s.at > 2*BlockFrames {
+		panic("reader")
+	}
+	return s.counting.ReadBlock(dst)
+}
+
+// Whoever panics, the caller gets to know, and nobody is left waiting.
+func TestSpreadPanics(t *testing.T) {
+	before := runtime.NumGoroutine()
+	fine, faulty := func(Block) {}, func(Block) { panic("listener") }
+	for want, spread := range map[string]func(){
+		"reader":   func() { Spread(&broken{counting{end: 1e6}}, fine, fine) },
+		"listener": func() { Spread(&counting{end: 1e6, err: io.EOF}, fine, faulty, fine) },
+	} {
+		func() {
+			defer func() {
+				if got := recover(); got != want {
+					t.Errorf("the caller sees %v, want %q", got, want)
+				}
+			}()
+			spread()
+		}()
+	}
+	func() {
+		defer func() {
+			if got := recover(); got != "listener" {
+				t.Errorf("the caller of a first listener that panics sees %v", got)
+			}
+		}()
+		Spread(&counting{end: 1e6, err: io.EOF}, faulty, fine)
+	}()
+	if after := runtime.NumGoroutine(); after > before {
+		t.Errorf("%d goroutines before, %d after", before, after)
 	}
 }

@@ -19,8 +19,10 @@ func newLeveler(rate int) *leveler {
 	return l
 }
 
-// boundary returns the first frame that is no longer of the first n steps.
-func (l *leveler) boundary(n int) int64 { return int64(n) * l.rate / StepsPerSecond }
+// boundary returns the frame at which n steps end: the nearest whole one, as on the meter's grid.
+func (l *leveler) boundary(n int) int64 {
+	return (2*int64(n)*l.rate + StepsPerSecond) / (2 * StepsPerSecond)
+}
 
 func (l *leveler) add(sound []float64) {
 	for len(sound) > 0 {
