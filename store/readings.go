@@ -6,6 +6,7 @@ import (
 	"database/sql"
 	"encoding/json"
 	"fmt"
+	"math"
 
 	"evenshelf/engine/audio"
 	"evenshelf/engine/faults"
@@ -99,5 +100,5 @@ func defined[F ~float64](f F) any {
 	if !audio.Defined(f) {
 		return nil
 	}
-	return float64(f)
+	return math.Round(float64(f)*1e4) / 1e4 // as in the reading's JSON
 }

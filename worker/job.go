@@ -171,7 +171,7 @@ func (s *Service) measure(ctx context.Context, source string, mono audio.MonoRul
 	case ctx.Err() != nil && err != nil:
 		return level.Outcome{}, ctx.Err()
 	case err != nil:
-		return failedBecause(err.Error()), nil
+		return failedBecause(level.Reason(err, source)), nil
 	}
 	return level.Outcome{Before: a, Verdict: level.Verdict{State: level.Done}}, nil
 }

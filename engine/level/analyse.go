@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"strings"
 
 	"evenshelf/engine/audio"
 	"evenshelf/engine/faults"
@@ -31,10 +32,10 @@ func (e *Engine) Analyse(ctx context.Context, path string, o Options) (*Analysis
 	if cause := context.Cause(ctx); cause != nil {
 		return nil, cause
 	}
-	if err != nil {
-		return nil, fmt.Errorf("%s: %w", path, err)
+	if err != nil && !strings.HasPrefix(err.Error(), path+": ") { // what reading met names it already
+		err = fmt.Errorf("%s: %w", path, err)
 	}
-	return a, nil
+	return a, err
 }
 
 // analyse measures what is left of src. Decoding and the meter share one goroutine, everything else has another.
@@ -58,7 +59,7 @@ func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error
 	}
 	a := new(Unmeasured())
 	a.FormatName, a.Decoder, a.Engine, a.Info = src.Info().FormatName(), src.Info().Decoder, Version, src.Info()
-	a.Faults = damage
+	a.Faults = append(damage, unplaced(src.Format().Layout)...)
 	a.Reading, a.Timeline.Timeline = m.Finish()
 	if o.LoudnessOnly {
 		return a, nil
@@ -67,7 +68,7 @@ func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error
 	found, a.Condition = fault.Finish()
 	a.Faults = append(a.Faults, found...)
 	a.Timeline.Course = talk.Finish()
-	a.Dialogue = dialogue(a.Timeline)
+	a.Dialogue = dialogue(a.Timeline, a.Duration)
 	return a, nil
 }
 
@@ -79,19 +80,37 @@ func damageOf(src media.Reader, frames int64, readErr error) ([]faults.Fault, er
 	switch {
 	case readErr == nil:
 	case errors.Is(readErr, io.ErrUnexpectedEOF):
-		words := fmt.Sprintf("the file breaks off after %s", audio.Clock(at))
+		read := audio.Clock(at)
 		if promised := src.Info().Frames; promised > frames {
-			words += fmt.Sprintf(" of %s", audio.Clock(src.Format().Seconds(promised)))
+			read += fmt.Sprintf(" of %s", audio.Clock(src.Format().Seconds(promised)))
 		}
-		found = append(found, faults.Fault{Code: "truncated", Severity: faults.Serious, At: at, Words: words})
+		f := faults.Fault{Code: "truncated", Severity: faults.Serious, At: at, Words: "the file breaks off after " + read}
+		if text := damageText(src); text != "" { // which may lie anywhere
+			f.At, f.Words = 0, fmt.Sprintf("only %s could be read: it breaks off, or is damaged inside (%s)", read, text)
+		}
+		found = append(found, f)
 	default:
 		return nil, readErr
 	}
-	if d, ok := src.(media.Damaged); ok && len(found) == 0 {
-		if text := d.Damage(); text != "" {
-			found = append(found, faults.Fault{Code: "damaged", Severity: faults.Serious,
-				Words: "the decoder found damage: " + text})
-		}
+	if text := damageText(src); text != "" && len(found) == 0 {
+		found = append(found, faults.Fault{Code: "damaged", Severity: faults.Serious, Words: "the decoder found damage: " + text})
 	}
 	return found, nil
+}
+
+// damageText is what the decoder complained about, or "".
+func damageText(src media.Reader) string {
+	if d, ok := src.(media.Damaged); ok {
+		return d.Damage()
+	}
+	return ""
+}
+
+// unplaced finds channels of which nobody knows where they sound.
+func unplaced(l audio.Layout) []faults.Fault {
+	if l.Channels < 3 || l.Position(0) != 0 {
+		return nil
+	}
+	return []faults.Fault{{Code: "no-positions", Severity: faults.Note,
+		Words: "the file does not say which loudspeaker each channel is for: all count alike, a bass channel (LFE) too"}}
 }

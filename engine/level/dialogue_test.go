@@ -2,6 +2,7 @@ package level
 
 import (
 	"math"
+	"math/rand/v2"
 	"testing"
 
 	"evenshelf/engine/audio"
@@ -33,7 +34,7 @@ func TestDialogue(t *testing.T) {
 		}
 		return tl
 	}
-	d := dialogue(course(100, 150))
+	d := dialogue(course(100, 150), 20)
 	if d.ActiveTime != 18 || d.SpeechTime != 5 {
 		t.Errorf("%v s active, %v s speech, want 18 and 5", d.ActiveTime, d.SpeechTime)
 	}
@@ -42,10 +43,54 @@ func TestDialogue(t *testing.T) {
 	if got := float64(d.SpeechLoudness); math.Abs(got-want) > 1e-6 {
 		t.Errorf("speech reads %.4f LUFS, want %.4f", got, want)
 	}
-	if d := dialogue(course(100, 109)); audio.Defined(d.SpeechLoudness) || d.SpeechTime != 0.9 {
+	if d := dialogue(course(100, 109), 20); audio.Defined(d.SpeechLoudness) || d.SpeechTime != 0.9 {
 		t.Errorf("a word is taken for an anchor: %+v", d)
 	}
-	if d := dialogue(Timeline{}); audio.Defined(d.SpeechLoudness) || d.ActiveTime != 0 {
+	// The same five seconds in an hour of music are no anchor, thirty are.
+	hour := func(seconds int) Timeline {
+		tl := course(0, 0)
+		for i := range 36000 {
+			tl.Momentary = append(tl.Momentary, -20)
+			tl.Active = append(tl.Active, true)
+			tl.Speech = append(tl.Speech, 0)
+			if i < seconds*10 {
+				tl.Speech[len(tl.Speech)-1] = 1
+			}
+		}
+		return tl
+	}
+	if d := dialogue(hour(5), 3620); audio.Defined(d.SpeechLoudness) || d.SpeechTime != 5 {
+		t.Errorf("five seconds in an hour: %+v", d)
+	}
+	if d := dialogue(hour(30), 3620); math.Abs(float64(d.SpeechLoudness)+20) > 1e-6 {
+		t.Errorf("thirty seconds in an hour: %+v", d)
+	}
+	if d := dialogue(course(0, 200), 0.05); d.ActiveTime != 0.05 || d.SpeechTime != 0.05 {
+		t.Errorf("more is heard than there is: %+v", d)
+	}
+	if d := dialogue(Timeline{}, 0); audio.Defined(d.SpeechLoudness) || d.ActiveTime != 0 {
 		t.Errorf("nothing at all gives %+v", d)
+	}
+}
+
+// The curves of the meter and of speech lie on one grid, whatever the rate and the length.
+func TestOneGrid(t *testing.T) {
+	rng := rand.New(rand.NewPCG(11, 25))
+	for _, rate := range []int{8000, 8001, 11025, 12345, 22050, 37800, 44056, 44100, 47999, 96001, 384000} {
+		for steps := 1; steps < 30; steps++ {
+			frames := int(math.Round(float64(steps*rate)/10)) + rng.IntN(5) - 2
+			f, b := audio.Format{Rate: rate, Layout: audio.Mono}, audio.NewBlock(1, frames)
+			m, err := meter.New(f, audio.OneChannel)
+			if err != nil {
+				t.Fatal(err)
+			}
+			talk := speech.New(f)
+			m.Write(b)
+			talk.Write(b)
+			_, curves := m.Finish()
+			if c := talk.Finish(); len(c.Speech) != len(curves.Peak) || len(c.Active) != len(curves.Peak) {
+				t.Errorf("%d frames at %d Hz: %d steps of the meter, %d and %d of speech", frames, rate, len(curves.Peak), len(c.Active), len(c.Speech))
+			}
+		}
 	}
 }

@@ -36,11 +36,11 @@ func (e *Engine) Level(ctx context.Context, source string, p profile.Profile, sc
 		return Outcome{}, err
 	}
 	if err != nil {
-		return failed(nil, nameOnly(err, source)), nil
+		return failed(nil, Reason(err, source)), nil
 	}
 	plan, err := MakePlan(p, before)
 	if err != nil {
-		return failed(before, err), nil
+		return failed(before, err.Error()), nil
 	}
 
 	o = Outcome{Before: before}
@@ -51,7 +51,7 @@ func (e *Engine) Level(ctx context.Context, source string, p profile.Profile, sc
 		o.Extension, plan, err = e.renderToTarget(ctx, source, p, plan, scratch, &o)
 	}
 	if errors.Is(err, media.ErrUnsupported) {
-		return failed(before, nameOnly(err, source)), nil
+		return failed(before, Reason(err, source)), nil
 	}
 	if err != nil {
 		return Outcome{}, err
@@ -61,14 +61,14 @@ func (e *Engine) Level(ctx context.Context, source string, p profile.Profile, sc
 	return o, nil
 }
 
-func failed(before *Analysis, err error) Outcome {
-	return Outcome{Before: before, Verdict: Verdict{Failed, err.Error()}}
+func failed(before *Analysis, reason string) Outcome {
+	return Outcome{Before: before, Verdict: Verdict{Failed, reason}}
 }
 
-// nameOnly cuts the folders off a source's name in an error: a reason is shown beside the recording's
-// path, also to people who need not know where its shelf is.
-func nameOnly(err error, source string) error {
-	return errors.New(strings.ReplaceAll(err.Error(), source, filepath.Base(source)))
+// Reason is an error about a source in words that stand beside its name and need not repeat it. They are shown
+// also to people who need not know in which folder its shelf is.
+func Reason(err error, source string) string {
+	return strings.ReplaceAll(strings.TrimPrefix(err.Error(), source+": "), source, filepath.Base(source))
 }
 
 // renderToTarget renders until no rendering comes closer to the target, and delivers the one that came

@@ -18,7 +18,7 @@ func (m *Meter) Finish() (Reading, Timeline) {
 	programme := course{f.Rate, m.energies[:steps]}
 	followed := course{f.Rate, m.energies[:steps+rangeTail]}
 	r := Unmeasured()
-	r.SampleRate, r.Channels, r.MonoRule = f.Rate, f.Layout.Channels, m.mono
+	r.SampleRate, r.Channels, r.Layout, r.MonoRule = f.Rate, f.Layout.Channels, f.Layout.String(), m.mono
 	r.Frames, r.Duration = m.written, f.Seconds(m.written)
 	r.Integrated = integrated(programme.whole(momentarySteps))
 	r.TruePeak = audio.DBTP(audio.ToDB(m.truePeak))

@@ -151,7 +151,7 @@ func TestUndefinedFigures(t *testing.T) {
 		}
 		return strings.Join(names, " ")
 	}
-	const always = "sample_rate_hz channels frames duration_s"
+	const always = "sample_rate_hz channels layout frames duration_s"
 	const peaks = " true_peak_dbtp sample_peak_dbfs"
 	const percentiles = " short_term_p10_lufs short_term_p50_lufs short_term_p95_lufs"
 	const all = always + " integrated_lufs loudness_range_lu max_momentary_lufs max_short_term_lufs" +

@@ -15,11 +15,12 @@ import "evenshelf/engine/audio"
 type Reading struct {
 	SampleRate int     `json:"sample_rate_hz"`
 	Channels   int     `json:"channels"`
+	Layout     string  `json:"layout"` // as people name it: "mono", "stereo", "5.1"
 	Frames     int64   `json:"frames"`
 	Duration   float64 `json:"duration_s"`
 
 	Integrated   audio.LUFS `json:"integrated_lufs"`     // BS.1770, both gates
-	Range        audio.LU   `json:"loudness_range_lu"`   // EBU Tech 3342
+	Range        audio.LU   `json:"loudness_range_lu"`   // EBU Tech 3342; its silence after the end makes a few seconds read high
 	MaxMomentary audio.LUFS `json:"max_momentary_lufs"`  // full 400 ms windows, hop 10 ms
 	MaxShortTerm audio.LUFS `json:"max_short_term_lufs"` // full 3 s windows, hop 10 ms
 	ShortTerm10  audio.LUFS `json:"short_term_p10_lufs"` // percentiles of the short-term values above
