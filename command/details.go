@@ -39,9 +39,9 @@ func (d detail) String() string {
 // what is not defined.
 func details(a *level.Analysis) string {
 	var b strings.Builder
-	channels, counted := fmt.Sprintf("%d channels", a.Channels), ""
+	channels, counted := a.Layout, ""
 	if a.Channels == 1 {
-		channels, counted = "1 channel", "  its channel is counted "+a.MonoRule.Words()+"\n"
+		counted = "  its channel is counted " + a.MonoRule.Words() + "\n"
 	}
 	fmt.Fprintf(&b, "  %s, %d Hz, %s, %s, read by %s, engine %s\n%s", printable(a.FormatName), a.SampleRate, channels,
 		audio.Clock(a.Duration), printable(a.Decoder), a.Engine, counted)

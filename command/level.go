@@ -126,7 +126,7 @@ func realPath(path string) (string, error) {
 func (c *levelCmd) level(ctx context.Context, e *level.Engine, p profile.Profile, in input) levelled {
 	r := levelled{Path: in.path, State: level.Failed}
 	if in.err != nil {
-		r.Reason = in.err.Error()
+		r.Reason = level.Reason(in.err, in.path)
 		return r
 	}
 	if _, err := os.Lstat(filepath.Join(c.Out, filepath.FromSlash(in.rel))); err == nil && !c.Overwrite {
@@ -163,7 +163,7 @@ func (c *levelCmd) print(a *app, r levelled) {
 	}
 	line += "  " + printable(r.Path)
 	if r.Reason != "" {
-		line += ": " + reasonFor(r.Path, r.Reason)
+		line += ": " + printable(r.Reason)
 	}
 	fmt.Fprintln(a.stdout, line)
 }

@@ -13,7 +13,7 @@ type measureCmd struct {
 	JSON         bool           `name:"json" xor:"form" help:"Print one JSON object a line instead."`
 	Details      bool           `xor:"form" help:"Print every figure with its name and unit instead."`
 	LoudnessOnly bool           `help:"Loudness and peaks alone: no faults, no speech; faster."`
-	Mono         audio.MonoRule `enum:"one-channel,two-loudspeakers" default:"one-channel" placeholder:"RULE" help:"How a recording with a single channel is counted: one-channel, as BS.1770 has it, or two-loudspeakers, as it will be heard from two of them, 3.01 LU more (default: ${default})."`
+	Mono         audio.MonoRule `enum:"one-channel,two-loudspeakers" default:"one-channel" placeholder:"RULE" help:"How a recording with a single channel is counted: one-channel, as one loudspeaker (BS.1770), or two-loudspeakers, as two play it, 3.01 LU more (default: ${default})."`
 	Paths        []string       `arg:"" name:"path" help:"Recordings, or folders of recordings."`
 }
 
@@ -105,6 +105,8 @@ func (c *measureCmd) print(a *app, m measured) {
 func spoken(a *level.Analysis) string {
 	switch {
 	case !(a.SpeechTime > 0):
+		return ""
+	case !audio.Defined(a.SpeechLoudness) && a.SpeechTime < a.ActiveTime/2: // more likely a mistake than speech
 		return ""
 	case !audio.Defined(a.SpeechLoudness):
 		return fmt.Sprintf("  (speech: %s)", share(a))

@@ -85,7 +85,7 @@ func (c *runsCmd) jobs(a *app) error {
 			}
 			line := fmt.Sprintf("      %-9s %s", j.State, printable(j.Path))
 			if j.Reason != "" {
-				line += ": " + reasonFor(j.Path, j.Reason)
+				line += ": " + printable(j.Reason)
 			}
 			fmt.Fprintln(a.stdout, line)
 		}

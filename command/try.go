@@ -211,7 +211,7 @@ func (r tryReport) print(w io.Writer) {
 	fmt.Fprintln(w)
 	for _, row := range r.rows {
 		if row.job.Reason != "" {
-			fmt.Fprintf(w, "%s, %s: %s\n", row.item.Path, row.job.State, reasonFor(row.item.Path, row.job.Reason))
+			fmt.Fprintf(w, "%s, %s: %s\n", row.item.Path, row.job.State, printable(row.job.Reason))
 		}
 	}
 	fmt.Fprintf(w, "\n%s\n", r.verdict())

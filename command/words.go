@@ -3,7 +3,6 @@ package command
 import (
 	"fmt"
 	"math"
-	"path/filepath"
 	"strings"
 	"unicode"
 	"unicode/utf8"
@@ -38,12 +37,6 @@ func printable(s string) string {
 		}
 		return r
 	}, s)
-}
-
-// reasonFor is a reason to stand behind the path of what it is about, which it need not name again.
-func reasonFor(file, reason string) string {
-	reason = strings.TrimPrefix(reason, file+": ")
-	return printable(strings.TrimPrefix(reason, filepath.Base(file)+": "))
 }
 
 // oneLine is an error for a terminal. Errors that were joined are lines of their own until then.

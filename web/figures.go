@@ -27,7 +27,7 @@ func functions(a *assets, now func() time.Time) template.FuncMap {
 		"count":    func(n any) string { return count(reflect.ValueOf(n).Int()) },
 		"plural":   plural,
 		"length":   func(v any) string { f, ok := value(v); return length(f, ok) },
-		"clock":    clock,
+		"clock":    audio.Clock,
 		"bytes":    size,
 		"when":     func(t any) string { return when(t, now()) },
 		"stamp":    stamp,
@@ -122,19 +122,6 @@ func length(s float64, ok bool) string {
 	}
 	m := int64(math.Round(s / 60))
 	return fmt.Sprintf("%s%sh %d%smin", count(m/60), narrow, m%60, narrow)
-}
-
-// clock writes a place in a recording: 0:03.2, 1:02:03.4.
-func clock(s float64) string {
-	if math.IsNaN(s) || s < 0 {
-		s = 0
-	}
-	t := int64(math.Round(s * 10))
-	h, m, sec, tenth := t/36000, t/600%60, t/10%60, t%10
-	if h > 0 {
-		return fmt.Sprintf("%d:%02d:%02d.%d", h, m, sec, tenth)
-	}
-	return fmt.Sprintf("%d:%02d.%d", m, sec, tenth)
 }
 
 // size writes a file's size in decimal units.

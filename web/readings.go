@@ -1,6 +1,7 @@
 package web
 
 import (
+	"cmp"
 	"fmt"
 
 	"evenshelf/engine/audio"
@@ -74,7 +75,7 @@ func gaugesOf(a *level.Analysis) []gauges {
 			row("Silence at the head", newFigure(a.HeadSilence, "s"), "Before the first sample above −70 dBFS."),
 			row("Silence at the tail", newFigure(a.TailSilence, "s"), "After the last sample above −70 dBFS."),
 			row("Sample rate", figure{true, count(a.SampleRate), "Hz"}, "Samples a second in each channel."),
-			row("Channels", figure{Defined: true, Text: count(a.Channels)}, "Counted in the file."),
+			row("Channels", figure{Defined: true, Text: cmp.Or(a.Layout, count(a.Channels))}, "How many the file has, and how they are placed."),
 		}},
 		{Title: "Speech", Rows: []gauge{
 			row("Programme heard", lasting(a.ActiveTime), "How long something is heard; the rest is pauses."),

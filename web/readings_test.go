@@ -79,9 +79,9 @@ func TestMonoSays(t *testing.T) {
 	}{
 		{nil, nil, ""},
 		{reading(2, one), reading(2, two), ""},
-		{reading(1, one), nil, "Its single channel is counted as BS.1770 has it."},
-		{reading(1, two), reading(1, two), "Its single channel is counted as it is heard from two loudspeakers (3.01 LU more)."},
-		{reading(1, two), reading(1, one), "Its single channel was counted as it is heard from two loudspeakers (3.01 LU more) before, and as BS.1770 has it after: these loudnesses do not compare."},
+		{reading(1, one), nil, "Its single channel is counted as one loudspeaker (BS.1770)."},
+		{reading(1, two), reading(1, two), "Its single channel is counted as two loudspeakers play it (3.01 LU more)."},
+		{reading(1, two), reading(1, one), "Its single channel was counted as two loudspeakers play it (3.01 LU more) before, and as one loudspeaker (BS.1770) after: these loudnesses do not compare."},
 	} {
 		if got := (recordingPage{BeforeReading: c.before, AfterReading: c.after}).MonoSays(); got != c.want {
 			t.Errorf("said %q, want %q", got, c.want)

@@ -3,7 +3,6 @@ package web
 import (
 	"fmt"
 	"math"
-	"path"
 	"strings"
 	"unicode"
 	"unicode/utf8"
@@ -74,7 +73,7 @@ func told(r store.Recording, run *store.Run, job *store.Job) string {
 	case store.Working:
 		return "Being worked on right now."
 	case store.Failed:
-		return "Could not be levelled: " + reasonOr(strings.TrimPrefix(r.Reason, path.Base(r.Path)+": "), "the reason was not recorded") + ". The file on the shelf is as it was."
+		return "Could not be levelled: " + reasonOr(r.Reason, "the reason was not recorded") + ". The file on the shelf is as it was."
 	case store.Cancelled:
 		return "Cancelled before its turn came. The file on the shelf is as it was."
 	}

@@ -73,8 +73,8 @@ function option(profile, index) {
     ? `peaks held under ${number(profile.ceiling_dbtp)} dBTP`
     : `stops where a peak would pass ${number(profile.ceiling_dbtp)} dBTP`;
   const mono = profile.mono === "two-loudspeakers"
-    ? "A single channel counts as it is heard from two loudspeakers (3.01 LU more)"
-    : "A single channel counts as BS.1770 has it";
+    ? "A single channel counts as two loudspeakers play it (3.01 LU more)"
+    : "A single channel counts as one loudspeaker (BS.1770)";
   return el("label", { class: "option" },
     el("input", { type: "radio", name: "profile", value: profile.name, checked: index === 0 }),
     el("span", {},
