@@ -171,7 +171,9 @@ func (h *headBuffer) text() string {
 				line = rest
 			}
 		}
-		line = strings.TrimPrefix(strings.TrimPrefix(line, inputFD+": "), inputFD)
+		if before, rest, ok := strings.Cut(line, inputFD); ok && (before == "" || strings.HasPrefix(before, "subfile,")) {
+			line = strings.TrimPrefix(rest, ": ")
+		}
 		if line == "" || seen[line] || strings.HasPrefix(line, "Last message repeated") {
 			continue
 		}

@@ -185,18 +185,6 @@ func TestOneWrongBitInFLACShows(t *testing.T) {
 	}
 }
 
-// An ID3v1 tag behind the sound of a FLAC, where some programs put one, is no damage.
-func TestFLACWithID3Behind(t *testing.T) {
-	snd := programme(2, 9000, 16, 0.5)
-	path := filepath.Join(t.TempDir(), "a.flac")
-	run(t, "flac", "-s", "-o", path, writeWAV(t, snd, 44100))
-	path = save(t, "b.flac", append(load(t, path), "TAG"+strings.Repeat("\x00", 125)...))
-	for _, box := range []*Toolbox{withFFmpeg(t), withoutFFmpeg()} {
-		got, _ := decode(t, box, path)
-		sameSound(t, got, snd)
-	}
-}
-
 // Bit flips anywhere: no panic, no hang, no more sound than before, an error or not. The fallback
 // decoders run in our own process and get the most of it.
 func TestBitFlips(t *testing.T) {

@@ -62,6 +62,14 @@ func checkFormat(f audio.Format, offset int64) error {
 	return nil
 }
 
+// ended returns why a context ended, with the path of what was being read, or nil while it has not.
+func ended(path string, stopped func() error) error {
+	if err := stopped(); err != nil {
+		return about(path, err)
+	}
+	return nil
+}
+
 // stopped returns the reason a context ended, or nil while it has not. Readers and sinks keep this
 // function instead of the context: it is all they need, once a block.
 func stopped(ctx context.Context) func() error {

@@ -75,7 +75,7 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if k.container == "flac" { // it checks the frames' checksums only if told to
 		args = append(args, "-err_detect", "+crccheck")
 	}
-	args = append(append(args, guarded(k)...), "-c:a", decoder, "-i", inputFD)
+	args = append(append(args, "-c:a", decoder), guarded(k)...)
 	args = append(args, "-vn", "-sn", "-dn", "-map", "0:a:0", "-map_metadata", "-1", "-fflags", "+bitexact", "-flush_packets", "0")
 	args = append(args, "-c:a", l.wire, "-f", "wav", "pipe:1")
 	c, err := startChild(ctx, true, []*os.File{f}, t.ffmpeg, args...)

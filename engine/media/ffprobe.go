@@ -17,9 +17,14 @@ import (
 // way it can seek, which a pipe cannot, and no path of ours is ever taken for an option or a URL.
 const inputFD = "file:/dev/fd/3"
 
-// guarded are the options in front of every input FFmpeg is given.
+// guarded are the options that stand for every input FFmpeg is given, the last of which names it. What is behind
+// the end of the sound is kept from it: only a number is added to the name.
 func guarded(k kind) []string {
-	return []string{"-protocol_whitelist", "file,pipe", "-f", k.demuxer}
+	protocols, name := "file,pipe", inputFD
+	if k.end > 0 {
+		protocols, name = protocols+",subfile", fmt.Sprintf("subfile,,start,0,end,%d,,:%s", k.end, inputFD)
+	}
+	return []string{"-protocol_whitelist", protocols, "-f", k.demuxer, "-i", name}
 }
 
 // probe is what ffprobe says about a file, as far as it matters here.
@@ -53,7 +58,7 @@ func (t *Toolbox) runProbe(ctx context.Context, f *os.File, k kind) (*probe, err
 	ctx, cancel := context.WithTimeoutCause(ctx, stallLimit, fmt.Errorf("FFmpeg took more than %v to look at it", stallLimit))
 	defer cancel()
 	args := append([]string{"-v", "error", "-of", "json", "-show_streams", "-show_format"}, guarded(k)...)
-	c, err := startChild(ctx, true, []*os.File{f}, t.ffprobe, append(args, inputFD)...)
+	c, err := startChild(ctx, true, []*os.File{f}, t.ffprobe, args...)
 	if err != nil {
 		return nil, err
 	}

@@ -63,7 +63,7 @@ func (r *ffReader) begin(g gapless) error {
 	switch {
 	case errors.As(err, &bad): // no head, no sound: the child has said why
 		switch said := r.child.wait(); {
-		case errors.Is(said, ErrKilled):
+		case errors.Is(said, ErrKilled), said != nil && r.stopped() != nil:
 			return said
 		case said != nil:
 			return &FormatError{-1, "its sound cannot be decoded: " + said.Error()}
@@ -107,7 +107,7 @@ func (r *ffReader) Close() error {
 // ReadBlock implements audio.Source.
 func (r *ffReader) ReadBlock(dst audio.Block) (int, error) {
 	if r.err == nil {
-		r.err = r.stopped()
+		r.err = ended(r.path, r.stopped)
 	}
 	if r.err != nil {
 		return 0, r.err
@@ -123,7 +123,7 @@ func (r *ffReader) ReadBlock(dst audio.Block) (int, error) {
 	case err != nil:
 		err = about(r.path, err)
 	}
-	if stop := r.stopped(); err != nil && stop != nil {
+	if stop := ended(r.path, r.stopped); err != nil && stop != nil {
 		err = stop
 	}
 	r.err = err
@@ -143,13 +143,13 @@ func (r *ffReader) finish() error {
 		return about(r.path, err)
 	}
 	err := r.child.wait()
-	switch {
-	case errors.Is(err, ErrKilled):
+	if errors.Is(err, ErrKilled) {
 		return about(r.path, err)
-	case err != nil:
-		return fmt.Errorf("%s: the recording breaks off after %.2f s: %w: %w", r.path, r.info.Format.Seconds(r.got), err, io.ErrUnexpectedEOF)
 	}
 	r.damage = r.child.stderr.text()
+	if err != nil {
+		return fmt.Errorf("%s: the recording breaks off after %.2f s: %w: %w", r.path, r.info.Format.Seconds(r.got), err, io.ErrUnexpectedEOF)
+	}
 	if r.promise.frames >= 0 && r.got < r.promise.frames-r.promise.slack {
 		return torn(r.path, r.info, r.got)
 	}

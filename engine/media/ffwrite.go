@@ -38,7 +38,7 @@ func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *
 	args := []string{"-nostdin", "-v", "error", "-y", "-f", "wav", "-ignore_length", "1", "-i", "pipe:0"}
 	files := []*os.File{f}
 	if tags != nil {
-		args = append(append(args, guarded(tags.kind)...), "-i", inputFD)
+		args = append(args, guarded(tags.kind)...)
 		files = []*os.File{tags.f, f}
 	}
 	args = append(args, "-map", "0:a:0")

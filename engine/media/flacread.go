@@ -30,7 +30,7 @@ func (t *Toolbox) openFLAC(ctx context.Context, f *os.File, path string, k kind)
 	if !short && t.FFmpeg() != "" {
 		return t.openFFmpeg(ctx, f, path, k)
 	}
-	r, err := newFLACReader(ctx, f, path, k.start, m)
+	r, err := newFLACReader(ctx, f, path, k, m)
 	if err != nil {
 		return nil, err
 	}
@@ -56,41 +56,23 @@ type flacReader struct {
 	got     int64
 	other   func() (*ffReader, error) // opens the recording with FFmpeg
 	rest    *ffReader                 // reads what follows damage
+	damage  string                    // that nothing could read past
 	stopped func() error
 	err     error
 }
 
-func newFLACReader(ctx context.Context, f *os.File, path string, start int64, m *flacMeta) (*flacReader, error) {
+func newFLACReader(ctx context.Context, f *os.File, path string, k kind, m *flacMeta) (*flacReader, error) {
 	l, err := m.finding()
 	if err != nil {
 		return nil, err
 	}
 	l.info.Decoder = "mewkiz/flac 1.0.14"
 	r := &flacReader{f: f, path: path, stopped: stopped(ctx), scale: float32(math.Ldexp(1, 1-l.info.BitDepth)), info: l.info}
-	end, err := flacEnd(f)
+	r.stream, err = flac.New(k.section(f))
 	if err != nil {
-		return nil, err
-	}
-	r.stream, err = flac.New(io.NewSectionReader(f, start, end-start))
-	if err != nil {
-		return nil, damagedFLAC(start, err)
+		return nil, damagedFLAC(k.start, err)
 	}
 	return r, nil
-}
-
-// flacEnd returns where the stream ends: in front of an ID3v1 tag, which has no business in a FLAC, or where
-// the file does.
-func flacEnd(f *os.File) (int64, error) {
-	info, err := f.Stat()
-	if err != nil {
-		return 0, err
-	}
-	const tag = 128
-	end := info.Size()
-	if b, err := readAt(f, max(0, end-tag), tag); err != nil || len(b) < tag || string(b[:3]) != "TAG" {
-		return end, err
-	}
-	return end - tag, nil
 }
 
 func (r *flacReader) Format() audio.Format { return r.info.Format }
@@ -106,7 +88,7 @@ func (r *flacReader) Info() Info {
 // Damage implements Damaged.
 func (r *flacReader) Damage() string {
 	if r.rest == nil {
-		return ""
+		return r.damage
 	}
 	return r.rest.Damage()
 }
@@ -122,7 +104,7 @@ func (r *flacReader) Close() error {
 // ReadBlock implements audio.Source. It hands out at most the rest of one FLAC frame.
 func (r *flacReader) ReadBlock(dst audio.Block) (n int, err error) {
 	if r.err == nil {
-		r.err = r.stopped()
+		r.err = ended(r.path, r.stopped)
 	}
 	if r.err == nil && r.frame == nil && r.rest == nil {
 		r.err = r.next()
@@ -195,12 +177,14 @@ func (r *flacReader) handOver(why error) error {
 	case errors.Is(err, ErrUnsupported) && whole:
 		return io.EOF
 	case errors.Is(err, ErrUnsupported):
+		r.damage = why.Error()
 		return about(r.path, fmt.Errorf("%s: %w", words, io.ErrUnexpectedEOF))
 	case err != nil:
 		return about(r.path, err)
 	}
 	r.rest = rest
 	if rest.Format().Layout.Channels != r.info.Format.Layout.Channels {
+		rest.damage = why.Error()
 		return about(r.path, fmt.Errorf("%s: %w", words, io.ErrUnexpectedEOF))
 	}
 	buf := audio.NewBlock(r.info.Format.Layout.Channels, audio.BlockFrames)

@@ -118,11 +118,11 @@ func drained(t testing.TB, r Reader) (audio.Block, Info) {
 // byFFmpeg opens a recording with FFmpeg whether it is long enough to be worth it or not.
 func byFFmpeg(t testing.TB, path string) Reader {
 	t.Helper()
-	f, _, err := openRegular(path)
+	f, size, err := openRegular(path)
 	if err != nil {
 		t.Fatal(err)
 	}
-	k, err := sniff(f)
+	k, err := recognise(f, size)
 	if err != nil {
 		t.Fatal(err)
 	}

@@ -53,7 +53,7 @@ func (i Info) FormatName() string {
 
 // Reader is an open recording. It reads frames in order, once.
 //
-// ReadBlock's errors besides io.EOF name the file. One that wraps io.ErrUnexpectedEOF says the recording
+// ReadBlock's errors besides io.EOF begin with the file's path and name it only there. One that wraps io.ErrUnexpectedEOF says the recording
 // is torn: every frame that could be had was delivered first. Close may be called at any time and more
 // than once; it ends a decoder that is still running.
 type Reader interface {
@@ -63,9 +63,10 @@ type Reader interface {
 }
 
 // Damaged is implemented by readers whose decoder can meet damage and carry on. Once ReadBlock has
-// returned io.EOF, Damage says in a line or two what the decoder complained about, or "" if it was
-// content; before that it is "". A recording with damage has been read to its end, but some of what was
-// delivered may be silence, noise or a splice.
+// returned io.EOF, or an error that wraps io.ErrUnexpectedEOF, Damage says in a line or two what the decoder
+// complained about, or "" if it was content; before that it is "". With io.EOF the recording has been read to its
+// end, but some of what was delivered may be silence, noise or a splice. With the error, frames are missing, and the
+// place may be the end, where a cut makes a decoder complain too, or one inside: Damage does not tell them apart.
 type Damaged interface{ Damage() string }
 
 // Spec says how a delivered file is to be written.

@@ -29,6 +29,7 @@ type mp3Reader struct {
 	exact   bool
 	stopped func() error
 	err     error
+	damage  string
 }
 
 func newMP3Reader(ctx context.Context, f *os.File, path string, k kind) (*mp3Reader, error) {
@@ -50,7 +51,7 @@ func newMP3Reader(ctx context.Context, f *os.File, path string, k kind) (*mp3Rea
 	}
 	// The decoder gets a Reader that begins at the sound: given a Seeker it would first read all
 	// of it to count frames, and given an ID3 tag it would take its word for how much memory it needs.
-	src := &plainStereo{r: bufio.NewReader(io.NewSectionReader(f, k.start, math.MaxInt64-k.start))}
+	src := &plainStereo{r: bufio.NewReader(k.section(f))}
 	dec, err := guard(func() (*mp3.Decoder, error) { return mp3.NewDecoder(src) })
 	switch {
 	case errors.Is(err, ErrUnsupported):
@@ -70,13 +71,19 @@ func (r *mp3Reader) Format() audio.Format { return r.info.Format }
 func (r *mp3Reader) Info() Info           { return r.info }
 func (r *mp3Reader) Close() error         { return closeOnce(&r.f) }
 
+// Damage implements Damaged.
+func (r *mp3Reader) Damage() string { return r.damage }
+
 // ReadBlock implements audio.Source.
 func (r *mp3Reader) ReadBlock(dst audio.Block) (int, error) {
 	if r.err == nil {
-		r.err = r.stopped()
+		r.err = ended(r.path, r.stopped)
 	}
 	if r.err != nil {
 		return 0, r.err
+	}
+	if r.left == 0 && r.more() {
+		r.left, r.exact = math.MaxInt64, false
 	}
 	want := int(min(int64(dst.Frames()), audio.BlockFrames, r.left))
 	if want == 0 && r.left == 0 {
@@ -103,10 +110,17 @@ func (r *mp3Reader) ReadBlock(dst audio.Block) (int, error) {
 	case errors.Is(err, ErrUnsupported):
 		err = about(r.path, err)
 	case err != nil:
+		r.damage = err.Error()
 		err = about(r.path, fmt.Errorf("the sound is damaged: %w: %w", err, io.ErrUnexpectedEOF))
 	}
 	r.err = err
 	return n, err
+}
+
+// more reports whether more follows what was promised than an encoder's padding, as ffReader does.
+func (r *mp3Reader) more() bool {
+	extra, _ := r.stream.r.Peek((maxPacket + 1) * r.stream.align)
+	return len(extra) > maxPacket*r.stream.align
 }
 
 // plainStereo passes MPEG frames on and ends the stream at the first that uses intensity stereo: one

@@ -29,8 +29,8 @@ var (
 	mpeg2Bits  = [15]int{0, 8, 16, 24, 32, 40, 48, 56, 64, 80, 96, 112, 128, 144, 160}
 )
 
-// parseMPEG reads a frame header; the zero value means that b does not begin with one. Free-format
-// streams (bit rate index 0) are not recognised: nothing makes them.
+// parseMPEG reads a frame header; the zero value means that b does not begin with one. A frame
+// of free format (bit rate index 0) does not state its length and is none here; see freeFormat.
 func parseMPEG(b []byte) mpegHeader {
 	if len(b) < 4 || b[0] != 0xFF || b[1]&0xE0 != 0xE0 {
 		return mpegHeader{}
@@ -71,6 +71,39 @@ func parseMPEG(b []byte) mpegHeader {
 	return h
 }
 
+// freeFormat reports whether b holds MPEG audio whose frames do not state their bit rate. One then ends where the
+// next begins, and all are equally long but for their padding: four in a row are proof.
+func freeFormat(b []byte) bool {
+	const shortest, longest, tries = 24, 8 << 10, 64
+	tried := 0
+	for i := 0; i+4 < len(b) && tried < tries; i++ {
+		if b[i] != 0xFF || b[i+1]&0xE0 != 0xE0 || b[i+2]>>4 != 0 {
+			continue
+		}
+		same := func(at int) bool {
+			return at+2 < len(b) && b[at] == 0xFF && b[at+1] == b[i+1] && b[at+2]&^2 == b[i+2]&^2
+		}
+		// With another bit rate, it is a header or it is not.
+		if parseMPEG([]byte{0xFF, b[i+1], b[i+2] | 0x10, b[i+3]}).length == 0 {
+			continue
+		}
+		tried++
+		slot := 1
+		if b[i+1]>>1&3 == 3 { // layer 1
+			slot = 4
+		}
+		padding := func(at int) int { return slot * int(b[at+2]>>1&1) }
+		for n := shortest; n < longest; n++ {
+			for at, chain := i, 1; same(at); at, chain = at+n+padding(at), chain+1 {
+				if chain == 4 {
+					return true
+				}
+			}
+		}
+	}
+	return false
+}
+
 // gapless is what an MP3's first frame says about the length of the sound. There is no standard for it;
 // the layout is common practice among encoders.
 type gapless struct {
@@ -108,7 +141,9 @@ func readGapless(r io.ReaderAt, start int64) (mpegHeader, gapless, error) {
 	flags, p := b[at+7], at+8
 	var coded int64 // bytes of all MPEG frames
 	if flags&1 != 0 {
-		g.frames = int64(binary.BigEndian.Uint32(b[p:])) * int64(h.frames)
+		if n := binary.BigEndian.Uint32(b[p:]); n > 0 { // 0 is what encoders to a pipe leave there
+			g.frames = int64(n) * int64(h.frames)
+		}
 		p += 4
 	}
 	if flags&2 != 0 {

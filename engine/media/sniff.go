@@ -2,9 +2,11 @@ package media
 
 import (
 	"bytes"
+	"cmp"
 	"encoding/binary"
 	"fmt"
 	"io"
+	"math"
 	"slices"
 	"unicode/utf8"
 )
@@ -14,6 +16,12 @@ type kind struct {
 	container string // as in Info.Container
 	demuxer   string // FFmpeg's name of the demuxer that is forced on it
 	start     int64  // where the format's own bytes begin, after an ID3v2 tag or junk
+	end       int64  // where they end, in front of tags and zeros; 0 if that is where the file does
+}
+
+// section is what of the file the format's own bytes are in.
+func (k kind) section(r io.ReaderAt) *io.SectionReader {
+	return io.NewSectionReader(r, k.start, cmp.Or(k.end, math.MaxInt64)-k.start)
 }
 
 // magic is a run of bytes that gives a format away.
@@ -91,6 +99,8 @@ func sniff(r io.ReaderAt) (kind, error) {
 	} else if k, ok := byFrames(window); ok {
 		k.start += start
 		return k, nil
+	} else if freeFormat(window) {
+		return kind{}, fmt.Errorf("%w: this is a free-format MP3, of a bit rate that its headers do not state; nothing here decodes it", ErrUnsupported)
 	}
 	return kind{}, fmt.Errorf("%w: this is %s", ErrUnsupported, describe(head))
 }

@@ -122,7 +122,7 @@ func (t *Toolbox) Open(ctx context.Context, path string) (Reader, error) {
 }
 
 func (t *Toolbox) open(ctx context.Context, f *os.File, size int64, path string) (Reader, error) {
-	k, err := sniff(f)
+	k, err := recognise(f, size)
 	if err != nil {
 		return nil, err
 	}
@@ -145,6 +145,21 @@ func (t *Toolbox) open(ctx context.Context, f *os.File, size int64, path string)
 	default:
 		return nil, fmt.Errorf("%w: reading %s needs FFmpeg, and %s", ErrUnsupported, k.container, needFFmpeg)
 	}
+}
+
+// recognise says what the first bytes of a file show and, where decoders would take what follows the sound for
+// a part of it, where the sound ends.
+func recognise(f *os.File, size int64) (kind, error) {
+	k, err := sniff(f)
+	if err != nil || k.container != "flac" && k.container != "mp3" {
+		return k, err
+	}
+	if end, err := soundEnd(f, k.start, size, k.container == "mp3"); err != nil {
+		return kind{}, err
+	} else if end < size {
+		k.end = end
+	}
+	return k, nil
 }
 
 // openRegular opens a file for reading and refuses what is not one: reading a pipe or a device could

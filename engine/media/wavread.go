@@ -41,7 +41,7 @@ func (r *wavReader) Close() error         { return closeOnce(&r.f) }
 // ReadBlock implements audio.Source.
 func (r *wavReader) ReadBlock(dst audio.Block) (int, error) {
 	if r.err == nil {
-		r.err = r.stopped()
+		r.err = ended(r.path, r.stopped)
 	}
 	if r.err != nil {
 		return 0, r.err
