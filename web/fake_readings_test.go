@@ -42,7 +42,7 @@ func (f *fake) Readings(ctx context.Context, id int64) (before, after *store.Rea
 				faults.Fault{Code: "dropouts", Severity: faults.Doubt, At: 84.1, Length: 0.05, Words: "the sound drops out for 50 ms at 1:24.1"},
 				faults.Fault{Code: "head-silence", Severity: faults.Note, Length: 0.3, Words: "0.3 s of silence at the start"},
 				faults.Fault{Code: "tail-silence", Severity: faults.Note, At: *r.Duration - 7.4, Length: 7.4, Words: "7.4 s of silence at the end"},
-				faults.Fault{Code: "dc-offset", Severity: faults.Note, Length: *r.Duration, Words: "the sound lies 0.7% of full scale above the middle (DC offset): cuts will click"})
+				faults.Fault{Code: "dc-offset", Severity: faults.Note, Length: *r.Duration, Words: "the sound lies 0.7 % of full scale above the middle (DC offset): a cut in it may click"})
 		}
 		return &store.Reading{ID: id, RecordingID: id, Kind: kind, MeasuredAt: noon, Analysis: a}
 	}

@@ -6,7 +6,6 @@ import (
 	"math"
 	"path"
 	"reflect"
-	"strconv"
 	"strings"
 	"time"
 
@@ -24,7 +23,7 @@ func functions(a *assets, now func() time.Time) template.FuncMap {
 		"number":   func(v any) string { f, _ := value(v); return audio.Number(f, 1) },
 		"spread":   func(v any) string { f, _ := value(v); return spreadWords(f) },
 		"signed":   func(v any) string { f, _ := value(v); return signed(f) },
-		"count":    func(n any) string { return count(reflect.ValueOf(n).Int()) },
+		"count":    func(n any) string { return audio.Count(reflect.ValueOf(n).Int()) },
 		"plural":   plural,
 		"length":   func(v any) string { f, ok := value(v); return length(f, ok) },
 		"clock":    audio.Clock,
@@ -90,21 +89,12 @@ func signed(f float64) string {
 	return s
 }
 
-// count writes a whole number with its thousands apart: 100,000.
-func count[I int | int64](n I) string {
-	s := strconv.FormatInt(int64(n), 10)
-	for i := len(s) - 3; i > 0 && s[i-1] != '-'; i -= 3 {
-		s = s[:i] + "," + s[i:]
-	}
-	return s
-}
-
 // plural is a count with the word for it: "1 recording", "96 recordings".
 func plural(n int, one, many string) string {
 	if n == 1 {
 		return "1 " + one
 	}
-	return count(n) + " " + many
+	return audio.Count(n) + " " + many
 }
 
 // length writes a duration in seconds the way people say it: 6 h 12 min, 3 min 24 s, 8.2 s.
@@ -121,7 +111,7 @@ func length(s float64, ok bool) string {
 		return fmt.Sprintf("%d%smin %d%ss", t/60, narrow, t%60, narrow)
 	}
 	m := int64(math.Round(s / 60))
-	return fmt.Sprintf("%s%sh %d%smin", count(m/60), narrow, m%60, narrow)
+	return fmt.Sprintf("%s%sh %d%smin", audio.Count(m/60), narrow, m%60, narrow)
 }
 
 // size writes a file's size in decimal units.
@@ -130,7 +120,7 @@ func size(n int64) string {
 	for _, unit := range []string{"bytes", "kB", "MB", "GB"} {
 		if f < 1000 {
 			if unit == "bytes" {
-				return count(n) + narrow + unit
+				return audio.Count(n) + narrow + unit
 			}
 			return audio.Number(f, 1) + narrow + unit
 		}

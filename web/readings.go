@@ -74,8 +74,8 @@ func gaugesOf(a *level.Analysis) []gauges {
 			row("DC offset", decimals(100*float64(a.Offset), 2, "%"), "How far the middle of the wave lies from zero, of full scale, in the channel where that is furthest."),
 			row("Silence at the head", newFigure(a.HeadSilence, "s"), "Before the first sample above −70 dBFS."),
 			row("Silence at the tail", newFigure(a.TailSilence, "s"), "After the last sample above −70 dBFS."),
-			row("Sample rate", figure{true, count(a.SampleRate), "Hz"}, "Samples a second in each channel."),
-			row("Channels", figure{Defined: true, Text: cmp.Or(a.Layout, count(a.Channels))}, "How many the file has, and how they are placed."),
+			row("Sample rate", figure{true, audio.Count(a.SampleRate), "Hz"}, "Samples a second in each channel."),
+			row("Channels", figure{Defined: true, Text: cmp.Or(a.Layout, audio.Count(a.Channels))}, "How many the file has, and how they are placed."),
 		}},
 		{Title: "Speech", Rows: []gauge{
 			row("Programme heard", lasting(a.ActiveTime), "How long something is heard; the rest is pauses."),

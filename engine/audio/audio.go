@@ -127,6 +127,15 @@ func Number(v float64, decimals int) string {
 	return s
 }
 
+// Count writes a whole number with its thousands apart: 100,000.
+func Count[I int | int64](n I) string {
+	s := strconv.FormatInt(int64(n), 10)
+	for i := len(s) - 3; i > 0 && s[i-1] != '-'; i -= 3 {
+		s = s[:i] + "," + s[i:]
+	}
+	return s
+}
+
 // Block is planar sound: Block[c][i] is frame i of channel c. All channels have the same length.
 type Block [][]float32
 

@@ -119,3 +119,11 @@ func TestNumber(t *testing.T) {
 		}
 	}
 }
+
+func TestCount(t *testing.T) {
+	for n, want := range map[int64]string{0: "0", 999: "999", 1000: "1,000", 100000: "100,000", -1234567: "-1,234,567", -123: "-123"} {
+		if got := Count(n); got != want {
+			t.Errorf("%d is written %s, want %s", n, got, want)
+		}
+	}
+}

@@ -32,10 +32,11 @@ const (
 	bandNearest = 25.0    // Hz between lines of the spectrum, at most
 )
 
-// band finds such an edge. It follows the sum of all channels.
+// band finds such an edge. It follows the mixture of all channels.
 type band struct {
 	rate    int
-	windows int // since the last spectrum
+	mixture []float64 // weight of each channel
+	windows int       // since the last spectrum
 	fft     *fourier.FFT
 	taper   []float64
 	sound   []float64
@@ -50,7 +51,7 @@ func newBand(f audio.Format) check {
 		return nothing{}
 	}
 	n := 1 << bits.Len(uint(float64(f.Rate)/bandNearest)) // shorter than a window of 100 ms
-	b := &band{rate: f.Rate, fft: fourier.NewFFT(n), taper: hann(n), sound: make([]float64, n)}
+	b := &band{rate: f.Rate, mixture: mixture(f.Layout), fft: fourier.NewFFT(n), taper: hann(n), sound: make([]float64, n)}
 	b.lines, b.power = make([]complex128, n/2+1), make([]float64, n/2+1)
 	return b
 }
@@ -73,9 +74,13 @@ func (b *band) look(w window) {
 	clear(b.sound)
 	heard := false
 	for c, x := range w.Block {
-		heard = heard || float64(w.peak[c]) > linear(bandHeard)
+		weight := b.mixture[c]
+		if weight == 0 {
+			continue
+		}
+		heard = heard || float64(w.peak[c]) > audio.DB(bandHeard).Linear()
 		for i, v := range x[:len(b.sound)] {
-			b.sound[i] += float64(v)
+			b.sound[i] += weight * float64(v)
 		}
 	}
 	if !heard {
@@ -140,10 +145,10 @@ func ancestor(hz float64) string {
 		to   float64
 		what string
 	}{
-		{4200, "seems to come from a telephone or from a recording at 8 kHz"},
-		{5900, "seems to come from a recording at 11 or 12 kHz"},
-		{8300, "seems to come from a wideband telephone or from a recording at 16 kHz"},
-		{12300, "seems to come from a recording at 22 or 24 kHz"},
+		{4200, "seems to come from a telephone or from a recording sampled at 8 kHz"},
+		{5900, "seems to come from a recording sampled at 11 or 12 kHz"},
+		{8300, "seems to come from a wideband telephone or from a recording sampled at 16 kHz"},
+		{12300, "seems to come from a recording sampled at 22 or 24 kHz"},
 		{14200, "seems to have been coded at a low bit rate"},
 	} {
 		if hz <= a.to {

@@ -37,6 +37,7 @@ const (
 type clicks struct {
 	size        int         // frames of a window
 	stretches   int         // in a window
+	hole        int         // frames of the shortest hole that is a dropout
 	beside      int         // stretches looked at on each side
 	rough       [][]float32 // largest second difference of each channel in those of the last window and this one
 	predictor   *predictor
@@ -48,7 +49,7 @@ func newClicks(f audio.Format) check {
 	if f.Rate < clickRate {
 		return nothing{}
 	}
-	k := &clicks{size: f.Rate / 10, predictor: newPredictor(f.Rate)}
+	k := &clicks{size: f.Rate / 10, predictor: newPredictor(f.Rate), hole: shortest(f.Rate)}
 	k.stretches = int(float64(k.size) / (stretch * float64(f.Rate)))
 	k.beside = k.stretches / 4
 	k.rough = make([][]float32, f.Layout.Channels)
@@ -126,6 +127,8 @@ func (k *clicks) examine(w window, c, from, to int) {
 	switch reach := k.predictor.side; {
 	case frame < int64(k.size/4), at < reach, at+reach >= len(x): // it has no surroundings
 		return
+	case w.mended, k.atHole(x, at): // it is told of already
+		return
 	case k.count > 0 && frame-k.last < int64(k.size/20): // the same one in another channel
 		return
 	}
@@ -146,6 +149,25 @@ func (k *clicks) examine(w window, c, from, to int) {
 	}
 }
 
+// atHole reports whether a hole, which may be a dropout, begins or ends at sample at of x. A click amid digital
+// silence has silence on both sides.
+func (k *clicks) atHole(x []float32, at int) bool {
+	reach := k.predictor.moment + k.hole
+	return (zeros(x[at-reach:at+1]) >= k.hole) != (zeros(x[at:at+reach+1]) >= k.hole)
+}
+
+// zeros returns the length of the longest run of exact zeros in x.
+func zeros(x []float32) (longest int) {
+	run := 0
+	for _, v := range x {
+		if run++; v != 0 {
+			run = 0
+		}
+		longest = max(longest, run)
+	}
+	return longest
+}
+
 func (k *clicks) faults(e extent) []Fault {
 	if k.count == 0 {
 		return nil
@@ -155,7 +177,7 @@ func (k *clicks) faults(e extent) []Fault {
 		Words: fmt.Sprintf("it clicks %s, first at %s", times(k.count), audio.Clock(at))}
 	if k.loud >= manyClicks && float64(k.loud) >= oftenClicks*e.Seconds(e.frames)/60 {
 		f.Severity = Doubt
-		f.Words += fmt.Sprintf(", %d of them louder than the sound around", k.loud)
+		f.Words += fmt.Sprintf(", %s of them louder than the sound around", audio.Count(k.loud))
 	}
 	return []Fault{f}
 }

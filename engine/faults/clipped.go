@@ -16,7 +16,11 @@ import (
 // Three neighbours of one value are not enough: the top of a deep note is that flat by itself. But the
 // top of a wave is round, so that one sample further on it has fallen little, while a cut wave drops at
 // once. A plateau therefore counts only if it ends abruptly on both sides; and if it lies below the
-// extreme of the whole recording, only if others lie at the same height.
+// extreme of the whole recording, only if others lie at the same height, which must come from other waves: a
+// passage that is played again has its flat tops at the same height too.
+//
+// A square wave, such as a chip plays, is flat without ever having been cut. It jumps from one extreme to the
+// other, which a cut wave hardly ever does from one sample to the next.
 const (
 	flatSamples = 3    // neighbours at the extreme; common practice is 3 to 7
 	flatWithin  = 8e-5 // of full scale, how far they may differ: dither of 16 bits after a change of gain
@@ -28,6 +32,7 @@ const (
 	coarsest    = 1.0 / 128 // of full scale: 8 bits; there are no coarser steps
 	plateauLow  = 0.02      // of full scale: lower ones are not looked for
 	sameHeight  = 5         // plateaus below the recording's extreme
+	jump        = 0.9       // of the window's swing between two samples: not the slope of a cut wave
 )
 
 // Loud masters have flat tops of a few samples at drum hits and sound as they were meant to. What is heard
@@ -57,16 +62,19 @@ type side struct {
 	run      int         // samples of a plateau that reaches into the next window
 	level    float32     // its height
 	entry    float32     // the sample before it
+	swing    float32     // of the window, from its level to the opposite extreme
 }
 
 // ceiling is a height at which waves were cut, unless chance made it so.
 type ceiling struct {
 	level    float32
 	plateaus int64
-	flat     int64 // samples on them
-	first    int64 // frame of the first
-	inWindow int64 // samples on plateaus that ended in this window
-	bad      int64 // windows
+	flat     int64                  // samples on them
+	first    int64                  // frame of the first
+	waves    int                    // plateaus with other samples beside them than those before, sameHeight at most
+	beside   [sameHeight][2]float32 // their entries and exits
+	inWindow int64                  // samples on plateaus that ended in this window
+	bad      int64                  // windows
 }
 
 func newClipped(f audio.Format) *clipped {
@@ -77,10 +85,11 @@ func (k *clipped) look(w window) {
 	start := w.wide.Frames() - w.Frames()
 	for c, x := range w.wide {
 		k.learnStep(x[start:min(start+64, len(x))])
-		k.sides[2*c].look(x, 1, w.top[c], w.tops[c], start, w.from, k.step)
-		k.sides[2*c+1].look(x, -1, w.bottom[c], w.bottoms[c], start, w.from, k.step)
+		swing := w.top[c] + w.bottom[c]
+		k.sides[2*c].look(x, 1, w.top[c], swing, w.tops[c], start, w.from, k.step)
+		k.sides[2*c+1].look(x, -1, w.bottom[c], swing, w.bottoms[c], start, w.from, k.step)
 	}
-	if float64(slices.Max(w.peak)) > linear(soundingPeak) {
+	if float64(slices.Max(w.peak)) > audio.DB(soundingPeak).Linear() {
 		k.sounding++
 	}
 }
@@ -94,11 +103,12 @@ func (k *clipped) learnStep(x []float32) {
 	}
 }
 
-// look takes a window that begins at index start of x, at a frame, and rises to top, each of its parts to one of
-// tops, when multiplied by sign. Of three neighbours one is met with even if only every third sample is looked at.
+// look takes a window that begins at index start of x, at a frame, and when multiplied by sign rises to top, each of
+// its parts to one of tops, and falls swing below it. Of three neighbours one is met with even if only every third
+// sample is looked at.
 //
 //go:norace
-func (s *side) look(x []float32, sign, top float32, tops []float32, start int, from int64, step float32) {
+func (s *side) look(x []float32, sign, top, swing float32, tops []float32, start int, from int64, step float32) {
 	s.extreme = max(s.extreme, top)
 	done := start
 	if s.run > 0 {
@@ -129,7 +139,7 @@ func (s *side) look(x []float32, sign, top float32, tops []float32, start int, f
 			for i < len(x) && sign*x[i] >= floor {
 				i++
 			}
-			s.level, s.entry, done = top, sign*x[first-1], i
+			s.level, s.entry, s.swing, done = top, sign*x[first-1], swing, i
 			if i == len(x) {
 				s.run = i - first
 				break
@@ -149,7 +159,8 @@ func (s *side) look(x []float32, sign, top float32, tops []float32, start int, f
 // plateau judges a run of samples that lie at level, exit is the sample behind them.
 func (s *side) plateau(run int, exit float32, at int64, step float32) {
 	drop := max(abrupt, abruptRatio*s.level, abruptSteps*step)
-	if run < flatSamples || s.level-s.entry < drop || s.level-exit < drop {
+	in, out := s.level-s.entry, s.level-exit
+	if run < flatSamples || in < drop || out < drop || in > jump*s.swing || out > jump*s.swing {
 		return
 	}
 	c := s.ceiling()
@@ -159,6 +170,10 @@ func (s *side) plateau(run int, exit float32, at int64, step float32) {
 	c.plateaus++
 	c.flat += int64(run)
 	c.inWindow += int64(run)
+	if wave := [2]float32{s.entry, exit}; c.waves < sameHeight && !slices.Contains(c.beside[:c.waves], wave) {
+		c.beside[c.waves] = wave
+		c.waves++
+	}
 }
 
 // ceiling returns the one at level, or makes room for it: the least confirmed has to go, but not the highest.
@@ -188,7 +203,7 @@ func (k *clipped) faults(e extent) []Fault {
 	for _, s := range k.sides {
 		var inSide int64
 		for _, c := range s.ceilings {
-			if c.plateaus == 0 || c.level < s.extreme-flatWithin && c.plateaus < sameHeight {
+			if c.plateaus == 0 || c.level < s.extreme-flatWithin && c.waves < sameHeight {
 				continue
 			}
 			plateaus += c.plateaus
@@ -206,7 +221,7 @@ func (k *clipped) faults(e extent) []Fault {
 	f.Words = fmt.Sprintf("clipped %s, first at %s", times(plateaus), audio.Clock(at))
 	if bad >= seriousLeast && share >= seriousBad {
 		f.Severity = Serious
-		f.Words += fmt.Sprintf(", badly in %.0f%% of the time", 100*share)
+		f.Words += fmt.Sprintf(", badly in %.0f %% of the time", 100*share)
 	}
 	return []Fault{f}
 }

@@ -9,7 +9,7 @@ type Condition struct {
 	TailSilence audio.Seconds `json:"tail_silence_s"` // after the last one
 	Correlation audio.Ratio   `json:"correlation"`    // of left and right, −1 … 1; undefined without such a pair
 	Balance     audio.DB      `json:"balance_db"`     // rms of right over left; undefined without such a pair
-	Offset      audio.Ratio   `json:"dc_offset"`      // mean of the channel furthest from 0, of full scale
+	Offset      audio.Ratio   `json:"dc_offset"`      // mean of the channel furthest from 0, silence included, of full scale
 }
 
 // Unmeasured returns a Condition in which no figure is known.

@@ -6,19 +6,21 @@ import (
 	"evenshelf/engine/audio"
 )
 
-// decimator brings the mean of all channels down to about humRate: first by sums of a few samples, to twice
+// decimator brings the mixture of all channels down to about humRate: first by sums of a few samples, to twice
 // that, then by a filter.
 type decimator struct {
-	first, second int     // factors
-	rate          float64 // that comes out, Hz
-	held          int     // frames of the window before that no sum has had
+	first, second int       // factors
+	rate          float64   // that comes out, Hz
+	held          int       // frames of the window before that no sum has had
+	mixture       []float64 // weight of each channel
 	taps          []float64
+	sums          []float64 // of one channel
 	line          []float64 // sums, the newest last, that the filter has not done with
 	out           []float64
 }
 
 func newDecimator(f audio.Format) *decimator {
-	d := &decimator{first: max(1, f.Rate/(2*humRate))}
+	d := &decimator{first: max(1, f.Rate/(2*humRate)), mixture: mixture(f.Layout)}
 	d.second = max(1, int(math.Round(float64(f.Rate)/float64(d.first)/humRate)))
 	d.rate = float64(f.Rate) / float64(d.first*d.second)
 	// A Hann-windowed ideal low-pass filter with its edge at 0.45 of the new rate.
@@ -31,9 +33,10 @@ func newDecimator(f audio.Format) *decimator {
 		total += d.taps[i]
 	}
 	for i := range d.taps {
-		d.taps[i] /= total * float64(d.first*f.Layout.Channels)
+		d.taps[i] /= total * float64(d.first)
 	}
-	d.line = make([]float64, len(d.taps)-1, len(d.taps)+f.Rate/10/d.first+2)
+	d.sums = make([]float64, f.Rate/10/d.first+2)
+	d.line = make([]float64, len(d.taps)-1, len(d.taps)+len(d.sums))
 	d.out = make([]float64, 0, f.Rate/10/(d.first*d.second)+2)
 	return d
 }
@@ -49,7 +52,10 @@ func (d *decimator) take(w window) []float64 {
 	clear(d.line[before:])
 	for c, x := range w.wide {
 		x = x[start-d.held:]
-		w.sums[c] = addSums(d.line[before:], x, d.first) + sum(x[n*d.first:]) - sum(x[:d.held])
+		w.sums[c] = sumUp(d.sums[:n], x, d.first) + sum(x[n*d.first:]) - sum(x[:d.held])
+		for i, v := range d.sums[:n] {
+			d.line[before+i] += d.mixture[c] * v
+		}
 	}
 	d.held += w.Frames() - n*d.first
 	d.out = d.out[:0]
@@ -66,10 +72,10 @@ func (d *decimator) take(w window) []float64 {
 	return d.out
 }
 
-// addSums adds the sums of n samples each of x to dst, and returns the sum of all of them.
+// sumUp sets dst to the sums of n samples each of x, and returns the sum of all of them.
 //
 //go:norace
-func addSums(dst []float64, x []float32, n int) (total float64) {
+func sumUp(dst []float64, x []float32, n int) (total float64) {
 	for i := range dst {
 		var a, b float64
 		s := x[:n]
@@ -81,7 +87,7 @@ func addSums(dst []float64, x []float32, n int) (total float64) {
 		for _, v := range s {
 			a += float64(v)
 		}
-		dst[i] += a + b
+		dst[i] = a + b
 		total += a + b
 	}
 	return total

@@ -17,8 +17,6 @@ package faults
 
 import (
 	"cmp"
-	"fmt"
-	"math"
 	"slices"
 
 	"evenshelf/engine/audio"
@@ -67,16 +65,17 @@ func New(f audio.Format) *Detector {
 	f.Rate = max(1, f.Rate) // a nonsensical rate must not divide by zero
 	n, size := f.Layout.Channels, max(1, f.Rate/10)
 	figures := audio.NewBlock(4, n)
+	down := newDecimator(f)
 	return &Detector{
 		format: f,
-		checks: []check{newClipped(f), newOffset(f), new(silences), newDropouts(f), newPair(f), newClicks(f), newBand(f), newHum(f), scale{}},
+		checks: []check{newClipped(f), newOffset(f), new(silences), newDropouts(f), newPair(f), unused{}, newClicks(f), newBand(f), newHum(f, down.rate), scale{}},
 		buf:    audio.NewBlock(n, pastFrames(f.Rate)+size),
 		past:   pastFrames(f.Rate),
 		w: window{
 			top: figures[0], bottom: figures[1], peak: figures[2], sums: make([]float64, n),
 			tops: audio.NewBlock(n, parts), bottoms: audio.NewBlock(n, parts),
 		},
-		down:  newDecimator(f),
+		down:  down,
 		views: [2]audio.Block{make(audio.Block, n), make(audio.Block, n)},
 		peak:  figures[3],
 	}
@@ -111,6 +110,7 @@ func (d *Detector) look() {
 		}
 		d.peak[c] = max(d.peak[c], w.peak[c])
 	}
+	w.mended = d.odd.samples > 0 && d.odd.last >= w.from-int64(d.past)
 	w.low = d.down.take(*w)
 	for _, c := range d.checks {
 		c.look(*w)
@@ -141,31 +141,4 @@ func (d *Detector) Finish() ([]Fault, Condition) {
 		return cmp.Or(cmp.Compare(rank[a.Severity], rank[b.Severity]), cmp.Compare(a.At, b.At))
 	})
 	return found, state
-}
-
-// linear returns the amplitude of a level in dBFS.
-func linear(dbfs float64) float64 { return math.Pow(10, dbfs/20) }
-
-// times writes a count as people say it.
-func times(n int64) string {
-	switch n {
-	case 1:
-		return "once"
-	case 2:
-		return "twice"
-	}
-	return fmt.Sprintf("%d times", n)
-}
-
-// channelName says which channel is meant.
-func channelName(l audio.Layout, c int) string {
-	switch p := l.Position(c); {
-	case l.Channels == 1:
-		return "the sound"
-	case p == audio.FrontLeft:
-		return "the left channel"
-	case p == audio.FrontRight:
-		return "the right channel"
-	}
-	return fmt.Sprintf("channel %d", c+1)
 }

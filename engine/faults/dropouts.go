@@ -10,8 +10,10 @@ import (
 // A dropout is a hole of exact zeros in sounding programme, left by a lost packet or a damaged disk, in all
 // channels at once or in one while another sounds on. Music and speech fall silent too, but gradually and
 // seldom to exact zero; so the sound must be there up to the last sample before the hole and again from the
-// first one after it. Common practice, no source.
+// first one after it. And there must be much more sound than silence: time-signal pips, keyed Morse, whose pauses
+// are no shorter than a third of its signs, and gated sounds are meant to stop. Common practice, no source.
 const (
+	holeSounds   = 4     // times the length of a hole: the sound there must be since the one before
 	shortestHole = 0.002 // seconds
 	longestHole  = 1.0   // seconds: longer ones are pauses somebody made
 	besideHole   = 0.005 // seconds of sound looked at before and after
@@ -64,6 +66,7 @@ type holes struct {
 	pauseLeast   int64   // frames of a pause
 	beside       int     // frames of sound looked at on each side
 	level        float64 // rms they must have
+	ended        int64   // frame at which the last hole or pause ended
 	hole         hole    // under way, or waiting for the sound after it
 	count, total int64   // holes found and their frames
 	first        hole    // found
@@ -77,6 +80,7 @@ type holes struct {
 // hole is a run of silent frames and the sound beside it.
 type hole struct {
 	from, frames int64
+	sounded      int64 // frames since the hole or pause before
 	closed       bool
 	before, edge float64 // rms before, and magnitude of the last frame before
 	after, onset float64 // sum of squares after, and magnitude of the first frame after
@@ -88,13 +92,16 @@ func newHoles(f audio.Format, channel int) *holes {
 	rate := float64(f.Rate)
 	return &holes{
 		channel:    channel,
-		least:      max(2, int64(shortestHole*rate)),
+		least:      int64(shortest(f.Rate)),
 		most:       int64(longestHole * rate),
 		pauseLeast: max(2, int64(longPause*rate)),
 		beside:     max(1, int(besideHole*rate)),
-		level:      linear(besideLevel),
+		level:      audio.DB(besideLevel).Linear(),
 	}
 }
+
+// shortest returns the frames of the shortest hole.
+func shortest(rate int) int { return max(2, int(shortestHole*float64(rate))) }
 
 func (d *holes) look(w window) {
 	start := w.wide.Frames() - w.Frames()
@@ -110,7 +117,7 @@ func (d *holes) look(w window) {
 		}
 	}
 	for _, p := range w.peak {
-		d.sounded = d.sounded || float64(p) > linear(silence)
+		d.sounded = d.sounded || float64(p) > audio.DB(silence).Linear()
 	}
 }
 
@@ -165,6 +172,7 @@ func (d *holes) take(w window, i int) {
 	case m == 0:
 		if h.frames == 0 {
 			h.from = w.from + int64(i-w.wide.Frames()+w.Frames())
+			h.sounded = h.from - d.ended
 		}
 		h.frames++
 		o := d.others(w, i)
@@ -174,6 +182,7 @@ func (d *holes) take(w window, i int) {
 		}
 	case h.frames >= d.least && h.frames <= d.most && h.before >= d.level:
 		h.closed, h.onset, h.after, h.heard = true, m, m*m, 1
+		d.ended = h.from + h.frames
 	default:
 		if d.channel < 0 && d.sounded && h.frames >= d.pauseLeast {
 			if d.pauses == 0 {
@@ -181,6 +190,9 @@ func (d *holes) take(w window, i int) {
 			}
 			d.pauses++
 			d.paused += h.frames
+		}
+		if h.frames >= d.least {
+			d.ended = h.from + h.frames
 		}
 		*h = hole{}
 	}
@@ -195,12 +207,12 @@ func (d *holes) soundBefore(w window, i int) (rms, edge float64) {
 	return math.Sqrt(rms / float64(d.beside)), edge
 }
 
-// judge counts the hole if there is sound after it too and both break off.
+// judge counts the hole if there was sound enough before it, there is sound after it too, and both break off.
 func (d *holes) judge() {
 	h := d.hole
 	d.hole = hole{}
 	after := math.Sqrt(h.after / float64(d.beside))
-	if after < d.level || h.edge < cutShort*h.before || h.onset < cutShort*after {
+	if h.sounded < holeSounds*h.frames || after < d.level || h.edge < cutShort*h.before || h.onset < cutShort*after {
 		return
 	}
 	if d.channel >= 0 && math.Sqrt(h.others/float64(h.frames)) < d.level {

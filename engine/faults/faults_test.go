@@ -243,17 +243,6 @@ func TestFaultsPutInAreFound(t *testing.T) {
 	}
 }
 
-// A square wave is cut as far as can be.
-func TestSquareWaveIsClipped(t *testing.T) {
-	x := make([]float32, 44100)
-	for i := range x {
-		x[i] = float32(0.5 - float64(i/50%2))
-	}
-	if f := find(t, look(44100, audio.Block{x}), "clipped"); f.Severity != Serious {
-		t.Errorf("got %+v", f)
-	}
-}
-
 // How surely a dropout is found: holes of 3 to 300 ms at random places of the sounding music.
 func TestDropoutsAreFoundAnywhere(t *testing.T) {
 	rng := rand.New(rand.NewPCG(7, 8))
@@ -319,14 +308,6 @@ func TestBlocksDoNotMatter(t *testing.T) {
 	}
 	if got, _ := d.Finish(); !slices.Equal(got, want) {
 		t.Errorf("in blocks %v, at once %v", got, want)
-	}
-}
-
-func TestClock(t *testing.T) {
-	for seconds, want := range map[float64]string{0: "0:00.0", 3.24: "0:03.2", 59.96: "1:00.0", 754.5: "12:34.5", 4503.2: "75:03.2"} {
-		if got := audio.Clock(seconds); got != want {
-			t.Errorf("audio.Clock(%g) = %s, want %s", seconds, got, want)
-		}
 	}
 }
 

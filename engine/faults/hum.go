@@ -16,14 +16,18 @@ import (
 // notes as deep, but does not hold them through, and the nearest notes (49.0, 51.9, 58.3 and 61.7 Hz and
 // their octaves, at A = 440 Hz) lie 2 % away or more.
 //
-// So the quietest parts are looked at, one second each, on the sum of all channels brought down to 1 kHz.
+// So the quietest parts are looked at, one second each, on a mixture of all channels brought down to 1 kHz.
 // In most of them a line must stand out at the mains frequency or twice that, and often at another multiple,
 // always at the same place and of the same level. Common practice, no source.
+//
+// Only if it goes on where the programme pauses is it sure to be hum: in the quietest windows of most parts there
+// must be as much as the tone and little more. Notes of a bass stop there; a drone may be all there is, and the pedal
+// of an organ has no pauses around it. They are a matter for a note.
 const (
 	humRate     = 1000  // Hz, roughly, that the sound is brought down to
 	humLines    = 1024  // samples a spectrum is made of, every half of that
 	humParts    = 32    // how many of the quietest are kept
-	humQuiet    = 10    // the quietest tenth of all parts is looked at
+	humQuiet    = 10    // the quietest tenth of all parts is looked at, in a long recording those that are kept
 	humLeast    = 6     // parts of it, or nothing can be said
 	humSilent   = 1e-10 // mean square: a part below is digital silence, and says nothing
 	humLoud     = 1e6   // mean square: a part above is damaged
@@ -38,6 +42,9 @@ const (
 	humLowest   = -80.0 // dBFS, inaudible in all but the quietest recording
 	humUnder    = 55.0  // dB under the programme: inaudible
 	humCrest    = 10.0  // dB from the rms of usual sound to its peaks in 100 ms
+	humPause    = 15.0  // dB under the programme: a window this soft is a pause, as is one with no more in it than the tone
+	humRecent   = 11    // windows: about as long as a part
+	humAll      = 3.0   // dB under the programme: the tone may be all there is
 	humBad      = 12.0  // dB under the programme: nothing can be done for such a recording by levelling it
 )
 
@@ -50,24 +57,27 @@ type hum struct {
 	filled  int       // samples of them that are there
 	work    []float64
 	lines   []complex128
-	parts   []humPart // the quietest so far
-	loudest int       // index of the loudest of them
-	total   int       // parts there have been
-	peaks   float64   // sum of the squared peaks of all windows
+	parts   []humPart          // the quietest so far
+	loudest int                // index of the loudest of them
+	total   int                // parts there have been
+	peaks   float64            // sum of the squared peaks of all windows
+	recent  [humRecent]float64 // peaks of the last windows
 	windows int
 }
 
 // humPart is a quiet part.
 type humPart struct {
 	power float64
+	pause float64   // the lowest peak of its windows, in all their bandwidth
 	lines []float32 // power spectrum
 }
 
-func newHum(f audio.Format) check {
+// newHum makes a check for sound that is brought down to a rate.
+func newHum(f audio.Format, rate float64) check {
 	if f.Rate < humRate*8/10 {
 		return nothing{}
 	}
-	h := &hum{rate: newDecimator(f).rate, fft: fourier.NewFFT(humLines), taper: hann(humLines)}
+	h := &hum{rate: rate, fft: fourier.NewFFT(humLines), taper: hann(humLines)}
 	h.sound, h.work = make([]float64, humLines), make([]float64, humLines)
 	h.lines = make([]complex128, humLines/2+1)
 	h.parts = make([]humPart, humParts)
@@ -81,6 +91,7 @@ func newHum(f audio.Format) check {
 func (h *hum) look(w window) {
 	peak := float64(slices.Max(w.peak))
 	h.peaks += peak * peak
+	h.recent[h.windows%humRecent] = peak
 	h.windows++
 	for _, v := range w.low {
 		h.sound[h.filled] = v
@@ -120,7 +131,7 @@ func (h *hum) part() {
 		return
 	}
 	h.fft.Coefficients(h.lines, h.work)
-	p.power = power
+	p.power, p.pause = power, slices.Min(h.recent[:min(h.windows, humRecent)])
 	for i := range p.lines {
 		re, im := real(h.lines[i]), imag(h.lines[i])
 		p.lines[i] = float32(re*re + im*im)
@@ -223,11 +234,19 @@ func (h *hum) faults(e extent) []Fault {
 	if power == 0 || level < humLowest || level < programme-humUnder {
 		return nil
 	}
-	f := Fault{Code: "hum", Severity: Note, Length: e.Seconds(e.frames), Words: fmt.Sprintf(
-		"mains hum at %.0f Hz and its multiples, %s dBFS, also in the pauses", mains, audio.Number(level, 0))}
-	if level >= programme-humBad {
+	slices.SortFunc(h.parts, func(a, b humPart) int { return cmp.Compare(a.pause, b.pause) })
+	pause := audio.ToDB(h.parts[len(h.parts)/2].pause)
+	sure := level < programme-humAll && pause >= level && pause-humCrest <= max(level, programme-humPause)
+	f := Fault{Code: "hum", Severity: Note, Length: e.Seconds(e.frames)}
+	tone := fmt.Sprintf("%.0f Hz and its multiples, %s dBFS", mains, audio.Number(level, 0))
+	switch {
+	case !sure:
+		f.Words = "a steady tone at " + tone + ": mains hum, or meant to be so"
+	case level < programme-humBad:
+		f.Words = "mains hum at " + tone + ", also in the pauses"
+	default:
 		f.Severity = Doubt
-		f.Words += ", hardly softer than the sound itself"
+		f.Words = "mains hum at " + tone + ", also in the pauses, hardly softer than the sound itself"
 	}
 	return []Fault{f}
 }

@@ -9,7 +9,7 @@ import (
 // nonFinite counts samples that are infinite or not numbers at all. Floating-point files carry them when
 // a broken effect or a damaged disk wrote them; a loudspeaker cannot play them.
 type nonFinite struct {
-	samples, frames, first int64
+	samples, frames, first, last int64
 }
 
 // mend counts the bad samples of w and puts silence in their place.
@@ -27,6 +27,7 @@ func (n *nonFinite) mend(w window) {
 			if n.samples == 0 || at < n.first {
 				n.first = at
 			}
+			n.last = max(n.last, at)
 			n.samples++
 			if at > last { // a frame bad in a second channel is not counted again
 				n.frames++
@@ -41,7 +42,7 @@ func (n *nonFinite) faults(e extent) []Fault {
 		return nil
 	}
 	at := e.Seconds(n.first)
-	words := fmt.Sprintf("%d samples are not numbers, first at %s; they were taken as silence", n.samples, audio.Clock(at))
+	words := fmt.Sprintf("%s samples are not numbers, first at %s; they were taken as silence", audio.Count(n.samples), audio.Clock(at))
 	if n.samples == 1 {
 		words = fmt.Sprintf("one sample, at %s, is not a number; it was taken as silence", audio.Clock(at))
 	}

@@ -7,16 +7,16 @@ import (
 	"evenshelf/engine/audio"
 )
 
-// An offset takes headroom, makes every cut click, and grows with the gain; K-weighting hides it from a
-// loudness meter. Below the first limit it does no harm. Common practice, no source.
+// An offset takes headroom, may make a cut click, and grows with the gain; K-weighting hides it from a loudness
+// meter. Below the first limit it does no harm. Common practice, no source.
 const (
 	offsetNote  = 0.005 // of full scale, −46 dBFS
 	offsetDoubt = 0.05  // −26 dBFS
 	offsetShare = 0.9   // of the seconds must lean the same way: deep notes lean both ways
 )
 
-// offset finds channels whose waveform does not swing about zero (DC offset): the mean of the whole
-// recording is off, and that of nearly every second by at least half as much to the same side.
+// offset finds channels whose waveform does not swing about zero (DC offset): the mean of all windows the channel
+// sounds in is off, and that of nearly every second of them by at least half as much to the same side.
 type offset struct {
 	rate     int64
 	channels []leaning
@@ -24,9 +24,20 @@ type offset struct {
 
 // leaning is the mean of one channel.
 type leaning struct {
-	total, second float64
-	seconds       []float32 // means
+	total         float64   // sum of all samples
+	whole, second heard     // of the recording, and of the second under way
+	seconds       []float32 // means of those that sound for half of their length or more
 }
+
+// heard is the sum of the samples of the windows in which a channel is not silent, and their number.
+type heard struct {
+	sum    float64
+	frames int64
+}
+
+func (h *heard) add(sum float64, frames int64) { *h = heard{h.sum + sum, h.frames + frames} }
+
+func (h heard) mean() float64 { return h.sum / float64(h.frames) }
 
 func newOffset(f audio.Format) *offset {
 	o := &offset{int64(f.Rate), make([]leaning, f.Layout.Channels)}
@@ -37,22 +48,30 @@ func newOffset(f audio.Format) *offset {
 }
 
 func (o *offset) look(w window) {
+	frames, level := int64(w.Frames()), audio.DB(silence).Linear()
 	for c, s := range w.sums {
 		l := &o.channels[c]
 		l.total += s
-		l.second += s
-		end := w.from + int64(w.Frames())
-		if end/o.rate > w.from/o.rate { // windows are tenths of a second, so seconds end with one or nearly
-			l.seconds = append(l.seconds, float32(l.second/float64(o.rate)))
-			l.second = 0
+		if float64(w.peak[c]) > level {
+			l.whole.add(s, frames)
+			l.second.add(s, frames)
+		}
+		if end := w.from + frames; end/o.rate > w.from/o.rate { // windows are tenths of a second, so seconds end with one or nearly
+			if l.second.frames >= max(1, o.rate/2) {
+				l.seconds = append(l.seconds, float32(l.second.mean()))
+			}
+			l.second = heard{}
 		}
 	}
 }
 
 func (o *offset) faults(e extent) (found []Fault) {
 	for c, l := range o.channels {
-		mean := l.total / float64(e.frames)
-		if e.frames == 0 || len(l.seconds) == 0 || math.Abs(mean) < offsetNote {
+		if len(l.seconds) == 0 {
+			continue
+		}
+		mean := l.whole.mean()
+		if math.Abs(mean) < offsetNote {
 			continue
 		}
 		same := 0
@@ -73,7 +92,7 @@ func (o *offset) faults(e extent) (found []Fault) {
 		}
 		found = append(found, Fault{
 			Code: "dc-offset", Severity: severity, Length: e.Seconds(e.frames),
-			Words: fmt.Sprintf("%s lies %.1f%% of full scale %s the middle (DC offset): cuts will click",
+			Words: fmt.Sprintf("%s lies %.1f %% of full scale %s the middle (DC offset): a cut in it may click",
 				channelName(e.Layout, c), 100*math.Abs(mean), side),
 		})
 	}

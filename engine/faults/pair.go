@@ -45,19 +45,26 @@ type pair struct {
 type correlation struct{ ll, rr, lr float64 }
 
 func newPair(f audio.Format) *pair {
-	p := &pair{left: -1, right: -1, rate: int64(f.Rate)}
-	for c := range f.Layout.Channels {
-		switch f.Layout.Position(c) {
+	p := &pair{rate: int64(f.Rate)}
+	p.left, p.right = leftRight(f.Layout)
+	return p
+}
+
+// leftRight returns the left and right channel, −1 for one there is not.
+func leftRight(l audio.Layout) (left, right int) {
+	if l.Channels == 2 {
+		return 0, 1
+	}
+	left, right = -1, -1
+	for c := range l.Channels {
+		switch l.Position(c) {
 		case audio.FrontLeft:
-			p.left = c
+			left = c
 		case audio.FrontRight:
-			p.right = c
+			right = c
 		}
 	}
-	if f.Layout.Channels == 2 {
-		p.left, p.right = 0, 1
-	}
-	return p
+	return left, right
 }
 
 // exists reports whether there are a left and a right channel.
@@ -138,11 +145,11 @@ func (p *pair) faults(e extent) (found []Fault) {
 	if p.whole.rr < p.whole.ll {
 		quiet, loud = p.right, p.left
 	}
-	if float64(e.peak[loud]) <= linear(silence) {
+	if float64(e.peak[loud]) <= audio.DB(silence).Linear() {
 		return nil
 	}
 	rho, ratio := p.whole.rho(), math.Abs(p.whole.ratio())
-	if ratio >= -lost && float64(e.peak[quiet]) <= linear(lostPeak) {
+	if ratio >= -lost && float64(e.peak[quiet]) <= audio.DB(lostPeak).Linear() {
 		return []Fault{{Code: "channel-missing", Severity: Doubt, Length: e.Seconds(e.frames), Words: fmt.Sprintf(
 			"%s is missing: only %s carries sound", channelName(e.Layout, quiet), channelName(e.Layout, loud))}}
 	}

@@ -228,7 +228,8 @@ func noise(rate int) recording {
 }
 
 // How surely each detector finds a fault that was put in, at several strengths. The limits lie a little under
-// what was measured.
+// what was measured. A known gap is not among them: lossy coding leaves no two tops alike, so that of ten pieces clipped
+// by 12 dB and then coded as MP3 at 128 kbit/s none was found.
 func TestDetectionRates(t *testing.T) {
 	music, speech := pieces(t)
 	both := slices.Concat(music, speech)
@@ -254,9 +255,9 @@ func TestDetectionRates(t *testing.T) {
 		{"clipped 12 dB: serious", "clipped", Serious, 1, both, func(r recording) recording { return recording{"", r.rate, driven(r.sound, 12, 0)} }},
 		{"5 s clipped 6 dB, then 9 dB down", "clipped", Note, 0.9, both, func(r recording) recording { return hot(r, 6) }},
 		{"5 s clipped 12 dB, then 9 dB down: serious", "clipped", Serious, 0.9, both, func(r recording) recording { return hot(r, 12) }},
-		// Lossy coding leaves no two tops alike: a known gap, shown here and held to nothing.
-		{"clipped 12 dB, then MP3", "clipped", Note, 0, both, func(r recording) recording {
-			return coded(t, recording{"", r.rate, driven(r.sound, 12, 0)})
+		{"clipped 24 dB: serious", "clipped", Serious, 1, both, func(r recording) recording { return recording{"", r.rate, driven(r.sound, 24, 0)} }},
+		{"clipped 24 dB at 8 kHz: serious", "clipped", Serious, 1, both, func(r recording) recording {
+			return recording{"", 8000, driven(through(t, r, 8000).sound, 24, 0)}
 		}},
 		{"offset of 1 %", "dc-offset", Note, 1, both, func(r recording) recording {
 			return with(r, func(_, _ int, v float64) float64 { return 0.5*v + 0.01 })
@@ -278,6 +279,10 @@ func TestDetectionRates(t *testing.T) {
 		{"from 8 kHz", "narrow-band", Note, 0.85, both, func(r recording) recording { return through(t, through(t, r, 8000), 44100) }},
 		{"from 11.025 kHz", "narrow-band", Note, 0.85, both, func(r recording) recording { return through(t, through(t, r, 11025), 44100) }},
 		{"from 16 kHz", "narrow-band", Note, 0.85, both, func(r recording) recording { return through(t, through(t, r, 16000), 44100) }},
+		{"from 8 kHz, one channel upside down", "narrow-band", Note, 0.85, music, func(r recording) recording {
+			low := through(t, through(t, r, 8000), 44100).sound
+			return with(recording{"", 44100, audio.Block{low[0], low[0]}}, func(c, _ int, v float64) float64 { return v * float64(1-2*c) })
+		}},
 		{"from 22.05 kHz", "narrow-band", Note, 0.9, music, func(r recording) recording { return through(t, r, 44100) }},
 		{"noise coded as MP3 up to 15.5 kHz", "narrow-band", Note, 1, []recording{noise(44100)}, func(r recording) recording {
 			return coded(t, r, "-cutoff", "15500")

@@ -25,7 +25,7 @@ type silences struct {
 }
 
 func (s *silences) look(w window) {
-	level := float32(linear(silence))
+	level := float32(audio.DB(silence).Linear())
 	for c, x := range w.Block {
 		if w.peak[c] <= level {
 			continue

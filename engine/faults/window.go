@@ -17,7 +17,8 @@ type window struct {
 	tops        audio.Block // top of each channel in each part of the window
 	bottoms     audio.Block // bottom likewise
 	sums        []float64   // of the samples of each channel
-	low         []float64   // the mean of all channels brought down to about 1 kHz
+	low         []float64   // the mixture of all channels brought down to about 1 kHz
+	mended      bool        // silence has been put in place of samples of wide that were not finite
 }
 
 // parts is how many parts a window has; they are as even as can be.
