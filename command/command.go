@@ -154,8 +154,8 @@ func (a *app) engine() (*level.Engine, error) {
 
 // workers is how many recordings are worked on at once. One recording takes a decoder, a meter and a search for
 // faults and speech, which wait for each other, so one a processor is what it takes to keep all of them busy, and more
-// gains little: with 4 FLAC and 4 MP3 files on two processors, one at a time took 1.5 times as long as two, and four
-// at a time 0.9 times, for twice the memory and twice the FFmpeg processes. The processor time was the same for all.
+// gains little: with 4 FLAC and 4 MP3 files on two processors, one at a time took 1.4 times as long as two, and four
+// at a time 0.97 times, for twice the FFmpeg processes. The processor time was the same for all.
 func (a *app) workers() int {
 	if a.Workers > 0 {
 		return a.Workers
