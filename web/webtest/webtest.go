@@ -75,18 +75,30 @@ func Do(t *testing.T, ctx context.Context, steps ...chromedp.Action[chromedp.Voi
 // Eval returns what a script evaluates to.
 func Eval[T any](t *testing.T, ctx context.Context, script string) T {
 	t.Helper()
-	v, err := chromedp.Run(ctx, chromedp.Evaluate[T](script, chromedp.EvalAwaitPromise))
+	v, err := eval[T](ctx, script)
 	if err != nil {
 		t.Fatalf("%v in %s", err, script)
 	}
 	return v
 }
 
-// Until waits until a condition in the page comes true, and fails if it has not by the limit.
+func eval[T any](ctx context.Context, script string) (T, error) {
+	return chromedp.Run(ctx, chromedp.Evaluate[T](script, chromedp.EvalAwaitPromise))
+}
+
+// Until waits until a condition in the page comes true, and fails if it has not by the limit. A page that is just
+// being left cannot be asked; the next one can.
 func Until(t *testing.T, ctx context.Context, limit time.Duration, condition string) {
 	t.Helper()
-	for end := time.Now().Add(limit); !Eval[bool](t, ctx, condition); {
-		if time.Now().After(end) {
+	end := time.Now().Add(limit)
+	for {
+		met, err := eval[bool](ctx, condition)
+		switch {
+		case met && err == nil:
+			return
+		case time.Now().After(end) && err != nil:
+			t.Fatalf("%v in %s", err, condition)
+		case time.Now().After(end):
 			t.Fatalf("never came true: %s\n%s", condition, Eval[string](t, ctx, "document.querySelector('main').innerText"))
 		}
 		time.Sleep(20 * time.Millisecond)
