@@ -174,6 +174,7 @@ func (h *headBuffer) text() string {
 		if before, rest, ok := strings.Cut(line, inputFD); ok && (before == "" || strings.HasPrefix(before, "subfile,")) {
 			line = strings.TrimPrefix(rest, ": ")
 		}
+		line, _, _ = strings.Cut(line, " at PTS ") // a count that means nothing to a person
 		if line == "" || seen[line] || strings.HasPrefix(line, "Last message repeated") {
 			continue
 		}
