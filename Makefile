@@ -35,11 +35,7 @@ ratios: build ## print what measuring costs, as ratios to FFmpeg's decoding and 
 	scripts/ratios
 
 fuzz: ## run each fuzz target for a minute
-	@for pkg in $$($(GO) list ./...); do \
-	  for target in $$($(GO) test -list '^Fuzz' $$pkg | grep '^Fuzz'); do \
-	    $(GO) test -run '^$$' -fuzz "^$$target$$" -fuzztime 60s -fuzzminimizetime 10x $$pkg || exit 1; \
-	  done; \
-	done
+	@GO=$(GO) scripts/fuzz
 
 clean: ## remove what was built
 	rm -rf bin
