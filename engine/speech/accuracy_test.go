@@ -10,7 +10,7 @@ import (
 // window of three seconds around each alone, and by the course. Wanted of every single recording is what the project
 // wants at least: speech 0.95 and music 0.94 right, speech found 10 dB over music 0.85.
 func TestAccuracyOnRecordings(t *testing.T) {
-	r := real(t)
+	r := heldOut(t)
 	talk := all(r.speech, spoken...)
 	pieces := []string{"frontiers", "machine wars", "time to strike"}
 	check := func(what string, speech bool, x []float32, leastWindows, leastCourse float64) {

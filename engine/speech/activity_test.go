@@ -40,7 +40,7 @@ func level(x []float32) float64 {
 }
 
 func TestPausesInSpeech(t *testing.T) {
-	talk := all(real(t).speech, spoken...)
+	talk := all(heldOut(t).speech, spoken...)
 	for _, test := range []struct {
 		name        string
 		noise       float64 // dBFS; the speech is at −23
@@ -84,7 +84,7 @@ func activeShare(active []bool) float64 {
 
 // Music that does not stop has no pauses, however soft it is. Heads and tails, which have some, are left out.
 func TestMusicIsActive(t *testing.T) {
-	for name, x := range real(t).music {
+	for name, x := range heldOut(t).music {
 		x = x[10*testRate : len(x)-15*testRate]
 		for _, test := range []struct{ gain, least float64 }{{0, 0.99}, {-30, 0.98}} { // some breaks are at −40 dBFS
 			share := activeShare(course(gain(x, test.gain)).Active)
@@ -98,7 +98,7 @@ func TestMusicIsActive(t *testing.T) {
 
 // A soft passage is not a pause: music 25 dB lower for 20 s.
 func TestSoftPassageIsActive(t *testing.T) {
-	for name, music := range real(t).music {
+	for name, music := range heldOut(t).music {
 		x := append([]float32(nil), music[60*testRate:120*testRate]...)
 		copy(x[20*testRate:], gain(x[20*testRate:40*testRate], -25))
 		share := activeShare(course(x).Active)
@@ -111,7 +111,7 @@ func TestSoftPassageIsActive(t *testing.T) {
 
 // A fade by 3 dB a second is programme until it is lost below −70 dBFS; from −20 dBFS that takes 17 s.
 func TestFade(t *testing.T) {
-	x := scaled(real(t).music["frontiers"][60*testRate:120*testRate], -20)
+	x := scaled(heldOut(t).music["frontiers"][60*testRate:120*testRate], -20)
 	for i := len(x) / 2; i < len(x); i++ {
 		x[i] *= float32(math.Pow(10, -3*float64(i-len(x)/2)/testRate/20))
 	}

@@ -31,7 +31,7 @@ func turns(c Course) (all []turn) {
 // Where speech and music take turns without a pause, with a pause of half a second, or with the voice coming in over
 // the music 10 dB below it, the turns are found where they are.
 func TestTurnsBetweenSpeechAndMusic(t *testing.T) {
-	r := real(t)
+	r := heldOut(t)
 	talk := all(r.speech, spoken...)
 	for _, test := range []struct {
 		name       string

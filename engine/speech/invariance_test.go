@@ -14,7 +14,7 @@ import (
 
 // medley is speech, music, a pause, speech over music, and a pause with noise: half a minute at testRate.
 func medley(t testing.TB) []float32 {
-	r := real(t)
+	r := heldOut(t)
 	talk := scaled(r.speech["reading"], -23)[:10*testRate]
 	music := scaled(r.music["machine wars"][60*testRate:80*testRate], -23)
 	return slices.Concat(talk, music[:10*testRate], make([]float32, 2*testRate),
@@ -121,7 +121,7 @@ func TestChannelsAgree(t *testing.T) {
 	x := medley(t)
 	none := make([]float32, len(x))
 	want := course(x)
-	music := gain(real(t).music["frontiers"][:len(x)], -20)
+	music := gain(heldOut(t).music["frontiers"][:len(x)], -20)
 	for _, test := range []struct {
 		name   string
 		layout audio.Layout

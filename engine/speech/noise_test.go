@@ -82,7 +82,7 @@ func TestSilenceIsAPause(t *testing.T) {
 
 // Short recordings have as many steps as they fill or begin, and those of a second or more are judged.
 func TestShortRecordings(t *testing.T) {
-	talk, music := real(t).speech["reading"], real(t).music["frontiers"][100*testRate:]
+	talk, music := heldOut(t).speech["reading"], heldOut(t).music["frontiers"][100*testRate:]
 	for _, frames := range []int{0, 1, 2205, 2206, testRate / 2, testRate, 3 * testRate / 2} {
 		for _, of := range [][]float32{talk[testRate:], music} {
 			c := course(of[:frames])

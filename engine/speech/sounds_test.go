@@ -23,8 +23,8 @@ type recordings struct {
 	music  map[string][]float32
 }
 
-// real returns them at testRate in mono. Tests must not change them.
-func real(t testing.TB) recordings {
+// heldOut returns them at testRate in mono. Tests must not change them.
+func heldOut(t testing.TB) recordings {
 	t.Helper()
 	r, err := decoded()
 	if err != nil {
