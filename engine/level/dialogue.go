@@ -6,7 +6,6 @@ import (
 )
 
 const (
-	isSpeech    = 0.5 // likelihood from which a step counts as speech
 	speechSteps = 3   // of the four of a 400 ms block must be speech
 	leastSpeech = 1.0 // seconds: less is a word between songs, and no anchor
 	// A few seconds in minutes of music are more likely a mistake than speech.
@@ -20,7 +19,7 @@ func dialogue(t Timeline, duration float64) Dialogue {
 	active := 0
 	for i, likely := range t.Speech {
 		spoken[i+1] = spoken[i]
-		if likely >= isSpeech {
+		if likely >= speech.Likely {
 			spoken[i+1]++
 		}
 		if t.Active[i] {

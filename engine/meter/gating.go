@@ -11,7 +11,7 @@ import (
 // percentiles are sums over that list. Steps and the finer hops end at the nearest whole sample, so
 // that their lengths differ by one sample where the rate is not a multiple of 100 Hz.
 const (
-	stepsPerSecond = 10
+	stepsPerSecond = audio.StepsPerSecond
 	hopsPerStep    = 10
 	momentarySteps = 4  // 400 ms
 	shortTermSteps = 30 // 3 s
@@ -26,8 +26,7 @@ const (
 
 // hopsEnd returns the frame at which a number of hops ends at a rate in Hz.
 func hopsEnd(hops int64, rate int) int64 {
-	const perSecond = hopsPerStep * stepsPerSecond
-	return (2*hops*int64(rate) + perSecond) / (2 * perSecond)
+	return audio.Boundary(hops, hopsPerStep*stepsPerSecond, int64(rate))
 }
 
 // stepsEnd returns the frame at which a number of steps ends at a rate in Hz.

@@ -1,6 +1,10 @@
 package speech
 
-import "math"
+import (
+	"math"
+
+	"evenshelf/engine/audio"
+)
 
 // leveler takes the level of every step of the downmix: its mean power without DC, in dB re full scale.
 type leveler struct {
@@ -19,10 +23,8 @@ func newLeveler(rate int) *leveler {
 	return l
 }
 
-// boundary returns the frame at which n steps end: the nearest whole one, as on the meter's grid.
-func (l *leveler) boundary(n int) int64 {
-	return (2*int64(n)*l.rate + StepsPerSecond) / (2 * StepsPerSecond)
-}
+// boundary returns the frame at which n steps end.
+func (l *leveler) boundary(n int) int64 { return audio.Boundary(int64(n), StepsPerSecond, l.rate) }
 
 func (l *leveler) add(sound []float64) {
 	for len(sound) > 0 {

@@ -23,8 +23,11 @@ package speech
 
 import "evenshelf/engine/audio"
 
-// StepsPerSecond is the grid of a Course; it is the grid of the meter's timeline.
-const StepsPerSecond = 10
+// StepsPerSecond is the grid of a Course.
+const StepsPerSecond = audio.StepsPerSecond
+
+// Likely is the likelihood from which a step is taken for speech.
+const Likely = 0.5
 
 // Course is a recording's course on a 100 ms grid: value i describes the tenth of a second that ends at
 // (i+1)/StepsPerSecond. Both slices have the same length; a last step the programme does not fill counts.

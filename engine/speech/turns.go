@@ -17,11 +17,11 @@ func placeTurns(p []float32, frames []frame) {
 	var w turnWork
 	last := 0 // step of the turn before
 	for i := 1; i < len(p); i++ {
-		if (p[i] >= 0.5) == (p[i-1] >= 0.5) {
+		if (p[i] >= Likely) == (p[i-1] >= Likely) {
 			continue
 		}
 		next := i + 1
-		for next < len(p) && (p[next] >= 0.5) == (p[i] >= 0.5) {
+		for next < len(p) && (p[next] >= Likely) == (p[i] >= Likely) {
 			next++
 		}
 		from := max(last*framesPerStep, i*framesPerStep-turnReach)
