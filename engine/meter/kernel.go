@@ -3,6 +3,8 @@ package meter
 import (
 	"math"
 	"sync"
+
+	"evenshelf/engine/audio"
 )
 
 // True peak is the largest magnitude the sound takes between its samples. From sample n to n+1 it is
@@ -64,8 +66,8 @@ func windowedSinc(t float64) (h [taps]float64) {
 	var h0, h1, w0, w1, w2 float64 // moments about t
 	for i := range h {
 		x := float64(i-(reach-1)) - t
-		window[i] = bessel0(kaiser * math.Sqrt(1-x*x/(reach*reach)))
-		h[i] = window[i] / bessel0(kaiser) * math.Sin(math.Pi*x) / (math.Pi * x)
+		window[i] = audio.Bessel0(kaiser * math.Sqrt(1-x*x/(reach*reach)))
+		h[i] = window[i] / audio.Bessel0(kaiser) * math.Sin(math.Pi*x) / (math.Pi * x)
 		h0, h1 = h0+h[i], h1+h[i]*x
 		w0, w1, w2 = w0+window[i], w1+window[i]*x, w2+window[i]*x*x
 	}
@@ -77,16 +79,6 @@ func windowedSinc(t float64) (h [taps]float64) {
 		h[i] += (a + b*x) * window[i]
 	}
 	return h
-}
-
-// bessel0 is the modified Bessel function of the first kind and order 0, by its power series.
-func bessel0(x float64) float64 {
-	sum, term := 1.0, 1.0
-	for n := 1.0; term > sum*1e-17; n++ {
-		term *= x * x / (4 * n * n)
-		sum += term
-	}
-	return sum
 }
 
 // bend returns the factor b with |y(p) − the straight line from y(left) to y(right)| ≤ b · max|second

@@ -103,11 +103,11 @@ func naiveMeasure(b audio.Block, rate int) naiveReading {
 //go:norace
 func naiveAt(x []float32, position float64) float64 {
 	const half = 200
-	sum, norm := 0.0, 1/bessel0(9)
+	sum, norm := 0.0, 1/audio.Bessel0(9)
 	middle := int(math.Floor(position))
 	for i := max(0, middle-half+1); i <= min(len(x)-1, middle+half); i++ {
 		d := position - float64(i)
-		window := bessel0(9*math.Sqrt(1-d*d/(half*half))) * norm
+		window := audio.Bessel0(9*math.Sqrt(1-d*d/(half*half))) * norm
 		if d != 0 {
 			window *= math.Sin(math.Pi*d) / (math.Pi * d)
 		}

@@ -91,7 +91,7 @@ func lowPass(half int, cutoff, beta float64) []float64 {
 	h := make([]float64, 2*half+1)
 	for i := range h {
 		d := float64(i - half)
-		h[i] = 2 * cutoff * bessel0(beta*math.Sqrt(1-d*d/float64(half*half))) / bessel0(beta)
+		h[i] = 2 * cutoff * audio.Bessel0(beta*math.Sqrt(1-d*d/float64(half*half))) / audio.Bessel0(beta)
 		if d != 0 {
 			h[i] *= math.Sin(2*math.Pi*cutoff*d) / (2 * math.Pi * cutoff * d)
 		}

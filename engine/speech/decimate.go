@@ -1,6 +1,10 @@
 package speech
 
-import "math"
+import (
+	"math"
+
+	"evenshelf/engine/audio"
+)
 
 const (
 	lowestRate = 8000 // Hz; the rate of analysis is at least this and less than twice this
@@ -29,23 +33,13 @@ func newHalfband(rate float64) *halfband {
 	sum := 0.0
 	for i := range taps {
 		x := reach - 1 - 2*float64(i) // distance from the centre, odd
-		taps[i] = math.Sin(math.Pi*x/2) / (math.Pi * x) * bessel(beta*math.Sqrt(1-x*x/reach/reach))
+		taps[i] = math.Sin(math.Pi*x/2) / (math.Pi * x) * audio.Bessel0(beta*math.Sqrt(1-x*x/reach/reach))
 		sum += taps[i]
 	}
 	for i := range taps {
 		taps[i] *= 0.25 / sum // with the centre's half: a gain of one
 	}
 	return &halfband{taps: taps}
-}
-
-// bessel is the modified Bessel function of the first kind and order zero, by its power series.
-func bessel(x float64) float64 {
-	sum, term := 1.0, 1.0
-	for k := 1.0; term > 1e-12*sum; k++ {
-		term *= x / 2 / k * x / 2 / k
-		sum += term
-	}
-	return sum
 }
 
 // prepare makes room for chunks of n samples.
