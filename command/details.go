@@ -39,11 +39,11 @@ func (d detail) String() string {
 // what is not defined.
 func details(a *level.Analysis) string {
 	var b strings.Builder
-	channels, counted := a.Layout, ""
+	counted := ""
 	if a.Channels == 1 {
 		counted = "  its channel is counted " + a.MonoRule.Words() + "\n"
 	}
-	fmt.Fprintf(&b, "  %s, %d Hz, %s, %s, read by %s, engine %s\n%s", printable(a.FormatName), a.SampleRate, channels,
+	fmt.Fprintf(&b, "  %s, %d Hz, %s, %s, read by %s, engine %s\n%s", printable(a.FormatName), a.SampleRate, a.Layout,
 		audio.Clock(a.Duration), printable(a.Decoder), a.Engine, counted)
 	group := func(title string, lines ...detail) {
 		fmt.Fprintf(&b, "\n  %s\n", title)
@@ -92,7 +92,7 @@ func speechDetails(a *level.Analysis) []detail {
 	if a.SpeechTime == 0 {
 		return append(lines, detail{name: "no speech found"})
 	}
-	return append(lines, lasting("of which speech", a.SpeechTime, "  ("+share(a)+")"),
+	return append(lines, lasting("of which speech", a.SpeechTime, "  ("+a.Share()+" %)"),
 		detailed("speech loudness", a.SpeechLoudness, 1, "LUFS"))
 }
 

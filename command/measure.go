@@ -109,16 +109,7 @@ func spoken(a *level.Analysis) string {
 	case !audio.Defined(a.SpeechLoudness) && a.SpeechTime < a.ActiveTime/2: // more likely a mistake than speech
 		return ""
 	case !audio.Defined(a.SpeechLoudness):
-		return fmt.Sprintf("  (speech: %s)", share(a))
+		return fmt.Sprintf("  (speech: %s %%)", a.Share())
 	}
-	return fmt.Sprintf("  (speech: %s, %s LUFS)", share(a), figure(float64(a.SpeechLoudness), 0))
-}
-
-// share says how much of what is heard is speech. A little is said to be little, not none.
-func share(a *level.Analysis) string {
-	s := 100 * a.SpeechTime / a.ActiveTime
-	if s < 0.5 {
-		return "under 1 %"
-	}
-	return fmt.Sprintf("%.0f %%", s)
+	return fmt.Sprintf("  (speech: %s %%, %s LUFS)", a.Share(), figure(float64(a.SpeechLoudness), 0))
 }

@@ -79,19 +79,10 @@ func gaugesOf(a *level.Analysis) []gauges {
 		}},
 		{Title: "Speech", Rows: []gauge{
 			row("Programme heard", lasting(a.ActiveTime), "How long something is heard; the rest is pauses."),
-			row("Of which speech", share(a), "The part of what is heard that is speech."),
+			row("Of which speech", figure{a.Share() != "", a.Share(), "%"}, "The part of what is heard that is speech."),
 			row("Speech loudness", newFigure(a.SpeechLoudness, "LUFS"), "Loudness of the speech alone; it takes a second of it to tell."),
 		}},
 	}
-}
-
-// share is how much of what is heard is speech. A little is said to be little, not none.
-func share(a *level.Analysis) figure {
-	percent := 100 * float64(a.SpeechTime/a.ActiveTime)
-	if percent > 0 && percent < 0.5 {
-		return figure{true, "under 1", "%"}
-	}
-	return decimals(percent, 0, "%")
 }
 
 func lasting(s audio.Seconds) figure {
@@ -110,8 +101,7 @@ func (p recordingPage) SpeechSays() string {
 	case r.SpeechTime == 0:
 		return "No speech was found."
 	}
-	s := share(&r.Analysis)
-	return fmt.Sprintf("Speech in %s %s of what is heard.", s.Text, s.Unit)
+	return fmt.Sprintf("Speech in %s %% of what is heard.", r.Share())
 }
 
 // OldSays tells why figures are missing from readings of an engine that knew fewer; "" if none are.

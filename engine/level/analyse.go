@@ -44,9 +44,11 @@ func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error
 	if err != nil {
 		return nil, err
 	}
+	var fault *faults.Detector
+	var talk *speech.Detector
 	var others []func(audio.Block)
-	fault, talk := faults.New(src.Format()), speech.New(src.Format())
 	if !o.LoudnessOnly {
+		fault, talk = faults.New(src.Format()), speech.New(src.Format())
 		others = append(others, func(b audio.Block) { fault.Write(b); talk.Write(b) })
 	}
 	frames, err := audio.Spread(src, m.Write, others...)

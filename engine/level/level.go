@@ -39,6 +39,19 @@ type Dialogue struct {
 	SpeechLoudness audio.LUFS    `json:"speech_lufs"` // of the 400 ms blocks of speech; undefined without any
 }
 
+// Share is how much of what is heard is speech, in whole percents: "84"; a little is said to be little, "under 1",
+// not none. It is "" if that is not known.
+func (d Dialogue) Share() string {
+	switch percent := 100 * float64(d.SpeechTime/d.ActiveTime); {
+	case !audio.Defined(audio.Ratio(percent)):
+		return ""
+	case percent > 0 && percent < 0.5:
+		return "under 1"
+	default:
+		return audio.Number(percent, 0)
+	}
+}
+
 // Unmeasured returns an analysis in which no figure is known. Readings kept from an earlier version are
 // read into one, so that what they do not have stays undefined.
 func Unmeasured() Analysis {
