@@ -41,11 +41,11 @@ func describe(p profile.Profile) string {
 	s += fmt.Sprintf("  brings each recording to   %s LUFS integrated, within %.1f LU\n", figure(float64(p.Target), 0), p.Tolerance)
 	s += fmt.Sprintf("  a single channel counts    %s\n", p.Mono.Words())
 	s += fmt.Sprintf("  true peak at the most      %s dBTP\n", figure(float64(p.Ceiling), 0))
-	if p.Limiting == 0 {
+	if p.Limiter.Most == 0 {
 		s += "  peaks                      not touched: the gain stops where they meet the ceiling\n"
 	} else {
-		s += fmt.Sprintf("  peaks                      held by up to %.0f dB; a recording that needs more is held for you\n", p.Limiting)
+		s += fmt.Sprintf("  peaks                      held by up to %.0f dB; a recording that needs more is held for you\n", p.Limiter.Most)
 	}
-	s += fmt.Sprintf("  lift at the most           %.0f dB; past it the copy is held, since its noise is lifted too\n", p.Lift)
+	s += fmt.Sprintf("  lift at the most           %.0f dB; past it the copy is held, since its noise is lifted too\n", p.Harm.Lift)
 	return s + "\nLevelling does not replace a transmitter's own protection; the licence and local rules stand.\n"
 }

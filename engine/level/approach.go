@@ -15,7 +15,7 @@ const closeEnough = 0.02
 // a meter: each try costs a decoding, but no encoding. The secant's slope is bounded, since the loudness of
 // limited sound rises by less than its gain, but never falls.
 func (e *Engine) approach(ctx context.Context, source string, p profile.Profile, plan Plan, before *Analysis) (Plan, error) {
-	most := headroom(p, before) + p.Limiting
+	most := headroom(p, before) + p.Limiter.Most
 	slope, lastGain, last := 0.9, plan.Gain, audio.LUFS(audio.Undefined)
 	for range mostRenders {
 		now, err := e.predict(ctx, source, plan, p.Mono)

@@ -62,7 +62,7 @@ func (e *Engine) Level(ctx context.Context, source string, p profile.Profile, sc
 }
 
 func failed(before *Analysis, reason string) Outcome {
-	return Outcome{Before: before, Verdict: Verdict{Failed, reason}}
+	return Outcome{Before: before, Verdict: Verdict{State: Failed, Reason: reason}}
 }
 
 // Reason is an error about a source in words that stand beside its name and need not repeat it. They are shown

@@ -20,7 +20,7 @@ func Judge(p profile.Profile, before, after *Analysis, plan Plan) Verdict {
 			doubt("%s", f.Words)
 		}
 	}
-	if plan.Gain > p.Lift {
+	if plan.Gain > p.Harm.Lift {
 		doubt("it had to be lifted by %.1f dB, so its noise is louder too", plan.Gain)
 	}
 	if drift := abs(after.Duration - before.Duration); drift > 0.05 {
@@ -31,19 +31,19 @@ func Judge(p profile.Profile, before, after *Analysis, plan Plan) Verdict {
 	}
 	short := p.Target.Sub(after.Integrated)
 	// Without dynamics the peaks decide how far the gain goes; that is what such a profile asks for.
-	asFarAsPeaksAllow := p.Limiting == 0 && short > 0 && after.TruePeak > p.Ceiling-0.2
+	asFarAsPeaksAllow := p.Limiter.Most == 0 && short > 0 && after.TruePeak > p.Ceiling-0.2
 	if !(abs(short) <= p.Tolerance) && !asFarAsPeaksAllow {
 		doubt("%s LUFS could not be reached within the limiting allowed: it came out at %s LUFS",
 			audio.Number(float64(p.Target), 1), audio.Number(float64(after.Integrated), 1))
 	}
 	switch {
 	case len(doubts) > 0:
-		return Verdict{Held, strings.Join(doubts, "; ")}
+		return Verdict{State: Held, Reason: strings.Join(doubts, "; ")}
 	case asFarAsPeaksAllow && abs(short) > p.Tolerance:
-		return Verdict{Done, fmt.Sprintf("%.1f LU short of the target: the peaks allow no more without dynamics", short)}
+		return Verdict{State: Done, Reason: fmt.Sprintf("%.1f LU short of the target: the peaks allow no more without dynamics", short)}
 	case plan.Untouched:
-		return Verdict{Done, plan.Reason}
+		return Verdict{State: Done, Reason: plan.Reason}
 	default:
-		return Verdict{Done, ""}
+		return Verdict{State: Done, Reason: ""}
 	}
 }

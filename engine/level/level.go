@@ -3,14 +3,17 @@ package level
 
 import (
 	"evenshelf/engine/audio"
+	"evenshelf/engine/dynamics"
 	"evenshelf/engine/faults"
 	"evenshelf/engine/media"
 	"evenshelf/engine/meter"
+	"evenshelf/engine/profile"
+	"evenshelf/engine/ride"
 	"evenshelf/engine/speech"
 )
 
 // Version of the engine; it changes whenever a reading or a rendering could come out differently.
-const Version = "2"
+const Version = "3"
 
 // Options say how a recording is measured. The zero value measures everything, as the standards have it.
 type Options struct {
@@ -70,11 +73,45 @@ type Timeline struct {
 
 // Plan is what will be done to a recording: a value that can be shown, stored and rendered again.
 type Plan struct {
-	Gain      audio.DB   `json:"gain_db"`
-	Ceiling   audio.DBTP `json:"ceiling_dbtp"` // used while rendering; lossy targets may need it lower than the profile's
-	Limit     bool       `json:"limit"`        // whether the ceiling has anything to do
-	Untouched bool       `json:"untouched"`    // already within the profile: the file is copied byte for byte
-	Reason    string     `json:"reason"`       // in words
+	Untouched bool   `json:"untouched"` // already within the profile: the file is copied byte for byte
+	Reason    string `json:"reason"`    // in words
+	// Anchor is what is brought to the target: the profile's, or the programme where nobody speaks.
+	Anchor   profile.Anchor `json:"anchor"`
+	Anchored audio.LUFS     `json:"anchor_lufs"` // its loudness in the source
+
+	Ride       *Ride                 `json:"ride"`         // nil: none
+	Compressor *dynamics.Compression `json:"compressor"`   // nil: none; works on the ridden sound
+	Gain       audio.DB              `json:"gain_db"`      // steady, after both
+	Limit      bool                  `json:"limit"`        // whether the ceiling has anything to do
+	Ceiling    audio.DBTP            `json:"ceiling_dbtp"` // used while rendering; lossy targets may need it lower than the profile's
+	Limiter    profile.Limiter       `json:"limiter"`
+	Delivered  profile.Delivered     `json:"delivered"`
+}
+
+// Ride is the part of a plan that moves.
+type Ride struct {
+	Speed profile.Speed `json:"speed"`
+	Kept  audio.Ratio   `json:"kept"`     // the share of differences that stays
+	Range audio.LU      `json:"range_lu"` // the loudness range foreseen
+	Least audio.DB      `json:"least_db"` // of the gain while something is heard
+	Most  audio.DB      `json:"most_db"`
+	Gain  ride.Curve    `json:"curve"`
+}
+
+// Treatment is what a rendering did to the sound.
+type Treatment struct {
+	// Shares of the time in which something is heard with more than 1, 3 and 6 dB of limiting.
+	Limited1 audio.Ratio `json:"limited_1db"`
+	Limited3 audio.Ratio `json:"limited_3db"`
+	Limited6 audio.Ratio `json:"limited_6db"`
+	// Deepest is the most that was taken off a peak, and DeepestAt where.
+	Deepest   audio.DB      `json:"deepest_db"`
+	DeepestAt audio.Seconds `json:"deepest_at_s"`
+	// FloorLift is how far a pause was lifted over its quieter neighbour at the most, and FloorAt where.
+	FloorLift audio.DB      `json:"floor_lift_db"`
+	FloorAt   audio.Seconds `json:"floor_at_s"`
+	// Order is the rank correlation of the loudness of 3 s blocks before and after; undefined under a minute.
+	Order audio.Ratio `json:"order"`
 }
 
 // State is how a recording's turn ended.
@@ -89,8 +126,16 @@ const (
 
 // Verdict judges a delivered file against its profile.
 type Verdict struct {
-	State  State  `json:"state"`
-	Reason string `json:"reason"` // plain words; empty when all is simply well
+	State  State   `json:"state"`
+	Reason string  `json:"reason"` // plain words; empty when all is simply well
+	Doubts []Doubt `json:"doubts"` // why it is held, one by one; nil if it is not
+}
+
+// Doubt is one reason to hold a copy.
+type Doubt struct {
+	Code  string         `json:"code"`  // stable, e.g. "limiting"
+	Words string         `json:"words"` // one sentence
+	At    *audio.Seconds `json:"at_s"`  // the moment to listen to; nil if it is the whole
 }
 
 // Outcome is the whole story of one recording's levelling.
@@ -100,6 +145,9 @@ type Outcome struct {
 	Plan    *Plan     `json:"plan"`
 	Verdict Verdict   `json:"verdict"`
 	Renders int       `json:"renders"` // how often the sound was rendered
+	// Foreseen is the reading that the plan's rendering has before it is encoded; nil if nothing was rendered.
+	Foreseen  *meter.Reading `json:"foreseen"`
+	Treatment *Treatment     `json:"treatment"` // nil if nothing was rendered
 
 	// Extension the delivered file has to carry, with its dot; empty if nothing was delivered.
 	Extension string `json:"-"`

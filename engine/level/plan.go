@@ -35,7 +35,7 @@ func MakePlan(p profile.Profile, a *Analysis) (Plan, error) {
 	}
 	headroom := headroom(p, a)
 	wanted := audio.DB(p.Target - a.Integrated)
-	plan := Plan{Gain: min(wanted, headroom+p.Limiting), Ceiling: p.Ceiling}
+	plan := Plan{Gain: min(wanted, headroom+p.Limiter.Most), Ceiling: p.Ceiling}
 	switch {
 	case headroom >= -peakTolerance && audio.LU(abs(wanted)) <= p.Tolerance:
 		plan = Plan{Ceiling: p.Ceiling, Untouched: true, Reason: "already within the profile"}
@@ -59,7 +59,7 @@ func (plan Plan) words(p profile.Profile, headroom audio.DB) string {
 	switch {
 	case plan.Limit:
 		s += fmt.Sprintf(", peaks held %.1f dB lower to stay under %s dBTP", plan.Gain-headroom, audio.Number(float64(p.Ceiling), 1))
-	case p.Limiting == 0 && plan.Gain == headroom:
+	case p.Limiter.Most == 0 && plan.Gain == headroom:
 		s += ", as far as the peaks allow"
 	}
 	return s
@@ -82,7 +82,7 @@ func (plan Plan) again(p profile.Profile, before, after *Analysis) (next Plan, o
 		next.Ceiling = plan.Ceiling - audio.DBTP(over) - 0.02
 	}
 	room := audio.DB(next.Ceiling - before.TruePeak)
-	next.Gain = min(plan.Gain+audio.DB(p.Target-after.Integrated), room+p.Limiting)
+	next.Gain = min(plan.Gain+audio.DB(p.Target-after.Integrated), room+p.Limiter.Most)
 	next.Limit = next.Gain > room
 	next.Reason = next.words(p, headroom(p, before))
 	return next, abs(next.Gain-plan.Gain) > anotherRender || next.Ceiling != plan.Ceiling

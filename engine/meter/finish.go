@@ -107,12 +107,14 @@ func (m *Meter) timeline() Timeline {
 	n := m.steps()
 	t := Timeline{
 		Step:      1.0 / stepsPerSecond,
+		Level:     make([]float32, n),
 		Momentary: make([]float32, n),
 		ShortTerm: make([]float32, n),
 		Peak:      make([]float32, n),
 	}
 	c := course{m.format.Rate, m.energies}
 	for i := range n {
+		t.Level[i] = float32(loudness(c.mean(i, 1)))
 		t.Momentary[i] = float32(loudness(c.mean(i, momentarySteps)))
 		t.ShortTerm[i] = float32(loudness(c.mean(i, shortTermSteps)))
 		t.Peak[i] = float32(audio.ToDB(m.peaks[i].sample))

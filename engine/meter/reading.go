@@ -55,6 +55,7 @@ func Unmeasured() Reading {
 // not fill ends in silence.
 type Timeline struct {
 	Step      float64   // seconds, 0.1
+	Level     []float32 // LUFS, the 100 ms alone
 	Momentary []float32 // LUFS, 400 ms window (shorter at the start)
 	ShortTerm []float32 // LUFS, 3 s window (shorter at the start)
 	Peak      []float32 // dBFS, largest sample of the 100 ms

@@ -23,11 +23,11 @@ func TestBuiltinProfilesAreValid(t *testing.T) {
 }
 
 func TestValidateNamesEveryWrongField(t *testing.T) {
-	err := Profile{Name: "No Good", Target: 3, Tolerance: 0, Ceiling: 1, Limiting: -1, Lift: 99}.Validate()
+	err := Profile{Name: "No Good", Target: 3, Tolerance: 0, Ceiling: 1, Limiter: Limiter{Most: -1}, Harm: Harm{Lift: 99}}.Validate()
 	if err == nil {
 		t.Fatal("nothing was found wrong")
 	}
-	for _, field := range []string{"name", "target_lufs", "tolerance_lu", "ceiling_dbtp", "mono", "limiting_db", "lift_db"} {
+	for _, field := range []string{"name", "target_lufs", "tolerance_lu", "ceiling_dbtp", "mono", "limiter.most_db", "harm.lift_db"} {
 		if !strings.Contains(err.Error(), field+":") {
 			t.Errorf("no complaint about %s in:\n%v", field, err)
 		}
@@ -42,8 +42,8 @@ func TestVersionChangesWithEveryField(t *testing.T) {
 		"target":    func(p *Profile) { p.Target-- },
 		"tolerance": func(p *Profile) { p.Tolerance /= 2 },
 		"ceiling":   func(p *Profile) { p.Ceiling-- },
-		"limiting":  func(p *Profile) { p.Limiting++ },
-		"lift":      func(p *Profile) { p.Lift++ },
+		"limiting":  func(p *Profile) { p.Limiter.Most++ },
+		"lift":      func(p *Profile) { p.Harm.Lift++ },
 		"mono":      func(p *Profile) { p.Mono = audio.TwoLoudspeakers },
 	} {
 		p := base
