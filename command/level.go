@@ -134,7 +134,7 @@ func (c *levelCmd) level(ctx context.Context, e *level.Engine, p profile.Profile
 		return r
 	}
 	key := fmt.Sprintf("%d", os.Getpid())
-	o, output, err := delivery.Deliver(ctx, e, in.path, c.Out, in.rel, p, key, delivery.Options{Overwrite: c.Overwrite})
+	o, output, err := delivery.Deliver(ctx, e, in.path, c.Out, in.rel, level.Task{Profile: p}, key, delivery.Options{Overwrite: c.Overwrite})
 	if err != nil {
 		r.Reason = err.Error()
 		return r

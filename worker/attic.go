@@ -42,7 +42,7 @@ func (s *Service) replace(ctx context.Context, w store.Work, onShelf, key string
 		return level.Outcome{}, "", err
 	}
 	at := delivery.Place{Root: w.Shelf.Root, Rel: w.Recording.Path, Attic: w.Shelf.Attic(), Copies: w.Shelf.Copies, Source: source}
-	return delivery.Replace(ctx, s.engine, at, w.Profile, key, func(ctx context.Context, o delivery.Original) error {
+	return delivery.Replace(ctx, s.engine, at, level.Task{Profile: w.Profile}, key, func(ctx context.Context, o delivery.Original) error {
 		return s.store.KeepOriginal(ctx, store.Original{RecordingID: w.Recording.ID, JobID: w.Job.ID,
 			SHA256: o.SHA256, Stored: o.Stored, Levelled: o.Levelled, Size: o.Size})
 	})
@@ -54,7 +54,7 @@ func (s *Service) deliverCopy(ctx context.Context, w store.Work, onShelf, key st
 	if err != nil {
 		return level.Outcome{}, "", err
 	}
-	return delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, w.Profile, key, delivery.Options{Overwrite: true})
+	return delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, level.Task{Profile: w.Profile}, key, delivery.Options{Overwrite: true})
 }
 
 func inAttic(o store.Original) delivery.Original {

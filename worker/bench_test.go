@@ -67,7 +67,7 @@ func (e *engine) Analyse(ctx context.Context, path string, o level.Options) (*le
 	return reading(-30), nil
 }
 
-func (e *engine) Level(ctx context.Context, source string, _ profile.Profile, scratch string) (level.Outcome, error) {
+func (e *engine) Level(ctx context.Context, source string, _ level.Task, scratch string) (level.Outcome, error) {
 	if err := os.WriteFile(scratch, []byte("half a file"), 0o600); err != nil {
 		return level.Outcome{}, err
 	}

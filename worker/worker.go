@@ -25,7 +25,6 @@ import (
 	"github.com/riverqueue/river/riverdriver/riversqlite"
 
 	"evenshelf/engine/level"
-	"evenshelf/engine/profile"
 	"evenshelf/store"
 	"evenshelf/worker/delivery"
 	"evenshelf/worker/discover"
@@ -37,7 +36,7 @@ type Engine interface {
 	Analyse(ctx context.Context, path string, o level.Options) (*level.Analysis, error)
 	// Level writes the levelled sound to scratch and syncs it; if the outcome has no After there is no
 	// scratch file. A damaged source is an outcome with the verdict failed; an error may heal.
-	Level(ctx context.Context, source string, p profile.Profile, scratch string) (level.Outcome, error)
+	Level(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error)
 }
 
 // Options are what a Service needs. Store and Engine are required.

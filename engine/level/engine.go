@@ -20,7 +20,8 @@ const mostRenders = 5
 // Level measures source, plans, renders into the file scratch, reads that file back and judges it. The
 // outcome tells everything; an error means something that may heal (a full disk, a cancelled context)
 // and leaves no scratch behind. A source that cannot be read is an outcome with state Failed.
-func (e *Engine) Level(ctx context.Context, source string, p profile.Profile, scratch string) (o Outcome, err error) {
+func (e *Engine) Level(ctx context.Context, source string, t Task, scratch string) (o Outcome, err error) {
+	p := t.Profile
 	defer func() {
 		if err != nil || o.After == nil {
 			o.Extension = ""

@@ -71,7 +71,7 @@ func secondOpinion(t *testing.T, path string) (integrated audio.LUFS, peak audio
 func levelInto(t *testing.T, profile, source, target string) Outcome {
 	t.Helper()
 	e := &Engine{Media: media.Find()}
-	o, err := e.Level(context.Background(), source, named(t, profile), target)
+	o, err := e.Level(context.Background(), source, Task{Profile: named(t, profile)}, target)
 	if err != nil {
 		t.Fatalf("%s: %v", source, err)
 	}
@@ -237,7 +237,7 @@ func TestCancelledLeavesNothingBehind(t *testing.T) {
 	enough := errors.New("enough")
 	cancel(enough)
 	target := filepath.Join(dir, "out")
-	if _, err := (&Engine{Media: media.Find()}).Level(ctx, source, named(t, "rotation"), target); !errors.Is(err, enough) {
+	if _, err := (&Engine{Media: media.Find()}).Level(ctx, source, Task{Profile: named(t, "rotation")}, target); !errors.Is(err, enough) {
 		t.Errorf("got %v, want the cause of the cancelling", err)
 	}
 	if _, err := os.Stat(target); err == nil {
@@ -254,7 +254,7 @@ func BenchmarkLevel(b *testing.B) {
 	e := &Engine{Media: media.Find()}
 	var seconds float64
 	for b.Loop() {
-		o, err := e.Level(context.Background(), source, p, source+".out")
+		o, err := e.Level(context.Background(), source, Task{Profile: p}, source+".out")
 		if err != nil {
 			b.Fatal(err)
 		}

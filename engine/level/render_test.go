@@ -149,7 +149,7 @@ func TestKilledFFmpegIsAnError(t *testing.T) {
 			}
 			killed <- done
 		}()
-		_, err := e.Level(context.Background(), source, named(t, "rotation"), target)
+		_, err := e.Level(context.Background(), source, Task{Profile: named(t, "rotation")}, target)
 		stop()
 		if !<-killed {
 			t.Fatalf("%s: there was nothing to kill: the test proves nothing", pipe)

@@ -14,7 +14,6 @@ import (
 	"strings"
 
 	"evenshelf/engine/level"
-	"evenshelf/engine/profile"
 )
 
 // Original is a recording that was moved to the attic when its levelled copy took its place. Hashes are
@@ -46,7 +45,7 @@ type Place struct {
 // A recording that was replaced before is levelled from its original, so that no sound is ever levelled
 // twice. One that is within its profile stays as it is. What is held goes where held copies go, and the
 // recording stays. output is relative to Root, or to Copies if the outcome is held. Errors as for Deliver.
-func Replace(ctx context.Context, eng Leveller, at Place, p profile.Profile, key string,
+func Replace(ctx context.Context, eng Leveller, at Place, t level.Task, key string,
 	record func(context.Context, Original) error) (o level.Outcome, output string, err error) {
 	d, refusal, err := open(at.Source, at.Root, at.Rel, key, Options{Overwrite: true})
 	if err != nil || refusal != "" {
@@ -63,7 +62,7 @@ func Replace(ctx context.Context, eng Leveller, at Place, p profile.Profile, key
 		// The link would be replaced, and what it leads to be taken for the original in the attic.
 		return failed(level.Outcome{}, "a symbolic link leads to it now, so nothing can take its place"), "", nil
 	}
-	if o, err = d.level(ctx, eng, p); err != nil || o.After == nil {
+	if o, err = d.level(ctx, eng, t); err != nil || o.After == nil {
 		return o, "", err
 	}
 	switch {

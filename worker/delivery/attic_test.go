@@ -11,7 +11,6 @@ import (
 	"testing"
 
 	"evenshelf/engine/level"
-	"evenshelf/engine/profile"
 )
 
 // atticBench is a shelf, its copies and its attic, and what was recorded.
@@ -33,7 +32,7 @@ var errCut = errors.New("the power went")
 // replace runs Replace; cut ends it right after the original was recorded.
 func (b *atticBench) replace(l *leveller, cut bool) (level.Outcome, string, error) {
 	b.t.Helper()
-	return Replace(b.t.Context(), l, b.place, profile.Profile{}, "job-7", func(_ context.Context, o Original) error {
+	return Replace(b.t.Context(), l, b.place, level.Task{}, "job-7", func(_ context.Context, o Original) error {
 		b.kept = append(b.kept, o)
 		if cut {
 			return errCut

@@ -10,7 +10,6 @@ import (
 	"time"
 
 	"evenshelf/engine/level"
-	"evenshelf/engine/profile"
 )
 
 // leveller is a stand-in that writes text; each field changes one thing about it.
@@ -27,7 +26,7 @@ type leveller struct {
 	scratch   string // where it was told to write
 }
 
-func (l *leveller) Level(_ context.Context, source string, _ profile.Profile, scratch string) (level.Outcome, error) {
+func (l *leveller) Level(_ context.Context, source string, _ level.Task, scratch string) (level.Outcome, error) {
 	l.scratch = scratch
 	o := level.Outcome{Before: &level.Analysis{}, Verdict: level.Verdict{State: level.Done}, Extension: l.extension}
 	if l.state != "" {
@@ -93,7 +92,7 @@ func (b *bench) source(rel string) string {
 
 func (b *bench) deliver(l *leveller, rel string, opt Options) (level.Outcome, string, error) {
 	b.t.Helper()
-	return Deliver(b.t.Context(), l, filepath.Join(b.src, rel), b.out, rel, profile.Profile{}, "job-7", opt)
+	return Deliver(b.t.Context(), l, filepath.Join(b.src, rel), b.out, rel, level.Task{}, "job-7", opt)
 }
 
 // files returns what is below dir as "path=text".

@@ -28,7 +28,6 @@ import (
 	"strings"
 
 	"evenshelf/engine/level"
-	"evenshelf/engine/profile"
 )
 
 // Held is the folder, at the top of the output folder, that doubtful copies wait in. (discover passes it
@@ -38,7 +37,7 @@ const Held = "_held"
 // Leveller is the part of the engine that delivery needs. Level writes the levelled sound to scratch and
 // syncs it, or leaves nothing there if its outcome has no After. An error means what may heal.
 type Leveller interface {
-	Level(ctx context.Context, source string, p profile.Profile, scratch string) (level.Outcome, error)
+	Level(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error)
 }
 
 // Options says what delivery may do.
@@ -55,13 +54,13 @@ type Options struct {
 //
 // An error means that trying again may help; what cannot be mended is an outcome with the verdict failed.
 // In both cases, and if the engine panics, no scratch file is left.
-func Deliver(ctx context.Context, eng Leveller, source, outDir, relPath string, p profile.Profile, key string, opt Options) (o level.Outcome, output string, err error) {
+func Deliver(ctx context.Context, eng Leveller, source, outDir, relPath string, t level.Task, key string, opt Options) (o level.Outcome, output string, err error) {
 	d, refusal, err := open(source, outDir, relPath, key, opt)
 	if err != nil || refusal != "" {
 		return failed(level.Outcome{}, refusal), "", err
 	}
 	defer func() { err = errors.Join(err, d.close()) }()
-	if o, err = d.level(ctx, eng, p); err != nil || o.After == nil {
+	if o, err = d.level(ctx, eng, t); err != nil || o.After == nil {
 		return o, "", err
 	}
 	output, refusal, err = d.place(o)
@@ -138,8 +137,8 @@ func (d *delivery) prepare() (refusal string, err error) {
 }
 
 // level has the engine make the scratch file. If there is nothing to deliver the outcome has no After.
-func (d *delivery) level(ctx context.Context, eng Leveller, p profile.Profile) (level.Outcome, error) {
-	o, err := eng.Level(ctx, d.source, p, d.path(d.scratch))
+func (d *delivery) level(ctx context.Context, eng Leveller, t level.Task) (level.Outcome, error) {
+	o, err := eng.Level(ctx, d.source, t, d.path(d.scratch))
 	if err != nil {
 		return o, fmt.Errorf("level %s: %w", d.rel, err)
 	}

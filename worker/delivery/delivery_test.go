@@ -9,7 +9,6 @@ import (
 	"testing"
 
 	"evenshelf/engine/level"
-	"evenshelf/engine/profile"
 )
 
 func TestDeliver(t *testing.T) {
@@ -286,7 +285,7 @@ func TestDeliverRefuses(t *testing.T) {
 		t.Error("output folder is a file: no error")
 	}
 	for _, key := range []string{"", "../x", "A", "a.b", strings.Repeat("k", 41)} {
-		if _, _, err := Deliver(t.Context(), &leveller{}, filepath.Join(b.src, "f/x.wav"), b.src, "f/x.wav", profile.Profile{}, key, ours); err == nil {
+		if _, _, err := Deliver(t.Context(), &leveller{}, filepath.Join(b.src, "f/x.wav"), b.src, "f/x.wav", level.Task{}, key, ours); err == nil {
 			t.Errorf("key %q: no error", key)
 		}
 	}
