@@ -1,6 +1,7 @@
 package command
 
 import (
+	"cmp"
 	"context"
 	"encoding/json"
 	"fmt"
@@ -9,13 +10,13 @@ import (
 	"strings"
 
 	"evenshelf/engine/level"
-	"evenshelf/engine/profile"
 	"evenshelf/worker/delivery"
 )
 
 type levelCmd struct {
-	Profile   string   `required:"" help:"Levelling profile: see 'evenshelf profiles'." placeholder:"NAME"`
-	Out       string   `required:"" help:"Folder the copies go to; sub-folders are mirrored." placeholder:"DIR" type:"path"`
+	Profile   string   `required:"" help:"Levelling profile, or a file with one: see 'evenshelf profiles'." placeholder:"NAME|FILE.toml"`
+	Out       string   `help:"Folder the copies go to; sub-folders are mirrored." placeholder:"DIR" type:"path"`
+	DryRun    bool     `help:"Say what would come out, and write nothing."`
 	Overwrite bool     `help:"Replace copies that are already in the output folder."`
 	JSON      bool     `name:"json" help:"Print one JSON object a line instead."`
 	Paths     []string `arg:"" name:"path" help:"Recordings, or folders of recordings."`
@@ -23,37 +24,37 @@ type levelCmd struct {
 
 // levelled is one file's result as JSON.
 type levelled struct {
-	Path   string          `json:"path"`
-	Output *string         `json:"output"`
-	State  level.State     `json:"state"`
-	Before *level.Analysis `json:"before"`
-	After  *level.Analysis `json:"after"`
-	Gain   *float64        `json:"gain_db"`
-	Reason string          `json:"reason"`
+	Path   string      `json:"path"`
+	Output *string     `json:"output"` // nil if nothing was written
+	State  level.State `json:"state"`
+	Reason string      `json:"reason"`
+	level.Outcome
 }
 
 func (c *levelCmd) Run(a *app) error {
-	p, err := profile.Named(c.Profile)
+	p, err := a.profile(c.Profile)
 	if err != nil {
-		return usageError(err.Error() + "; see 'evenshelf profiles'")
+		return err
 	}
 	e, files, err := a.recordings(c.Paths)
 	if err != nil {
 		return err
 	}
-	if err := c.refuseUnsafe(files); err != nil {
+	if err := c.prepare(files); err != nil {
 		return err
 	}
-	if err := os.MkdirAll(c.Out, 0o755); err != nil {
-		return err
-	}
+	groups := newGroups(e, p, files)
 	bar, t, notDone := newProgress(a.stderr), tally{files: len(files)}, 0
 	for _, f := range files {
 		t.bytes += f.size
 	}
 	bar.draw(t)
 	err = inOrder(a.ctx, a.workers(), files, func(ctx context.Context, in input) levelled {
-		return c.level(ctx, e, p, in)
+		shared, err := groups.of(ctx, in)
+		if err != nil {
+			in.err = err
+		}
+		return c.level(ctx, e, level.Task{Profile: p, Shared: shared}, in)
 	}, func(in input, r levelled) {
 		if r.State != level.Done {
 			notDone++
@@ -76,6 +77,20 @@ func (c *levelCmd) Run(a *app) error {
 		return statusError(exitSome)
 	}
 	return nil
+}
+
+// prepare makes the output folder, unless nothing is to be written.
+func (c *levelCmd) prepare(files []input) error {
+	switch {
+	case c.DryRun:
+		return nil
+	case c.Out == "":
+		return usageError("--out is needed: the folder the copies go to")
+	}
+	if err := c.refuseUnsafe(files); err != nil {
+		return err
+	}
+	return os.MkdirAll(c.Out, 0o755)
 }
 
 // refuseUnsafe says no to command lines that could write over an original or mix two files up.
@@ -123,30 +138,33 @@ func realPath(path string) (string, error) {
 	}
 }
 
-func (c *levelCmd) level(ctx context.Context, e *level.Engine, p profile.Profile, in input) levelled {
+func (c *levelCmd) level(ctx context.Context, e *level.Engine, t level.Task, in input) levelled {
 	r := levelled{Path: in.path, State: level.Failed}
 	if in.err != nil {
 		r.Reason = level.Reason(in.err, in.path)
 		return r
 	}
-	if _, err := os.Lstat(filepath.Join(c.Out, filepath.FromSlash(in.rel))); err == nil && !c.Overwrite {
-		r.Reason = in.rel + " is already there" // delivery would find out after the work
-		return r
+	var output string
+	var err error
+	if c.DryRun {
+		r.Outcome, err = e.Foresee(ctx, in.path, t)
+	} else {
+		if _, err := os.Lstat(filepath.Join(c.Out, filepath.FromSlash(in.rel))); err == nil && !c.Overwrite {
+			r.Reason = in.rel + " is already there" // delivery would find out after the work
+			return r
+		}
+		key := fmt.Sprintf("%d", os.Getpid())
+		r.Outcome, output, err = delivery.Deliver(ctx, e, in.path, c.Out, in.rel, t, key, delivery.Options{Overwrite: c.Overwrite})
 	}
-	key := fmt.Sprintf("%d", os.Getpid())
-	o, output, err := delivery.Deliver(ctx, e, in.path, c.Out, in.rel, level.Task{Profile: p}, key, delivery.Options{Overwrite: c.Overwrite})
 	if err != nil {
+		r.Outcome = level.Outcome{}
 		r.Reason = err.Error()
 		return r
 	}
-	r.State, r.Before, r.After, r.Reason = o.Verdict.State, o.Before, o.After, o.Verdict.Reason
+	r.State, r.Reason = r.Verdict.State, r.Verdict.Reason
 	if output != "" {
 		output = filepath.Join(c.Out, filepath.FromSlash(output))
 		r.Output = &output
-	}
-	if o.Plan != nil {
-		gain := float64(o.Plan.Gain)
-		r.Gain = &gain
 	}
 	return r
 }
@@ -157,13 +175,25 @@ func (c *levelCmd) print(a *app, r levelled) {
 		return
 	}
 	line := fmt.Sprintf("%-6s", r.State)
-	if r.Before != nil && r.After != nil {
-		line += fmt.Sprintf("  %s → %s LUFS  %s dBTP", figure(float64(r.Before.Integrated), 6),
-			figure(float64(r.After.Integrated), 5), figure(float64(r.After.TruePeak), 5))
+	if r.Before != nil && r.Foreseen != nil {
+		after := r.Foreseen
+		if r.After != nil {
+			after = &r.After.Reading
+		}
+		line += fmt.Sprintf("  %s → %s LUFS  %s → %s LU  %s dBTP", figure(float64(r.Before.Integrated), 6), figure(float64(after.Integrated), 5),
+			figure(float64(r.Before.Range), 4), figure(float64(after.Range), 4), figure(float64(after.TruePeak), 5))
 	}
 	line += "  " + printable(r.Path)
-	if r.Reason != "" {
-		line += ": " + printable(r.Reason)
+	if reason := cmp.Or(r.Reason, r.planned()); reason != "" {
+		line += ": " + printable(reason)
 	}
 	fmt.Fprintln(a.stdout, line)
+}
+
+// planned says what would be done, if nothing was.
+func (r levelled) planned() string {
+	if r.Plan == nil || r.After != nil {
+		return ""
+	}
+	return r.Plan.Reason
 }

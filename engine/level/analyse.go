@@ -11,7 +11,6 @@ import (
 	"evenshelf/engine/faults"
 	"evenshelf/engine/media"
 	"evenshelf/engine/meter"
-	"evenshelf/engine/speech"
 )
 
 // Engine does the work on files it is handed. It is safe for concurrent use.
@@ -45,11 +44,11 @@ func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error
 		return nil, err
 	}
 	var fault *faults.Detector
-	var talk *speech.Detector
+	var talk *voices
 	var others []func(audio.Block)
 	if !o.LoudnessOnly {
-		fault, talk = faults.New(src.Format()), speech.New(src.Format())
-		others = append(others, func(b audio.Block) { fault.Write(b); talk.Write(b) })
+		fault, talk = faults.New(src.Format()), newVoices(src.Format())
+		others = append(others, func(b audio.Block) { fault.Write(b); talk.write(b) })
 	}
 	frames, err := audio.Spread(src, m.Write, others...)
 	damage, err := damageOf(src, frames, err)
@@ -69,7 +68,7 @@ func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error
 	var found []faults.Fault
 	found, a.Condition = fault.Finish()
 	a.Faults = append(a.Faults, found...)
-	a.Timeline.Course = talk.Finish()
+	a.Timeline.Course = talk.finish()
 	a.Dialogue = dialogue(a.Timeline, a.Duration)
 	return a, nil
 }

@@ -2,60 +2,98 @@ package level
 
 import (
 	"context"
+	"math"
 
 	"evenshelf/engine/audio"
-	"evenshelf/engine/meter"
-	"evenshelf/engine/profile"
 )
 
-// closeEnough ends the search for the gain, LU.
-const closeEnough = 0.02
+const (
+	// closeEnough ends the search for the gain, LU.
+	closeEnough = 0.02
+	// mostTries bounds the search; deep limiting needs five to seven.
+	mostTries = 10
+	// movedApart is the spread, dB, of what compressor and ceiling take off from which on the ride makes up for it.
+	movedApart = 0.3
+	// mostRides is how often it does.
+	mostRides = 2
+)
 
-// approach finds the gain with which the ceiling's work still leaves the target loudness, by rendering into
-// a meter: each try costs a decoding, but no encoding. The secant's slope is bounded, since the loudness of
-// limited sound rises by less than its gain, but never falls.
-func (e *Engine) approach(ctx context.Context, source string, p profile.Profile, plan Plan, before *Analysis) (Plan, error) {
-	most := headroom(p, before) + p.Limiter.Most
-	slope, lastGain, last := 0.9, plan.Gain, audio.LUFS(audio.Undefined)
-	for range mostRenders {
-		now, err := e.predict(ctx, source, plan, p.Mono)
+// foresee finds the gain with which the compressor's and the ceiling's work still leave the aim, by rendering
+// into a meter: each try costs a decoding, but no encoding. The secant's slope is bounded, since the loudness
+// of limited sound rises by less than its gain, but never falls.
+func (j *turn) foresee(ctx context.Context) error {
+	if j.plan.Untouched || j.plan.still() && !j.plan.Limit {
+		j.foreseen = j.shifted(j.plan.Gain)
+		return nil
+	}
+	plan, rides := j.plan, 0
+	slope, lastGain, last := 1.0, plan.Gain, audio.LUFS(audio.Undefined)
+	best := audio.LU(math.Inf(1))
+	for range mostTries {
+		r, err := j.predict(ctx, plan)
 		if err != nil {
-			return plan, err
+			return err
 		}
-		off := p.Target - now.Integrated
-		if !(abs(off) > closeEnough) || off > 0 && plan.Gain == most {
+		if ride := j.rideAgain(plan, r); ride != nil && rides < mostRides {
+			rides++
+			plan.Ride, last = ride, audio.LUFS(audio.Undefined)
+			continue
+		}
+		off, most := plan.Aim.Sub(r.anchored), j.most(plan, r)
+		tooMuch := plan.Gain > most+closeEnough
+		if !tooMuch && abs(off) < best {
+			best, j.plan, j.foreseen = abs(off), plan, r
+		}
+		if !tooMuch && (!(abs(off) > closeEnough) || off > 0 && plan.Gain >= most-closeEnough) {
 			break
 		}
 		if audio.Defined(last) && plan.Gain != lastGain {
-			slope = min(max(float64(now.Integrated-last)/float64(plan.Gain-lastGain), 0.25), 1.5)
+			slope = min(max(float64(r.anchored-last)/float64(plan.Gain-lastGain), 0.25), 1.5)
 		}
-		lastGain, last = plan.Gain, now.Integrated
-		plan.Gain = min(plan.Gain+audio.DB(float64(off)/slope), most)
+		lastGain, last = plan.Gain, r.anchored
+		plan.Gain = stored(min(plan.Gain+audio.DB(float64(off)/slope), most))
 	}
-	plan.Reason = plan.words(p, headroom(p, before))
-	return plan, nil
+	if math.IsInf(float64(best), 1) {
+		var err error
+		if j.foreseen, err = j.predict(ctx, plan); err != nil {
+			return err
+		}
+		j.plan = plan
+	}
+	j.plan.dropIdle(j.foreseen.work)
+	j.plan.Reason = j.plan.words(j.task.Profile)
+	return nil
 }
 
-// predict returns the reading that a plan's rendering will have before it is encoded.
-func (e *Engine) predict(ctx context.Context, source string, plan Plan, mono audio.MonoRule) (meter.Reading, error) {
-	src, err := e.Media.Open(ctx, source)
-	if err != nil {
-		return meter.Reading{}, err
+// dropIdle takes out of the plan what had nothing to do: without it the same bytes are made sooner.
+func (plan *Plan) dropIdle(w Work) {
+	if depth, _ := deepest(w.Compressed); depth == 0 {
+		plan.Compressor = nil
 	}
-	defer src.Close()
-	m, err := meter.New(src.Format(), mono)
-	if err != nil {
-		return meter.Reading{}, err
+	if depth, _ := deepest(w.Limited); depth == 0 {
+		plan.Limit = false
 	}
-	if err := Render(ctx, src, plan, metered{m}); err != nil {
-		return meter.Reading{}, err
-	}
-	r, _ := m.Finish()
-	return r, nil
 }
 
-// metered is a sink that only measures.
-type metered struct{ *meter.Meter }
+// most is the gain with which the ceiling takes off as much as it may, by what it did in a rendering of the plan.
+func (j *turn) most(plan Plan, r rendering) audio.DB {
+	room := audio.DB(plan.Ceiling - r.TruePeak)
+	if deepest, _ := deepest(r.work.Limited); deepest > 0 {
+		room = -deepest
+	}
+	return plan.Gain + room + j.task.Profile.Limiter.Most
+}
 
-func (m metered) WriteBlock(b audio.Block) error { m.Write(b); return nil }
-func (m metered) Close() error                   { return nil }
+// rideAgain returns a ride that makes up for what compressor and ceiling did in a rendering, so that they do not
+// move apart again what the ride brought together; nil if there is nothing to make up for. Music is left to them.
+func (j *turn) rideAgain(plan Plan, r rendering) *Ride {
+	p := j.task.Profile
+	if plan.Ride == nil || p.Ride.Step == 0 {
+		return nil
+	}
+	moved := r.work.moved(len(j.before.Timeline.Level))
+	if spreadWhere(moved, j.before.Timeline.Active) < movedApart {
+		return nil
+	}
+	return rideOf(p, j.before, plan.Anchor, moved)
+}

@@ -10,8 +10,8 @@ import (
 	"evenshelf/engine/speech"
 )
 
-// Ten seconds at −40 LUFS, five of speech at −20, five at −10: only blocks of speech count, and a block
-// across the border counts if three of its four steps are speech. The means are worked out by hand.
+// Ten seconds at −40 LUFS, five of speech at −20, five at −10: only blocks count in which there is a step of
+// speech. The means are worked out by hand.
 func TestDialogue(t *testing.T) {
 	course := func(speechFrom, speechTo int) Timeline {
 		const steps = 200
@@ -38,8 +38,8 @@ func TestDialogue(t *testing.T) {
 	if d.ActiveTime != 18 || d.SpeechTime != 5 {
 		t.Errorf("%v s active, %v s speech, want 18 and 5", d.ActiveTime, d.SpeechTime)
 	}
-	// Blocks that end with steps 102 to 150 hold three steps of speech: 48 at −20 LUFS and one at −10.
-	want := 10 * math.Log10((48*0.01+1*0.1)/49)
+	// Blocks that end with steps 100 to 152 hold a step of speech: 50 at −20 LUFS and three at −10.
+	want := 10 * math.Log10((50*0.01+3*0.1)/53)
 	if got := float64(d.SpeechLoudness); math.Abs(got-want) > 1e-6 {
 		t.Errorf("speech reads %.4f LUFS, want %.4f", got, want)
 	}
@@ -70,6 +70,29 @@ func TestDialogue(t *testing.T) {
 	}
 	if d := dialogue(Timeline{}, 0); audio.Defined(d.SpeechLoudness) || d.ActiveTime != 0 {
 		t.Errorf("nothing at all gives %+v", d)
+	}
+}
+
+// Speech at −27 LUFS between shots at −13 that are taken for speech: the mean power would be that of the shots.
+func TestSpeechLoudnessIsNotThatOfEffects(t *testing.T) {
+	var tl meter.Timeline
+	var c speech.Course
+	add := func(steps int, lufs, likely float32) {
+		for range steps {
+			tl.Momentary, c.Speech = append(tl.Momentary, lufs), append(c.Speech, likely)
+		}
+	}
+	for range 10 {
+		add(50, -27, 0.9)
+		add(10, -60, 0)
+		add(15, -13, 0.7)
+		add(10, -60, 0)
+	}
+	if got := speechLoudness(c, tl); math.Abs(float64(got)+27) > 0.3 {
+		t.Errorf("speech at −27 LUFS reads %.2f", got)
+	}
+	if l := speechLoudness(speech.Course{}, tl); audio.Defined(l) {
+		t.Errorf("no speech reads %.2f LUFS", l)
 	}
 }
 

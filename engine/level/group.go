@@ -1,7 +1,12 @@
 package level
 
 import (
+	"context"
+	"errors"
+
 	"evenshelf/engine/audio"
+	"evenshelf/engine/media"
+	"evenshelf/engine/meter"
 	"evenshelf/engine/profile"
 )
 
@@ -14,6 +19,31 @@ type Task struct {
 
 // Shared is the reading of several recordings as one programme.
 type Shared struct {
-	Integrated audio.LUFS `json:"integrated_lufs"`
-	TruePeak   audio.DBTP `json:"true_peak_dbtp"` // the highest of all
+	Integrated audio.LUFS `json:"integrated_lufs"` // undefined if nothing in them is loud enough
+	TruePeak   audio.DBTP `json:"true_peak_dbtp"`  // the highest of all
+}
+
+// Group measures recordings as one programme, one after another. One that cannot be read is left out: its
+// own turn says why.
+func (e *Engine) Group(ctx context.Context, paths []string, mono audio.MonoRule) (Shared, error) {
+	shared := Shared{TruePeak: audio.DBTP(audio.Undefined)}
+	var all []meter.Timeline
+	for _, path := range paths {
+		a, err := e.Analyse(ctx, path, Options{Mono: mono, LoudnessOnly: true})
+		if cause := context.Cause(ctx); cause != nil {
+			return Shared{}, cause
+		}
+		if errors.Is(err, media.ErrKilled) {
+			return Shared{}, err
+		}
+		if err != nil {
+			continue
+		}
+		all = append(all, a.Timeline.Timeline)
+		if !(a.TruePeak <= shared.TruePeak) {
+			shared.TruePeak = a.TruePeak
+		}
+	}
+	shared.Integrated = meter.Together(all...)
+	return shared, nil
 }

@@ -78,6 +78,7 @@ type Plan struct {
 	// Anchor is what is brought to the target: the profile's, or the programme where nobody speaks.
 	Anchor   profile.Anchor `json:"anchor"`
 	Anchored audio.LUFS     `json:"anchor_lufs"` // its loudness in the source
+	Aim      audio.LUFS     `json:"aim_lufs"`    // and in the copy: the target, unless its gain is shared with others
 
 	Ride       *Ride                 `json:"ride"`         // nil: none
 	Compressor *dynamics.Compression `json:"compressor"`   // nil: none; works on the ridden sound
@@ -96,6 +97,9 @@ type Ride struct {
 	Least audio.DB      `json:"least_db"` // of the gain while something is heard
 	Most  audio.DB      `json:"most_db"`
 	Gain  ride.Curve    `json:"curve"`
+	// FloorLift is how far a pause is lifted over its quieter neighbour at the most, and FloorAt where.
+	FloorLift audio.DB      `json:"floor_lift_db"`
+	FloorAt   audio.Seconds `json:"floor_at_s"`
 }
 
 // Treatment is what a rendering did to the sound.
@@ -107,9 +111,6 @@ type Treatment struct {
 	// Deepest is the most that was taken off a peak, and DeepestAt where.
 	Deepest   audio.DB      `json:"deepest_db"`
 	DeepestAt audio.Seconds `json:"deepest_at_s"`
-	// FloorLift is how far a pause was lifted over its quieter neighbour at the most, and FloorAt where.
-	FloorLift audio.DB      `json:"floor_lift_db"`
-	FloorAt   audio.Seconds `json:"floor_at_s"`
 	// Order is the rank correlation of the loudness of 3 s blocks before and after; undefined under a minute.
 	Order audio.Ratio `json:"order"`
 }

@@ -244,21 +244,3 @@ func TestCancelledLeavesNothingBehind(t *testing.T) {
 		t.Error("a scratch file is left behind")
 	}
 }
-
-func BenchmarkLevel(b *testing.B) {
-	source := filepath.Join(b.TempDir(), "source.wav")
-	if err := exec.Command("ffmpeg", "-nostdin", "-y", "-t", "60", "-i", music, "-c:a", "pcm_s16le", source).Run(); err != nil {
-		b.Fatal(err)
-	}
-	p := named(b, "rotation")
-	e := &Engine{Media: media.Find()}
-	var seconds float64
-	for b.Loop() {
-		o, err := e.Level(context.Background(), source, Task{Profile: p}, source+".out")
-		if err != nil {
-			b.Fatal(err)
-		}
-		seconds += o.Before.Duration
-	}
-	b.ReportMetric(seconds/b.Elapsed().Seconds(), "x-realtime")
-}

@@ -3,9 +3,12 @@ package level
 import (
 	"errors"
 	"fmt"
+	"math"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/dynamics"
 	"evenshelf/engine/profile"
+	"evenshelf/engine/ride"
 )
 
 const (
@@ -16,53 +19,139 @@ const (
 	peakAim = 0.01
 	// leastGain is the smallest gain worth a new file, dB.
 	leastGain = 0.05
-	// anotherRender is the change of gain from which on another rendering is worth while, dB: what a lossy
-	// encoder answers to less is as likely to be a jump away as a step closer.
-	anotherRender = 0.1
 )
 
-// MakePlan decides what to do to a recording so that it comes out as the profile asks. It is an error,
+// MakePlan decides what to do to a recording so that it comes out as its task asks. It is an error,
 // in words for a person, if the recording has no loudness to go by.
-func MakePlan(p profile.Profile, a *Analysis) (Plan, error) {
-	if !audio.Defined(a.Integrated) {
-		if !audio.Defined(a.SamplePeak) {
-			return Plan{}, errors.New("nothing to level: the recording is silent")
-		}
-		if a.Duration < 0.4 {
-			return Plan{}, fmt.Errorf("nothing to level: %.2f s is too short, loudness needs at least 0.4 s", a.Duration)
-		}
-		return Plan{}, errors.New("nothing to level: nothing in it is louder than −70 LUFS")
+func MakePlan(t Task, a *Analysis) (Plan, error) {
+	if err := hasLoudness(a); err != nil {
+		return Plan{}, err
 	}
-	headroom := headroom(p, a)
-	wanted := audio.DB(p.Target - a.Integrated)
-	plan := Plan{Gain: min(wanted, headroom+p.Limiter.Most), Ceiling: p.Ceiling}
+	p := t.Profile
+	plan := Plan{Ceiling: p.Ceiling, Limiter: p.Limiter, Delivered: p.Delivered}
+	plan.Anchor, plan.Anchored = anchorOf(p, a)
+	plan.Aim = p.Target
+	foreseen := plan.Anchored
+	if p.Ride.Speed != profile.Still {
+		plan.Ride = rideOf(p, a, plan.Anchor, nil)
+	}
+	if plan.Ride != nil {
+		foreseen = plan.anchoredIn(a, plan.ridden(a))
+	}
+	if p.Compressor.Ratio > 1 {
+		plan.Compressor = compression(p, a, foreseen)
+	}
+	peak := a.TruePeak
+	if t.Shared != nil { // validation sees to it that such a profile neither rides nor compresses
+		plan.Aim += audio.LUFS(a.Integrated.Sub(t.Shared.Integrated))
+		peak = t.Shared.TruePeak
+	}
+	room := audio.DB(p.Ceiling - peak)
+	wanted := audio.DB(plan.Aim - foreseen)
+	plan.Gain = stored(wanted)
+	if plan.still() {
+		plan.Gain = stored(min(wanted, room+p.Limiter.Most))
+	}
+	if t.Shared != nil {
+		plan.Aim = a.Integrated + audio.LUFS(plan.Gain)
+	}
+	fits := a.TruePeak <= p.Ceiling+peakTolerance && plan.Ride == nil && fitsWord(p, a)
 	switch {
-	case headroom >= -peakTolerance && audio.LU(abs(wanted)) <= p.Tolerance:
-		plan = Plan{Ceiling: p.Ceiling, Untouched: true, Reason: "already within the profile"}
-	case headroom >= -peakTolerance && abs(plan.Gain) < leastGain:
-		plan = Plan{Ceiling: p.Ceiling, Untouched: true, Reason: "already as loud as its peaks allow"}
+	case p.Within == profile.Leave && fits && abs(audio.LU(wanted)) <= p.Tolerance:
+		plan.leave("already within the profile")
+	case p.Within == profile.Leave && fits && plan.still() && abs(plan.Gain) < leastGain:
+		plan.leave("already as loud as its peaks allow")
 	default:
-		plan.Limit = plan.Gain > headroom
-		plan.Reason = plan.words(p, headroom)
+		plan.Limit = p.Limiter.Most > 0 && (!plan.still() || plan.Gain > audio.DB(p.Ceiling-a.TruePeak))
+		plan.Reason = plan.words(p)
 	}
 	return plan, nil
 }
 
-// headroom is how much gain the true peak leaves under the ceiling; negative if it is over already.
-func headroom(p profile.Profile, a *Analysis) audio.DB { return audio.DB(p.Ceiling - a.TruePeak) }
+// compression is a profile's compressor for a recording whose anchor has a loudness after the ride.
+func compression(p profile.Profile, a *Analysis, anchored audio.LUFS) *dynamics.Compression {
+	c := &dynamics.Compression{Threshold: audio.DB(anchored) + p.Compressor.Over, Ratio: p.Compressor.Ratio, Knee: p.Compressor.Knee,
+		Release: p.Compressor.Release / 1000}
+	if a.Channels == 1 && p.Mono == audio.TwoLoudspeakers {
+		c.Threshold -= 3.01 // the compressor counts a channel once
+	}
+	c.Threshold = stored(c.Threshold)
+	return c
+}
 
-func (plan Plan) words(p profile.Profile, headroom audio.DB) string {
-	s := fmt.Sprintf("lift by %.1f dB", plan.Gain)
-	if plan.Gain < 0 {
-		s = fmt.Sprintf("lower by %.1f dB", -plan.Gain)
-	}
+// stored is a figure as it is kept in a stored plan, so that one renders the same bytes again.
+func stored(g audio.DB) audio.DB { return audio.DB(math.Round(float64(g)*1e4) / 1e4) }
+
+// hasLoudness returns an error, in words, for a recording that has none.
+func hasLoudness(a *Analysis) error {
 	switch {
-	case plan.Limit:
-		s += fmt.Sprintf(", peaks held %.1f dB lower to stay under %s dBTP", plan.Gain-headroom, audio.Number(float64(p.Ceiling), 1))
-	case p.Limiter.Most == 0 && plan.Gain == headroom:
-		s += ", as far as the peaks allow"
+	case audio.Defined(a.Integrated):
+		return nil
+	case !audio.Defined(a.SamplePeak):
+		return errors.New("nothing to level: the recording is silent")
+	case a.Duration < 0.4:
+		return fmt.Errorf("nothing to level: %.2f s is too short, loudness needs at least 0.4 s", a.Duration)
+	default:
+		return errors.New("nothing to level: nothing in it is louder than −70 LUFS")
 	}
-	return s
+}
+
+// fitsWord reports whether a recording has the word length a profile asks for.
+func fitsWord(p profile.Profile, a *Analysis) bool {
+	return p.Delivered.Bits == 0 || a.Info.BitDepth == 0 || a.Info.BitDepth == p.Delivered.Bits && !a.Info.Float
+}
+
+// anchorOf returns what a profile brings to the target in a recording, and its loudness: speech only if
+// there is enough of it.
+func anchorOf(p profile.Profile, a *Analysis) (profile.Anchor, audio.LUFS) {
+	if p.Anchor == profile.Speech && audio.Defined(a.SpeechLoudness) {
+		return profile.Speech, a.SpeechLoudness
+	}
+	return profile.Programme, a.Integrated
+}
+
+// leave makes a plan to leave the recording as it is.
+func (plan *Plan) leave(reason string) {
+	plan.Untouched, plan.Reason = true, reason
+	plan.Ride, plan.Compressor, plan.Gain = nil, nil, 0
+}
+
+// still reports whether nothing moves but the ceiling.
+func (plan Plan) still() bool { return plan.Ride == nil && plan.Compressor == nil }
+
+var speeds = map[profile.Speed]ride.Speed{profile.Slow: ride.Slow, profile.Medium: ride.Medium, profile.Fast: ride.Fast}
+
+// keep is the least share of a difference that stays.
+var keep = map[profile.Strength]float64{profile.Evening: 0, profile.Gentle: 0.3}
+
+// rideOf solves the ride of a recording; nil if it is even enough already. moved is what compressor and
+// ceiling did after an earlier ride.
+func rideOf(p profile.Profile, a *Analysis, anchor profile.Anchor, moved []float32) *Ride {
+	r := ride.Solve(ride.Course{Level: a.Timeline.Level, Speech: a.Timeline.Speech, Moved: moved}, ride.Settings{
+		Speed: speeds[p.Ride.Speed], Speech: anchor == profile.Speech, Range: float64(p.Ride.Range),
+		Deadband: float64(p.Ride.Deadband), Keep: keep[p.Ride.Strength], Lift: float64(p.Ride.Lift), Cut: float64(p.Ride.Cut),
+		Step: p.Ride.Step, Silence: float64(p.Ride.Silence), Fades: p.Ride.Fades == profile.RideFades,
+	})
+	if r.Idle() {
+		return nil
+	}
+	out := &Ride{Speed: p.Ride.Speed, Kept: audio.Ratio(r.Kept), Range: audio.LU(r.Range), Gain: r.Gain,
+		FloorLift: audio.DB(r.FloorLift), FloorAt: audio.Seconds(r.FloorAt)}
+	out.Least, out.Most = audio.DB(audio.Undefined), audio.DB(audio.Undefined)
+	for i, on := range r.Active {
+		if g := audio.DB(r.Gain[i]); on {
+			out.Least, out.Most = least(out.Least, g), -least(-out.Most, -g)
+		}
+	}
+	return out
+}
+
+// least is the lesser of two gains, of which the first may be undefined.
+func least(a, b audio.DB) audio.DB {
+	if a < b {
+		return a
+	}
+	return b
 }
 
 func abs[F ~float64](v F) F {
@@ -70,30 +159,4 @@ func abs[F ~float64](v F) F {
 		return -v
 	}
 	return v
-}
-
-// again returns the plan for another rendering, given how the last one came out; ok is false if another
-// would not come closer. Encoders move loudness and peaks, and even a plain gain can miss: it lifts quiet
-// passages over the −70 LUFS gate.
-func (plan Plan) again(p profile.Profile, before, after *Analysis) (next Plan, ok bool) {
-	next = plan
-	over := audio.DB(after.TruePeak - p.Ceiling)
-	if over > peakAim {
-		next.Ceiling = plan.Ceiling - audio.DBTP(over) - 0.02
-	}
-	room := audio.DB(next.Ceiling - before.TruePeak)
-	next.Gain = min(plan.Gain+audio.DB(p.Target-after.Integrated), room+p.Limiter.Most)
-	next.Limit = next.Gain > room
-	next.Reason = next.words(p, headroom(p, before))
-	return next, abs(next.Gain-plan.Gain) > anotherRender || next.Ceiling != plan.Ceiling
-}
-
-// closer reports whether one rendering came out closer to the profile than another: first by how far its
-// peaks pass the ceiling, then by its distance from the target.
-func closer(p profile.Profile, a, b *Analysis) bool {
-	over := func(x *Analysis) audio.DB { return max(0, audio.DB(x.TruePeak-p.Ceiling)-peakAim) }
-	if over(a) != over(b) {
-		return over(a) < over(b)
-	}
-	return abs(p.Target.Sub(a.Integrated)) < abs(p.Target.Sub(b.Integrated))
 }

@@ -44,7 +44,7 @@ func TestMakePlan(t *testing.T) {
 		{"no dynamics: peaks at the ceiling already", "untouched", reading(-24, -1.02), 0, false, true},
 		{"no dynamics: over the ceiling", "untouched", reading(-24, 1), -2, false, false},
 	} {
-		plan, err := MakePlan(named(t, c.profile), c.before)
+		plan, err := MakePlan(Task{Profile: named(t, c.profile)}, c.before)
 		if err != nil {
 			t.Errorf("%s: %v", c.name, err)
 			continue
@@ -64,7 +64,7 @@ func TestNothingToLevelIsSaid(t *testing.T) {
 	silent.SamplePeak = audio.DBFS(math.Inf(-1))
 	short.Duration = 0.3
 	for want, a := range map[string]*Analysis{"silent": silent, "too short": short, "louder than −70": faint} {
-		if _, err := MakePlan(named(t, "rotation"), a); err == nil || !strings.Contains(err.Error(), want) {
+		if _, err := MakePlan(Task{Profile: named(t, "rotation")}, a); err == nil || !strings.Contains(err.Error(), want) {
 			t.Errorf("got %v, want a reason with %q", err, want)
 		}
 	}
@@ -97,7 +97,8 @@ func TestJudge(t *testing.T) {
 		{"as far as peaks allow", untouched, reading(-30, -8), reading(-23, -1), 7, Done, "short of the target"},
 		{"no dynamics, yet target missed with room to spare", untouched, reading(-30, -8), reading(-23, -4), 7, Held, "could not be reached"},
 	} {
-		v := Judge(c.p, c.before, c.after, Plan{Gain: c.gain})
+		r := rendering{Reading: c.after.Reading, anchored: c.after.Integrated}
+		v := judge(c.p, c.before, Plan{Gain: c.gain, Aim: c.p.Target}, r)
 		if v.State != c.state || !strings.Contains(v.Reason, c.words) || (c.words == "") != (v.Reason == "") {
 			t.Errorf("%s: %s, %q; want %s with %q", c.name, v.State, v.Reason, c.state, c.words)
 		}

@@ -30,25 +30,24 @@ func TestClosestRenderingIsDelivered(t *testing.T) {
 	ffmpeg(t, nil, "-i", wav, "-b:a", "192k", source)
 
 	e, ctx, p, scratch := &Engine{Media: media.Find()}, context.Background(), named(t, "rotation"), filepath.Join(dir, "x")
-	before, err := e.Analyse(ctx, source, Options{})
+	j, _, err := e.begin(ctx, source, Task{Profile: p})
 	if err != nil {
 		t.Fatal(err)
 	}
-	plan, err := MakePlan(p, before)
-	if err != nil {
+	if err := j.foresee(ctx); err != nil {
 		t.Fatal(err)
 	}
-	spec := e.Media.SpecFor(before.Info)
+	spec := e.Media.SpecFor(j.before.Info)
 	spec.TagsFrom = source
-	best, last := math.Inf(1), 0.0
+	best, last, plan := math.Inf(1), 0.0, j.plan
 	for more, n := true, 0; more && n < mostRenders; n++ {
-		after, err := e.renderFile(ctx, source, plan, spec, scratch, Options{})
+		after, _, err := j.render(ctx, plan, spec, scratch)
 		if err != nil {
 			t.Fatal(err)
 		}
 		last = math.Abs(float64(after.Integrated - p.Target))
 		best = min(best, last)
-		plan, more = plan.again(p, before, after)
+		plan, more = j.again(plan, after, anotherLossyRender)
 	}
 	if last == best {
 		t.Fatal("the last rendering is the closest: the test proves nothing")
@@ -64,7 +63,7 @@ func TestClosestRenderingIsDelivered(t *testing.T) {
 }
 
 func TestCloser(t *testing.T) {
-	p := named(t, "rotation") // −18 LUFS, −1 dBTP
+	j := &turn{task: Task{Profile: named(t, "rotation")}, plan: Plan{Aim: -18}} // −18 LUFS, −1 dBTP
 	for _, c := range []struct {
 		a, b *Analysis
 		want bool
@@ -77,7 +76,7 @@ func TestCloser(t *testing.T) {
 		{reading(-18, -0.5), reading(-18.1, -0.9), false}, // less over goes before closer
 		{reading(-18, -2), reading(-18, -3), false},
 	} {
-		if got := closer(p, c.a, c.b); got != c.want {
+		if got := j.closer(c.a, c.b); got != c.want {
 			t.Errorf("%.2f LUFS %.2f dBTP against %.2f LUFS %.2f dBTP: %v", c.a.Integrated, c.a.TruePeak, c.b.Integrated, c.b.TruePeak, got)
 		}
 	}
@@ -93,7 +92,7 @@ func TestNonFiniteSamplesAreNotDelivered(t *testing.T) {
 		}
 		copy(src.sound[0][1000:], []float32{float32(math.NaN()), float32(math.Inf(1)), float32(math.Inf(-1)), math.MaxFloat32})
 		got := &kept{}
-		if err := Render(context.Background(), src, Plan{Gain: 8, Ceiling: -1, Limit: limit}, got); err != nil {
+		if _, err := Render(context.Background(), src, Plan{Gain: 8, Ceiling: -1, Limit: limit}, got); err != nil {
 			t.Fatal(err)
 		}
 		if len(got.x) != 20_000 {

@@ -61,18 +61,28 @@ type Timeline struct {
 	Peak      []float32 // dBFS, largest sample of the 100 ms
 }
 
-// Loudness returns the loudness of the mean power of the full 400 ms windows that are above −70 LUFS and
-// that keep chooses by the step they end with; undefined if there is none.
-func (t Timeline) Loudness(keep func(step int) bool) audio.LUFS {
+// Loudness returns the loudness of the mean power of those full 400 ms windows that end with one of the steps
+// [from, to) and are above −70 LUFS, and how many they are; undefined if there is none.
+func (t Timeline) Loudness(from, to int) (l audio.LUFS, windows int) {
 	var powers []float64
-	for i, m := range t.Momentary {
-		if i >= momentarySteps-1 && keep(i) {
-			powers = append(powers, power(float64(m)))
-		}
+	for i := max(from, momentarySteps-1); i < min(to, len(t.Momentary)); i++ {
+		powers = append(powers, power(float64(t.Momentary[i])))
 	}
 	mean, n := meanAbove(powers, power(absoluteGate))
 	if n == 0 {
-		return audio.LUFS(audio.Undefined)
+		return audio.LUFS(audio.Undefined), 0
 	}
-	return audio.LUFS(loudness(mean))
+	return audio.LUFS(loudness(mean)), n
+}
+
+// Integrated returns the integrated loudness, with both gates, of those full 400 ms windows that keep chooses by the
+// step they end with; undefined if nothing is above −70 LUFS.
+func (t Timeline) Integrated(keep func(step int) bool) audio.LUFS {
+	var powers []float64
+	for i := momentarySteps - 1; i < len(t.Momentary); i++ {
+		if keep(i) {
+			powers = append(powers, power(float64(t.Momentary[i])))
+		}
+	}
+	return integrated(powers)
 }

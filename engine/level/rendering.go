@@ -1,0 +1,89 @@
+package level
+
+import (
+	"math"
+
+	"evenshelf/engine/audio"
+	"evenshelf/engine/dynamics"
+	"evenshelf/engine/meter"
+	"evenshelf/engine/profile"
+)
+
+// rendering is how a plan came out, or will.
+type rendering struct {
+	meter.Reading
+	timeline meter.Timeline
+	anchored audio.LUFS // the loudness of the plan's anchor
+	work     Work
+}
+
+func (j *turn) rendering(r meter.Reading, t meter.Timeline, w Work) rendering {
+	anchored := r.Integrated
+	if j.plan.Anchor == profile.Speech {
+		anchored = speechLoudness(j.before.Timeline.Course, t)
+	}
+	return rendering{r, t, anchored, w}
+}
+
+// shifted is the source with a steady gain.
+func (j *turn) shifted(gain audio.DB) rendering {
+	r := j.before.Reading
+	for _, l := range []*audio.LUFS{&r.Integrated, &r.MaxMomentary, &r.MaxShortTerm, &r.ShortTerm10, &r.ShortTerm50, &r.ShortTerm95, &r.NoiseFloor} {
+		*l += audio.LUFS(gain)
+	}
+	r.TruePeak += audio.DBTP(gain)
+	r.SamplePeak += audio.DBFS(gain)
+	r.RMS += audio.DBFS(gain)
+	t := j.before.Timeline.Timeline.Ridden(func(int) float64 { return float64(gain) })
+	return rendering{r, t, j.plan.Anchored + audio.LUFS(gain), Work{}}
+}
+
+// ridden is the timeline of a recording after the plan's ride.
+func (plan Plan) ridden(a *Analysis) meter.Timeline {
+	g := plan.Ride.Gain
+	return a.Timeline.Timeline.Ridden(func(i int) float64 { return (float64(g[i]) + float64(g[i+1])) / 2 })
+}
+
+// anchoredIn is the loudness of the plan's anchor in a timeline of the recording.
+func (plan Plan) anchoredIn(a *Analysis, t meter.Timeline) audio.LUFS {
+	if plan.Anchor == profile.Speech {
+		return speechLoudness(a.Timeline.Course, t)
+	}
+	return meter.Together(t)
+}
+
+// moved is what a rendering did to the level in each of n steps, dB.
+func (w Work) moved(n int) []float32 {
+	moved := make([]float32, n)
+	for _, part := range []dynamics.Work{w.Compressed, w.Limited} {
+		for i, v := range part.Mean[:min(n, len(part.Mean))] {
+			moved[i] -= v
+		}
+	}
+	return moved
+}
+
+// deepest is the most that was taken off, dB, and the step in which.
+func deepest(w dynamics.Work) (depth audio.DB, step int) {
+	for i, v := range w.Deepest {
+		if audio.DB(v) > depth {
+			depth, step = audio.DB(v), i
+		}
+	}
+	return depth, step
+}
+
+// spreadWhere is the standard deviation of the values where something is heard.
+func spreadWhere(x []float32, active []bool) float64 {
+	var n, sum, squares float64
+	for i, on := range active {
+		if on {
+			v := float64(x[i])
+			n, sum, squares = n+1, sum+v, squares+v*v
+		}
+	}
+	if n == 0 {
+		return 0
+	}
+	return math.Sqrt(max(0, squares/n-sum/n*sum/n))
+}

@@ -1,0 +1,46 @@
+package level
+
+import (
+	"fmt"
+	"strings"
+
+	"evenshelf/engine/audio"
+	"evenshelf/engine/profile"
+)
+
+// words say what a plan does.
+func (plan Plan) words(p profile.Profile) string {
+	var parts []string
+	add := func(format string, args ...any) { parts = append(parts, fmt.Sprintf(format, args...)) }
+	if p.Anchor == profile.Speech && plan.Anchor != profile.Speech {
+		add("nobody speaks, so all of it is brought to the target")
+	}
+	if r := plan.Ride; r != nil {
+		add("ride it from %s to %s dB", signed(r.Least), signed(r.Most))
+	}
+	if plan.Compressor != nil {
+		add("compress what is over %s LUFS by %s to 1", audio.Number(float64(plan.Compressor.Threshold)+float64(plan.Gain), 1),
+			strings.TrimSuffix(audio.Number(plan.Compressor.Ratio, 1), ".0"))
+	}
+	if plan.Gain < 0 {
+		add("lower by %.1f dB", -plan.Gain)
+	} else {
+		add("lift by %.1f dB", plan.Gain)
+	}
+	switch {
+	case plan.Limit:
+		add("hold peaks under %s dBTP", audio.Number(float64(p.Ceiling), 1))
+	case p.Limiter.Most == 0 && plan.still() && plan.Aim-plan.Anchored > audio.LUFS(plan.Gain)+leastGain:
+		parts[len(parts)-1] += ", as far as the peaks allow"
+	}
+	return strings.Join(parts, "; ")
+}
+
+// signed writes a gain with its sign, to a tenth.
+func signed(g audio.DB) string {
+	s := audio.Number(float64(g), 1)
+	if g > 0 && strings.Trim(s, "0.") != "" {
+		return "+" + s
+	}
+	return s
+}
