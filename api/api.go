@@ -53,6 +53,7 @@ type Store interface {
 	Runs(ctx context.Context, limit int, before int64) ([]store.Run, error)
 	Run(ctx context.Context, id int64) (store.Run, error)
 	Job(ctx context.Context, id int64) (store.Job, error)
+	Plan(ctx context.Context, jobID int64) (*level.Plan, error)
 	Jobs(ctx context.Context, q store.JobQuery) ([]store.Job, error)
 	RunEvents(ctx context.Context, runID, after int64, limit int) ([]store.Event, error)
 	Changed() <-chan struct{}
@@ -71,9 +72,9 @@ type Queue interface {
 type Options struct {
 	Store    Store
 	Queue    Queue
-	Profiles func() []profile.Profile // nil = profile.Builtin
-	Log      *slog.Logger             // nil = silent
-	Version  string                   // shown by /healthz; "" = what the Go build recorded
+	Profiles func() profile.Set // called for each request that needs them; nil = the built-in ones
+	Log      *slog.Logger       // nil = silent
+	Version  string             // shown by /healthz; "" = what the Go build recorded
 
 	Hosts       []string // host names a request may be addressed to, without port; nil = any
 	ShelfRoots  []string // folders below which shelves may be registered; nil = any
@@ -100,7 +101,7 @@ func New(o Options) (*API, error) {
 		return nil, fmt.Errorf("api: upload limit of %d bytes", o.UploadLimit)
 	}
 	if o.Profiles == nil {
-		o.Profiles = profile.Builtin
+		o.Profiles = func() profile.Set { return profile.Gather("") }
 	}
 	if o.Log == nil {
 		o.Log = slog.New(slog.DiscardHandler)
@@ -171,6 +172,7 @@ func (a *API) Register(r *gin.Engine) {
 
 	v1.GET("/profiles", a.handle(a.listProfiles))
 	v1.GET("/profiles/:name", a.handle(a.showProfile))
+	v1.POST("/profiles/check", a.handle(a.checkProfile))
 }
 
 // health answers whether the service can do its work, which comes down to whether the database answers.

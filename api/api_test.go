@@ -12,7 +12,6 @@ import (
 
 	"github.com/gin-gonic/gin"
 
-	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
 
@@ -213,22 +212,6 @@ func TestScanOfAShelfThatIsGone(t *testing.T) {
 		t.Fatal(err)
 	}
 	h.ask(http.MethodPost, at("/shelves/%d/scan", h.shelf.ID), "").wantProblem(t, kindState, "cannot be opened")
-}
-
-func TestProfilesAreTheOnesGiven(t *testing.T) {
-	own := profile.Profile{Name: "own", Summary: "ours", Target: -23, Tolerance: 0.5, Ceiling: -1, Limiting: 3, Lift: 20}
-	h := open(t, func(o *Options) { o.Profiles = func() []profile.Profile { return []profile.Profile{own} } })
-	var got struct {
-		Profiles []struct {
-			profile.Profile
-			Version string
-		}
-	}
-	h.get(at("/profiles")).into(t, 200, &got)
-	if len(got.Profiles) != 1 || got.Profiles[0].Profile != own || got.Profiles[0].Version != own.Version() {
-		t.Errorf("%+v", got)
-	}
-	h.get(at("/profiles/rotation")).wantProblem(t, kindNotFound, "rotation")
 }
 
 func TestNewWantsItsParts(t *testing.T) {

@@ -196,6 +196,9 @@ func TestRepliesMatchDocument(t *testing.T) {
 		{"GET /api/v1/profiles", at("/profiles"), "", "", 200},
 		{"GET /api/v1/profiles/:name", at("/profiles/rotation"), "", "", 200},
 		{"GET /api/v1/profiles/:name", at("/profiles/none"), "", "", 404},
+		{"POST /api/v1/profiles/check", at("/profiles/check"), "based_on = 'talk'", "text/plain", 200},
+		{"POST /api/v1/profiles/check", at("/profiles/check"), "based_on = 'talk'\nride.lift_db = 99\nbits", "application/toml", 200},
+		{"POST /api/v1/profiles/check", at("/profiles/check"), "ride.lift_db = 99", "application/toml; charset=utf-8", 200},
 	} {
 		op := ops[e.op]
 		if op == nil {

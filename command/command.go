@@ -33,18 +33,19 @@ var Version = "0.1.0"
 // cli is every command with its options. Each option can also be given in the environment, as
 // EVENSHELF_ and its name in capitals, and in the TOML file named by --config, under its own name.
 type cli struct {
-	Config   kong.ConfigFlag `help:"TOML file with options, under the names they have here." placeholder:"FILE" type:"existingfile"`
-	Data     string          `help:"Folder for the database and delivered copies (default: ${data})." default:"${data}" placeholder:"DIR" type:"path"`
-	Workers  int             `help:"How many recordings to work on at once (0: one a processor)." default:"0"`
-	FFmpeg   string          `name:"ffmpeg" help:"The ffmpeg program to decode and encode with; 'none' to do without." placeholder:"FILE"`
-	LogLevel slog.Level      `help:"How much to log: debug, info, warn or error." default:"info"`
+	Config     kong.ConfigFlag `help:"TOML file with options, under the names they have here." placeholder:"FILE" type:"existingfile"`
+	Data       string          `help:"Folder for the database and delivered copies (default: ${data})." default:"${data}" placeholder:"DIR" type:"path"`
+	Workers    int             `help:"How many recordings to work on at once (0: one a processor)." default:"0"`
+	FFmpeg     string          `name:"ffmpeg" help:"The ffmpeg program to decode and encode with; 'none' to do without." placeholder:"FILE"`
+	ProfileDir string          `name:"profiles" help:"Folder with profiles of your own, NAME.toml each (default: profiles in the data folder)." placeholder:"DIR" type:"path"`
+	LogLevel   slog.Level      `help:"How much to log: debug, info, warn or error." default:"info"`
 
 	Serve    serveCmd    `cmd:"" help:"Run the server: the dashboard, the HTTP API and the queue."`
 	Measure  measureCmd  `cmd:"" help:"Measure recordings and print their loudness, range, peaks, speech and faults. Nothing is written."`
 	Level    levelCmd    `cmd:"" help:"Make levelled copies of recordings in another folder. Originals are not touched."`
 	Runs     runsCmd     `cmd:"" help:"List the runs of a server, or show one run with its recordings."`
 	Restore  restoreCmd  `cmd:"" help:"Bring originals back from the attic after a run that replaced them."`
-	Profiles profilesCmd `cmd:"" help:"List the levelling profiles, or show one in words."`
+	Profiles profilesCmd `cmd:"" help:"List the levelling profiles, show one in words, check files with profiles of your own."`
 	Try      tryCmd      `cmd:"" help:"See it work: make a demo shelf, level it and open the dashboard."`
 	Version  versionCmd  `cmd:"" help:"Print the version."`
 }

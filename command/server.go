@@ -47,6 +47,9 @@ func (a *app) startServer(o serverOptions) (_ *server, err error) {
 	if err != nil {
 		return nil, err
 	}
+	if _, err := a.profiles(); err != nil {
+		return nil, err
+	}
 	listener, err := net.Listen("tcp", o.listen)
 	if err != nil {
 		return nil, err
@@ -76,7 +79,7 @@ func (a *app) startServer(o serverOptions) (_ *server, err error) {
 	gin.SetMode(gin.ReleaseMode)
 	router := gin.New()
 	options := api.Options{
-		Store: s.store, Queue: s.queue, Log: a.log, Version: Version,
+		Store: s.store, Queue: s.queue, Log: a.log, Version: Version, Profiles: a.watchedProfiles(),
 		ShelfRoots: o.shelfRoots, UploadDir: uploads, CopiesDir: copies,
 	}
 	if !o.anyHost {

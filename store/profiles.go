@@ -37,6 +37,6 @@ func findProfile(ctx context.Context, tx *sql.Tx, version string) (profile.Profi
 		if err := row.Scan(&document); err != nil {
 			return p, err
 		}
-		return p, json.Unmarshal(document, &p)
+		return profile.UnmarshalStored(document)
 	}, "profile version "+version, `SELECT document FROM profiles WHERE version = ?`, version)
 }

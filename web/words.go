@@ -82,7 +82,11 @@ func told(r store.Recording, run *store.Run, job *store.Job) string {
 	}
 	did := action(r, run, job)
 	if r.State == store.Held {
-		did = "Held for a listen: " + reasonOr(r.Reason, "something about the copy is in doubt") + ". " + did
+		why := ": " + reasonOr(r.Reason, "something about the copy is in doubt")
+		if job != nil && len(job.Doubts) > 0 { // the page lists them
+			why = map[bool]string{true: ", for the reason below", false: ", for the reasons below"}[len(job.Doubts) == 1]
+		}
+		did = "Held for a listen" + why + ". " + did
 		if replaced(run) {
 			did += " The file on the shelf was not replaced."
 		}
@@ -109,7 +113,10 @@ func action(r store.Recording, run *store.Run, job *store.Job) string {
 	gain := float64(plan.Gain)
 	var b strings.Builder
 	to := " to"
-	switch {
+	switch least, most, moves := gainEnds(plan); {
+	case moves:
+		fmt.Fprintf(&b, "Ridden between %s and %s dB", least, most)
+		to = ", now at"
 	case math.Abs(gain) < 0.05:
 		b.WriteString("Left at its level")
 		to = ","

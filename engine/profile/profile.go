@@ -7,6 +7,7 @@ import (
 	"crypto/sha256"
 	"encoding/hex"
 	"encoding/json"
+	"fmt"
 
 	"evenshelf/engine/audio"
 )
@@ -77,7 +78,7 @@ type Strength string
 // The strengths.
 const (
 	Evening Strength = "evening" // as much as the range asks, all of it if need be
-	Gentle  Strength = "gentle"  // at least a third of a difference stays
+	Gentle  Strength = "gentle"  // at least 30 % of a difference stays
 )
 
 // Fades says what the ride does to a fade at the start or the end.
@@ -163,8 +164,8 @@ type Harm struct {
 // Version is a short hash of everything the profile says: two profiles with one version level alike.
 func (p Profile) Version() string {
 	b, err := json.Marshal(p)
-	if err != nil {
-		panic(err) // a struct of strings and numbers always marshals
+	if err != nil { // a number that is none; no valid profile has one
+		b = fmt.Appendf(nil, "%+v", p)
 	}
 	sum := sha256.Sum256(b)
 	return hex.EncodeToString(sum[:6])

@@ -1,6 +1,5 @@
 import { get, post } from "../../api.js";
 import { el, parts, say } from "../../dom.js";
-import { number } from "../../figures.js";
 
 export function mount(button) {
   const dialog = document.getElementById(button.dataset.dialog);
@@ -68,17 +67,18 @@ export function mount(button) {
   });
 }
 
+// brief is the start of what a profile says it does: to what loudness, with what ride, under what ceiling.
+function brief({ words }) {
+  const start = (title) => words.find((section) => section.title === title)?.words.slice(0, 2) ?? [];
+  return ["Loudness", "Ride", "Peaks"].flatMap(start).join(" ");
+}
+
 function option(profile, index) {
-  const limits = profile.limiting_db > 0
-    ? `peaks held under ${number(profile.ceiling_dbtp)} dBTP`
-    : `stops where a peak would pass ${number(profile.ceiling_dbtp)} dBTP`;
-  const mono = profile.mono === "two-loudspeakers"
-    ? "A single channel counts as two loudspeakers play it (3.01 LU more)"
-    : "A single channel counts as one loudspeaker (BS.1770)";
   return el("label", { class: "option" },
     el("input", { type: "radio", name: "profile", value: profile.name, checked: index === 0 }),
     el("span", {},
       el("b", {}, profile.name),
+      profile.source === "own" ? " (your own)" : null,
       el("small", {}, profile.summary),
-      el("small", {}, `Aims at ${number(profile.target_lufs)} LUFS, within ${number(profile.tolerance_lu)} LU; ${limits}. ${mono}.`)));
+      el("small", {}, brief(profile))));
 }
