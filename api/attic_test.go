@@ -66,6 +66,33 @@ func TestReplacedRecordingPlaysItsOriginal(t *testing.T) {
 	want(replaced, "levelled "+replaced.Path, "levelled "+replaced.Path)
 }
 
+// A job that found its work done serves what the job before it delivered, and says whose it is.
+func TestResultThatStillStands(t *testing.T) {
+	h := open(t, nil)
+	_, first := h.startRun(store.Replace)
+	h.finish(first[0], level.Done)
+	run, jobs := h.startRun(store.Replace)
+	if _, err := h.db.StartJob(t.Context(), jobs[0].ID); err != nil {
+		t.Fatal(err)
+	}
+	if err := h.db.FinishSame(t.Context(), jobs[0].ID, first[0].ID, "levelled already", nil); err != nil {
+		t.Fatal(err)
+	}
+	for version, want := range map[string]string{"before": arrived[jobs[0].Path], "after": "levelled " + jobs[0].Path} {
+		if r := h.get(at("/recordings/%d/sound?version=%s", jobs[0].RecordingID, version)); r.status != 200 || string(r.body) != want {
+			t.Errorf("%s: %d %q, want %q", version, r.status, r.body, want)
+		}
+	}
+	var got struct{ Jobs []store.Job }
+	h.get(at("/runs/%d/jobs", run.ID)).into(t, 200, &got)
+	if j := got.Jobs[0]; j.SameAs != first[0].ID || j.Reason != "levelled already" || j.Plan == nil || j.After == nil || j.Renders != 0 {
+		t.Errorf("%+v", j)
+	}
+	if r := h.get(at("/recordings/%d/timeline", jobs[0].RecordingID)); !strings.Contains(string(r.body), `"steady_db":13.2`) {
+		t.Errorf("timeline without its ride: %s", r.body)
+	}
+}
+
 func TestRestoredRecordingIsAsItWas(t *testing.T) {
 	h := open(t, nil)
 	run, jobs := h.startRun(store.Replace)

@@ -22,10 +22,12 @@ import (
 	"github.com/gin-gonic/gin"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/dynamics"
 	"evenshelf/engine/faults"
 	"evenshelf/engine/level"
 	"evenshelf/engine/meter"
 	"evenshelf/engine/profile"
+	"evenshelf/engine/ride"
 	"evenshelf/engine/speech"
 	"evenshelf/store"
 )
@@ -180,11 +182,19 @@ func (h *house) finish(job store.Job, state level.State) {
 		h.write(h.shelf.Copies, job.Path, levelled)
 	}
 	outcome := level.Outcome{
-		Before:  analysis(-31.26, -12.5),
-		After:   analysis(-18.04, -3),
-		Plan:    &level.Plan{Gain: 13.2, Ceiling: -1, Reason: "13.2 dB more"},
-		Verdict: level.Verdict{State: state, Reason: "as heard"},
-		Renders: 1,
+		Before:   analysis(-31.26, -12.5),
+		Foreseen: &analysis(-18.01, -3.1).Reading,
+		After:    analysis(-18.04, -3),
+		Plan: &level.Plan{Anchor: profile.Speech, Anchored: -30.9, Aim: -18, Gain: 13.2, Ceiling: -1, Reason: "13.2 dB more",
+			Ride:       &level.Ride{Speed: profile.Medium, Kept: 0.25, Range: 6, Least: -3.1, Most: 4, Gain: ride.Curve{-3.1, 0.04, 4, 4}},
+			Compressor: &dynamics.Compression{Threshold: -15, Ratio: 3, Knee: 6, Release: 0.08},
+			Limiter:    work.Profile.Limiter, Delivered: work.Profile.Delivered},
+		Treatment: &level.Treatment{Limited1: 0.031, Limited3: 0.004, Deepest: 5.2, DeepestAt: 0.2, Order: audio.Ratio(audio.Undefined)},
+		Verdict:   level.Verdict{State: state, Reason: "as heard"},
+		Renders:   1,
+	}
+	if state == level.Held {
+		outcome.Verdict.Doubts = []level.Doubt{{Code: "limiting", Words: "as heard", At: new(audio.Seconds(0.2))}, {Code: "noise", Words: "all of it"}}
 	}
 	if err := h.db.FinishJob(h.t.Context(), job.ID, outcome, job.Path, nil); err != nil {
 		h.t.Fatal(err)

@@ -9,6 +9,7 @@ import (
 
 	"github.com/gin-gonic/gin"
 
+	"evenshelf/engine/audio"
 	"evenshelf/store"
 )
 
@@ -91,6 +92,13 @@ type timeline struct {
 	Step   float64 `json:"step_s"`
 	Before *curves `json:"before"`
 	After  *curves `json:"after"`
+	Ride   *gain   `json:"ride"` // null if the gain stood still
+}
+
+// gain is what was done to the sound of the after reading: the ride, and the steady gain on top of it.
+type gain struct {
+	Ride   gains    `json:"gain_db"` // value i holds at i × step
+	Steady audio.DB `json:"steady_db"`
 }
 
 type curves struct {
@@ -106,15 +114,23 @@ type curves struct {
 type curve []float32
 
 // MarshalJSON writes the series compactly: an hour has 36,000 values in each of six of them.
-func (v curve) MarshalJSON() ([]byte, error) {
+func (v curve) MarshalJSON() ([]byte, error) { return appendSeries(v, 10), nil }
+
+// gains is a series of gains; in JSON each has two decimals, as finely as a ride is solved.
+type gains []float32
+
+// MarshalJSON writes the series compactly.
+func (v gains) MarshalJSON() ([]byte, error) { return appendSeries(v, 100), nil }
+
+func appendSeries(v []float32, steps float64) []byte {
 	b := append(make([]byte, 0, 2+6*len(v)), '[')
 	for i, x := range v {
 		if i > 0 {
 			b = append(b, ',')
 		}
-		b = appendRounded(b, float64(x), 10)
+		b = appendRounded(b, float64(x), steps)
 	}
-	return append(b, ']'), nil
+	return append(b, ']')
 }
 
 // percents is a series of shares of 1; in JSON each is a whole percent, and a nil series is null.
@@ -155,7 +171,22 @@ func (a *API) showTimeline(c *gin.Context) (int, any, error) {
 	if t.After, err = a.curvesOf(ctx, after, &t.Step); err != nil {
 		return 0, nil, err
 	}
+	if t.Ride, err = a.gainOf(ctx, after); err != nil {
+		return 0, nil, err
+	}
 	return http.StatusOK, t, nil
+}
+
+// gainOf fetches the ride that led to an after reading; nil if there is no reading or no ride.
+func (a *API) gainOf(ctx context.Context, after *store.Reading) (*gain, error) {
+	if after == nil {
+		return nil, nil
+	}
+	plan, err := a.Store.Plan(ctx, after.JobID)
+	if err != nil || plan == nil || plan.Ride == nil {
+		return nil, err
+	}
+	return &gain{gains(plan.Ride.Gain), plan.Gain}, nil
 }
 
 // curvesOf fetches a reading's timeline; nil if there is no reading or none was kept with it.

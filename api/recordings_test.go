@@ -71,15 +71,39 @@ func TestRecordingTellsItsStory(t *testing.T) {
 func TestTimelineHasOneDecimalAndNullForSilence(t *testing.T) {
 	h := open(t, nil)
 	_, jobs := h.start()
-	empty := `{"step_s":0.1,"before":null,"after":null}`
+	empty := `{"step_s":0.1,"before":null,"after":null,"ride":null}`
 	if got := h.get(at("/recordings/%d/timeline", jobs[0].RecordingID)); strings.TrimSpace(string(got.body)) != empty {
 		t.Errorf("%d %s", got.status, got.body)
 	}
 	h.finish(jobs[0], level.Done)
 	curves := `{"short_term":[null,-40,-31.3],"momentary":[null,-31.3,0],"peak":[null,-12.3,-12.4],"active":[false,true,true],"speech":[0,7,93]}`
-	want := `{"step_s":0.1,"before":` + curves + `,"after":` + curves + `}`
+	want := `{"step_s":0.1,"before":` + curves + `,"after":` + curves + `,"ride":{"gain_db":[-3.1,0.04,4,4],"steady_db":13.2}}`
 	if got := h.get(at("/recordings/%d/timeline", jobs[0].RecordingID)); strings.TrimSpace(string(got.body)) != want {
 		t.Errorf("got  %s\nwant %s", got.body, want)
+	}
+}
+
+// The curve of a ride goes to those who draw it, not into every list of jobs.
+func TestJobsTellTheRideWithoutItsCurve(t *testing.T) {
+	h := open(t, nil)
+	run, jobs := h.start()
+	h.finish(jobs[0], level.Held)
+	for _, path := range []string{at("/recordings/%d", jobs[0].RecordingID), at("/runs/%d/jobs", run.ID)} {
+		var got struct{ Jobs []map[string]any }
+		h.get(path).into(t, 200, &got)
+		plan := got.Jobs[0]["plan"].(map[string]any)
+		if ride := plan["ride"].(map[string]any); ride["most_db"] != 4.0 || ride["curve"] != nil || plan["anchor"] != "speech" {
+			t.Errorf("%s: plan %v", path, plan)
+		}
+		if got, want := fmt.Sprint(got.Jobs[0]["doubts"]), "[map[at_s:0.2 code:limiting words:as heard] map[at_s:<nil> code:noise words:all of it]]"; got != want {
+			t.Errorf("%s: doubts %s, want %s", path, got, want)
+		}
+		if got := got.Jobs[0]["foreseen"].(map[string]any)["integrated_lufs"]; got != -18.01 {
+			t.Errorf("%s: foreseen %v", path, got)
+		}
+		if treated := got.Jobs[0]["treatment"].(map[string]any); treated["deepest_at_s"] != 0.2 || treated["order"] != nil {
+			t.Errorf("%s: treatment %v", path, treated)
+		}
 	}
 }
 

@@ -73,9 +73,9 @@ func (a *API) newRun(asked runRequest) (n store.NewRun, errs []complaint) {
 	if asked.ShelfID < 1 {
 		errs = append(errs, complaint{"shelf_id", "has to be given"})
 	}
-	p, ok := a.profile(asked.Profile)
-	if !ok {
-		errs = append(errs, complaint{"profile", fmt.Sprintf("no profile is called %q", asked.Profile)})
+	p, err := a.listed(asked.Profile)
+	if err != nil {
+		errs = append(errs, complaint{"profile", err.Error()})
 	}
 	if !slices.Contains(deliveries, asked.Delivery) {
 		errs = append(errs, complaint{"delivery", fmt.Sprintf("%q is not one of measure, copy, replace", asked.Delivery)})
@@ -92,7 +92,7 @@ func (a *API) newRun(asked runRequest) (n store.NewRun, errs []complaint) {
 	case folder != "":
 		errs = append(errs, complaint{"recordings", "cannot go together with folder"})
 	}
-	return store.NewRun{ShelfID: asked.ShelfID, Folder: folder, Recordings: ids, Profile: p, Delivery: asked.Delivery}, errs
+	return store.NewRun{ShelfID: asked.ShelfID, Folder: folder, Recordings: ids, Profile: p.Profile, Delivery: asked.Delivery}, errs
 }
 
 func (a *API) listRuns(c *gin.Context) (int, any, error) {

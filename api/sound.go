@@ -1,6 +1,7 @@
 package api
 
 import (
+	"cmp"
 	"context"
 	"errors"
 	"fmt"
@@ -130,7 +131,7 @@ func (a *API) fileAfter(ctx context.Context, shelf store.Shelf, r store.Recordin
 	if err != nil {
 		return "", "", err
 	}
-	if reading == nil || reading.JobID != job.ID {
+	if reading == nil || reading.JobID != cmp.Or(job.SameAs, job.ID) {
 		return "", "", notFound(fmt.Sprintf("recording %d has no levelled file now", r.ID))
 	}
 	return shelf.Root, job.Output, nil

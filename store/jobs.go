@@ -3,41 +3,37 @@ package store
 import (
 	"context"
 	"database/sql"
-	"encoding/json"
 	"fmt"
 	"slices"
-
-	"evenshelf/engine/level"
 )
 
-const jobQuery = `SELECT j.id, j.run_id, j.recording_id, rec.path, j.state, j.reason, j.output, j.plan, j.renders, j.attempts,
-		j.started_at, j.finished_at, p.name, p.version,
+// jobQuery reads what was done from the job that did it, which may be an earlier one whose result still stood.
+const jobQuery = `SELECT j.id, j.run_id, j.recording_id, rec.path, j.state, j.reason, j.output, coalesce(j.same_as, 0), j.renders, j.attempts,
+		j.started_at, j.finished_at, p.name, p.version, did.plan, did.doubts, did.treatment, did.foreseen,
 		b.id, b.integrated, b."range", b.peak, b.p10, b.p95, b.duration,
 		a.id, a.integrated, a."range", a.peak, a.p10, a.p95
 	FROM jobs j
+	JOIN jobs did ON did.id = coalesce(j.same_as, j.id)
 	JOIN recordings rec ON rec.id = j.recording_id
 	JOIN runs r ON r.id = j.run_id
 	JOIN profiles p ON p.version = r.profile_version
-	LEFT JOIN readings b ON b.job_id = j.id AND b.kind = 'before'
-	LEFT JOIN readings a ON a.job_id = j.id AND a.kind = 'after'`
+	LEFT JOIN readings b ON b.job_id = did.id AND b.kind = 'before'
+	LEFT JOIN readings a ON a.job_id = did.id AND a.kind = 'after'`
 
 func scanJob(row scanner) (j Job, err error) {
 	var started, finished sql.NullInt64
-	var plan sql.Null[[]byte]
+	var d documents
 	var before, after storedFigures
-	dest := []any{&j.ID, &j.RunID, &j.RecordingID, &j.Path, &j.State, &j.Reason, &j.Output, &plan, &j.Renders, &j.Attempts,
-		&started, &finished, &j.Profile, &j.ProfileVersion}
+	dest := []any{&j.ID, &j.RunID, &j.RecordingID, &j.Path, &j.State, &j.Reason, &j.Output, &j.SameAs, &j.Renders, &j.Attempts,
+		&started, &finished, &j.Profile, &j.ProfileVersion, &d.plan, &d.doubts, &d.treatment, &d.foreseen}
 	dest = append(append(append(dest, before.dest()...), &j.Duration), after.dest()...)
 	if err := row.Scan(dest...); err != nil {
 		return j, err
 	}
 	j.StartedAt, j.FinishedAt = fromNullMillis(started), fromNullMillis(finished)
 	j.Before, j.After = before.figures(), after.figures()
-	if plan.Valid && plan.V != nil {
-		j.Plan = new(level.Plan)
-		if err := json.Unmarshal(plan.V, j.Plan); err != nil {
-			return j, fmt.Errorf("plan of job %d: %w", j.ID, err)
-		}
+	if err := d.into(&j); err != nil {
+		return j, fmt.Errorf("job %d: %w", j.ID, err)
 	}
 	return j, nil
 }

@@ -107,6 +107,8 @@ func (f *fixture) run(d Delivery) (Run, []int64) {
 	return run, jobs
 }
 
+func enqueueNothing(context.Context, *Tx, []int64) error { return nil }
+
 func (f *fixture) start(jobID int64) Work {
 	f.t.Helper()
 	w, err := f.StartJob(f.ctx, jobID)

@@ -21,6 +21,8 @@ import (
 // The error of a value is at most 0.005 dB and does not add up, because the differences are taken between
 // rounded values. −Inf and NaN are kept apart as two values below the lowest level, −327.66 dB; levels
 // outside ±327.66 dB are cut to it.
+//
+// Level is not kept: only planning a ride asks for it, on an analysis that is fresh. A timeline read back has none.
 const (
 	storedSilence   = math.MinInt16     // −Inf
 	storedUndefined = math.MinInt16 + 1 // NaN

@@ -225,23 +225,27 @@ type Run struct {
 
 // Job is one recording's turn.
 type Job struct {
-	ID             int64       `json:"id"`
-	RunID          int64       `json:"run_id"`
-	RecordingID    int64       `json:"recording_id"`
-	Path           string      `json:"path"`
-	State          JobState    `json:"state"`
-	Reason         string      `json:"reason"`
-	Output         string      `json:"output"` // relative to the shelf's Copies folder; "" if nothing was delivered
-	Plan           *level.Plan `json:"plan"`
-	Renders        int         `json:"renders"`
-	Attempts       int         `json:"attempts"`
-	StartedAt      *time.Time  `json:"started_at"`
-	FinishedAt     *time.Time  `json:"finished_at"`
-	Before         *Figures    `json:"before"`
-	After          *Figures    `json:"after"`
-	Duration       *float64    `json:"duration_s"`
-	Profile        string      `json:"profile"`
-	ProfileVersion string      `json:"profile_version"`
+	ID             int64            `json:"id"`
+	RunID          int64            `json:"run_id"`
+	RecordingID    int64            `json:"recording_id"`
+	Path           string           `json:"path"`
+	State          JobState         `json:"state"`
+	Reason         string           `json:"reason"`
+	Output         string           `json:"output"`  // relative to the shelf's Copies folder; "" if nothing was delivered
+	SameAs         int64            `json:"same_as"` // the job whose result still stood, so that nothing was done; 0: its own
+	Plan           *level.Plan      `json:"plan"`    // without the curve of its ride, see Store.Plan
+	Renders        int              `json:"renders"`
+	Attempts       int              `json:"attempts"`
+	StartedAt      *time.Time       `json:"started_at"`
+	FinishedAt     *time.Time       `json:"finished_at"`
+	Before         *Figures         `json:"before"`
+	Foreseen       *Figures         `json:"foreseen"` // of the rendering before it was encoded
+	After          *Figures         `json:"after"`
+	Treatment      *level.Treatment `json:"treatment"`
+	Doubts         []level.Doubt    `json:"doubts"` // why it is held; never nil
+	Duration       *float64         `json:"duration_s"`
+	Profile        string           `json:"profile"`
+	ProfileVersion string           `json:"profile_version"`
 }
 
 // JobQuery selects a page of a run's jobs, in id order.

@@ -1,9 +1,9 @@
 package store
 
 import (
+	"cmp"
 	"context"
 	"database/sql"
-	"encoding/json"
 	"fmt"
 
 	"evenshelf/engine/level"
@@ -73,7 +73,43 @@ func findWork(ctx context.Context, tx *sql.Tx, jobID int64) (w Work, err error) 
 // FinishJob stores readings, verdict and history; complete runs in the same transaction (it may be nil).
 // ErrState if the job is not working: a job ends once.
 func (s *Store) FinishJob(ctx context.Context, jobID int64, o level.Outcome, output string, complete func(ctx context.Context, tx *Tx) error) error {
-	end := JobState(o.Verdict.State)
+	return s.finish(ctx, jobID, o.Verdict, complete, func(tx *sql.Tx, w Work, at int64) error {
+		if err := storeReadings(ctx, tx, w, o, at); err != nil {
+			return err
+		}
+		if err := storeDocuments(ctx, tx, jobID, o); err != nil {
+			return err
+		}
+		seconds := 0.0
+		if o.Before != nil {
+			seconds = o.Before.Duration
+		}
+		_, err := tx.ExecContext(ctx, `UPDATE jobs SET output = ?, renders = ?, duration = ? WHERE id = ?`, output, o.Renders, seconds, jobID)
+		return err
+	})
+}
+
+// FinishSame ends a job for which nothing was done, as the result of an earlier job of the same recording still
+// stands: it is done, with the plan and the readings of that one. Otherwise it is as FinishJob.
+func (s *Store) FinishSame(ctx context.Context, jobID, earlier int64, reason string, complete func(ctx context.Context, tx *Tx) error) error {
+	return s.finish(ctx, jobID, level.Verdict{State: level.Done, Reason: reason}, complete, func(tx *sql.Tx, w Work, at int64) error {
+		same, err := tx.ExecContext(ctx, `UPDATE jobs SET same_as = did.id, output = did.output, duration = did.duration
+			FROM (SELECT id, recording_id, output, duration FROM jobs WHERE id = (SELECT coalesce(same_as, id) FROM jobs WHERE id = ?)) AS did
+			WHERE jobs.id = ? AND did.recording_id = jobs.recording_id`, earlier, jobID)
+		if err != nil {
+			return err
+		}
+		if n, err := same.RowsAffected(); err != nil || n == 0 {
+			return cmp.Or(err, fmt.Errorf("job %d of the same recording: %w", earlier, ErrNotFound))
+		}
+		return showSame(ctx, tx, w)
+	})
+}
+
+// finish ends a job; result stores what it came to.
+func (s *Store) finish(ctx context.Context, jobID int64, v level.Verdict, complete func(ctx context.Context, tx *Tx) error,
+	result func(tx *sql.Tx, w Work, at int64) error) error {
+	end := JobState(v.State)
 	if end != Done && end != Held && end != Failed {
 		return fmt.Errorf("finish job %d: a job cannot end as %q: %w", jobID, end, ErrInvalid)
 	}
@@ -86,16 +122,16 @@ func (s *Store) FinishJob(ctx context.Context, jobID int64, o level.Outcome, out
 			return fmt.Errorf("it is %s: %w", w.Job.State, ErrState)
 		}
 		at := now()
-		if err := storeReadings(ctx, tx, w, o, at); err != nil {
+		if err := result(tx, w, at); err != nil {
 			return err
 		}
-		if err := endJob(ctx, tx, w.Job, o, output, at); err != nil {
+		if _, err := tx.ExecContext(ctx, `UPDATE jobs SET state = ?, reason = ?, finished_at = ? WHERE id = ?`, string(end), v.Reason, at, jobID); err != nil {
 			return err
 		}
-		if err := showVerdict(ctx, tx, w, end, o.Verdict.Reason); err != nil {
+		if err := showVerdict(ctx, tx, w, end, v.Reason); err != nil {
 			return err
 		}
-		if err := tell(ctx, tx, w.Job.event(at, end, o.Verdict.Reason)); err != nil {
+		if err := tell(ctx, tx, w.Job.event(at, end, v.Reason)); err != nil {
 			return err
 		}
 		if err := endRun(ctx, tx, w.Job.RunID, at); err != nil {
@@ -110,24 +146,6 @@ func (s *Store) FinishJob(ctx context.Context, jobID int64, o level.Outcome, out
 		return fmt.Errorf("finish job %d: %w", jobID, err)
 	}
 	return nil
-}
-
-func endJob(ctx context.Context, tx *sql.Tx, job Job, o level.Outcome, output string, at int64) error {
-	var plan any
-	if o.Plan != nil {
-		b, err := json.Marshal(o.Plan)
-		if err != nil {
-			return fmt.Errorf("plan: %w: %w", err, ErrInvalid)
-		}
-		plan = string(b)
-	}
-	seconds := 0.0
-	if o.Before != nil {
-		seconds = o.Before.Duration
-	}
-	_, err := tx.ExecContext(ctx, `UPDATE jobs SET state = ?, reason = ?, output = ?, plan = ?, renders = ?, duration = ?, finished_at = ? WHERE id = ?`,
-		string(o.Verdict.State), o.Verdict.Reason, output, plan, o.Renders, seconds, at, job.ID)
-	return err
 }
 
 // newestEnded is the condition that no newer job of the recording has ended, so that this one's result is the
@@ -164,6 +182,21 @@ func storeReadings(ctx context.Context, tx *sql.Tx, w Work, o level.Outcome, at 
 		args = append([]any{id}, figuresOf(a)...)
 	}
 	return show(`after_id = ?, after_integrated = ?, after_range = ?, after_peak = ?, after_p10 = ?, after_p95 = ?`, args...)
+}
+
+// showSame shows the readings of the job whose result still stands on its recording, which a copy made since may
+// have covered up.
+func showSame(ctx context.Context, tx *sql.Tx, w Work) error {
+	for _, kind := range []string{kindBefore, kindAfter} {
+		_, err := tx.ExecContext(ctx, fmt.Sprintf(`UPDATE recordings SET %[1]s_id = r.id, %[1]s_integrated = r.integrated, %[1]s_range = r."range",
+			%[1]s_peak = r.peak, %[1]s_p10 = r.p10, %[1]s_p95 = r.p95
+			FROM readings r JOIN jobs j ON j.same_as = r.job_id WHERE r.kind = ? AND j.id = ? AND recordings.id = ? AND `+newestEnded, kind),
+			kind, w.Job.ID, w.Recording.ID, w.Job.ID)
+		if err != nil {
+			return err
+		}
+	}
+	return nil
 }
 
 // showVerdict shows the end of a job on its recording. Measuring well does not hide the verdict of an

@@ -8,6 +8,7 @@ import (
 	"testing"
 	"time"
 
+	"github.com/chromedp/cdproto/input"
 	"github.com/chromedp/chromedp"
 	"github.com/chromedp/chromedp/kb"
 
@@ -64,6 +65,7 @@ func TestInBrowser(t *testing.T) {
 		until(t, ctx, `!document.querySelector("[data-component=newrun]").disabled`)
 		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=newrun]").click()`)
 		until(t, ctx, `document.querySelectorAll("dialog[open] input[name=profile]").length === 2`)
+		until(t, ctx, `document.querySelector("dialog[open]").innerText.includes("Speech is brought to −23 LUFS, within 0.3 LU")`)
 		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] button[type=submit]").click()`)
 		until(t, ctx, `location.pathname === "/runs/12"`)
 	})
@@ -102,6 +104,7 @@ func TestInBrowser(t *testing.T) {
 		webtest.Do(t, ctx, chromedp.Click(chromedp.CSS("[data-part=play]")))
 		until(t, ctx, `document.querySelector("[data-part=play]").textContent === "Listen"`)
 		testMarks(t, ctx)
+		testDoubts(t, ctx, url)
 		if !webtest.Eval[bool](t, ctx, `document.querySelector("[data-version=after]").getAttribute("aria-pressed") === "true" && document.querySelector("[data-version=before]").getAttribute("aria-pressed") === "false"`) {
 			t.Error("the after version is not chosen")
 		}
@@ -138,8 +141,9 @@ func TestInBrowser(t *testing.T) {
 	})
 }
 
-// testMarks looks under the curves: what is heard at a moment, and the faults at their places. Of the five faults
-// on the page one lies at the very start, two within a second of each other, and one concerns the whole recording.
+// testMarks looks under the curves: what is heard at a moment, and the faults and doubts at their places. Of the five
+// faults on the page one lies at the very start, two within a second of each other, and one concerns the whole
+// recording; of the three doubts one is the first of those two faults again, and one concerns the whole.
 func testMarks(t *testing.T, ctx context.Context) {
 	reads := `document.querySelector(".reads")`
 	point := func(share float64) string {
@@ -148,10 +152,10 @@ func testMarks(t *testing.T, ctx context.Context) {
 	}
 	for share, heard := range map[float64]string{0.02: "speech", 0.14: "pause", 0.5: "no speech"} {
 		webtest.Eval[int](t, ctx, point(share))
-		until(t, ctx, fmt.Sprintf(`%s.textContent.endsWith(" LUFS, %s")`, reads, heard))
+		until(t, ctx, fmt.Sprintf(`/ LUFS, [+−]?\d+\.\d dB, %s$/.test(%s.textContent)`, heard, reads))
 	}
-	if n := webtest.Eval[int](t, ctx, `document.querySelectorAll(".fault-mark").length`); n != 3 {
-		t.Fatalf("%d marks, want 3", n)
+	if n := webtest.Eval[int](t, ctx, `document.querySelectorAll(".fault-mark").length`); n != 4 {
+		t.Fatalf("%d marks, want 4", n)
 	}
 	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector(".fault-mark.is-many").focus()`)
 	until(t, ctx, reads+`.textContent === "1:23.2: clipped 214 times, first at 1:23.2\n1:24.1: the sound drops out for 50 ms at 1:24.1" && !`+reads+`.hidden`)
@@ -159,6 +163,59 @@ func testMarks(t *testing.T, ctx context.Context) {
 	until(t, ctx, reads+`.hidden`)
 	webtest.Do(t, ctx, chromedp.Click(chromedp.CSS(".fault-mark:last-child")))
 	until(t, ctx, `document.querySelector("[data-part=time]").textContent.startsWith("0:02.0")`) // the end of the sound there is
+}
+
+// testDoubts goes to the moments to listen to: from the list of doubts, from a mark, and from a link of another page.
+// What is heard is the copy, as quietly as the player starts.
+func testDoubts(t *testing.T, ctx context.Context, url string) {
+	webtest.Do(t, ctx, chromedp.Navigate(url+"/recordings?state=held"))
+	webtest.Do(t, ctx, chromedp.Click(chromedp.CSS(`.why a`)))
+	heard := `document.querySelector("[data-version=after]")?.getAttribute("aria-pressed") === "true"`
+	until(t, ctx, `location.pathname === "/recordings/18" && `+heard)
+	until(t, ctx, `document.querySelector("[data-part=time]").textContent.startsWith("1:22.2")`) // a second early
+	until(t, ctx, `!!document.querySelector(".timeline-ride canvas")`)
+	if got := webtest.Eval[string](t, ctx, `document.querySelector("[data-part=percent]").textContent`); got != "20 %" {
+		t.Errorf("the player starts at %s", got)
+	}
+	ink := webtest.Eval[int](t, ctx, `(() => { const c = document.querySelector(".timeline-ride canvas"); const d = c.getContext("2d").getImageData(0, 0, c.width, c.height).data; let n = 0; for (let i = 3; i < d.length; i += 4) n += d[i] > 0; return n; })()`)
+	if ink < 1500 {
+		t.Errorf("only %d pixels of the ride are drawn", ink)
+	}
+	// Both charts show the same times.
+	left := `document.querySelectorAll(".u-over")`
+	if off := webtest.Eval[float64](t, ctx, `(([a, b]) => Math.max(Math.abs(a.left - b.left), Math.abs(a.right - b.right)))([...`+left+`].map((o) => o.getBoundingClientRect()))`); off > 0.5 {
+		t.Errorf("the ride is %g px out of step with the chart above", off)
+	}
+	// A drag looks closer at both, and a button shows the whole again.
+	picture := `document.querySelector(".timeline-ride canvas").toDataURL()`
+	whole := webtest.Eval[string](t, ctx, picture)
+	place := webtest.Eval[[]float64](t, ctx, `(({ left, top }) => [left, top])(document.querySelector(".u-over").getBoundingClientRect())`)
+	held := func(p *input.DispatchMouseEventParams) { p.Buttons = 1 }
+	for _, step := range []struct {
+		what input.DispatchMouseEventType
+		x    float64
+	}{{input.DispatchMouseEventTypeMouseMoved, 300}, {chromedp.MousePressed, 300}, {input.DispatchMouseEventTypeMouseMoved, 400},
+		{input.DispatchMouseEventTypeMouseMoved, 500}, {chromedp.MouseReleased, 500}} {
+		webtest.Do(t, ctx, chromedp.MouseEvent(step.what, place[0]+step.x, place[1]+90, chromedp.ButtonLeft, chromedp.ClickCount(1), held))
+	}
+	until(t, ctx, `!document.querySelector("[data-part=whole]").hidden`)
+	if webtest.Eval[string](t, ctx, picture) == whole {
+		t.Error("the ride does not follow a closer look")
+	}
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-part=whole]").click()`)
+	until(t, ctx, `document.querySelector("[data-part=whole]").hidden`)
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-version=before]").click()`)
+	webtest.Do(t, ctx, chromedp.Click(chromedp.CSS(`.doubts li:nth-child(3) button`))) // throughout: from the start
+	until(t, ctx, heard+` && document.querySelector("[data-part=play]").textContent === "Pause"`)
+	until(t, ctx, `document.querySelector("[data-part=play]").textContent === "Listen"`) // the sound there is ends
+	webtest.Do(t, ctx, chromedp.Navigate(url+"/recordings/17"))
+	until(t, ctx, `!!document.querySelector(".uplot canvas")`)
+	if !webtest.Eval[bool](t, ctx, `document.querySelector("[data-part=ride]").hidden`) {
+		t.Error("a gain that stood still is drawn as a ride")
+	}
+	webtest.Do(t, ctx, chromedp.Navigate(url+"/recordings/18"))
+	until(t, ctx, `!!document.querySelector(".uplot canvas") && !document.querySelector(".player-row").hidden`)
+	webtest.Do(t, ctx, chromedp.Click(chromedp.CSS("[data-version=after]")))
 }
 
 func testReplacing(t *testing.T, ctx context.Context, url string, f *fake) {
@@ -292,6 +349,12 @@ func testMaths(t *testing.T, ctx context.Context, url string) {
 				JSON.stringify([{ from: 0, to: 2, speech: true }, { from: 3, to: 4, speech: false }, { from: 4, to: 5, speech: true }])`,
 			"what was not looked for is not silence": `return m.stretches({ active: null, speech: null }, 1) === null && m.stretches(null, 1) === null`,
 			"a pause is what is left":                `const b = m.stretches({ active: [true, false, true], speech: [99, 0, 0] }, 1); return [1, 2, 3].map((s) => m.heardAt(b, s)).join() === "speech,pause,no speech"`,
+		},
+		"ride": {
+			"a gain is the ride and what is steady": `const r = m.rideOf({ gain_db: [-1, 2.5], steady_db: 4 }, 0.1); return [...r.db].join() === "3,6.5" && [...r.x].join() === "0,0.1"`,
+			"no ride, no line":                      `return m.rideOf(null, 0.1) === null && m.rideOf({ gain_db: [], steady_db: 4 }, 0.1) === null`,
+			"the scale holds 0 and is never tiny":   `const [l, h] = m.gainExtent([3, 3.1]); const [a, b] = m.gainExtent([-8, 8]); return l <= 0 && h >= 3.1 && h - l >= 6 && a === -9 && b === 9`,
+			"a gain has its sign":                   `return m.signed(4.25) === "+4.3" && m.signed(-4) === "−4.0" && m.signed(0.01) === "0.0" && m.signed(5, 0) === "+5"`,
 		},
 		"faults": {
 			"marks that would cover each other are one": `return m.clusters([{ at: 1 }, { at: 2 }, { at: 9 }], ({ at }) => 10 * at).map(({ x, faults }) => [x, faults.length]).join(";") === "10,2;90,1"`,

@@ -44,7 +44,7 @@ func (f *fake) Readings(ctx context.Context, id int64) (before, after *store.Rea
 				faults.Fault{Code: "tail-silence", Severity: faults.Note, At: *r.Duration - 7.4, Length: 7.4, Words: "7.4 s of silence at the end"},
 				faults.Fault{Code: "dc-offset", Severity: faults.Note, Length: *r.Duration, Words: "the sound lies 0.7 % of full scale above the middle (DC offset): a cut in it may click"})
 		}
-		return &store.Reading{ID: id, RecordingID: id, Kind: kind, MeasuredAt: noon, Analysis: a}
+		return &store.Reading{ID: id, RecordingID: id, JobID: r.JobID, Kind: kind, MeasuredAt: noon, Analysis: a}
 	}
 	return read("before", r.Before), read("after", r.After), f.broken
 }

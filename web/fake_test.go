@@ -33,7 +33,7 @@ type fake struct {
 	runList   []store.Run
 	jobList   []store.Job
 	attic     []store.Original
-	profiles  []profile.Profile
+	profiles  []profile.Listed
 	asked     chan string // bodies of the runs that were asked for
 	mu        sync.Mutex  // held where a restore changes what a page shows
 	broken    error       // returned by every call when set
@@ -56,7 +56,7 @@ var hostile = []string{
 // newFake invents a shelf of n recordings, most of them levelled by one run that is still at work.
 func newFake(n int) *fake {
 	rng := rand.New(rand.NewPCG(7, uint64(n)))
-	f := &fake{asked: make(chan string, 9), profiles: profile.Builtin()}
+	f := &fake{asked: make(chan string, 9), profiles: profile.Gather("").All[:2]}
 	run := store.Run{ID: 12, ShelfID: 1, ShelfName: "evening-music", Profile: "rotation", ProfileVersion: "5f0c2a91b3de", Target: -18,
 		Delivery: store.Copy, State: store.RunWorking, CreatedAt: noon.Add(-40 * time.Minute), Jobs: n, BytesTotal: int64(n) * 41e6}
 	started := noon.Add(-38 * time.Minute)
@@ -168,6 +168,7 @@ func (f *fake) invent(rng *rand.Rand, i, n int) (store.Recording, store.Job) {
 		r.After = after(-1)
 	}
 	j.State, j.Reason, j.After, j.Before = r.State, r.Reason, r.After, r.Before
+	inventTreatment(&j)
 	return r, j
 }
 
@@ -272,6 +273,16 @@ func (f *fake) Jobs(_ context.Context, q store.JobQuery) ([]store.Job, error) {
 	return jobs, f.broken
 }
 
+func (f *fake) HeldFor(_ context.Context, ids []int64) (map[int64][]level.Doubt, error) {
+	doubts := map[int64][]level.Doubt{}
+	for _, j := range f.jobList {
+		if slices.Contains(ids, j.RecordingID) && len(j.Doubts) > 0 {
+			doubts[j.RecordingID] = j.Doubts
+		}
+	}
+	return doubts, f.broken
+}
+
 func (f *fake) RecordingJobs(_ context.Context, id int64) ([]store.Job, error) {
 	i := slices.IndexFunc(f.jobList, func(j store.Job) bool { return j.RecordingID == id })
 	if i < 0 || f.jobList[i].State == "" {
@@ -314,7 +325,13 @@ func (f *fake) api(r gin.IRouter) {
 		c.JSON(200, gin.H{"target_lufs": -18, "rows": rows, "columns": []string{"id", "path", "state", "before_lufs", "before_p10",
 			"before_p95", "before_peak", "after_lufs", "after_p10", "after_p95", "after_peak"}})
 	})
-	g.GET("/profiles", func(c *gin.Context) { c.JSON(200, gin.H{"profiles": f.profiles}) })
+	g.GET("/profiles", func(c *gin.Context) {
+		all := []profile.Described{}
+		for _, l := range f.profiles {
+			all = append(all, l.Described())
+		}
+		c.JSON(200, gin.H{"profiles": all, "problems": []any{}})
+	})
 	g.POST("/runs", func(c *gin.Context) {
 		body, _ := c.GetRawData()
 		f.asked <- string(body)
@@ -336,7 +353,7 @@ func (f *fake) api(r gin.IRouter) {
 			c.Status(404)
 			return
 		}
-		c.JSON(200, gin.H{"step_s": 0.1, "before": course(r.ID, r.Before, r.Duration), "after": course(r.ID, r.After, r.Duration)})
+		c.JSON(200, gin.H{"step_s": 0.1, "before": course(r.ID, r.Before, r.Duration), "after": course(r.ID, r.After, r.Duration), "ride": f.ride(r)})
 	})
 	g.GET("/recordings/:id/sound", func(c *gin.Context) {
 		http.ServeContent(c.Writer, c.Request, "tone.wav", noon, bytes.NewReader(tone()))

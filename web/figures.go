@@ -34,6 +34,10 @@ func functions(a *assets, now func() time.Time) template.FuncMap {
 		"folder":   folder,
 		"spark":    newSpark,
 		"stateSay": stateWords,
+		"gain":     gainSpan,
+		"listen":   newListen,
+		"doubtful": newDoubtful,
+		"doubtSay": doubtWords,
 	}
 }
 

@@ -6,6 +6,7 @@ import (
 
 	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
+	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
 
@@ -38,8 +39,17 @@ func (p recordingPage) Gauges() []gauges {
 		}
 	}
 	loudness, peaks := &groups[0], &groups[1]
-	loudness.Asks, peaks.Asks = p.Target != nil, p.Ceiling != nil
-	loudness.Rows[0].Asked = newFigure(p.Target, "LUFS")
+	peaks.Asks = p.Ceiling != nil
+	anchor, at, target := loudness, 0, newFigure(p.Target, "LUFS")
+	if j := p.Levelled; j != nil && j.Plan != nil {
+		if j.Plan.Anchor == profile.Speech {
+			anchor, at = &groups[3], 2
+		}
+		if audio.Defined(j.Plan.Aim) {
+			target = newFigure(j.Plan.Aim, "LUFS")
+		}
+	}
+	anchor.Asks, anchor.Rows[at].Asked = p.Target != nil, target
 	peaks.Rows[0].Asked, peaks.Rows[0].AtMost = newFigure(p.Ceiling, "dBTP"), true
 	return groups
 }

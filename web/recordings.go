@@ -1,6 +1,7 @@
 package web
 
 import (
+	"context"
 	"errors"
 	"net/http"
 	"net/url"
@@ -8,6 +9,7 @@ import (
 
 	"github.com/gin-gonic/gin"
 
+	"evenshelf/engine/level"
 	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
@@ -34,8 +36,9 @@ type recordingsPage struct {
 	Shelves []choice
 	States  []choice
 	Run     *store.Run
-	Narrow  bool   // something is filtered
-	First   string // address of the first page, "" on it
+	Doubts  map[int64][]level.Doubt // why recordings are held
+	Narrow  bool                    // something is filtered
+	First   string                  // address of the first page, "" on it
 	Next    string
 }
 
@@ -56,6 +59,10 @@ func (s *Site) recordings(c *gin.Context) {
 	p := recordingsPage{Query: q, Narrow: q.ShelfID != 0 || q.RunID != 0 || q.Folder != "" || q.State != "" || q.Search != ""}
 	var err error
 	if p.RecordingPage, err = s.store.Recordings(ctx, q); err != nil {
+		s.fail(c, err)
+		return
+	}
+	if p.Doubts, err = s.heldFor(ctx, p.Recordings); err != nil {
 		s.fail(c, err)
 		return
 	}
@@ -104,6 +111,20 @@ func (s *Site) recordings(c *gin.Context) {
 		p.Next = recordingsURL(q, q.Sort, q.Desc, p.RecordingPage.Next)
 	}
 	s.render(c, http.StatusOK, "recordings", p)
+}
+
+// heldFor asks why those recordings are held that are.
+func (s *Site) heldFor(ctx context.Context, list []store.Recording) (map[int64][]level.Doubt, error) {
+	var ids []int64
+	for _, r := range list {
+		if r.State == store.Held {
+			ids = append(ids, r.ID)
+		}
+	}
+	if ids == nil {
+		return nil, nil
+	}
+	return s.store.HeldFor(ctx, ids)
 }
 
 // recordingQuery reads the address. What makes no sense there is left out rather than refused: an address is
@@ -167,6 +188,7 @@ type recordingPage struct {
 	Ceiling       *float64 // what the last plan rendered to, else the profile's
 	Run           *store.Run
 	Last          *store.Job
+	Levelled      *store.Job // the one that made what the after reading is of
 	Jobs          []store.Job
 	History       []store.Event
 	Original      *store.Original // in the attic; nil if none is there
@@ -227,6 +249,7 @@ func (s *Site) findRecording(c *gin.Context, n int64) (p recordingPage, err erro
 			p.Ceiling = &ceiling
 		}
 	}
+	p.Levelled = levelledBy(p.AfterReading, p.Jobs)
 	p.Told = told(p.Recording, p.Run, p.Last)
 	return p, nil
 }

@@ -9,6 +9,7 @@ import (
 
 	"github.com/gin-gonic/gin"
 
+	"evenshelf/engine/level"
 	"evenshelf/store"
 )
 
@@ -24,6 +25,7 @@ type Store interface {
 	Runs(ctx context.Context, limit int, before int64) ([]store.Run, error)
 	Run(ctx context.Context, id int64) (store.Run, error)
 	Jobs(ctx context.Context, q store.JobQuery) ([]store.Job, error)
+	HeldFor(ctx context.Context, recordingIDs []int64) (map[int64][]level.Doubt, error)
 	Original(ctx context.Context, recordingID int64) (store.Original, error)
 	Originals(ctx context.Context, q store.OriginalQuery) ([]store.Original, error)
 }

@@ -14,47 +14,74 @@ import (
 )
 
 // firstGeneration returns the sound to level: what is on the shelf, or if that is a copy we put there, its
-// original in the attic, so that no sound is ever levelled twice. A replacing job that a crash cut short
-// after its copy was in place is repeated the same way and makes the same file.
-func (s *Service) firstGeneration(ctx context.Context, w store.Work, onShelf string) (string, error) {
-	kept, err := s.store.Original(ctx, w.Recording.ID)
+// original in the attic, so that no sound is ever levelled twice. In that case ours is what the attic knows of
+// it, else nil. A replacing job that a crash cut short after its copy was in place is repeated the same way and
+// makes the same file.
+func (s *Service) firstGeneration(ctx context.Context, shelf store.Shelf, recordingID int64, onShelf string) (source string, ours *store.Original, err error) {
+	kept, err := s.store.Original(ctx, recordingID)
 	switch {
 	case errors.Is(err, store.ErrNotFound):
-		return onShelf, nil
+		return onShelf, nil, nil
 	case err != nil:
-		return "", err
+		return "", nil, err
 	case inAttic(kept).IsLevelled(onShelf):
-		return filepath.Join(w.Shelf.Attic(), filepath.FromSlash(kept.Stored)), nil
+		return filepath.Join(shelf.Attic(), filepath.FromSlash(kept.Stored)), &kept, nil
 	default:
-		return onShelf, nil
+		return onShelf, nil, nil
 	}
 }
 
-// replace puts the levelled copy in the recording's place.
-func (s *Service) replace(ctx context.Context, w store.Work, onShelf, key string) (level.Outcome, string, error) {
+// already is the reason of a job that found its work done by an earlier one.
+const already = "levelled with this profile already"
+
+// replace puts the levelled copy in the recording's place, unless what it would put there is there.
+func (s *Service) replace(ctx context.Context, w store.Work, t level.Task, onShelf, key string) (r result, err error) {
 	leave, err := s.places.enter(ctx, w.Recording.ID)
 	if err != nil {
-		return level.Outcome{}, "", err
+		return r, err
 	}
 	defer leave()
-	source, err := s.firstGeneration(ctx, w, onShelf)
+	source, ours, err := s.firstGeneration(ctx, w.Shelf, w.Recording.ID, onShelf)
 	if err != nil {
-		return level.Outcome{}, "", err
+		return r, err
+	}
+	if ours != nil {
+		switch stands, err := s.stands(ctx, w, t, *ours); {
+		case err != nil:
+			return r, err
+		case stands:
+			return result{outcome: level.Outcome{Verdict: level.Verdict{State: level.Done, Reason: already}}, same: ours.JobID}, nil
+		}
 	}
 	at := delivery.Place{Root: w.Shelf.Root, Rel: w.Recording.Path, Attic: w.Shelf.Attic(), Copies: w.Shelf.Copies, Source: source}
-	return delivery.Replace(ctx, s.engine, at, level.Task{Profile: w.Profile}, key, func(ctx context.Context, o delivery.Original) error {
+	r.outcome, r.output, err = delivery.Replace(ctx, s.engine, at, t, key, func(ctx context.Context, o delivery.Original) error {
 		return s.store.KeepOriginal(ctx, store.Original{RecordingID: w.Recording.ID, JobID: w.Job.ID,
 			SHA256: o.SHA256, Stored: o.Stored, Levelled: o.Levelled, Size: o.Size})
 	})
+	return r, err
+}
+
+// stands reports whether levelling would only make the file again that we put on the shelf: it was made by this
+// engine, with this version of the profile and, if it shares its gain with others, with the same gain.
+func (s *Service) stands(ctx context.Context, w store.Work, t level.Task, ours store.Original) (bool, error) {
+	ok, err := s.store.Stands(ctx, ours.JobID, w.Job.ProfileVersion)
+	if err != nil || !ok || t.Shared == nil {
+		return ok, err
+	}
+	then, err := s.store.Shared(ctx, ours.RunID, folderOf(w.Recording))
+	if errors.Is(err, store.ErrNotFound) {
+		return false, nil
+	}
+	return err == nil && then == *t.Shared, err
 }
 
 // deliverCopy puts a levelled copy into the shelf's copies folder.
-func (s *Service) deliverCopy(ctx context.Context, w store.Work, onShelf, key string) (level.Outcome, string, error) {
-	source, err := s.firstGeneration(ctx, w, onShelf)
+func (s *Service) deliverCopy(ctx context.Context, w store.Work, t level.Task, onShelf, key string) (level.Outcome, string, error) {
+	source, _, err := s.firstGeneration(ctx, w.Shelf, w.Recording.ID, onShelf)
 	if err != nil {
 		return level.Outcome{}, "", err
 	}
-	return delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, level.Task{Profile: w.Profile}, key, delivery.Options{Overwrite: true})
+	return delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, t, key, delivery.Options{Overwrite: true})
 }
 
 func inAttic(o store.Original) delivery.Original {
@@ -103,20 +130,20 @@ func (s *Service) Restore(ctx context.Context, recordingID int64) (store.Recordi
 	return s.store.Recording(ctx, recordingID)
 }
 
-// turnstile lets one at a time through for each recording.
-type turnstile struct {
+// turnstile lets one at a time through for each key.
+type turnstile[K comparable] struct {
 	mu   sync.Mutex
-	busy map[int64]chan struct{} // closed when the one inside leaves
+	busy map[K]chan struct{} // closed when the one inside leaves
 }
 
 // enter waits until nobody else is inside. Call leave once.
-func (t *turnstile) enter(ctx context.Context, id int64) (leave func(), err error) {
+func (t *turnstile[K]) enter(ctx context.Context, id K) (leave func(), err error) {
 	for {
 		t.mu.Lock()
 		inside := t.busy[id]
 		if inside == nil {
 			if t.busy == nil {
-				t.busy = map[int64]chan struct{}{}
+				t.busy = map[K]chan struct{}{}
 			}
 			out := make(chan struct{})
 			t.busy[id] = out

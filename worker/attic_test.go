@@ -9,6 +9,7 @@ import (
 	"sync"
 	"testing"
 
+	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
 
@@ -35,8 +36,8 @@ func TestReplaceAndRestore(t *testing.T) {
 	if err != nil || len(kept) != 2 || kept[0].Path != "a.wav" || kept[0].RunID != run.ID {
 		t.Fatalf("attic: %+v, %v", kept, err)
 	}
-	// A second run levels the originals again, not the copies.
-	again := b.wait(b.begin(s, store.Replace).ID, ended)
+	// A run with another profile levels the originals again, not the copies.
+	again := b.wait(b.beginWith(s, store.Replace, func(p *profile.Profile) { p.Target-- }).ID, ended)
 	if again.Done != 2 || b.onShelf("b.wav") != "levelled sound of b.wav" {
 		t.Errorf("%+v, %q", again, b.onShelf("b.wav"))
 	}
@@ -63,6 +64,44 @@ func TestReplaceAndRestore(t *testing.T) {
 	}
 	if left, _ := b.store.Originals(b.ctx, store.OriginalQuery{}); len(left) != 1 {
 		t.Errorf("attic: %+v", left)
+	}
+}
+
+// Levelling twice changes nothing: what would only be made again is left as it is, and said to be so.
+func TestReplacingTwiceChangesNothing(t *testing.T) {
+	b := newBench(t, "a.wav", "b.wav")
+	e := &engine{}
+	s := b.startService(e, 2)
+	first := b.wait(b.begin(s, store.Replace).ID, ended)
+	was, err := os.Stat(filepath.Join(b.shelf.Root, "a.wav"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	for range 2 {
+		run := b.wait(b.begin(s, store.Replace).ID, ended)
+		for name, j := range b.jobs(run.ID) {
+			if j.State != store.Done || j.Reason != "levelled with this profile already" || j.SameAs != b.jobs(first.ID)[name].ID || j.After == nil || j.Output != name {
+				t.Errorf("%s: %+v", name, j)
+			}
+		}
+		now, err := os.Stat(filepath.Join(b.shelf.Root, "a.wav"))
+		if err != nil || !os.SameFile(was, now) || !now.ModTime().Equal(was.ModTime()) || e.times("a.wav") != 1 {
+			t.Errorf("touched again: %v, %d times at work", err, e.times("a.wav"))
+		}
+		if kept, err := b.store.Originals(b.ctx, store.OriginalQuery{RunID: first.ID}); err != nil || len(kept) != 2 {
+			t.Errorf("the attic no longer knows the run that did it: %+v %v", kept, err)
+		}
+	}
+	// Somebody else's bytes are a new recording, whatever was done here before.
+	if err := os.WriteFile(filepath.Join(b.shelf.Root, "a.wav"), []byte("new take"), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	run := b.wait(b.begin(s, store.Replace).ID, ended)
+	if j := b.jobs(run.ID)["a.wav"]; j.SameAs != 0 || b.onShelf("a.wav") != "levelled new take" {
+		t.Errorf("%+v, %q", j, b.onShelf("a.wav"))
+	}
+	if j := b.jobs(run.ID)["b.wav"]; j.SameAs == 0 {
+		t.Errorf("%+v", j)
 	}
 }
 
@@ -93,7 +132,7 @@ func TestRestoreSaysWhatToDo(t *testing.T) {
 }
 
 func TestTurnstileLetsOneThrough(t *testing.T) {
-	var turn turnstile
+	var turn turnstile[int64]
 	var wg sync.WaitGroup
 	inside, most := 0, 0
 	for range 50 {

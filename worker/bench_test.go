@@ -27,7 +27,9 @@ type engine struct {
 
 	mu   sync.Mutex
 	seen map[string]int
-	how  level.Options // of the last Analyse
+	how  level.Options            // of the last Analyse
+	with map[string]*level.Shared // what each recording shared its gain with, by name
+	sets [][]string               // paths of each Group
 	busy atomic.Int32
 	peak atomic.Int32
 }
@@ -67,7 +69,21 @@ func (e *engine) Analyse(ctx context.Context, path string, o level.Options) (*le
 	return reading(-30), nil
 }
 
-func (e *engine) Level(ctx context.Context, source string, _ level.Task, scratch string) (level.Outcome, error) {
+// Group says that a folder's loudness is minus the number of its recordings.
+func (e *engine) Group(ctx context.Context, paths []string, _ audio.MonoRule) (level.Shared, error) {
+	e.mu.Lock()
+	e.sets = append(e.sets, paths)
+	e.mu.Unlock()
+	return level.Shared{Integrated: audio.LUFS(-len(paths)), TruePeak: -1}, e.begin(ctx, "group")
+}
+
+func (e *engine) Level(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error) {
+	e.mu.Lock()
+	if e.with == nil {
+		e.with = map[string]*level.Shared{}
+	}
+	e.with[filepath.Base(source)] = t.Shared
+	e.mu.Unlock()
 	if err := os.WriteFile(scratch, []byte("half a file"), 0o600); err != nil {
 		return level.Outcome{}, err
 	}
@@ -172,10 +188,17 @@ func (b *bench) begin(s *Service, d store.Delivery) store.Run {
 	if _, err := s.Scan(b.ctx, b.shelf.ID, ""); err != nil {
 		b.t.Fatal(err)
 	}
+	return b.beginWith(s, d, func(*profile.Profile) {})
+}
+
+// beginWith starts a run of all that is known of the shelf, with a profile that was changed.
+func (b *bench) beginWith(s *Service, d store.Delivery, change func(*profile.Profile)) store.Run {
+	b.t.Helper()
 	p, err := profile.Named("rotation")
 	if err != nil {
 		b.t.Fatal(err)
 	}
+	change(&p)
 	run, err := s.StartRun(b.ctx, store.NewRun{ShelfID: b.shelf.ID, Profile: p, Delivery: d})
 	if err != nil {
 		b.t.Fatal(err)

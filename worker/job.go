@@ -76,7 +76,7 @@ func (w *levelWorker) Work(ctx context.Context, job *river.Job[levelArgs]) error
 		return river.JobSnooze(storeAgainAfter)
 	}
 
-	outcome, output, failure := s.attempt(ctx, work)
+	made, failure := s.attempt(ctx, work)
 
 	// From here on the result counts, even if the program is being stopped.
 	ctx, cancel := context.WithTimeout(context.WithoutCancel(ctx), storeTimeout)
@@ -95,16 +95,16 @@ func (w *levelWorker) Work(ctx context.Context, job *river.Job[levelArgs]) error
 			}
 			return failure
 		}
-		outcome, output = failedBecause(fmt.Sprintf("%v (tried %d times)", failure, job.Attempt)), ""
+		made = result{outcome: failedBecause(fmt.Sprintf("%v (tried %d times)", failure, job.Attempt))}
 	}
 	complete := func(ctx context.Context, tx *store.Tx) error {
 		_, err := river.JobCompleteTx[*riversqlite.Driver](ctx, tx, job)
 		return err
 	}
-	err = s.store.FinishJob(ctx, id, outcome, output, complete)
+	err = s.finish(ctx, id, made, complete)
 	if errors.Is(err, store.ErrInvalid) { // an outcome that cannot be stored now cannot be stored later
-		outcome = failedBecause(fmt.Sprintf("a fault in the program: %v", err))
-		err = s.store.FinishJob(ctx, id, outcome, "", complete)
+		made = result{outcome: failedBecause(fmt.Sprintf("a fault in the program: %v", err))}
+		err = s.finish(ctx, id, made, complete)
 	}
 	switch {
 	case errors.Is(err, store.ErrState):
@@ -113,8 +113,22 @@ func (w *levelWorker) Work(ctx context.Context, job *river.Job[levelArgs]) error
 		log.ErrorContext(ctx, "result not stored", "error", err)
 		return river.JobSnooze(storeAgainAfter)
 	}
-	log.InfoContext(ctx, "job ended", "path", work.Recording.Path, "state", outcome.Verdict.State, "reason", outcome.Verdict.Reason)
+	log.InfoContext(ctx, "job ended", "path", work.Recording.Path, "state", made.outcome.Verdict.State, "reason", made.outcome.Verdict.Reason)
 	return nil
+}
+
+// result is what a job came to.
+type result struct {
+	outcome level.Outcome
+	output  string
+	same    int64 // the earlier job whose result still stands, so that nothing was done; 0: none
+}
+
+func (s *Service) finish(ctx context.Context, id int64, r result, complete func(context.Context, *store.Tx) error) error {
+	if r.same != 0 {
+		return s.store.FinishSame(ctx, id, r.same, r.outcome.Verdict.Reason, complete)
+	}
+	return s.store.FinishJob(ctx, id, r.outcome, r.output, complete)
 }
 
 func failedBecause(reason string) level.Outcome {
@@ -123,38 +137,50 @@ func failedBecause(reason string) level.Outcome {
 
 // attempt does the work of a job. Its error means that trying again may help; context.Canceled means that
 // the program is being stopped. A panic in the engine becomes a failed outcome, and the log gets the stack.
-func (s *Service) attempt(ctx context.Context, w store.Work) (o level.Outcome, output string, err error) {
+func (s *Service) attempt(ctx context.Context, w store.Work) (r result, err error) {
 	defer func() {
 		if p := recover(); p != nil {
 			s.log.ErrorContext(ctx, "panic in the engine", "job_id", w.Job.ID, "path", w.Recording.Path, "panic", p, "stack", string(debug.Stack()))
-			o, output, err = failedBecause(fmt.Sprintf("a fault in the program: %v", p)), "", nil
+			r, err = result{outcome: failedBecause(fmt.Sprintf("a fault in the program: %v", p))}, nil
 		}
 	}()
 	source, err := discover.Resolve(w.Shelf.Root, w.Recording.Path)
 	switch {
-	case errors.Is(err, discover.ErrMissing), errors.Is(err, discover.ErrOutside), errors.Is(err, discover.ErrNotFile):
-		return failedBecause(err.Error()), "", nil
+	case isGone(err):
+		return result{outcome: failedBecause(err.Error())}, nil
 	case err != nil:
-		return o, "", err
+		return r, err
+	}
+	if r, err = s.work(ctx, w, source); errors.Is(ctx.Err(), context.DeadlineExceeded) {
+		return result{outcome: failedBecause(fmt.Sprintf("not done after %s", jobTimeout))}, nil
+	}
+	if ctx.Err() != nil && err != nil {
+		return r, ctx.Err()
+	}
+	return r, err
+}
+
+// isGone says that there is no file of ours at the path of a recording, which trying again does not change.
+func isGone(err error) bool {
+	return errors.Is(err, discover.ErrMissing) || errors.Is(err, discover.ErrOutside) || errors.Is(err, discover.ErrNotFile)
+}
+
+// work does what the run asks with the file of a recording.
+func (s *Service) work(ctx context.Context, w store.Work, source string) (r result, err error) {
+	if w.Delivery == store.Measure {
+		r.outcome, err = s.measure(ctx, source, w.Profile.Mono)
+		return r, err
+	}
+	task, err := s.task(ctx, w)
+	if err != nil {
+		return r, err
 	}
 	key := fmt.Sprintf("job-%d", w.Job.ID)
-	switch w.Delivery {
-	case store.Measure:
-		o, err = s.measure(ctx, source, w.Profile.Mono)
-	case store.Replace:
-		o, output, err = s.replace(ctx, w, source, key)
-	default:
-		o, output, err = s.deliverCopy(ctx, w, source, key)
+	if w.Delivery == store.Replace {
+		return s.replace(ctx, w, task, source, key)
 	}
-	switch {
-	case errors.Is(ctx.Err(), context.DeadlineExceeded):
-		return failedBecause(fmt.Sprintf("not done after %s", jobTimeout)), "", nil
-	case ctx.Err() != nil && err != nil:
-		return o, "", ctx.Err()
-	case err != nil:
-		return o, "", err
-	}
-	return o, output, nil
+	r.outcome, r.output, err = s.deliverCopy(ctx, w, task, source, key)
+	return r, err
 }
 
 // measure only takes the before reading. A file that cannot be read will not be readable next time.

@@ -8,6 +8,8 @@
 //     a job can be done twice, never lost; doing it twice gives the same files and the same rows.
 //   - Start first gives back what a killed process had taken (store.Reclaim), then re-enters waiting jobs
 //     that the queue no longer knows (store.Requeue), then sweeps scratch files, then starts the queue.
+//   - A result that would only come out again is left as it is: the file on the shelf is known by its hash, and the
+//     job that made it by its profile, its engine and the gain it shared.
 //   - An error that may heal (a disk that is full or away) puts the job back, with a pause, MaxAttempts
 //     times. What cannot heal is an outcome: failed, with its reason. So is a panic.
 package worker
@@ -24,6 +26,7 @@ import (
 	"github.com/riverqueue/river"
 	"github.com/riverqueue/river/riverdriver/riversqlite"
 
+	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
 	"evenshelf/store"
 	"evenshelf/worker/delivery"
@@ -37,6 +40,8 @@ type Engine interface {
 	// Level writes the levelled sound to scratch and syncs it; if the outcome has no After there is no
 	// scratch file. A damaged source is an outcome with the verdict failed; an error may heal.
 	Level(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error)
+	// Group measures recordings as one programme and leaves out those it cannot read. An error may heal.
+	Group(ctx context.Context, paths []string, mono audio.MonoRule) (level.Shared, error)
 }
 
 // Options are what a Service needs. Store and Engine are required.
@@ -69,7 +74,8 @@ type Service struct {
 	client *river.Client[*store.Tx]
 
 	retryAfter func(attempt int) time.Duration
-	places     turnstile // one job or restore at a time may change a recording's own file
+	places     turnstile[int64]  // one job or restore at a time may change a recording's own file
+	groups     turnstile[folder] // one job at a time measures the recordings of a folder together
 
 	mu      sync.Mutex
 	started bool

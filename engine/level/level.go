@@ -96,7 +96,7 @@ type Ride struct {
 	Range audio.LU      `json:"range_lu"` // the loudness range foreseen
 	Least audio.DB      `json:"least_db"` // of the gain while something is heard
 	Most  audio.DB      `json:"most_db"`
-	Gain  ride.Curve    `json:"curve"`
+	Gain  ride.Curve    `json:"curve,omitempty"`
 	// FloorLift is how far a pause is lifted over its quieter neighbour at the most, and FloorAt where.
 	FloorLift audio.DB      `json:"floor_lift_db"`
 	FloorAt   audio.Seconds `json:"floor_at_s"`

@@ -87,9 +87,11 @@ export function mount(root) {
   part.volume.addEventListener("input", volumes);
   part.match?.addEventListener("change", volumes);
   stage.addEventListener("seek", (event) => seek(event.detail));
+  stage.addEventListener("asked", () => { if (sounds[heard].currentTime) follow(); }); // by a chart that was drawn later
   for (const button of document.querySelectorAll("[data-seek]")) {
     button.disabled = false;
     button.addEventListener("click", () => {
+      if (button.dataset.hear) hear(button.dataset.hear);
       seek(Math.max(Number(button.dataset.seek) - 1, 0)); // a second early: a fault needs its surroundings
       play();
     });
@@ -102,6 +104,11 @@ export function mount(root) {
     keys[event.key]();
   });
   volumes();
+  const [, at] = location.hash.match(/^#at=(\d+(?:\.\d+)?)$/) ?? [];
+  if (at) { // a list led here to listen to a moment of the copy
+    hear("after");
+    seek(Math.max(at - 1, 0));
+  }
   part.row.hidden = false;
   part.why.hidden = false;
 }

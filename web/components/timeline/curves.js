@@ -1,8 +1,9 @@
 // The API's timeline as columns of one length for the chart. A value that is not defined (silence) is null
 // and leaves a gap.
 import { stretches } from "./band.js";
+import { rideOf } from "./ride.js";
 
-export function columns({ step_s: step, before, after }) {
+export function columns({ step_s: step, before, after, ride }) {
   const length = Math.max(before?.short_term.length ?? 0, after?.short_term.length ?? 0);
   const reading = (from) => ({
     shortTerm: padded(from?.short_term, length), momentary: padded(from?.momentary, length), peak: padded(from?.peak, length),
@@ -12,6 +13,7 @@ export function columns({ step_s: step, before, after }) {
     before: reading(before),
     after: reading(after),
     hasAfter: Boolean(after),
+    ride: rideOf(ride, step),
     band: stretches(before, step) ?? stretches(after, step),
   };
 }

@@ -5,11 +5,15 @@ import { clock } from "../../figures.js";
 const APART = 26; // px between two marks; closer ones become one, for neither would be easy to press
 const TOLD = 4; // faults a tip has words for; more would cover the chart
 
-// faultsOf reads the list on the page. A fault of the recording as a whole has no place on the axis.
+// faultsOf reads the lists on the page: doubts about the copy and faults of the source. What concerns the recording
+// as a whole has no place on the axis; a fault that is a doubt too is marked once.
 export function faultsOf(page) {
-  return [...page.querySelectorAll("[data-faults] [data-at]")]
-    .map((item) => ({ at: Number(item.dataset.at), words: item.dataset.words, listen: item.querySelector("[data-seek]") }))
-    .sort((a, b) => a.at - b.at);
+  const told = new Map();
+  for (const item of page.querySelectorAll("[data-doubts] [data-at], [data-faults] [data-at]")) {
+    const { at, words } = item.dataset;
+    if (!told.has(at + words)) told.set(at + words, { at: Number(at), words, listen: item.querySelector("[data-seek]") });
+  }
+  return [...told.values()].sort((a, b) => a.at - b.at);
 }
 
 // clusters puts marks that would cover each other together. place gives each fault's distance from the left.
@@ -55,7 +59,7 @@ export class FaultMarks {
     const many = faults.length > 1;
     const told = faults.slice(0, TOLD).map((fault) => `${clock(fault.at)}: ${fault.words}`);
     const words = [...told, ...(faults.length > TOLD ? [`and ${faults.length - TOLD} more`] : [])].join("\n");
-    const button = el("button", { type: "button", class: many ? "fault-mark is-many" : "fault-mark", "aria-label": `Listen to the fault at ${words}` },
+    const button = el("button", { type: "button", class: many ? "fault-mark is-many" : "fault-mark", "aria-label": `Listen at ${words}` },
       many ? el("span", {}, String(faults.length)) : null);
     for (const on of ["pointerenter", "focus"]) button.addEventListener(on, () => this.tip(words, parseFloat(button.style.left)));
     for (const off of ["pointerleave", "blur"]) button.addEventListener(off, () => this.tip(""));

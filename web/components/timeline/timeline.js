@@ -8,10 +8,12 @@ import { drawBand, heardAt } from "./band.js";
 import { columns, extent } from "./curves.js";
 import { FaultMarks, faultsOf } from "./faults.js";
 import { marks } from "./marks.js";
+import { RideStrip } from "./ride.js";
 
 const TOKENS = ["ink", "soft", "hair", "edge", "sheet", "before", "after", "held"];
 const AXIS = 30; // px for the times under the plot
 const BAND = { from: 14, height: 10 }; // px under the plot: the marks of faults reach down to there
+const SYNC = { key: "course", scales: ["x", null] }; // one moment in both charts
 const FONT = '"Atkinson Hyperlegible", system-ui, sans-serif';
 
 export function mount(root) {
@@ -52,7 +54,7 @@ class Timeline {
   }
 
   start() {
-    const { tools, plot, whole, band, faults } = this.part;
+    const { tools, plot, whole, band, faults, ride } = this.part;
     this.reads = plot.appendChild(el("div", { class: "reads", hidden: true }));
     this.marks = new FaultMarks(this.faults, (words, x) => {
       this.atMark = Boolean(words);
@@ -60,6 +62,10 @@ class Timeline {
     });
     band.hidden = !this.curves.band;
     faults.hidden = !this.faults.length;
+    if (this.curves.ride) {
+      ride.hidden = false;
+      this.strip = new RideStrip(ride, this.curves.ride);
+    }
     this.build();
     tools.hidden = false;
     for (const box of tools.querySelectorAll("[data-series]")) {
@@ -69,12 +75,17 @@ class Timeline {
       });
     }
     whole.addEventListener("click", () => this.build());
-    new ResizeObserver(() => this.chart.setSize(this.size())).observe(plot);
+    new ResizeObserver(() => {
+      this.chart.setSize(this.size());
+      this.strip?.resize(this.size().width);
+    }).observe(plot);
     onTheme(() => this.build());
     this.root.addEventListener("playhead", (event) => {
       this.playhead = event.detail;
       this.chart.redraw(false);
+      this.strip?.redraw();
     });
+    this.root.dispatchEvent(new CustomEvent("asked"));
   }
 
   size() {
@@ -93,12 +104,18 @@ class Timeline {
     const axis = { stroke: ink.soft, font: `12px ${FONT}`, grid: { stroke: ink.hair, width: 1 }, ticks: { show: false }, gap: 8 };
     const { band } = this.curves;
     const below = band ? BAND.from + BAND.height : this.faults.length ? BAND.from : 0;
+    const padding = [14, 26, 0, 0];
+    const level = { ...axis, size: 48, gap: 14 };
+    this.strip?.build({
+      width: this.size().width, ink, font: FONT, axis: level, padding, sync: SYNC,
+      playhead: () => this.playhead, placed: (u) => this.seekable(u),
+    });
     const options = {
       ...this.size(),
-      padding: [14, 26, 0, 0],
+      padding,
       legend: { show: false },
       scales: { x: { time: false, range: (_, from, to) => [from <= this.curves.x[0] ? 0 : from, to] }, y: { range: [low, high] } },
-      cursor: { y: false, points: { show: false }, drag: { x: true, y: false } },
+      cursor: { y: false, points: { show: false }, drag: { x: true, y: false }, sync: SYNC },
       series: [{},
         line({ stroke: ink.before, width: 1, alpha: 0.55, show: momentary }),
         line({ stroke: ink.after, width: 1, alpha: 0.55, show: momentary }),
@@ -109,7 +126,7 @@ class Timeline {
         line(after)],
       axes: [
         { ...axis, grid: { show: false }, size: AXIS + below, gap: axis.gap + below, values: (_, splits) => splits.map((s) => clock(s, splits.length > 1 && splits[1] - splits[0] < 1 ? 1 : 0)), incrs: [0.1, 0.2, 0.5, 1, 2, 5, 10, 15, 30, 60, 120, 300, 600, 900, 1800, 3600] },
-        { ...axis, size: 48, gap: 14, space: 32, incrs: [5, 10, 20], values: (_, splits) => splits.map((v) => number(v, 0)) },
+        { ...level, space: 32, incrs: [5, 10, 20], values: (_, splits) => splits.map((v) => number(v, 0)) },
       ],
       hooks: {
         draw: [(u) => {
@@ -119,7 +136,12 @@ class Timeline {
           marks(u, { ink, font: FONT, target: this.target, ceiling: peak ? this.ceiling : NaN, faults: this.marks.heads, playhead: this.playhead });
         }],
         setCursor: [(u) => this.read(u)],
-        setScale: [(u, key) => { if (key === "x") this.part.whole.hidden = u.scales.x.max - u.scales.x.min > this.curves.x.at(-1) * 0.98; }],
+        setScale: [(u, key) => {
+          if (key !== "x") return;
+          const { min, max } = u.scales.x;
+          this.part.whole.hidden = max - min > this.curves.x.at(-1) * 0.98;
+          this.strip?.zoom(min, max);
+        }],
         ready: [(u) => this.seekable(u)],
       },
     };
@@ -147,7 +169,8 @@ class Timeline {
     const at = (curve) => number(curve.shortTerm[idx] ?? NaN);
     const c = this.curves;
     const heard = c.band ? `, ${heardAt(c.band, c.x[idx])}` : "";
-    this.tell(`${clock(c.x[idx])}: ${at(c.before)}${c.hasAfter ? ` → ${at(c.after)}` : ""} LUFS${heard}`, left + u.bbox.left / devicePixelRatio);
+    const gain = this.strip ? `, ${this.strip.at(c.x[idx])}` : "";
+    this.tell(`${clock(c.x[idx])}: ${at(c.before)}${c.hasAfter ? ` → ${at(c.after)}` : ""} LUFS${gain}${heard}`, left + u.bbox.left / devicePixelRatio);
   }
 
   // tell shows words beside the place they are about, x from the left; "" shows none.
