@@ -1,7 +1,5 @@
 package dynamics
 
-import "evenshelf/engine/audio"
-
 // slidingMax is the maximum of the last size values, by the monotonic wedge of D. Lemire, "Streaming
 // Maximum-Minimum Filter Using No More than Three Comparisons per Element", Nordic J. Computing 13(4), 2006.
 type slidingMax struct {
@@ -58,33 +56,4 @@ func (b *box) push(v int64) int64 {
 	b.ring[b.at] = v
 	b.at = next(b.at, len(b.ring))
 	return b.sum
-}
-
-// delayLine delays planar sound by a fixed number of frames; silence comes out first.
-type delayLine struct {
-	frames int
-	buf    audio.Block // frames of memory, followed by room for one block
-	out    audio.Block
-	view   audio.Block
-}
-
-func newDelayLine(channels, frames int) delayLine {
-	return delayLine{
-		frames: frames,
-		buf:    audio.NewBlock(channels, frames+audio.BlockFrames),
-		out:    audio.NewBlock(channels, audio.BlockFrames),
-		view:   make(audio.Block, channels),
-	}
-}
-
-// push takes a block and returns one as long, delayed; it may be written to until the next push.
-func (d *delayLine) push(b audio.Block) audio.Block {
-	n := b.Frames()
-	for c, x := range b {
-		line := d.buf[c]
-		copy(line[d.frames:], x)
-		copy(d.out[c], line[:n])
-		copy(line, line[n:n+d.frames])
-	}
-	return d.out.Cut(d.view, 0, n)
 }

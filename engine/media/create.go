@@ -18,7 +18,7 @@ const (
 // is overwritten, except the one tags are taken from. Errors name the path and wrap ErrUnsupported if
 // the spec cannot be written.
 //
-// Integer targets are dithered (see quantiser) and clipped at full scale. Close finishes the headers,
+// Integer targets are dithered, unless spec asks for plain rounding (see quantiser), and clipped at full scale. Close finishes the headers,
 // waits for a child and fsyncs; when it or anything before it fails, the file is incomplete and the
 // caller's to remove. ctx ends the writing at any time: the next call returns its cause.
 func (t *Toolbox) Create(ctx context.Context, path string, spec Spec) (audio.Sink, error) {

@@ -23,7 +23,7 @@ type ffWriter struct {
 func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *tagSource) (*ffWriter, error) {
 	l, isLossy := lossyCodecs[spec.Codec]
 	muxer := map[string]string{"flac": "flac", "mp4": "ipod", "aiff": "aiff"}[spec.Container]
-	pcm := Spec{Format: spec.Format, BitDepth: spec.BitDepth}
+	pcm := Spec{Format: spec.Format, BitDepth: spec.BitDepth, Plain: spec.Plain}
 	if isLossy {
 		muxer = l.muxer
 		pcm.BitDepth, pcm.Float = 32, true
@@ -65,7 +65,7 @@ func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *
 	if err != nil {
 		return nil, err
 	}
-	w := &ffWriter{child: c, pack: newPacker(pcm.Format.Layout.Channels, pcm.BitDepth, pcm.Float), f: f, head: head}
+	w := &ffWriter{child: c, pack: newPacker(pcm), f: f, head: head}
 	if err := w.send(streamHead(pcm)); err != nil {
 		c.kill()
 		return nil, err

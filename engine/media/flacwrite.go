@@ -35,7 +35,7 @@ func newFLACWriter(f *os.File, spec Spec, tags *tagSource) (*flacWriter, error) 
 		BlockSizeMin: flacBlock, BlockSizeMax: flacBlock, SampleRate: uint32(spec.Format.Rate),
 		NChannels: uint8(channels), BitsPerSample: uint8(spec.BitDepth),
 	}
-	w := &flacWriter{f: f, out: &seekBuffer{f: f, w: bufio.NewWriterSize(f, 1<<16)}, quantisers: newQuantisers(channels, spec.BitDepth)}
+	w := &flacWriter{f: f, out: &seekBuffer{f: f, w: bufio.NewWriterSize(f, 1<<16)}, quantisers: newQuantisers(spec)}
 	var err error
 	if w.enc, err = flac.NewEncoder(w.out, info, flacTags(spec, tags)...); err != nil {
 		return nil, err

@@ -138,10 +138,10 @@ type packer struct {
 	out        []byte
 }
 
-func newPacker(channels, bits int, float bool) *packer {
-	p := &packer{bits: bits, float: float}
-	if !float {
-		p.quantisers = newQuantisers(channels, bits)
+func newPacker(spec Spec) *packer {
+	p := &packer{bits: spec.BitDepth, float: spec.Float}
+	if !spec.Float {
+		p.quantisers = newQuantisers(spec)
 	}
 	return p
 }

@@ -3,9 +3,11 @@ package media
 import (
 	"math"
 	"math/rand/v2"
+
+	"evenshelf/engine/audio"
 )
 
-// quantiser rounds one channel of float samples to integers of so many bits with triangular dither.
+// quantiser rounds one channel of float samples to integers of so many bits with triangular dither, or plainly.
 //
 // Rounding alone makes an error that depends on the signal: distortion. Adding noise before it, the sum
 // of two independent uniform variables of ±½ LSB, makes the error's mean and power independent of the
@@ -20,16 +22,30 @@ import (
 type quantiser struct {
 	scale     float64 // 2^(bits−1)
 	low, high float64
+	plain     bool
 	noise     rand.PCG
 }
 
-func newQuantisers(channels, bits int) []quantiser {
-	q := make([]quantiser, channels)
+func newQuantisers(spec Spec) []quantiser {
+	q := make([]quantiser, spec.Format.Layout.Channels)
+	full := math.Ldexp(1, spec.BitDepth-1)
 	for c := range q {
-		full := math.Ldexp(1, bits-1)
-		q[c] = quantiser{scale: full, low: -full, high: full - 1, noise: *rand.NewPCG(1, uint64(c))}
+		q[c] = quantiser{scale: full, low: -full, high: full - 1, plain: spec.Plain, noise: *rand.NewPCG(1, uint64(c))}
 	}
 	return q
+}
+
+// Slack is how far, dB, rounding can carry a sample over a peak: 1 LSB of dither and ½ of rounding. It is 0 for
+// floating point and lossy codecs. At 16 bits and −1 dBTP it is 0.0004 dB.
+func (s Spec) Slack(peak audio.DBTP) audio.DB {
+	if s.Float || s.BitDepth == 0 {
+		return 0
+	}
+	steps := 1.5
+	if s.Plain {
+		steps = 0.5
+	}
+	return audio.DB(audio.ToDB(1 + steps*math.Ldexp(1, 1-s.BitDepth)/peak.Linear()))
 }
 
 // quantise writes the integers for src to dst, which must be as long. Values past full scale, after
@@ -40,7 +56,11 @@ func (q *quantiser) quantise(dst []int32, src []float32) {
 		r := q.noise.Uint64()
 		v := float64(x) * q.scale
 		whole := math.Floor(v)
-		if whole != v {
+		switch {
+		case whole == v:
+		case q.plain:
+			whole = math.RoundToEven(v)
+		default:
 			noise := float64(r>>32)*0x1p-32 + float64(r&math.MaxUint32)*0x1p-32 - 1 // (−1, 1) LSB, triangular
 			whole = math.Floor(v + noise + 0.5)
 		}

@@ -4,11 +4,22 @@ import (
 	"math"
 	"slices"
 	"testing"
+
+	"evenshelf/engine/audio"
 )
+
+// words asks for integers of so many bits in a number of channels.
+func words(channels, bits int) Spec {
+	return Spec{BitDepth: bits, Format: audio.Format{Rate: 48000, Layout: audio.UsualLayout(channels)}}
+}
 
 // quantiseAll runs one channel's quantiser over a signal given in LSB.
 func quantiseAll(bits, channel int, lsb []float64) (out []int32, errs []float64) {
-	q := newQuantisers(channel+1, bits)[channel]
+	return quantiseAs(words(channel+1, bits), channel, lsb)
+}
+
+func quantiseAs(spec Spec, channel int, lsb []float64) (out []int32, errs []float64) {
+	q := newQuantisers(spec)[channel]
 	in := make([]float32, len(lsb))
 	for i, v := range lsb {
 		in[i] = float32(v / q.scale)
@@ -117,9 +128,9 @@ func TestQuantiserClipsAtFullScale(t *testing.T) {
 func TestDitherRepeatsHoweverItIsCut(t *testing.T) {
 	in := programme(1, 10_000, 24, 0.8)[0]
 	whole, parts := make([]int32, len(in)), make([]int32, len(in))
-	q := newQuantisers(1, 16)[0]
+	q := newQuantisers(words(1, 16))[0]
 	q.quantise(whole, in)
-	q = newQuantisers(1, 16)[0]
+	q = newQuantisers(words(1, 16))[0]
 	for i := 0; i < len(in); {
 		n := min(1+i%701, len(in)-i)
 		q.quantise(parts[i:i+n], in[i:i+n])
@@ -132,7 +143,7 @@ func TestDitherRepeatsHoweverItIsCut(t *testing.T) {
 
 func BenchmarkQuantise(b *testing.B) {
 	in, out := programme(1, 48_000, 24, 0.8)[0], make([]int32, 48_000)
-	q := newQuantisers(1, 16)[0]
+	q := newQuantisers(words(1, 16))[0]
 	b.ReportAllocs()
 	for b.Loop() {
 		q.quantise(out, in)

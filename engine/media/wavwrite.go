@@ -38,7 +38,7 @@ func newWAVWriter(f *os.File, spec Spec, tags *tagSource) (*wavWriter, error) {
 	enc := wav.NewEncoder(f, spec.Format.Rate, spec.BitDepth, 0, tagPCM)
 	enc.NumChans = channels
 	w := &wavWriter{
-		f: f, enc: enc, pack: newPacker(channels, spec.BitDepth, spec.Float), align: channels * spec.BitDepth / 8,
+		f: f, enc: enc, pack: newPacker(spec), align: channels * spec.BitDepth / 8,
 		limit: math.MaxUint32, tags: tags,
 	}
 	head := append([]byte("RIFF\xFF\xFF\xFF\xFFWAVEJUNK"), binary.LittleEndian.AppendUint32(nil, ds64Len)...)
