@@ -1,0 +1,265 @@
+package ride
+
+import (
+	"math"
+	"slices"
+)
+
+// job is what is known of a course before a time constant is chosen.
+type job struct {
+	Settings
+	level    []float64 // as it will be without a ride: with what compressor and limiter move
+	power    []float64 // of level
+	loudness float64   // gated
+	spoken   []bool
+	active   []bool
+	heard    []bool // active, and no fade
+	fades    []Span
+	phrases  []phrase
+	seams    []seam
+	voices   []Span // between steps of the gain
+	smoother smoother
+}
+
+func newJob(c Course, s Settings) *job {
+	n := len(c.Level)
+	j := &job{Settings: s, level: make([]float64, n), power: make([]float64, n)}
+	source := make([]float64, n) // what is heard is decided before anything is moved
+	sourcePower := make([]float64, n)
+	for i, l := range c.Level {
+		source[i] = clamp(float64(l), silence, loudest)
+		j.level[i] = source[i]
+		if i < len(c.Moved) {
+			if m := float64(c.Moved[i]); math.Abs(m) < 100 {
+				j.level[i] = max(silence, source[i]+m)
+			}
+		}
+		j.power[i], sourcePower[i] = power(j.level[i]), power(source[i])
+	}
+	loudness := integrated(sourcePower)
+	j.loudness = integrated(j.power)
+	j.spoken = spokenParts(c.Speech, n, s.Speech)
+	if s.Step == 0 && !s.Speech {
+		clear(j.spoken)
+	}
+	j.active = make([]bool, n)
+	if !math.IsNaN(loudness) {
+		j.active = listen(source, sums(sourcePower), loudness, j.spoken, s.Speech)
+	}
+	j.heard = slices.Clone(j.active)
+	if !s.Fades && !math.IsNaN(loudness) {
+		j.fades = fadesOf(sourcePower)
+		for _, f := range j.fades {
+			clear(j.heard[f.From:f.To])
+		}
+		if !slices.Contains(j.heard, true) { // nothing but fades: there is no level to stand still at
+			j.fades, j.heard = nil, slices.Clone(j.active)
+		}
+	}
+	if s.Speech {
+		j.background()
+	}
+	cut := j.findVoices()
+	j.seams = seams(j.phrases, cut, s.Silence)
+	j.voices = between(j.seams, n)
+	return j
+}
+
+// background takes what is no speech, softer than it and not long, such as applause, for what is behind the speech: it
+// keeps the gain of what is beside it.
+func (j *job) background() {
+	const longest = 30 * StepsPerSecond
+	var speech []float64
+	for i, on := range j.heard {
+		if on && j.spoken[i] {
+			speech = append(speech, j.power[i])
+		}
+	}
+	limit := power(integrated(speech))
+	r := sums(j.power)
+	runs(j.spoken, func(from, to int, spoken bool) {
+		if !spoken && to-from < longest && r.mean(from, to) < limit {
+			clear(j.heard[from:to])
+		}
+	})
+}
+
+// findVoices finds the phrases, and returns which of them begin with a step of the gain. What was cut out as a voice but
+// is none is not heard, and the rest is cut again.
+func (j *job) findVoices() (cut []bool) {
+	const rounds = 3
+	for range rounds {
+		j.phrases = phrases(j.power, j.heard, j.spoken, j.Step > 0)
+		if j.Step == 0 {
+			cut = make([]bool, len(j.phrases))
+			for i, p := range j.phrases {
+				cut[i] = p.after
+			}
+			return cut
+		}
+		cut = voicesApart(j.phrases, j.Step)
+		none := scraps(j.phrases, cut)
+		if len(none) == 0 {
+			return cut
+		}
+		for _, s := range none {
+			clear(j.heard[s.From:s.To])
+		}
+	}
+	j.phrases = phrases(j.power, j.heard, j.spoken, true)
+	return voicesApart(j.phrases, j.Step)
+}
+
+// trial is a ride with one time constant.
+type trial struct {
+	anchor, kept, lra float64
+	before            float64 // the range there was, LU
+	level, gain       []float64
+	even              bool // voices are brought together, and not only the range narrowed
+}
+
+const (
+	orderly     = 0.4 // of differences that stays: with less the order of loud and soft is lost
+	worthFaster = 0.3 // LU, that a faster ride has to narrow the range by where none is enough
+)
+
+// good reports whether no faster ride is needed.
+func (t trial) good(most float64) bool { return t.met(most) && (t.even || t.kept >= orderly) }
+
+func (t trial) met(most float64) bool { return t.lra <= most+rangeSlop }
+
+// better reports whether a faster ride is better than a slower one.
+func (t trial) better(slower trial, most float64) bool {
+	switch {
+	case t.met(most) && slower.met(most):
+		return t.kept > slower.kept
+	case t.met(most) != slower.met(most):
+		return t.met(most)
+	}
+	return t.lra < slower.lra-worthFaster
+}
+
+func (j *job) solve(tau float64) trial {
+	n := len(j.level)
+	t := trial{level: make([]float64, n), gain: make([]float64, n)}
+	weights := make([]float64, n)
+	for _, p := range j.phrases {
+		fill(weights[p.From:p.To], 1)
+	}
+	smooth := func() {
+		for _, v := range j.voices {
+			j.smoother.level(t.level[v.From:v.To], j.power[v.From:v.To], weights[v.From:v.To], tau)
+		}
+	}
+	smooth()
+	if slices.Contains(j.spoken, true) {
+		j.gate(weights, t.level)
+		smooth()
+	}
+	t.anchor = j.anchor(t.level)
+	w := narrowing{
+		to:    rangeMap{t.anchor, j.Deadband, j.Lift, j.Cut},
+		level: t.level, power: j.power, keep: j.Keep, gain: t.gain, ridden: make([]float64, n),
+	}
+	t.before = w.ranger.of(j.power)
+	if j.Step > 0 && (t.before > j.Range+asWide || j.Keep == 0 && j.apart()) {
+		w.spoken = j.speechAround()
+		w.even = slices.Max(w.spoken) > 0
+	}
+	t.even = w.even
+	t.kept = w.solve(j.Range)
+	t.lra = w.ranger.of(w.ridden)
+	sum, count := 0.0, 0.0
+	for i, on := range j.heard {
+		if on {
+			sum, count = sum+w.share(i, t.kept), count+1
+		}
+	}
+	t.kept = sum / count
+	return t
+}
+
+// gate gives each step of speech the weight it has in its loudness as BS.1770 gates it: the share of the 400 ms blocks
+// over it that are less than 10 LU below the level around. So two voices of one loudness have one level, however short
+// or long the gaps between their words.
+func (j *job) gate(weights, slow []float64) {
+	const block, under = 4, 10
+	for _, v := range j.voices {
+		r := sums(j.power[v.From:v.To])
+		passed := make([]float64, v.To-v.From+1) // blocks that pass among those that begin before
+		for i := range v.To - v.From {
+			passed[i+1] = passed[i]
+			if i+block <= v.To-v.From && decibels(r.mean(i, i+block)) > max(gate, slow[v.From+i+block/2]-under) {
+				passed[i+1]++
+			}
+		}
+		if passed[len(passed)-1] == 0 {
+			continue
+		}
+		for i := v.From; i < v.To; i++ {
+			if j.spoken[i] {
+				weights[i] = (passed[i-v.From+1] - passed[max(0, i-v.From+1-block)]) / block
+			}
+		}
+	}
+	for _, f := range j.fades {
+		clear(weights[f.From:f.To])
+	}
+}
+
+// apart reports whether voices stand so far apart that they are brought together however narrow the range is.
+func (j *job) apart() bool {
+	return slices.ContainsFunc(j.seams, func(s seam) bool {
+		return s.step && !s.jump && j.spoken[max(0, s.From-1)] && j.spoken[min(s.To, len(j.spoken)-1)]
+	})
+}
+
+// speechAround is the share of speech around each step, within one voice.
+func (j *job) speechAround() []float64 {
+	const reach = 3 * StepsPerSecond / 2
+	around := make([]float64, len(j.spoken))
+	for i, s := range j.spoken {
+		if s {
+			around[i] = 1
+		}
+	}
+	for _, v := range j.voices {
+		r := sums(around[v.From:v.To])
+		for i := v.From; i < v.To; i++ {
+			around[i] = r.mean(i-v.From-reach, i-v.From+reach+1)
+		}
+	}
+	return around
+}
+
+// finish turns a trial into the curve of a ride, and says what that does.
+func (j *job) finish(ride *Ride, t trial) {
+	g := edges(t.gain, j.voices)
+	for _, s := range j.seams {
+		a, b := g[s.From], g[s.To]
+		if s.step {
+			a = t.gain[max(0, s.From-1)]
+			b = t.gain[min(len(t.gain)-1, s.To)]
+		}
+		s.turn(g, a, b)
+		if s.step {
+			ride.Steps = append(ride.Steps, s.Span)
+		}
+	}
+	hold(g, j.phrases[0].From, j.phrases[len(j.phrases)-1].To)
+	ride.Fades = j.fades
+	for i, v := range g {
+		ride.Gain[i] = float32((math.Round(v*perHundred) + 0) / perHundred) // never −0
+		g[i] = float64(ride.Gain[i])
+	}
+	lift, at := floorLift(g, j.active)
+	ride.FloorLift, ride.FloorAt = lift, float64(at)/StepsPerSecond
+	ridden := make([]float64, len(t.gain))
+	for i := range ridden {
+		ridden[i] = j.power[i] * power((g[i]+g[i+1])/2)
+	}
+	ride.Range, ride.way = new(ranger).of(ridden), 1
+	if t.before > j.Range && !j.apart() {
+		ride.way = (t.before - ride.Range) / (t.before - j.Range)
+	}
+}

@@ -1,0 +1,108 @@
+package ride
+
+import "math"
+
+// How a step of the gain is made, in steps of time.
+const (
+	longestTurn = 4  // of a raised cosine in a pause
+	afterPhrase = 2  // a fall waits for what rings on
+	musicTurn   = 10 // of one at a jump in music, where there is no pause to hide it in
+)
+
+// seam is where two phrases meet, with [From, To) between them: nothing there is heard.
+type seam struct {
+	Span
+	step bool // the gain steps in it; else it glides
+	jump bool // in music
+}
+
+// edges turns the gains of steps into a curve, whose values lie on their edges. voices are the stretches within
+// which gain is smooth.
+func edges(gain []float64, voices []Span) []float64 {
+	g := make([]float64, len(gain)+1)
+	for _, v := range voices {
+		for e := v.From; e <= v.To; e++ {
+			g[e] = (gain[max(v.From, e-1)] + gain[min(v.To-1, e)]) / 2
+		}
+	}
+	return g
+}
+
+// turn moves the gain across a seam from a to b, its values on either side: it holds the lower of them, rises
+// late, so that it is up when the phrase begins, and falls early.
+func (s seam) turn(g []float64, a, b float64) {
+	from, to := s.From, s.To
+	length, late := min(longestTurn, max(1, (to-from)/8)), min(afterPhrase, (to-from)/8)
+	switch {
+	case s.jump && b < a:
+		from, to, length = max(0, from-musicTurn), from, musicTurn
+	case s.jump:
+		from, to, length = to, min(len(g)-1, to+musicTurn), musicTurn
+		b = g[to]
+	case from == to && b < a: // there is no pause: turn where it is softer
+		from--
+	case from == to:
+		to++
+		b = g[to]
+	}
+	begin := max(from, to-length)
+	if b < a {
+		begin = from + late
+		if s.jump {
+			begin, a = from, g[from]
+		}
+	}
+	for e := from; e <= to; e++ {
+		x := clamp(float64(e-begin)/float64(max(1, min(length, to-begin))), 0, 1)
+		g[e] = a + (b-a)*(1-math.Cos(math.Pi*x))/2
+	}
+}
+
+// hold keeps the ends of a curve at the gain of what is heard first and last.
+func hold(g []float64, first, last int) {
+	fill(g[:first], g[first])
+	fill(g[last+1:], g[last])
+}
+
+// floorLift returns how far the gain of a pause lies over that of the quieter neighbour, as the mean over the pause,
+// where that is most, and the step at which that pause begins.
+func floorLift(g []float64, heard []bool) (lift float64, at int) {
+	runs(heard, func(from, to int, on bool) {
+		if on || to-from <= pause || from == 0 || to == len(heard) {
+			return
+		}
+		sum := (g[from] + g[to]) / 2
+		for e := from + 1; e < to; e++ {
+			sum += g[e]
+		}
+		if l := sum/float64(to-from) - min(g[from], g[to]); l > lift {
+			lift, at = l, from
+		}
+	})
+	return lift, at
+}
+
+// seams are what lies between phrases: cuts, and the pauses that are meant.
+func seams(p []phrase, cut []bool, silence float64) []seam {
+	var found []seam
+	for i := 1; i < len(p); i++ {
+		gap := Span{p[i-1].To, p[i].From}
+		if cut[i] || float64(gap.To-gap.From) >= silence*StepsPerSecond {
+			found = append(found, seam{gap, cut[i], p[i].after})
+		}
+	}
+	return found
+}
+
+// between returns the stretches that seams with a step leave.
+func between(s []seam, n int) []Span {
+	found := []Span{{0, n}}
+	for _, s := range s {
+		if s.step {
+			at := (s.From + s.To) / 2
+			found[len(found)-1].To = at
+			found = append(found, Span{at, n})
+		}
+	}
+	return found
+}
