@@ -5,10 +5,10 @@ GO ?= go
 VERSION ?= $(shell git describe --tags --always --dirty 2>/dev/null || echo dev)
 BUILD = $(GO) build -trimpath -ldflags '-s -w -X evenshelf/command.Version=$(VERSION)'
 
-.PHONY: help build try test lint bench ratios fuzz clean
+.PHONY: help build try test lint bench evaluation ratios fuzz clean
 
 help: ## list the targets
-	@grep -hE '^[a-z]+:.*##' $(MAKEFILE_LIST) | sed -E 's/:[^#]*## /\t/' | expand -t 10
+	@grep -hE '^[a-z]+:.*##' $(MAKEFILE_LIST) | sed -E 's/:[^#]*## /\t/' | expand -t 12
 
 build: ## build bin/evenshelf
 	@scripts/need build
@@ -25,10 +25,14 @@ test: ## everything that has to pass: format, vet, lint, tests (with the race de
 	$(GO) tool staticcheck ./...
 	$(GO) test -race -timeout 9m ./...
 	@# tests of the whole program and of long signals, which the race detector would make minutes longer
-	$(GO) test -timeout 9m ./command ./engine/demo ./engine/faults ./engine/meter ./engine/speech
+	$(GO) test -timeout 9m ./command ./engine/demo ./engine/faults ./engine/level ./engine/meter ./engine/speech
 
 bench: ## run every benchmark (x-realtime is how much faster than listening)
 	$(GO) test -run '^$$' -bench . -benchmem ./engine/...
+
+evaluation: ## level composed programmes, measure what comes out, refresh engine/level/EVALUATION.md
+	@scripts/need test
+	$(GO) test ./engine/level -run Evaluation -count 1 -v -args -update
 
 ratios: build ## print what measuring costs, as ratios to FFmpeg's decoding and metering from one run
 	@scripts/need test

@@ -7,6 +7,7 @@ import (
 	"evenshelf/engine/audio"
 	"evenshelf/engine/faults"
 	"evenshelf/engine/profile"
+	"evenshelf/engine/speech"
 )
 
 const (
@@ -76,18 +77,30 @@ func (d *doubts) source() {
 		}
 		d.found = append(d.found, doubt)
 	}
-	if share := d.before.SpeechTime / d.before.ActiveTime; d.plan.Anchor == profile.Speech && audio.Ratio(share) < d.p.Harm.SpeechShare {
-		d.add("speech", d.firstSpeech(), "only %s %% of what is heard seems to be speech, and the level was set by that", d.before.Share())
+	if d.plan.Anchor == profile.Speech {
+		d.speech()
 	}
 }
 
-func (d *doubts) firstSpeech() *audio.Seconds {
+// speech is about an anchor that may not be what it is taken for.
+func (d *doubts) speech() {
+	n, sum, first := 0, 0.0, 0
 	for i, likely := range d.before.Timeline.Speech {
-		if likely >= 0.5 {
-			return new(seconds(i))
+		if likely >= speech.Likely {
+			if n == 0 {
+				first = i
+			}
+			n, sum = n+1, sum+float64(likely)
 		}
 	}
-	return nil
+	share := audio.Ratio(d.before.SpeechTime / d.before.ActiveTime)
+	differs := abs(d.plan.Anchored-d.before.Integrated) > audio.LUFS(d.p.Tolerance)
+	switch {
+	case share < d.p.Harm.SpeechShare:
+		d.add("speech", new(seconds(first)), "only %s %% of what is heard seems to be speech, and the level was set by that", d.before.Share())
+	case differs && audio.Ratio(sum/float64(n)) < d.p.Harm.SpeechLikelihood:
+		d.add("speech", new(seconds(first)), "it is not certain that what the level was set by is speech")
+	}
 }
 
 // outcome is about the figures everybody reads: length, peak, loudness.

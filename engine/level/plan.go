@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 
 	"evenshelf/engine/audio"
 	"evenshelf/engine/dynamics"
@@ -121,6 +122,11 @@ func (plan Plan) still() bool { return plan.Ride == nil && plan.Compressor == ni
 
 var speeds = map[profile.Speed]ride.Speed{profile.Slow: ride.Slow, profile.Medium: ride.Medium, profile.Fast: ride.Fast}
 
+// speedOf is a profile's speed, without time constants that are faster than it allows.
+func speedOf(r profile.Ride) ride.Speed {
+	return slices.DeleteFunc(slices.Clone(speeds[r.Speed]), func(tau float64) bool { return tau < float64(r.Fastest) })
+}
+
 // keep is the least share of a difference that stays.
 var keep = map[profile.Strength]float64{profile.Evening: 0, profile.Gentle: 0.3}
 
@@ -128,9 +134,11 @@ var keep = map[profile.Strength]float64{profile.Evening: 0, profile.Gentle: 0.3}
 // ceiling did after an earlier ride.
 func rideOf(p profile.Profile, a *Analysis, anchor profile.Anchor, moved []float32) *Ride {
 	r := ride.Solve(ride.Course{Level: a.Timeline.Level, Speech: a.Timeline.Speech, Moved: moved}, ride.Settings{
-		Speed: speeds[p.Ride.Speed], Speech: anchor == profile.Speech, Range: float64(p.Ride.Range),
+		Speed: speedOf(p.Ride), Speech: anchor == profile.Speech, Range: float64(p.Ride.Range),
 		Deadband: float64(p.Ride.Deadband), Keep: keep[p.Ride.Strength], Lift: float64(p.Ride.Lift), Cut: float64(p.Ride.Cut),
 		Step: p.Ride.Step, Silence: float64(p.Ride.Silence), Fades: p.Ride.Fades == profile.RideFades,
+		// A slow ride only narrows; the others bring voices together, if nothing is to be kept of what lies between them.
+		Even: p.Ride.Speed != profile.Slow && p.Ride.Strength == profile.Evening,
 	})
 	if r.Idle() {
 		return nil

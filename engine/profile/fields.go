@@ -30,6 +30,7 @@ var fields = []Field{
 		{string(Medium), "over some 6 s, or faster where that cannot; for films and talk"},
 		{string(Fast), "over some 2 s; for voice into a transmitter"},
 	}},
+	{Name: "ride.fastest_s", Means: "The least time constant the ride may come down to where a slower one cannot narrow the range enough, or not without turning loud and soft round. Music keeps its shape with 8 and more.", Unit: "s", Low: 2, High: 20},
 	{Name: "ride.strength", Means: "How much of the differences in level the ride takes away. In a file based on film, gentle also brings a wider range, a deadband of 2 dB and no compressor, unless they are given.", Words: []Word{
 		{string(Evening), "as much as the range asks, all of it if need be"},
 		{string(Gentle), "at least 30 % of a difference stays"},
@@ -67,9 +68,10 @@ var fields = []Field{
 	{Name: "harm.lift_db", Means: "Held if any part needs more gain than this: past it, noise is what is lifted.", Unit: "dB", Low: 0, High: 60},
 	{Name: "harm.floor_lift_db", Means: "Held if the noise in a pause is lifted by more than this over what its quieter neighbour is.", Unit: "dB", Low: 0, High: 40},
 	{Name: "harm.order", Means: "Held if the order of loud and soft is kept less than this: rank correlation (Spearman) of the loudness of 3 s blocks before and after, in recordings of a minute and longer. -1 asks for none.", Low: -1, High: 1},
-	{Name: "harm.range_over_lu", Means: "Held if the loudness range stays wider than asked for by more than this, in recordings of a minute and longer.", Unit: "LU", Low: 0, High: 40},
+	{Name: "harm.range_over_lu", Means: "Held if the loudness range stays wider than asked for by more than this, in recordings of a minute and longer. What is wider by half of one is left as it is.", Unit: "LU", Low: 0.5, High: 40},
 	{Name: "harm.range_lost_lu", Means: "Held if the loudness range becomes narrower than asked for, or than it was if that is less, by more than this.", Unit: "LU", Low: 0, High: 40},
 	{Name: "harm.speech_share", Means: "Held if less than this share of what is heard is speech, where speech is the anchor.", Low: 0, High: 1},
+	{Name: "harm.speech_likelihood", Means: "Held if what is taken for speech is less likely than this to be speech, on average, and has another loudness than the whole, where speech is the anchor.", Low: 0, High: 1},
 }
 
 func monoWords() []Word {

@@ -92,12 +92,14 @@ const (
 
 // Ride is the slow gain curve. With a speed of none nothing else in it matters.
 type Ride struct {
-	Speed    Speed    `json:"speed" toml:"speed"`
-	Strength Strength `json:"strength" toml:"strength"`
-	Range    audio.LU `json:"range_lu" toml:"range_lu"`       // a wider loudness range is narrowed to it
-	Deadband audio.DB `json:"deadband_db" toml:"deadband_db"` // what is no further from the anchor stays where it is
-	Lift     audio.DB `json:"lift_db" toml:"lift_db"`         // the most it may raise
-	Cut      audio.DB `json:"cut_db" toml:"cut_db"`           // the most it may lower
+	Speed Speed `json:"speed" toml:"speed"`
+	// Fastest is the least time constant, s, that it may come down to where a slower one cannot narrow the range enough.
+	Fastest  audio.Seconds `json:"fastest_s" toml:"fastest_s"`
+	Strength Strength      `json:"strength" toml:"strength"`
+	Range    audio.LU      `json:"range_lu" toml:"range_lu"`       // a wider loudness range is narrowed to it
+	Deadband audio.DB      `json:"deadband_db" toml:"deadband_db"` // what is no further from the anchor stays where it is
+	Lift     audio.DB      `json:"lift_db" toml:"lift_db"`         // the most it may raise
+	Cut      audio.DB      `json:"cut_db" toml:"cut_db"`           // the most it may lower
 	// Step is what a step of the gain at a pause has to be worth, dB²·s: of d dB between phrases one is made
 	// if it holds for some Step/d² seconds. 0 makes none.
 	Step float64 `json:"step_db2s" toml:"step_db2s"`
@@ -159,6 +161,9 @@ type Harm struct {
 	RangeLost audio.LU `json:"range_lost_lu" toml:"range_lost_lu"`
 	// SpeechShare is the least share of what is heard that has to be speech for a speech anchor to be trusted.
 	SpeechShare audio.Ratio `json:"speech_share" toml:"speech_share"`
+	// SpeechLikelihood is the least mean likelihood of what is taken for speech, for a speech anchor to be trusted
+	// where it has another loudness than the whole.
+	SpeechLikelihood audio.Ratio `json:"speech_likelihood" toml:"speech_likelihood"`
 }
 
 // Version is a short hash of everything the profile says: two profiles with one version level alike.

@@ -56,6 +56,7 @@ func (p Profile) rideWords() []string {
 	words := []string{
 		fmt.Sprintf("The ride is %s: it raises by %s and lowers by %s at the most.",
 			map[Speed]string{Slow: "slow", Medium: "of medium speed", Fast: "fast"}[r.Speed], decibels(r.Lift), decibels(r.Cut)),
+		fmt.Sprintf("Its time constant does not go under %s.", withUnit(float64(r.Fastest), "s")),
 		fmt.Sprintf("A loudness range wider than %s is narrowed to that%s.", withUnit(float64(r.Range), "LU"),
 			map[bool]string{true: ", but at least 30 % of each difference stays"}[r.Strength == Gentle]),
 	}
@@ -126,6 +127,9 @@ func (p Profile) harmWords() []string {
 	}
 	if p.Anchor == Speech && h.SpeechShare > 0 {
 		words = append(words, fmt.Sprintf("less than %s of what is heard is speech", percent(h.SpeechShare)))
+	}
+	if p.Anchor == Speech && h.SpeechLikelihood > 0 {
+		words = append(words, fmt.Sprintf("it is less than %s likely that what is taken for speech is speech, and its loudness is not that of the whole", percent(h.SpeechLikelihood)))
 	}
 	return words
 }

@@ -7,7 +7,7 @@ import (
 
 // What a ride has to do to be worth making. What has been ridden once asks for less.
 const (
-	leastReach = 1.0  // dB
+	leastReach = 1.5  // dB
 	leastWay   = 0.25 // of the way from the range that there is to the one asked for
 )
 

@@ -162,7 +162,7 @@ func (j *job) solve(tau float64) trial {
 		level: t.level, power: j.power, keep: j.Keep, gain: t.gain, ridden: make([]float64, n),
 	}
 	t.before = w.ranger.of(j.power)
-	if j.Step > 0 && (t.before > j.Range+asWide || j.Keep == 0 && j.apart()) {
+	if j.Step > 0 && (t.before > j.Range+asWide || j.Even && j.apart()) {
 		w.spoken = j.speechAround()
 		w.even = slices.Max(w.spoken) > 0
 	}
@@ -259,7 +259,7 @@ func (j *job) finish(ride *Ride, t trial) {
 		ridden[i] = j.power[i] * power((g[i]+g[i+1])/2)
 	}
 	ride.Range, ride.way = new(ranger).of(ridden), 1
-	if t.before > j.Range && !j.apart() {
+	if t.before > j.Range && !(j.Even && j.apart()) {
 		ride.way = (t.before - ride.Range) / (t.before - j.Range)
 	}
 }

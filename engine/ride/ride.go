@@ -61,6 +61,7 @@ type Settings struct {
 	Cut      float64 // dB, the most it may lower, given positive
 	Step     float64 // dB²·s that a step at a pause has to be worth; 0: no steps
 	Silence  float64 // s: a pause as long as this is meant
+	Even     bool    // voices that stand apart are brought together however narrow the range is; it takes steps
 	Fades    bool    // fades at the start and the end are ridden too; else the gain stands still in them
 }
 
