@@ -15,8 +15,9 @@ const (
 	audibleFloor = -60
 	// drifted is the difference of length, s, past which something is wrong: a lossy encoder pads less.
 	drifted = 0.05
-	// oneMinute is how long a recording must be for its loudness range to mean something (EBU R 128, note 2).
-	oneMinute = 60.0
+	// rangeLeast is how long, s, a recording must be for its loudness range to be held against it. It is not what it
+	// should be under a minute (EBU R 128, note 2), but it is what the ride went by.
+	rangeLeast = 20.0
 )
 
 // judge compares a rendering with what the profile asks. What is doubtful is held for a person; the reason says
@@ -94,7 +95,7 @@ func (d *doubts) speech() {
 		}
 	}
 	share := audio.Ratio(d.before.SpeechTime / d.before.ActiveTime)
-	differs := abs(d.plan.Anchored-d.before.Integrated) > audio.LUFS(d.p.Tolerance)
+	differs := abs(d.r.anchored.Sub(d.r.Integrated)) > d.p.Tolerance
 	switch {
 	case share < d.p.Harm.SpeechShare:
 		d.add("speech", new(seconds(first)), "only %s %% of what is heard seems to be speech, and the level was set by that", d.before.Share())
@@ -171,7 +172,7 @@ func (d *doubts) order(order audio.Ratio) {
 
 // rangeOf is about the loudness range against the profile's.
 func (d *doubts) rangeOf() {
-	if d.plan.Ride == nil || d.before.Duration < oneMinute {
+	if d.p.Ride.Speed == profile.Still || d.before.Duration < rangeLeast {
 		return
 	}
 	before, after, asked := d.before.Range, d.r.Range, d.p.Ride.Range

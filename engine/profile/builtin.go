@@ -25,7 +25,7 @@ var usual = Profile{
 	Limiter:    forMusic,
 	Delivered:  Delivered{Dither: Triangular},
 	Harm: Harm{
-		Over1: 0.5, Over3: 0.25, Over6: 0.05, Lift: 40, Floor: 6, Order: -1, RangeOver: 3, RangeLost: 6, SpeechShare: 0.1, SpeechLikelihood: 0.9,
+		Over1: 0.5, Over3: 0.25, Over6: 0.05, Lift: 40, Floor: 6, Order: -1, RangeOver: 3, RangeLost: 6, SpeechShare: 0.1, SpeechLikelihood: 0.85,
 	},
 }
 
@@ -34,7 +34,7 @@ var builtin = []Profile{
 		"Classical, jazz and live recordings: soft passages come up and loud ones down a little, slowly, and the order of loud and soft stays.",
 		func(p *Profile) {
 			p.Target = -20
-			p.Ride = Ride{Speed: Slow, Fastest: 8, Strength: Evening, Range: 15, Deadband: 3, Lift: 12, Cut: 8, Silence: 3, Fades: KeepFades}
+			p.Ride = Ride{Speed: Slow, Fastest: 3, Strength: Evening, Range: 15, Deadband: 3, Lift: 12, Cut: 8, Silence: 3, Fades: KeepFades}
 			p.Limiter = forConcert
 			p.Harm.Order, p.Harm.RangeOver = 0.85, 0.5
 		}),
