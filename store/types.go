@@ -206,6 +206,8 @@ type Run struct {
 	Profile        string     `json:"profile"`
 	ProfileVersion string     `json:"profile_version"`
 	Target         float64    `json:"target_lufs"`
+	Tolerance      float64    `json:"tolerance_lu"`
+	Ceiling        float64    `json:"ceiling_dbtp"`
 	Delivery       Delivery   `json:"delivery"`
 	State          RunState   `json:"state"`
 	CreatedAt      time.Time  `json:"created_at"`

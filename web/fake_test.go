@@ -57,7 +57,7 @@ var hostile = []string{
 func newFake(n int) *fake {
 	rng := rand.New(rand.NewPCG(7, uint64(n)))
 	f := &fake{asked: make(chan string, 9), profiles: profile.Gather("").All[:2]}
-	run := store.Run{ID: 12, ShelfID: 1, ShelfName: "evening-music", Profile: "rotation", ProfileVersion: "5f0c2a91b3de", Target: -18,
+	run := store.Run{ID: 12, ShelfID: 1, ShelfName: "evening-music", Profile: "rotation", ProfileVersion: "5f0c2a91b3de", Target: -18, Tolerance: 0.3, Ceiling: -1,
 		Delivery: store.Copy, State: store.RunWorking, CreatedAt: noon.Add(-40 * time.Minute), Jobs: n, BytesTotal: int64(n) * 41e6}
 	started := noon.Add(-38 * time.Minute)
 	run.StartedAt = &started

@@ -10,7 +10,6 @@ import (
 	"github.com/gin-gonic/gin"
 
 	"evenshelf/engine/level"
-	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
 
@@ -240,10 +239,7 @@ func (s *Site) findRecording(c *gin.Context, n int64) (p recordingPage, err erro
 		}
 		p.Run = &run
 		p.Target = &run.Target
-		if prof, err := profile.Named(run.Profile); err == nil {
-			ceiling := float64(prof.Ceiling)
-			p.Ceiling = &ceiling
-		}
+		p.Ceiling = &run.Ceiling
 		if p.Last.Plan != nil {
 			ceiling := float64(p.Last.Plan.Ceiling)
 			p.Ceiling = &ceiling

@@ -8,7 +8,6 @@ import (
 	"unicode/utf8"
 
 	"evenshelf/engine/audio"
-	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
 
@@ -45,16 +44,6 @@ func spread(quietest, loudest *float64) *float64 {
 	}
 	d := *loudest - *quietest
 	return &d
-}
-
-// tolerance of a built-in profile, LU; nil for one we cannot look up here.
-func tolerance(name string) *float64 {
-	p, err := profile.Named(name)
-	if err != nil {
-		return nil
-	}
-	t := float64(p.Tolerance)
-	return &t
 }
 
 // told is what happened to a recording, in a sentence.

@@ -25,7 +25,7 @@ var usual = Profile{
 	Limiter:    forMusic,
 	Delivered:  Delivered{Dither: Triangular},
 	Harm: Harm{
-		Over1: 0.5, Over3: 0.25, Over6: 0.05, Lift: 40, Floor: 6, Order: -1, RangeOver: 3, RangeLost: 6, SpeechShare: 0.1, SpeechLikelihood: 0.85,
+		Over1: 0.5, Over3: 0.25, Over6: 0.05, Lift: 40, Floor: 6, Order: -1, RangeOver: 3, RangeLost: 6, SpeechShare: 0.1, SpeechLikelihood: 0.95,
 	},
 }
 
@@ -58,6 +58,7 @@ var builtin = []Profile{
 			p.Ride = Ride{Speed: Medium, Fastest: 3, Strength: Evening, Range: 6, Lift: 20, Cut: 20, Step: 15, Silence: 3, Fades: KeepFades}
 			p.Compressor = Compressor{Over: 3, Ratio: 3, Knee: 6, Release: 80}
 			p.Limiter = forSpeech
+			p.Harm.SpeechShare = 0.5
 		}),
 	usual.with("transmitter",
 		"The feed in front of a transmitter or a hand-held radio: even from moment to moment, nothing over the ceiling.",

@@ -1,6 +1,9 @@
 import { get, post } from "../../api.js";
 import { el, parts, say } from "../../dom.js";
 
+// The profile offered first: what a shelf of everything is levelled with.
+const usual = "rotation";
+
 export function mount(button) {
   const dialog = document.getElementById(button.dataset.dialog);
   const form = dialog.querySelector("form");
@@ -73,9 +76,9 @@ function brief({ words }) {
   return ["Loudness", "Ride", "Peaks"].flatMap(start).join(" ");
 }
 
-function option(profile, index) {
+function option(profile, index, all) {
   return el("label", { class: "option" },
-    el("input", { type: "radio", name: "profile", value: profile.name, checked: index === 0 }),
+    el("input", { type: "radio", name: "profile", value: profile.name, checked: index === Math.max(0, all.findIndex(({ name }) => name === usual)) }),
     el("span", {},
       el("b", {}, profile.name),
       profile.source === "own" ? " (your own)" : null,
