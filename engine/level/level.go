@@ -1,4 +1,9 @@
 // Package level is the pipeline a recording goes through: analyse, plan, render, judge.
+//
+// A plan is a ride (see package ride), a compressor on the ridden sound, a steady gain, and a ceiling (see package
+// dynamics), each only where it has something to do. The gain is searched for by rendering into a meter, until what
+// the plan's anchor comes to is what the profile aims at; a dry run ends there. How well all of it does is in
+// EVALUATION.md, which `make evaluation` writes.
 package level
 
 import (
