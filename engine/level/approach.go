@@ -23,7 +23,7 @@ const (
 // of limited sound rises by less than its gain, but never falls.
 func (j *turn) foresee(ctx context.Context) error {
 	if j.plan.Untouched || j.plan.still() && !j.plan.Limit {
-		j.foreseen = j.shifted(j.plan.Gain)
+		j.shift()
 		return nil
 	}
 	plan, rides := j.plan, 0
@@ -34,9 +34,9 @@ func (j *turn) foresee(ctx context.Context) error {
 		if err != nil {
 			return err
 		}
-		if ride := j.rideAgain(plan, r); ride != nil && rides < mostRides {
+		if ride, wider := j.rideAgain(plan, r); ride != nil && rides < mostRides {
 			rides++
-			plan.Ride, last = ride, audio.LUFS(audio.Undefined)
+			plan.Ride, plan.Wider, last = ride, wider, audio.LUFS(audio.Undefined)
 			continue
 		}
 		off, most := plan.Aim.Sub(r.anchored), j.most(plan, r)
@@ -75,6 +75,20 @@ func (plan *Plan) dropIdle(w Work) {
 	}
 }
 
+// shift foresees a steady gain. Loudness follows it, but for quiet passages that come over the gate at −70 LUFS.
+func (j *turn) shift() {
+	most := audio.DB(j.plan.Ceiling - j.before.TruePeak)
+	for range mostTries {
+		j.foreseen = j.shifted(j.plan.Gain)
+		off := audio.DB(j.plan.Aim.Sub(j.foreseen.anchored))
+		if j.plan.Untouched || j.task.Shared != nil || abs(off) < closeEnough || off > 0 && j.plan.Gain >= most {
+			break
+		}
+		j.plan.Gain = stored(min(j.plan.Gain+off, most))
+		j.plan.Reason = j.plan.words(j.task.Profile)
+	}
+}
+
 // most is the gain with which the ceiling takes off as much as it may, by what it did in a rendering of the plan.
 func (j *turn) most(plan Plan, r rendering) audio.DB {
 	room := audio.DB(plan.Ceiling - r.TruePeak)
@@ -86,14 +100,14 @@ func (j *turn) most(plan Plan, r rendering) audio.DB {
 
 // rideAgain returns a ride that makes up for what compressor and ceiling did in a rendering, so that they do not
 // move apart again what the ride brought together; nil if there is nothing to make up for. Music is left to them.
-func (j *turn) rideAgain(plan Plan, r rendering) *Ride {
+func (j *turn) rideAgain(plan Plan, r rendering) (again *Ride, wider audio.LU) {
 	p := j.task.Profile
 	if plan.Ride == nil || p.Ride.Step == 0 {
-		return nil
+		return nil, 0
 	}
 	moved := r.work.moved(len(j.before.Timeline.Level))
 	if spreadWhere(moved, j.before.Timeline.Active) < movedApart {
-		return nil
+		return nil, 0
 	}
 	return rideOf(p, j.before, plan.Anchor, moved)
 }

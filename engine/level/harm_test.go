@@ -10,6 +10,7 @@ import (
 	"evenshelf/engine/dynamics"
 	"evenshelf/engine/meter"
 	"evenshelf/engine/profile"
+	"evenshelf/engine/ride"
 	"evenshelf/engine/speech"
 )
 
@@ -74,15 +75,15 @@ func TestLimitsOfHarm(t *testing.T) {
 		{"floor", "lifted 7.5 dB", 42,
 			func(_ *Analysis, plan *Plan, _ *rendering) { plan.Ride.FloorLift, plan.Ride.FloorAt = 7.5, 42 },
 			func(p *profile.Profile) { p.Harm.Floor = 8 }},
-		{"order", "rank correlation", -1,
+		{"order", "rank correlation", 54,
 			func(_ *Analysis, _ *Plan, r *rendering) {
 				for i := range r.timeline.ShortTerm {
 					r.timeline.ShortTerm[i] = -46 - r.timeline.ShortTerm[i]
 				}
 			},
 			func(p *profile.Profile) { p.Harm.Order = -1 }},
-		{"range", "went down to 1.5 LU", -1,
-			func(_ *Analysis, _ *Plan, r *rendering) { r.Range = 1.5 },
+		{"range", "went down to 1.5 LU", 33.3,
+			func(_ *Analysis, plan *Plan, r *rendering) { r.Range, plan.Ride.Gain[333] = 1.5, -9 },
 			func(p *profile.Profile) { p.Harm.RangeLost = 7 }},
 		{"speech", "only 5 %", 0,
 			func(before *Analysis, _ *Plan, _ *rendering) { before.SpeechTime = 4.5 },
@@ -104,11 +105,11 @@ func TestLimitsOfHarm(t *testing.T) {
 	} {
 		p, before, plan, r := harmless(t)
 		p.Harm.Order = 0.9
-		if v := judge(p, before, plan, r); v.State != Done {
+		if v := judge(p, before, plan, r, treatmentOf(before, r)); v.State != Done {
 			t.Fatalf("nothing is wrong, yet it is held: %s", v.Reason)
 		}
 		c.harm(before, &plan, &r)
-		v := judge(p, before, plan, r)
+		v := judge(p, before, plan, r, treatmentOf(before, r))
 		if v.State != Held || len(v.Doubts) != 1 || v.Doubts[0].Code != c.code || !strings.Contains(v.Reason, c.words) {
 			t.Errorf("%s, %q: %s, %+v", c.code, c.words, v.State, v.Doubts)
 			continue
@@ -122,7 +123,7 @@ func TestLimitsOfHarm(t *testing.T) {
 			t.Errorf("%s: the moment is not in the words: %s", c.code, v.Reason)
 		}
 		c.allow(&p)
-		if v := judge(p, before, plan, r); v.State != Done {
+		if v := judge(p, before, plan, r, treatmentOf(before, r)); v.State != Done {
 			t.Errorf("%s: the profile allows it, yet it is held: %s", c.code, v.Reason)
 		}
 	}
@@ -137,18 +138,18 @@ func TestOrderAgainstScipy(t *testing.T) {
 		{[]float64{1, 2, 3, 4, 5}, []float64{5, 6, 7, 8, 7}, 0.8207826816681233},
 		{[]float64{-20, -31.5, -18, -18, -25, -40}, []float64{-22, -25, -21, -20, -25, -26}, 0.9705882352941178},
 	} {
-		if got := correlation(ranks(c.a), ranks(c.b)); math.Abs(got-c.want) > 1e-12 {
+		if got := correlation(ride.Ranks(c.a), ride.Ranks(c.b)); math.Abs(got-c.want) > 1e-12 {
 			t.Errorf("%v, %v: %.16f, want %.16f", c.a, c.b, got, c.want)
 		}
 	}
-	if got := correlation(ranks([]float64{1, 1}), ranks([]float64{2, 3})); !math.IsNaN(got) {
+	if got := correlation(ride.Ranks([]float64{1, 1}), ride.Ranks([]float64{2, 3})); !math.IsNaN(got) {
 		t.Errorf("what does not vary has an order of %g", got)
 	}
 	short := make([]float32, orderLeast-1)
 	for i := range short {
 		short[i] = float32(-20 - rand.Float64())
 	}
-	if got := order(short, short, -20); audio.Defined(got) {
+	if got, _ := order(short, short, -20); audio.Defined(got) {
 		t.Errorf("under a minute the order is %g", got)
 	}
 }

@@ -2,6 +2,8 @@ package level
 
 import (
 	"fmt"
+	"math"
+	"slices"
 	"strings"
 
 	"evenshelf/engine/audio"
@@ -21,15 +23,15 @@ const (
 )
 
 // judge compares a rendering with what the profile asks. What is doubtful is held for a person; the reason says
-// what to listen for, and the doubts say where.
-func judge(p profile.Profile, before *Analysis, plan Plan, r rendering) Verdict {
+// what to listen for, and the doubts say where. done is what it did to the sound; nil if nothing.
+func judge(p profile.Profile, before *Analysis, plan Plan, r rendering, done *Treatment) Verdict {
 	d := doubts{p: p, before: before, plan: plan, r: r}
 	d.source()
 	d.outcome()
-	if !plan.Untouched {
+	if done != nil {
 		d.lifting()
-		d.limiting(treatmentOf(before, r))
-		d.order(treatmentOf(before, r).Order)
+		d.limiting(done)
+		d.order(done)
 		d.rangeOf()
 	}
 	short := plan.Aim.Sub(r.anchored)
@@ -111,18 +113,17 @@ func (d *doubts) outcome() {
 		d.add("length", nil, "the copy is %.2f s shorter or longer than the original", drift)
 	}
 	if over := audio.DB(r.TruePeak - p.Ceiling); over > peakTolerance {
-		d.add("ceiling", nil, "its true peak is %.2f dB over the ceiling of %s dBTP", over, audio.Number(float64(p.Ceiling), 1))
+		d.add("ceiling", momentOf(r.timeline.Peak, nil), "its true peak is %.2f dB over the ceiling of %s dBTP", over, audio.Number(float64(p.Ceiling), 1))
 	}
 	short := d.plan.Aim.Sub(r.anchored)
 	// Without dynamics the peaks decide how far the gain goes; that is what such a profile asks for.
-	asFarAsPeaksAllow := p.Limiter.Most == 0 && short > 0 && r.TruePeak > p.Ceiling-0.2
+	asFarAsPeaksAllow := p.Limiter.Most == 0 && short > 0 && d.plan.Gain >= audio.DB(d.plan.Ceiling-d.before.TruePeak)-leastGain
 	if abs(short) <= p.Tolerance || asFarAsPeaksAllow {
 		return
 	}
-	var at *audio.Seconds
-	why := "its level moves too much"
-	if depth, step := deepest(r.work.Limited); depth > p.Limiter.Most-0.5 {
-		at, why = new(seconds(step)), fmt.Sprintf("its peaks may be held by no more than %s dB", audio.Number(float64(p.Limiter.Most), 1))
+	at, why := momentOf(r.timeline.ShortTerm, nil), "its level moves too much"
+	if depth, step := deepest(r.work.Limited); depth > 0 {
+		at, why = new(seconds(step)), fmt.Sprintf("its peaks stand out too far, and may be held by no more than %s dB", audio.Number(float64(p.Limiter.Most), 1))
 	}
 	d.add("target", at, "%s LUFS could not be reached, it came out at %s LUFS: %s", audio.Number(float64(d.plan.Aim), 1),
 		audio.Number(float64(r.anchored), 1), why)
@@ -130,7 +131,8 @@ func (d *doubts) outcome() {
 
 // lifting is about noise that is lifted with the sound, or in the pauses.
 func (d *doubts) lifting() {
-	most, at := d.plan.Gain, (*audio.Seconds)(nil)
+	softest := func(v float32) float64 { return -float64(v) }
+	most, at := d.plan.Gain, momentOf(heardOnly(d.before.Timeline.ShortTerm, d.before.Timeline.Active), softest)
 	if ride := d.plan.Ride; ride != nil {
 		most += ride.Most
 		for i, on := range d.before.Timeline.Active {
@@ -158,28 +160,64 @@ func (d *doubts) limiting(t *Treatment) {
 		share, most audio.Ratio
 	}{{6, t.Limited6, d.p.Harm.Over6}, {3, t.Limited3, d.p.Harm.Over3}, {1, t.Limited1, d.p.Harm.Over1}} {
 		if l.share > l.most {
-			d.add("limiting", new(t.DeepestAt), "its peaks are held by more than %d dB in %s %% of the time", l.db, audio.Number(100*float64(l.share), 0))
+			d.add("limiting", new(t.DeepestAt), "its peaks are held by more than %d dB in %s %% of the time", l.db, percent(l.share))
 			return
 		}
 	}
 }
 
-func (d *doubts) order(order audio.Ratio) {
-	if order < d.p.Harm.Order { // not so if undefined
-		d.add("order", nil, "what was loud and what was soft have changed places too often (rank correlation %s)", audio.Number(float64(order), 2))
+func (d *doubts) order(t *Treatment) {
+	if t.Order < d.p.Harm.Order { // not so if undefined
+		d.add("order", new(t.OrderAt), "what was loud and what was soft have changed places too often (rank correlation %s)", audio.Number(float64(t.Order), 2))
 	}
 }
 
-// rangeOf is about the loudness range against the profile's.
+// rangeOf is about the loudness range against the profile's. Fades make it wider, as they are meant to: it counts only
+// what is wide without them.
 func (d *doubts) rangeOf() {
 	if d.p.Ride.Speed == profile.Still || d.before.Duration < rangeLeast {
 		return
 	}
 	before, after, asked := d.before.Range, d.r.Range, d.p.Ride.Range
 	switch {
-	case after > asked+d.p.Harm.RangeOver && before > asked:
-		d.add("range", nil, "its loudness range is still %s LU, %s were asked for", audio.Number(float64(after), 1), audio.Number(float64(asked), 0))
+	case d.plan.Wider > d.p.Harm.RangeOver && after > asked+d.p.Harm.RangeOver && before > asked:
+		off := func(v float32) float64 { return math.Abs(float64(v) - float64(d.r.Integrated)) }
+		d.add("range", momentOf(heardOnly(d.r.timeline.ShortTerm, d.before.Timeline.Active), off), "its loudness range is still %s LU, %s were asked for", audio.Number(float64(after), 1), audio.Number(float64(asked), 0))
 	case after < min(before, asked)-d.p.Harm.RangeLost:
-		d.add("range", nil, "its loudness range went down to %s LU, %s were asked for", audio.Number(float64(after), 1), audio.Number(float64(asked), 0))
+		var gain []float32
+		if d.plan.Ride != nil {
+			gain = d.plan.Ride.Gain
+		}
+		moved := func(v float32) float64 { return math.Abs(float64(v)) }
+		d.add("range", momentOf(gain, moved), "its loudness range went down to %s LU, %s were asked for", audio.Number(float64(after), 1), audio.Number(float64(asked), 0))
 	}
+}
+
+// momentOf is the moment at which a curve is highest, by a measure if there is one; nil if it has no values that count.
+func momentOf(curve []float32, measure func(float32) float64) *audio.Seconds {
+	highest, at := math.Inf(-1), -1
+	for i, v := range curve {
+		m := float64(v)
+		if measure != nil {
+			m = measure(v)
+		}
+		if m > highest && !math.IsInf(m, 1) { // nor is what is undefined
+			highest, at = m, i
+		}
+	}
+	if at < 0 {
+		return nil
+	}
+	return new(seconds(at))
+}
+
+// heardOnly is a curve without what is not heard, which becomes undefined.
+func heardOnly(curve []float32, active []bool) []float32 {
+	heard := slices.Clone(curve)
+	for i := range heard {
+		if i < len(active) && !active[i] {
+			heard[i] = float32(audio.Undefined)
+		}
+	}
+	return heard
 }

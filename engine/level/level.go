@@ -47,11 +47,16 @@ type Dialogue struct {
 	SpeechLoudness audio.LUFS    `json:"speech_lufs"` // of the 400 ms blocks of speech; undefined without any
 }
 
-// Share is how much of what is heard is speech, in whole percents: "84"; a little is said to be little, "under 1",
-// not none. It is "" if that is not known.
+// Share is how much of what is heard is speech, in percents and in words; "" if that is not known.
 func (d Dialogue) Share() string {
-	switch percent := 100 * float64(d.SpeechTime/d.ActiveTime); {
-	case !audio.Defined(audio.Ratio(percent)):
+	return percent(audio.Ratio(d.SpeechTime / d.ActiveTime))
+}
+
+// percent is a share in whole percents: "84"; a little is said to be little, "under 1", not none. It is "" if the share
+// is not defined.
+func percent(share audio.Ratio) string {
+	switch percent := 100 * float64(share); {
+	case !audio.Defined(share):
 		return ""
 	case percent > 0 && percent < 0.5:
 		return "under 1"
@@ -86,6 +91,7 @@ type Plan struct {
 	Aim      audio.LUFS     `json:"aim_lufs"`    // and in the copy: the target, unless its gain is shared with others
 
 	Ride       *Ride                 `json:"ride"`         // nil: none
+	Wider      audio.LU              `json:"wider_lu"`     // than the profile's range it stays, with the ride or without, fades apart
 	Compressor *dynamics.Compression `json:"compressor"`   // nil: none; works on the ridden sound
 	Gain       audio.DB              `json:"gain_db"`      // steady, after both
 	Limit      bool                  `json:"limit"`        // whether the ceiling has anything to do
@@ -102,7 +108,7 @@ type Ride struct {
 	Least audio.DB      `json:"least_db"` // of the gain while something is heard
 	Most  audio.DB      `json:"most_db"`
 	Gain  ride.Curve    `json:"curve,omitempty"`
-	// FloorLift is how far a pause is lifted over its quieter neighbour at the most, and FloorAt where.
+	// FloorLift is how far the gain of a pause lies over the lower of those before and after it at the most, and FloorAt where.
 	FloorLift audio.DB      `json:"floor_lift_db"`
 	FloorAt   audio.Seconds `json:"floor_at_s"`
 }
@@ -117,7 +123,9 @@ type Treatment struct {
 	Deepest   audio.DB      `json:"deepest_db"`
 	DeepestAt audio.Seconds `json:"deepest_at_s"`
 	// Order is the rank correlation of the loudness of 3 s blocks before and after; undefined under a minute.
-	Order audio.Ratio `json:"order"`
+	// OrderAt is the block that changed its place most.
+	Order   audio.Ratio   `json:"order"`
+	OrderAt audio.Seconds `json:"order_at_s"`
 }
 
 // State is how a recording's turn ended.

@@ -34,7 +34,7 @@ func MakePlan(t Task, a *Analysis) (Plan, error) {
 	plan.Aim = p.Target
 	foreseen := plan.Anchored
 	if p.Ride.Speed != profile.Still {
-		plan.Ride = rideOf(p, a, plan.Anchor, nil)
+		plan.Ride, plan.Wider = rideOf(p, a, plan.Anchor, nil)
 	}
 	if plan.Ride != nil {
 		foreseen = plan.anchoredIn(a, plan.ridden(a))
@@ -69,7 +69,8 @@ func MakePlan(t Task, a *Analysis) (Plan, error) {
 	return plan, nil
 }
 
-// compression is a profile's compressor for a recording whose anchor has a loudness after the ride.
+// compression is a profile's compressor for a recording whose anchor has a loudness after the ride. The threshold goes by
+// that, not by the target: a gain that makes up for what is taken off would otherwise have more taken off.
 func compression(p profile.Profile, a *Analysis, anchored audio.LUFS) *dynamics.Compression {
 	c := &dynamics.Compression{Threshold: audio.DB(anchored) + p.Compressor.Over, Ratio: p.Compressor.Ratio, Knee: p.Compressor.Knee,
 		Release: p.Compressor.Release / 1000}
@@ -99,7 +100,7 @@ func hasLoudness(a *Analysis) error {
 
 // fitsWord reports whether a recording has the word length a profile asks for.
 func fitsWord(p profile.Profile, a *Analysis) bool {
-	return p.Delivered.Bits == 0 || a.Info.BitDepth == 0 || a.Info.BitDepth == p.Delivered.Bits && !a.Info.Float
+	return p.Delivered.Bits == 0 || a.Info.HasWord(p.Delivered.Bits)
 }
 
 // anchorOf returns what a profile brings to the target in a recording, and its loudness: speech only if
@@ -130,9 +131,9 @@ func speedOf(r profile.Ride) ride.Speed {
 // keep is the least share of a difference that stays.
 var keep = map[profile.Strength]float64{profile.Evening: 0, profile.Gentle: 0.3}
 
-// rideOf solves the ride of a recording; nil if it is even enough already. moved is what compressor and
-// ceiling did after an earlier ride.
-func rideOf(p profile.Profile, a *Analysis, anchor profile.Anchor, moved []float32) *Ride {
+// rideOf solves the ride of a recording; nil if it is even enough already. wider is by how much its loudness range stays
+// wider than the profile's, fades apart. moved is what compressor and ceiling did after an earlier ride.
+func rideOf(p profile.Profile, a *Analysis, anchor profile.Anchor, moved []float32) (out *Ride, wider audio.LU) {
 	r := ride.Solve(ride.Course{Level: a.Timeline.Level, Speech: a.Timeline.Speech, Moved: moved}, ride.Settings{
 		Speed: speedOf(p.Ride), Speech: anchor == profile.Speech, Range: float64(p.Ride.Range),
 		Deadband: float64(p.Ride.Deadband), Keep: keep[p.Ride.Strength], Lift: float64(p.Ride.Lift), Cut: float64(p.Ride.Cut),
@@ -141,9 +142,9 @@ func rideOf(p profile.Profile, a *Analysis, anchor profile.Anchor, moved []float
 		Even: p.Ride.Speed != profile.Slow && p.Ride.Strength == profile.Evening,
 	})
 	if r.Idle() {
-		return nil
+		return nil, audio.LU(r.Over)
 	}
-	out := &Ride{Speed: p.Ride.Speed, Kept: audio.Ratio(r.Kept), Range: audio.LU(r.Range), Gain: r.Gain,
+	out = &Ride{Speed: p.Ride.Speed, Kept: audio.Ratio(r.Kept), Range: audio.LU(r.Range), Gain: r.Gain,
 		FloorLift: audio.DB(r.FloorLift), FloorAt: audio.Seconds(r.FloorAt)}
 	out.Least, out.Most = audio.DB(audio.Undefined), audio.DB(audio.Undefined)
 	for i, on := range r.Active {
@@ -151,7 +152,7 @@ func rideOf(p profile.Profile, a *Analysis, anchor profile.Anchor, moved []float
 			out.Least, out.Most = least(out.Least, g), -least(-out.Most, -g)
 		}
 	}
-	return out
+	return out, audio.LU(r.Over)
 }
 
 // least is the lesser of two gains, of which the first may be undefined.

@@ -95,10 +95,10 @@ func TestJudge(t *testing.T) {
 		{"length changed", rotation, reading(-18, -1), shorter, 1, Held, "shorter or longer"},
 		{"no loudness read back", rotation, reading(-18, -1), reading(audio.LUFS(audio.Undefined), -1), 1, Held, "could not be reached"},
 		{"as far as peaks allow", untouched, reading(-30, -8), reading(-23, -1), 7, Done, "short of the target"},
-		{"no dynamics, yet target missed with room to spare", untouched, reading(-30, -8), reading(-23, -4), 7, Held, "could not be reached"},
+		{"no dynamics, yet target missed with room to spare", untouched, reading(-30, -8), reading(-26, -4), 4, Held, "could not be reached"},
 	} {
 		r := rendering{Reading: c.after.Reading, anchored: c.after.Integrated}
-		v := judge(c.p, c.before, Plan{Gain: c.gain, Aim: c.p.Target}, r)
+		v := judge(c.p, c.before, Plan{Gain: c.gain, Aim: c.p.Target, Ceiling: c.p.Ceiling}, r, treatmentOf(c.before, r))
 		if v.State != c.state || !strings.Contains(v.Reason, c.words) || (c.words == "") != (v.Reason == "") {
 			t.Errorf("%s: %s, %q; want %s with %q", c.name, v.State, v.Reason, c.state, c.words)
 		}

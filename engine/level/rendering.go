@@ -28,14 +28,18 @@ func (j *turn) rendering(r meter.Reading, t meter.Timeline, w Work) rendering {
 // shifted is the source with a steady gain.
 func (j *turn) shifted(gain audio.DB) rendering {
 	r := j.before.Reading
-	for _, l := range []*audio.LUFS{&r.Integrated, &r.MaxMomentary, &r.MaxShortTerm, &r.ShortTerm10, &r.ShortTerm50, &r.ShortTerm95, &r.NoiseFloor} {
+	for _, l := range []*audio.LUFS{&r.MaxMomentary, &r.MaxShortTerm, &r.ShortTerm10, &r.ShortTerm50, &r.ShortTerm95, &r.NoiseFloor} {
 		*l += audio.LUFS(gain)
 	}
 	r.TruePeak += audio.DBTP(gain)
 	r.SamplePeak += audio.DBFS(gain)
 	r.RMS += audio.DBFS(gain)
-	t := j.before.Timeline.Timeline.Ridden(func(int) float64 { return float64(gain) })
-	return rendering{r, t, j.plan.Anchored + audio.LUFS(gain), Work{}}
+	source := j.before.Timeline.Timeline
+	t := source.Ridden(func(int) float64 { return float64(gain) })
+	// Integrated loudness and range change with the gate; what the grid does not see of them stays as it was read.
+	r.Integrated += audio.LUFS(meter.Together(t).Sub(meter.Together(source)))
+	r.Range += t.Range() - source.Range()
+	return j.rendering(r, t, Work{})
 }
 
 // ridden is the timeline of a recording after the plan's ride.

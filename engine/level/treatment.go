@@ -1,11 +1,10 @@
 package level
 
 import (
-	"cmp"
 	"math"
-	"slices"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/ride"
 )
 
 const (
@@ -32,47 +31,35 @@ func treatmentOf(before *Analysis, r rendering) *Treatment {
 	t.Limited1, t.Limited3, t.Limited6 = over(1), over(3), over(6)
 	depth, step := deepest(r.work.Limited)
 	t.Deepest, t.DeepestAt = depth, seconds(step)
-	t.Order = order(before.Timeline.ShortTerm, r.timeline.ShortTerm, before.Integrated)
+	t.Order, t.OrderAt = order(before.Timeline.ShortTerm, r.timeline.ShortTerm, before.Integrated)
 	return t
 }
 
 func seconds(step int) audio.Seconds { return audio.Seconds(step) / audio.StepsPerSecond }
 
 // order is Spearman's rank correlation of the short-term loudness of blocks of 3 s before and after, without what is
-// silent or lies 20 LU under the integrated loudness, where noise is; undefined for recordings under a minute.
-func order(before, after []float32, integrated audio.LUFS) audio.Ratio {
+// silent or lies 20 LU under the integrated loudness, where noise is; undefined for recordings under a minute. at is
+// the block that changed its place most.
+func order(before, after []float32, integrated audio.LUFS) (rho audio.Ratio, at audio.Seconds) {
 	n := min(len(before), len(after))
 	if n < orderLeast {
-		return audio.Ratio(audio.Undefined)
+		return audio.Ratio(audio.Undefined), 0
 	}
 	var a, b []float64
+	var begins []int
 	for i := orderBlock - 1; i < n; i += orderBlock {
 		if x, y := float64(before[i]), float64(after[i]); x > max(-70, float64(integrated)-20) && y > -70 {
-			a, b = append(a, x), append(b, y)
+			a, b, begins = append(a, x), append(b, y), append(begins, i+1-orderBlock)
 		}
 	}
-	return audio.Ratio(correlation(ranks(a), ranks(b)))
-}
-
-// ranks returns the place of each value among all; equal ones share theirs.
-func ranks(x []float64) []float64 {
-	at := make([]int, len(x))
-	for i := range at {
-		at[i] = i
-	}
-	slices.SortFunc(at, func(i, j int) int { return cmp.Compare(x[i], x[j]) })
-	r := make([]float64, len(x))
-	for i := 0; i < len(at); {
-		k := i + 1
-		for k < len(at) && x[at[k]] == x[at[i]] {
-			k++
+	a, b = ride.Ranks(a), ride.Ranks(b)
+	most := -1.0
+	for i := range a {
+		if moved := math.Abs(a[i] - b[i]); moved > most {
+			most, at = moved, seconds(begins[i])
 		}
-		for _, m := range at[i:k] {
-			r[m] = float64(i+k-1) / 2
-		}
-		i = k
 	}
-	return r
+	return audio.Ratio(correlation(a, b)), at
 }
 
 // correlation is Pearson's; NaN where either does not vary.

@@ -18,6 +18,9 @@ const (
 	// answers to a smaller change is as likely to be a jump away as a step closer.
 	anotherRender      = 0.03
 	anotherLossyRender = 0.1
+	// lowerStill is how much further than a lossy copy's peak is over its ceiling the next one is made, dB: the encoder
+	// will not do the same again.
+	lowerStill = 0.1
 )
 
 // turn is one recording's way through the pipeline, after it has been measured.
@@ -41,7 +44,7 @@ func (j *turn) tell(o *Outcome, r rendering) {
 	} else {
 		o.Treatment = treatmentOf(j.before, r)
 	}
-	o.Verdict = judge(j.task.Profile, j.before, j.plan, r)
+	o.Verdict = judge(j.task.Profile, j.before, j.plan, r, o.Treatment)
 }
 
 // deliver renders until no rendering comes closer to the aim, and leaves the one that came closest in
@@ -118,7 +121,7 @@ func (j *turn) again(plan Plan, after *Analysis, near audio.LU) (next Plan, ok b
 	next = plan
 	mayLimit := j.task.Profile.Limiter.Most > 0
 	if over := audio.DB(after.TruePeak - j.task.Profile.Ceiling); over > peakAim {
-		next.Ceiling = audio.DBTP(stored(audio.DB(plan.Ceiling) - over - 0.02))
+		next.Ceiling = audio.DBTP(stored(audio.DB(plan.Ceiling) - over - lowerStill))
 		next.Limit = mayLimit
 	}
 	lower := audio.DB(next.Ceiling - j.plan.Ceiling)

@@ -19,12 +19,15 @@ func (plan Plan) words(p profile.Profile) string {
 		add("ride it from %s to %s dB", signed(r.Least), signed(r.Most))
 	}
 	if plan.Compressor != nil {
-		add("compress what is over %s LUFS by %s to 1", audio.Number(float64(plan.Compressor.Threshold)+float64(plan.Gain), 1),
+		add("compress what rises %s dB over its loudness by %s to 1", audio.Number(float64(p.Compressor.Over), 0),
 			strings.TrimSuffix(audio.Number(plan.Compressor.Ratio, 1), ".0"))
 	}
-	if plan.Gain < 0 {
+	switch {
+	case abs(plan.Gain) < leastGain:
+		add("keep its level")
+	case plan.Gain < 0:
 		add("lower by %.1f dB", -plan.Gain)
-	} else {
+	default:
 		add("lift by %.1f dB", plan.Gain)
 	}
 	switch {

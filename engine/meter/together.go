@@ -14,6 +14,16 @@ func Together(programmes ...Timeline) audio.LUFS {
 	return integrated(powers)
 }
 
+// Range returns the loudness range by EBU Tech 3342 of the full 3 s windows of a timeline. (A Reading's also takes in
+// the silence that follows a programme.)
+func (t Timeline) Range() audio.LU {
+	var powers []float64
+	for i := shortTermSteps - 1; i < len(t.ShortTerm); i++ {
+		powers = append(powers, power(float64(t.ShortTerm[i])))
+	}
+	return loudnessRange(powers)
+}
+
 // Ridden returns the timeline as it will be if gain(i), dB, is applied to step i. It has no peaks.
 func (t Timeline) Ridden(gain func(step int) float64) Timeline {
 	n := len(t.Level)

@@ -103,15 +103,15 @@ type Ride struct {
 	// Step is what a step of the gain at a pause has to be worth, dB²·s: of d dB between phrases one is made
 	// if it holds for some Step/d² seconds. 0 makes none.
 	Step float64 `json:"step_db2s" toml:"step_db2s"`
-	// Silence is the length of a pause, s, from which on it is meant: its gain is that of its quieter
-	// neighbour, and no step of the gain is heard in it.
+	// Silence is the length of a pause, s, from which on it is meant: its gain is the lower of those
+	// before and after it, and no step of the gain is heard in it.
 	Silence audio.Seconds `json:"silence_s" toml:"silence_s"`
 	Fades   Fades         `json:"fades" toml:"fades"`
 }
 
 // Compressor takes down what the ride is too slow for. A ratio of 1 is none.
 type Compressor struct {
-	Over    audio.DB `json:"over_target_db" toml:"over_target_db"` // its threshold, over the target
+	Over    audio.DB `json:"over_db" toml:"over_db"` // its threshold, over the loudness of the ridden sound
 	Ratio   float64  `json:"ratio" toml:"ratio"`
 	Knee    audio.DB `json:"knee_db" toml:"knee_db"` // width of the soft knee
 	Release float64  `json:"release_ms" toml:"release_ms"`
@@ -150,12 +150,12 @@ type Harm struct {
 	Over6 audio.Ratio `json:"limited_6db" toml:"limited_6db"`
 	// Lift is the most gain any part may need: past it, noise is what is lifted.
 	Lift audio.DB `json:"lift_db" toml:"lift_db"`
-	// Floor is the most the noise in a pause may be lifted over what its quieter neighbour is.
+	// Floor is the most that the gain in a pause may lie over the lower of those before and after it.
 	Floor audio.DB `json:"floor_lift_db" toml:"floor_lift_db"`
 	// Order is the least rank correlation (Spearman) of the loudness of 3 s blocks before and after, of
 	// recordings of a minute and longer; −1 asks for none.
 	Order audio.Ratio `json:"order" toml:"order"`
-	// RangeOver is how far the loudness range may stay above the range asked for, in recordings of a minute and longer.
+	// RangeOver is how far the loudness range may stay above the range asked for, fades apart, in recordings of 20 s and longer.
 	RangeOver audio.LU `json:"range_over_lu" toml:"range_over_lu"`
 	// RangeLost is how much narrower than asked for, or than it was if that is less, it may become.
 	RangeLost audio.LU `json:"range_lost_lu" toml:"range_lost_lu"`

@@ -69,7 +69,7 @@ func (p Profile) rideWords() []string {
 	} else {
 		words = append(words, "It glides and makes no steps.")
 	}
-	words = append(words, fmt.Sprintf("A pause of %s or more is meant: it is raised no further than its quieter neighbour.", withUnit(float64(r.Silence), "s")))
+	words = append(words, fmt.Sprintf("A pause of %s or more is meant: it gets the lower of the gains before and after it.", withUnit(float64(r.Silence), "s")))
 	if r.Fades == KeepFades {
 		return append(words, "It stands still in fades at the start and the end.")
 	}
@@ -81,7 +81,7 @@ func (p Profile) compressorWords() string {
 	if c.Ratio == 1 {
 		return "There is no compressor."
 	}
-	return fmt.Sprintf("What rises more than %s over the target is held back, %s:1, with a soft knee of %s and a release of %s.",
+	return fmt.Sprintf("What rises more than %s over the loudness of the whole is held back, %s:1, with a soft knee of %s and a release of %s.",
 		decibels(c.Over), number(c.Ratio), decibels(c.Knee), withUnit(c.Release, "ms"))
 }
 
@@ -118,7 +118,7 @@ func (p Profile) harmWords() []string {
 	words = append(words, fmt.Sprintf("a part has to be lifted by more than %s, and its noise with it", decibels(h.Lift)))
 	if rides {
 		words = append(words,
-			fmt.Sprintf("the noise in a pause comes up by more than %s over its quieter neighbour", decibels(h.Floor)),
+			fmt.Sprintf("the gain in a pause, and its noise, comes up by more than %s over the lower of those before and after", decibels(h.Floor)),
 			fmt.Sprintf("the loudness range stays more than %s wider than asked for, or becomes more than %s narrower",
 				withUnit(float64(h.RangeOver), "LU"), withUnit(float64(h.RangeLost), "LU")))
 	}

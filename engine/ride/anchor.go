@@ -1,16 +1,16 @@
 package ride
 
 const (
-	wideRange = 30.0 // dB from the softest to the loudest: more, and the anchor goes to the middle
+	wideRange = 30.0 // dB from the softest to the loudest: more, and the anchor goes to the middle of what lift and cut reach
 	fewest    = 0.02 // of the time, at either end, that do not count
 )
 
 // anchor returns the level that things are brought towards. In speech it is the median of phrases, since a few
 // loud effects that were taken for speech would pull a mean; of a programme the loudness.
 //
-// What ranges very widely has it in the middle, so that neither lift nor cut runs out before the other, and where
-// voices are brought together, it is where both suffice if there is such a place. The gain that follows a ride puts
-// the anchor where it is wanted, so nothing is lost.
+// What ranges very widely has it in the middle of what can be reached, so that neither lift nor cut runs out before the
+// other, and where voices are brought together, it is where both suffice if there is such a place. The gain that
+// follows a ride puts the anchor where it is wanted, so nothing is lost.
 func (j *job) anchor(slow []float64) float64 {
 	var voices, all []weighted
 	for _, p := range j.phrases {
@@ -32,7 +32,7 @@ func (j *job) anchor(slow []float64) float64 {
 	low, high := percentile(all, fewest), percentile(all, 1-fewest)
 	switch least, most := high-j.Cut, low+j.Lift; {
 	case high-low > wideRange:
-		return (low + high) / 2
+		return (least + most) / 2
 	case j.Step > 0 && least <= most:
 		return clamp(anchor, least, most)
 	}

@@ -8,6 +8,7 @@ import (
 // What a ride has to do to be worth making. What has been ridden once asks for less.
 const (
 	leastReach = 1.5  // dB
+	leastApart = 2.5  // dB, where the range is what it should be and voices are all there is to bring together
 	leastWay   = 0.25 // of the way from the range that there is to the one asked for
 )
 
@@ -33,4 +34,4 @@ func (r Ride) Reach() float64 {
 
 // Idle reports whether the ride would change so little that the recording is even enough as it is, or would not come
 // near its range, so that what has been ridden as far as it can be is not ridden again.
-func (r Ride) Idle() bool { return r.Reach() < leastReach || r.way < leastWay }
+func (r Ride) Idle() bool { return r.least == 0 || r.Reach() < r.least || r.way < leastWay }

@@ -15,6 +15,7 @@ type job struct {
 	active   []bool
 	heard    []bool // active, and no fade
 	fades    []Span
+	body     Span // between fades: what the range is told by
 	phrases  []phrase
 	seams    []seam
 	voices   []Span // between steps of the gain
@@ -46,7 +47,7 @@ func newJob(c Course, s Settings) *job {
 	if !math.IsNaN(loudness) {
 		j.active = listen(source, sums(sourcePower), loudness, j.spoken, s.Speech)
 	}
-	j.heard = slices.Clone(j.active)
+	j.heard, j.body = slices.Clone(j.active), Span{0, n}
 	if !s.Fades && !math.IsNaN(loudness) {
 		j.fades = fadesOf(sourcePower)
 		for _, f := range j.fades {
@@ -54,6 +55,13 @@ func newJob(c Course, s Settings) *job {
 		}
 		if !slices.Contains(j.heard, true) { // nothing but fades: there is no level to stand still at
 			j.fades, j.heard = nil, slices.Clone(j.active)
+		}
+		for _, f := range j.fades {
+			if f.From == 0 {
+				j.body.From = f.To
+			} else {
+				j.body.To = f.From
+			}
 		}
 	}
 	if s.Speech {
@@ -112,19 +120,20 @@ func (j *job) findVoices() (cut []bool) {
 
 // trial is a ride with one time constant.
 type trial struct {
-	anchor, kept, lra float64
-	before            float64 // the range there was, LU
-	level, gain       []float64
-	even              bool // voices are brought together, and not only the range narrowed
+	anchor, kept float64
+	before, lra  float64   // the range there was and that is left, fades apart, LU
+	order        float64   // how much of the order of loud and soft is left; 1 where speech goes first
+	level        []float64 // the slow level
+	curve        []float64 // the gain, dB, on the edges of steps
 }
 
 const (
-	orderly     = 0.4 // of differences that stays: with less the order of loud and soft is lost
-	worthFaster = 0.3 // LU, that a faster ride has to narrow the range by where none is enough
+	orderly     = 0.97 // with less, the order of loud and soft is lost
+	worthFaster = 0.3  // LU, that a faster ride has to narrow the range by where none is enough
 )
 
 // good reports whether no faster ride is needed.
-func (t trial) good(most float64) bool { return t.met(most) && (t.even || t.kept >= orderly) }
+func (t trial) good(most float64) bool { return t.met(most) && t.order >= orderly }
 
 func (t trial) met(most float64) bool { return t.lra <= most+rangeSlop }
 
@@ -132,7 +141,7 @@ func (t trial) met(most float64) bool { return t.lra <= most+rangeSlop }
 func (t trial) better(slower trial, most float64) bool {
 	switch {
 	case t.met(most) && slower.met(most):
-		return t.kept > slower.kept
+		return t.order > slower.order
 	case t.met(most) != slower.met(most):
 		return t.met(most)
 	}
@@ -141,7 +150,7 @@ func (t trial) better(slower trial, most float64) bool {
 
 func (j *job) solve(tau float64) trial {
 	n := len(j.level)
-	t := trial{level: make([]float64, n), gain: make([]float64, n)}
+	t := trial{level: make([]float64, n), curve: make([]float64, n+1)}
 	weights := make([]float64, n)
 	for _, p := range j.phrases {
 		fill(weights[p.From:p.To], 1)
@@ -157,18 +166,16 @@ func (j *job) solve(tau float64) trial {
 		smooth()
 	}
 	t.anchor = j.anchor(t.level)
-	w := narrowing{
-		to:    rangeMap{t.anchor, j.Deadband, j.Lift, j.Cut},
-		level: t.level, power: j.power, keep: j.Keep, gain: t.gain, ridden: make([]float64, n),
-	}
-	t.before = w.ranger.of(j.power)
+	w := narrowing{job: j, to: rangeMap{t.anchor, j.Deadband, j.Lift, j.Cut}, slow: t.level,
+		gain: make([]float64, n), curve: t.curve, ridden: make([]float64, n)}
+	t.before = w.ranger.of(j.power[j.body.From:j.body.To])
 	if j.Step > 0 && (t.before > j.Range+asWide || j.Even && j.apart()) {
-		w.spoken = j.speechAround()
-		w.even = slices.Max(w.spoken) > 0
+		w.said = j.speechAround()
+		w.even = slices.Max(w.said) > 0
 	}
-	t.even = w.even
 	t.kept = w.solve(j.Range)
-	t.lra = w.ranger.of(w.ridden)
+	t.lra = w.ranger.of(w.ridden[j.body.From:j.body.To])
+	t.order = j.orderIn(w.ridden)
 	sum, count := 0.0, 0.0
 	for i, on := range j.heard {
 		if on {
@@ -232,34 +239,56 @@ func (j *job) speechAround() []float64 {
 	return around
 }
 
-// finish turns a trial into the curve of a ride, and says what that does.
-func (j *job) finish(ride *Ride, t trial) {
-	g := edges(t.gain, j.voices)
-	for _, s := range j.seams {
+// shape turns the gains of steps into a curve, whose values lie on their edges.
+func (j *job) shape(g, gain []float64) {
+	edges(g, gain, j.voices)
+	for i, s := range j.seams {
+		if s.jump {
+			next := len(gain)
+			if i+1 < len(j.seams) {
+				next = j.seams[i+1].From
+			}
+			s.jumpTurn(g, gain[s.From-1], next)
+			continue
+		}
 		a, b := g[s.From], g[s.To]
 		if s.step {
-			a = t.gain[max(0, s.From-1)]
-			b = t.gain[min(len(t.gain)-1, s.To)]
+			a = gain[max(0, s.From-1)]
+			b = gain[min(len(gain)-1, s.To)]
 		}
 		s.turn(g, a, b)
+	}
+	hold(g, j.phrases[0].From, j.phrases[len(j.phrases)-1].To)
+}
+
+// finish turns a trial into a ride, and says what that does.
+func (j *job) finish(ride *Ride, t trial) {
+	for _, s := range j.seams {
 		if s.step {
 			ride.Steps = append(ride.Steps, s.Span)
 		}
 	}
-	hold(g, j.phrases[0].From, j.phrases[len(j.phrases)-1].To)
 	ride.Fades = j.fades
-	for i, v := range g {
+	for i, v := range t.curve {
 		ride.Gain[i] = float32((math.Round(v*perHundred) + 0) / perHundred) // never −0
-		g[i] = float64(ride.Gain[i])
+		t.curve[i] = float64(ride.Gain[i])
 	}
-	lift, at := floorLift(g, j.active)
+	lift, at := floorLift(t.curve, j.active)
 	ride.FloorLift, ride.FloorAt = lift, float64(at)/StepsPerSecond
-	ridden := make([]float64, len(t.gain))
-	for i := range ridden {
-		ridden[i] = j.power[i] * power((g[i]+g[i+1])/2)
+	ridden := make([]float64, len(j.power))
+	for i, p := range j.power {
+		ridden[i] = p * power((t.curve[i]+t.curve[i+1])/2)
 	}
-	ride.Range, ride.way = new(ranger).of(ridden), 1
-	if t.before > j.Range && !(j.Even && j.apart()) {
-		ride.way = (t.before - ride.Range) / (t.before - j.Range)
+	ride.Range, ride.way, ride.least = new(ranger).of(ridden), 1, leastReach
+	switch {
+	case t.before <= j.Range:
+		ride.least = leastApart
+	case !(j.Even && j.apart()):
+		ride.way = (t.before - t.lra) / (t.before - j.Range)
 	}
+	left := t.lra
+	if ride.Idle() {
+		left = t.before
+	}
+	ride.Over = max(0, left-j.Range)
 }

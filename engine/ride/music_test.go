@@ -75,7 +75,7 @@ func TestRangeIsMetAndOrderKept(t *testing.T) {
 }
 
 // With the smooth gain alone, the first second of a tutti came out 1.3 to 4.4 dB too loud here, and the quiet bars
-// before it sagged as much.
+// before it sagged as much. The turn itself is no faster than a fader is moved in music (common practice, no source).
 func TestTuttiIsNotMetTooLoud(t *testing.T) {
 	piece := recordings(t, "music.json")["time_to_strike"]
 	for _, style := range []string{"concert", "rotation"} {
@@ -106,11 +106,98 @@ func TestTuttiIsNotMetTooLoud(t *testing.T) {
 				for _, g := range later {
 					over -= float64(g) / float64(len(later))
 				}
-				sag := float64(r.Gain[e-60] - r.Gain[e-11])
-				if over > 0.5 || sag > 0.5 {
-					t.Errorf("%s, %v dB at %d: the first second is %.2f dB over the rest, the bars before sag by %.2f dB", style, jump, e, over, sag)
+				sag := float64(r.Gain[e-60] - r.Gain[e-longestJump-1])
+				fastest := float32(0)
+				for k := e - 60; k < e; k++ {
+					fastest = max(fastest, r.Gain[k]-r.Gain[k+10])
+				}
+				if over > 0.5 || sag > 0.5 || fastest > 10 {
+					t.Errorf("%s, %v dB at %d: the first second is %.2f dB over the rest, the bars before sag by %.2f dB, the turn goes %.1f dB in a second",
+						style, jump, e, over, sag, fastest)
 				}
 			}
+		}
+	}
+}
+
+// contrasts is a real piece played at levels that change from one bar to the next, every 7 to 16 s, by up to 25 dB.
+func contrasts(t testing.TB, seed uint64) (p []float64) {
+	rng := rand.New(rand.NewPCG(seed, 21))
+	piece := recordings(t, "music.json")["time_to_strike"]
+	for len(p) < 90*StepsPerSecond {
+		level := -25 * rng.Float64()
+		for range 70 + rng.IntN(90) {
+			p = append(p, piece[(300+len(p))%len(piece)]*power(level))
+		}
+	}
+	return p
+}
+
+// Of rides that come to the range, the one is taken that keeps the order of loud and soft. The figures are those of a
+// prototype; the slowest ride alone comes down to 0.80 here.
+func TestOrderDecidesBetweenSpeeds(t *testing.T) {
+	for seed := range uint64(8) {
+		p := contrasts(t, seed)
+		r := Solve(courseOf(p), styles["rotation"])
+		alone := styles["rotation"]
+		alone.Speed = Slow[:1]
+		slow := Solve(courseOf(p), alone)
+		o, slowest := order(p, riddenSteps(p, r.Gain)), order(p, riddenSteps(p, slow.Gain))
+		t.Logf("order %.3f, range %.1f LU; with the slowest %.3f, %.1f", o, r.Range, slowest, slow.Range)
+		if r.Over == 0 && o < 0.85 || r.Over > 1 {
+			t.Errorf("seed %d: order %.3f, %.1f LU wider than asked for", seed, o, r.Over)
+		}
+		j := newJob(courseOf(p), styles["rotation"])
+		if got := j.orderIn(riddenSteps(p, r.Gain)); math.Abs(got-o) > 1e-9 {
+			t.Errorf("seed %d: order is reckoned to be %.4f, it is %.4f", seed, got, o)
+		}
+	}
+}
+
+// Ties share the mean of their places, as is usual for Spearman's coefficient (from memory; the vectors were reckoned by hand).
+func TestRanks(t *testing.T) {
+	for _, c := range [][2][]float64{{{}, {}}, {{5}, {0}}, {{3, 1, 2}, {2, 0, 1}}, {{2, 7, 2, 1, 2}, {2, 4, 2, 0, 2}}} {
+		if got := Ranks(c[0]); !slices.Equal(got, c[1]) {
+			t.Errorf("ranks of %v are %v", c[0], got)
+		}
+	}
+}
+
+// A fade is meant to be soft: it makes no recording too wide. What is wide between fades does.
+func TestFadesAreNoRange(t *testing.T) {
+	rng := rand.New(rand.NewPCG(1, 22))
+	for _, softer := range []float64{0, 14} { // dB, in the middle
+		p := make([]float64, 800)
+		for i := range p {
+			p[i] = power(-18 + rng.NormFloat64() - 50*max(0, 1-float64(i)/120, 1-float64(len(p)-i)/120))
+			if i >= 280 && i < 520 {
+				p[i] *= power(-softer)
+			}
+		}
+		s := styles["rotation"]
+		s.Range, s.Lift, s.Cut = 5, 4, 4
+		r := Solve(courseOf(p), s)
+		if len(r.Fades) != 2 {
+			t.Fatalf("fades at %v", r.Fades)
+		}
+		body := Span{r.Fades[0].To, r.Fades[1].From}
+		whole, between := new(ranger).of(p), new(ranger).of(p[body.From:body.To])
+		ridden := new(ranger).of(riddenSteps(p, r.Gain)[body.From:body.To])
+		t.Logf("range %.1f LU, between fades %.1f → %.1f, over %.2f, idle %v", whole, between, ridden, r.Over, r.Idle())
+		switch {
+		case whole < s.Range+1:
+			t.Errorf("a range of %.1f LU proves nothing", whole)
+		case softer == 0 && (!r.Idle() || r.Over != 0):
+			t.Errorf("%.1f LU between fades, and is ridden by %.1f dB or %.1f LU over", between, r.Reach(), r.Over)
+		case softer > 0 && (r.Idle() || math.Abs(r.Over-(ridden-s.Range)) > 0.02):
+			t.Errorf("%.1f LU are left between fades, said to be %.2f over %v", ridden, r.Over, s.Range)
+		}
+		s.Lift, s.Cut = 0, 0
+		still := Solve(courseOf(p), s)
+		s.Speed = nil
+		none := Solve(courseOf(p), s)
+		if want := max(0, between-s.Range); math.Abs(still.Over-want) > 0.02 || math.Abs(none.Over-want) > 0.02 || !still.Idle() || !none.Idle() {
+			t.Errorf("%.1f LU over without a ride: said to be %.2f and %.2f", want, still.Over, none.Over)
 		}
 	}
 }

@@ -4,9 +4,14 @@ import "math"
 
 // How a step of the gain is made, in steps of time.
 const (
-	longestTurn = 4  // of a raised cosine in a pause
-	afterPhrase = 2  // a fall waits for what rings on
-	musicTurn   = 10 // of one at a jump in music, where there is no pause to hide it in
+	longestTurn = 4 // of a raised cosine in a pause
+	afterPhrase = 2 // a fall waits for what rings on
+
+	// Of one at a jump in music, where there is no pause to hide it in:
+	shortestJump = 10
+	longestJump  = 25
+	jumpSlope    = 5.0 // dB/s between the two, on average
+	jumpMet      = 80  // what is lowest within so many steps is there from the start
 )
 
 // seam is where two phrases meet, with [From, To) between them: nothing there is heard.
@@ -16,29 +21,22 @@ type seam struct {
 	jump bool // in music
 }
 
-// edges turns the gains of steps into a curve, whose values lie on their edges. voices are the stretches within
+// edges writes the gains of steps to a curve, whose values lie on their edges. voices are the stretches within
 // which gain is smooth.
-func edges(gain []float64, voices []Span) []float64 {
-	g := make([]float64, len(gain)+1)
+func edges(g, gain []float64, voices []Span) {
 	for _, v := range voices {
 		for e := v.From; e <= v.To; e++ {
 			g[e] = (gain[max(v.From, e-1)] + gain[min(v.To-1, e)]) / 2
 		}
 	}
-	return g
 }
 
-// turn moves the gain across a seam from a to b, its values on either side: it holds the lower of them, rises
+// turn moves the gain across a pause from a to b, its values on either side: it holds the lower of them, rises
 // late, so that it is up when the phrase begins, and falls early.
 func (s seam) turn(g []float64, a, b float64) {
 	from, to := s.From, s.To
 	length, late := min(longestTurn, max(1, (to-from)/8)), min(afterPhrase, (to-from)/8)
 	switch {
-	case s.jump && b < a:
-		from, to, length = max(0, from-musicTurn), from, musicTurn
-	case s.jump:
-		from, to, length = to, min(len(g)-1, to+musicTurn), musicTurn
-		b = g[to]
 	case from == to && b < a: // there is no pause: turn where it is softer
 		from--
 	case from == to:
@@ -48,15 +46,43 @@ func (s seam) turn(g []float64, a, b float64) {
 	begin := max(from, to-length)
 	if b < a {
 		begin = from + late
-		if s.jump {
-			begin, a = from, g[from]
-		}
 	}
 	for e := from; e <= to; e++ {
-		x := clamp(float64(e-begin)/float64(max(1, min(length, to-begin))), 0, 1)
-		g[e] = a + (b-a)*(1-math.Cos(math.Pi*x))/2
+		g[e] = cosine(a, b, float64(e-begin)/float64(max(1, min(length, to-begin))))
 	}
 }
+
+// jumpTurn moves the gain at a jump in music from a, its value before, as someone does who knows what comes: it is
+// down before a tutti, at the lowest that follows soon, and rises when one is over. next is where the next seam is.
+func (s seam) jumpTurn(g []float64, a float64, next int) {
+	at := s.From
+	if g[at] = g[at+1]; g[at] < a { // at the jump itself edges did not look across
+		low := math.Inf(1)
+		for e := min(next, at+jumpMet); e >= at; e-- {
+			low = min(low, g[e])
+			g[e] = low
+		}
+		from := max(0, at-turnLength(a-low))
+		a = g[from]
+		for e := from; e <= at; e++ {
+			g[e] = cosine(a, low, float64(e-from)/float64(at-from))
+		}
+		return
+	}
+	to := min(next, at+turnLength(g[at]-a))
+	b := g[to]
+	for e := at; e <= to; e++ {
+		g[e] = cosine(a, b, float64(e-at)/float64(to-at))
+	}
+}
+
+// turnLength is how many steps a turn at a jump takes, for so many dB.
+func turnLength(move float64) int {
+	return int(clamp(StepsPerSecond*move/jumpSlope, shortestJump, longestJump))
+}
+
+// cosine goes from a to b as x goes from 0 to 1.
+func cosine(a, b, x float64) float64 { return a + (b-a)*(1-math.Cos(math.Pi*clamp(x, 0, 1)))/2 }
 
 // hold keeps the ends of a curve at the gain of what is heard first and last.
 func hold(g []float64, first, last int) {

@@ -14,7 +14,7 @@ const (
 	noiseLong = 3.0  // s: nor is what is shorter than this
 	noiseGap  = 30.0 // dB, if it is softer by so much
 	jumpHeld  = 50   // on both sides of a jump in music
-	jumpSize  = 10   // dB, of a jump in music
+	jumpSize  = 8    // dB, of a jump in music
 	jumpSide  = 10   // right before and after it
 )
 

@@ -16,13 +16,13 @@ func (m rangeMap) gain(level, kept float64) float64 {
 
 // narrowing is what has to be known to find how much of the differences can stay.
 type narrowing struct {
+	*job
 	to     rangeMap
-	level  []float64 // the slow level
-	power  []float64
-	spoken []float64 // share of speech around: of it no more is kept than has to be
-	keep   float64   // the least share
+	slow   []float64 // the slow level
+	said   []float64 // share of speech around: of it no more is kept than has to be
 	even   bool      // speech is evened whatever the range
-	gain   []float64 // of the last try
+	gain   []float64 // of the steps, at the last try
+	curve  []float64 // what becomes of it
 	ridden []float64 // powers with it
 	ranger ranger
 }
@@ -39,7 +39,7 @@ func (w *narrowing) solve(most float64) float64 {
 	if w.try(1) <= most+asWide {
 		return 1
 	}
-	low, high := w.keep, 1.0
+	low, high := w.Keep, 1.0
 	if w.try(low) > most {
 		return low
 	}
@@ -54,14 +54,16 @@ func (w *narrowing) solve(most float64) float64 {
 	return low
 }
 
-// try foresees the loudness range if a share of the differences stays.
+// try foresees the loudness range, but for fades, if a share of the differences stays.
 func (w *narrowing) try(kept float64) float64 {
-	for i, l := range w.level {
-		g := w.to.gain(l, w.share(i, kept))
-		w.gain[i] = g
-		w.ridden[i] = w.power[i] * power(g)
+	for i, l := range w.slow {
+		w.gain[i] = w.to.gain(l, w.share(i, kept))
 	}
-	return w.ranger.of(w.ridden)
+	w.shape(w.curve, w.gain)
+	for i, p := range w.power {
+		w.ridden[i] = p * power((w.curve[i]+w.curve[i+1])/2)
+	}
+	return w.ranger.of(w.ridden[w.body.From:w.body.To])
 }
 
 // share is what stays of the differences at a step.
@@ -69,5 +71,5 @@ func (w *narrowing) share(i int, kept float64) float64 {
 	if !w.even {
 		return kept
 	}
-	return kept + (w.keep-kept)*w.spoken[i]
+	return kept + (w.Keep-kept)*w.said[i]
 }

@@ -9,7 +9,8 @@
 //	smooth     the slow level: what a fader has to follow
 //	anchor     the level everything is brought towards
 //	range map  how much of a difference in level stays: as much as the range asked for allows
-//	pauses     steps of the gain put into pauses, where nobody hears them
+//	pauses     steps of the gain put into pauses, where nobody hears them, and ahead of jumps in music
+//	order      whether loud and soft keep their order, or a faster ride is needed
 //
 // Levels are in dB re the power whose level is 0 LUFS. Everything is linear in the length of the course, but
 // for a sort.
@@ -36,8 +37,9 @@ type Course struct {
 }
 
 // Speed of a ride: its time constants in seconds, slowest first. A faster one is taken only if the ones before it
-// cannot narrow the programme to the range, or could only by keeping next to nothing of the differences, which
-// loses the order of loud and soft. A faster one keeps more of them, and so moves the gain hardly faster.
+// cannot narrow the programme to the range, or lose the order of loud and soft: what is too slow to follow the music
+// leaves next to nothing of its differences, and takes a soft part beside a loud one down with it. A faster one keeps
+// more of them, and so moves the gain hardly faster.
 type Speed []float64
 
 // The speeds.
@@ -78,7 +80,12 @@ type Ride struct {
 	Fades              []Span // where the gain stands still for a fade
 	Steps              []Span // pauses in which the gain steps
 
-	way float64 // how much of the way to the range asked for it goes; 1 if voices stood apart
+	// Over is by how much what is heard between fades stays wider than the range asked for, LU: with the ride or, if that
+	// is idle, as it is. 0 if it does not.
+	Over float64
+
+	least float64 // dB that the gain has to reach; 0 if there is no ride
+	way   float64 // how much of the way to the range asked for it goes; 1 if voices stood apart
 }
 
 // Span is a stretch of steps [From, To).
@@ -108,11 +115,14 @@ func Solve(c Course, s Settings) Ride {
 	for i, l := range best.level {
 		ride.Level[i] = float32(l)
 	}
-	if math.IsNaN(best.lra) || len(s.Speed) == 0 {
-		return ride
+	switch {
+	case math.IsNaN(best.lra):
+	case len(s.Speed) == 0:
+		ride.Over = clamp(best.before-s.Range, 0, math.Inf(1))
+	default:
+		ride.Kept = best.kept
+		j.finish(&ride, best)
 	}
-	ride.Kept = best.kept
-	j.finish(&ride, best)
 	return ride
 }
 

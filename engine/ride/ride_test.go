@@ -198,6 +198,21 @@ func TestRiddenOnceIsIdle(t *testing.T) {
 	}
 }
 
+// Where the range is as asked for, voices are brought together if they stand clearly apart, and else left: what a ride at
+// the end of its lift and cut leaves between two would be ridden again and again.
+func TestVoicesNearEachOtherAreLeft(t *testing.T) {
+	s := styles["film"]
+	s.Even = true
+	for _, difference := range []float64{2, 6} {
+		rng := rand.New(rand.NewPCG(2, 7))
+		r := Solve(conversation(t, rng, difference, 0.4, 1.5).course(rng), s)
+		t.Logf("%v dB apart: reach %.2f dB, idle %v", difference, r.Reach(), r.Idle())
+		if r.Idle() != (difference == 2) || r.Over != 0 {
+			t.Errorf("%v dB apart: reach %.2f dB, idle %v, %.1f LU over", difference, r.Reach(), r.Idle(), r.Over)
+		}
+	}
+}
+
 // Music between speech is ridden too, but does not say where speech belongs.
 func TestSpeechIsTheAnchor(t *testing.T) {
 	rng := rand.New(rand.NewPCG(1, 14))
