@@ -39,7 +39,7 @@ func (j *turn) foresee(ctx context.Context) error {
 			plan.Ride, plan.Wider, last = ride, wider, audio.LUFS(audio.Undefined)
 			continue
 		}
-		off, most := plan.Aim.Sub(r.anchored), j.most(plan, r)
+		off, most := plan.Aim.Sub(r.anchored), j.mostGain(plan, r)
 		tooMuch := plan.Gain > most+closeEnough
 		if !tooMuch && abs(off) < best {
 			best, j.plan, j.foreseen = abs(off), plan, r
@@ -60,6 +60,7 @@ func (j *turn) foresee(ctx context.Context) error {
 		}
 		j.plan = plan
 	}
+	j.most = j.mostGain(j.plan, j.foreseen)
 	j.plan.dropIdle(j.foreseen.work)
 	j.plan.Reason = j.plan.words(j.task.Profile)
 	return nil
@@ -78,6 +79,7 @@ func (plan *Plan) dropIdle(w Work) {
 // shift foresees a steady gain. Loudness follows it, but for quiet passages that come over the gate at −70 LUFS.
 func (j *turn) shift() {
 	most := audio.DB(j.plan.Ceiling - j.before.TruePeak)
+	j.most = most + j.task.Profile.Limiter.Most
 	for range mostTries {
 		j.foreseen = j.shifted(j.plan.Gain)
 		off := audio.DB(j.plan.Aim.Sub(j.foreseen.anchored))
@@ -89,8 +91,8 @@ func (j *turn) shift() {
 	}
 }
 
-// most is the gain with which the ceiling takes off as much as it may, by what it did in a rendering of the plan.
-func (j *turn) most(plan Plan, r rendering) audio.DB {
+// mostGain is the gain with which the ceiling takes off as much as it may, by what it did in a rendering of the plan.
+func (j *turn) mostGain(plan Plan, r rendering) audio.DB {
 	room := audio.DB(plan.Ceiling - r.TruePeak)
 	if deepest, _ := deepest(r.work.Limited); deepest > 0 {
 		room = -deepest

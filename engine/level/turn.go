@@ -31,6 +31,7 @@ type turn struct {
 	before   *Analysis
 	plan     Plan
 	foreseen rendering // of the plan
+	most     audio.DB  // the gain with which the ceiling takes off as much as it may
 	made     Work      // by the rendering that was delivered
 }
 
@@ -124,8 +125,12 @@ func (j *turn) again(plan Plan, after *Analysis, near audio.LU) (next Plan, ok b
 		next.Ceiling = audio.DBTP(stored(audio.DB(plan.Ceiling) - over - lowerStill))
 		next.Limit = mayLimit
 	}
-	lower := audio.DB(next.Ceiling - j.plan.Ceiling)
-	next.Gain = stored(min(plan.Gain+audio.DB(plan.Aim-j.readBack(after).anchored), j.most(j.plan, j.foreseen)+lower))
+	// How much limiting there may be goes by the profile's ceiling: what an encoder needs lower is not held against it.
+	most := j.most
+	if !mayLimit {
+		most += audio.DB(next.Ceiling - j.task.Profile.Ceiling)
+	}
+	next.Gain = stored(min(plan.Gain+audio.DB(plan.Aim-j.readBack(after).anchored), most))
 	if plan.still() {
 		next.Limit = mayLimit && next.Gain > audio.DB(next.Ceiling-j.before.TruePeak)
 	}
