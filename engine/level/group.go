@@ -3,8 +3,10 @@ package level
 import (
 	"context"
 	"errors"
+	"slices"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/faults"
 	"evenshelf/engine/media"
 	"evenshelf/engine/meter"
 	"evenshelf/engine/profile"
@@ -23,8 +25,8 @@ type Shared struct {
 	TruePeak   audio.DBTP `json:"true_peak_dbtp"`  // the highest of all
 }
 
-// Group measures recordings as one programme, one after another. One that cannot be read is left out: its
-// own turn says why.
+// Group measures recordings as one programme, one after another. One that cannot be read, or not to its end, is left
+// out: its own turn says why.
 func (e *Engine) Group(ctx context.Context, paths []string, mono audio.MonoRule) (Shared, error) {
 	shared := Shared{TruePeak: audio.DBTP(audio.Undefined)}
 	var all []meter.Timeline
@@ -36,7 +38,7 @@ func (e *Engine) Group(ctx context.Context, paths []string, mono audio.MonoRule)
 		if errors.Is(err, media.ErrKilled) {
 			return Shared{}, err
 		}
-		if err != nil {
+		if err != nil || slices.ContainsFunc(a.Faults, func(f faults.Fault) bool { return f.Severity == faults.Serious }) {
 			continue
 		}
 		all = append(all, a.Timeline.Timeline)

@@ -3,6 +3,7 @@ package level
 import (
 	"context"
 	"math"
+	"os"
 	"path/filepath"
 	"testing"
 
@@ -19,7 +20,12 @@ func TestGroupSharesOneGain(t *testing.T) {
 	e, ctx := &Engine{Media: media.Find()}, context.Background()
 	p := named(t, "untouched")
 	p.Group, p.Target = profile.Folder, -23
-	shared, err := e.Group(ctx, append(paths, filepath.Join(dir, "missing.wav")), p.Mono)
+	cut := filepath.Join(dir, "cut.wav") // at full scale, and breaking off: neither its loudness nor its peaks count
+	whole := readFile(t, excerpt(t, dir, "whole.wav", 3, "-c:a", "pcm_s24le"))
+	if err := os.WriteFile(cut, whole[:len(whole)/2], 0o644); err != nil {
+		t.Fatal(err)
+	}
+	shared, err := e.Group(ctx, append(paths, filepath.Join(dir, "missing.wav"), cut), p.Mono)
 	if err != nil {
 		t.Fatal(err)
 	}

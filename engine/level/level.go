@@ -119,6 +119,8 @@ type Treatment struct {
 	Limited1 audio.Ratio `json:"limited_1db"`
 	Limited3 audio.Ratio `json:"limited_3db"`
 	Limited6 audio.Ratio `json:"limited_6db"`
+	// Compressed is what the compressor took off while something is heard, on average; 0 if there was none.
+	Compressed audio.DB `json:"compressed_db"`
 	// Deepest is the most that was taken off a peak, and DeepestAt where.
 	Deepest   audio.DB      `json:"deepest_db"`
 	DeepestAt audio.Seconds `json:"deepest_at_s"`
@@ -159,7 +161,7 @@ type Outcome struct {
 	Plan    *Plan     `json:"plan"`
 	Verdict Verdict   `json:"verdict"`
 	Renders int       `json:"renders"` // how often the sound was rendered
-	// Foreseen is the reading that the plan's rendering has before it is encoded; nil if nothing was rendered.
+	// Foreseen is the reading foreseen for the plan as first made, before any correction for a lossy encoder.
 	Foreseen  *meter.Reading `json:"foreseen"`
 	Treatment *Treatment     `json:"treatment"` // nil if nothing was rendered
 

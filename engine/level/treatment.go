@@ -15,24 +15,34 @@ const (
 // treatmentOf sums up what a rendering did to the sound of a recording.
 func treatmentOf(before *Analysis, r rendering) *Treatment {
 	t := &Treatment{}
-	over := func(limit float32) audio.Ratio {
-		n, heard := 0, 0
-		for i, on := range before.Timeline.Active {
-			if !on {
-				continue
-			}
-			heard++
-			if i < len(r.work.Limited.Mean) && r.work.Limited.Mean[i] > limit {
-				n++
-			}
+	var heard, over1, over3, over6, compressed float64
+	for i, on := range before.Timeline.Active {
+		if !on {
+			continue
 		}
-		return audio.Ratio(float64(n) / max(1, float64(heard)))
+		heard++
+		over1 += exceeds(r.work.Limited.Mean, i, 1)
+		over3 += exceeds(r.work.Limited.Mean, i, 3)
+		over6 += exceeds(r.work.Limited.Mean, i, 6)
+		if i < len(r.work.Compressed.Mean) {
+			compressed += float64(r.work.Compressed.Mean[i])
+		}
 	}
-	t.Limited1, t.Limited3, t.Limited6 = over(1), over(3), over(6)
+	heard = max(1, heard)
+	t.Limited1, t.Limited3, t.Limited6 = audio.Ratio(over1/heard), audio.Ratio(over3/heard), audio.Ratio(over6/heard)
+	t.Compressed = audio.DB(compressed / heard)
 	depth, step := deepest(r.work.Limited)
 	t.Deepest, t.DeepestAt = depth, seconds(step)
 	t.Order, t.OrderAt = order(before.Timeline.ShortTerm, r.timeline.ShortTerm, before.Integrated)
 	return t
+}
+
+// exceeds is 1 if a curve has a step and is over a limit there, else 0.
+func exceeds(curve []float32, step int, limit float32) float64 {
+	if step < len(curve) && curve[step] > limit {
+		return 1
+	}
+	return 0
 }
 
 func seconds(step int) audio.Seconds { return audio.Seconds(step) / audio.StepsPerSecond }

@@ -34,7 +34,7 @@ var builtin = []Profile{
 		"Classical, jazz and live recordings: soft passages come up and loud ones down a little, slowly, and the order of loud and soft stays.",
 		func(p *Profile) {
 			p.Target = -20
-			p.Ride = Ride{Speed: Slow, Fastest: 3, Strength: Evening, Range: 15, Deadband: 3, Lift: 12, Cut: 8, Silence: 3, Fades: KeepFades}
+			p.Ride = Ride{Speed: Slow, Fastest: 5, Strength: Evening, Range: 15, Deadband: 3, Lift: 12, Cut: 8, Silence: 3, Fades: KeepFades}
 			p.Limiter = forConcert
 			p.Harm.Order, p.Harm.RangeOver = 0.85, 0.5
 		}),

@@ -30,7 +30,7 @@ var fields = []Field{
 		{string(Medium), "over some 6 s, or faster where that cannot; for films and talk"},
 		{string(Fast), "over some 2 s; for voice into a transmitter"},
 	}},
-	{Name: "ride.fastest_s", Means: "The least time constant the ride may come down to where a slower one cannot narrow the range enough, or not without turning loud and soft round. Music keeps its shape with 8 and more.", Unit: "s", Low: 2, High: 20},
+	{Name: "ride.fastest_s", Means: "The least time constant the ride may come down to where a slower one cannot narrow the range enough, or not without turning loud and soft round. Music keeps its shape with 5 and more.", Unit: "s", Low: 2, High: 20},
 	{Name: "ride.strength", Means: "How much of the differences in level the ride takes away. In a file based on film, gentle also brings a wider range, a deadband of 2 dB and no compressor, unless they are given.", Words: []Word{
 		{string(Evening), "as much as the range asks, all of it if need be"},
 		{string(Gentle), "at least 30 % of a difference stays"},
