@@ -20,13 +20,6 @@ type Timing struct {
 	LookAhead, Hold, Release float64
 }
 
-// Timings for three kinds of sound, which leave tones clean down to 84, 25 and 17 Hz.
-var (
-	ForSpeech  = Timing{LookAhead: 0.002, Hold: 0.002, Release: 0.030}
-	ForMusic   = Timing{LookAhead: 0.005, Hold: 0.010, Release: 0.120}
-	ForConcert = Timing{LookAhead: 0.005, Hold: 0.020, Release: 0.120}
-)
-
 // How far below the ceiling the two stages aim, dB. The second leaves room for the rounding to a word
 // length; the first for the peaks that its own movement makes, so that hardly any are left to the second.
 const (

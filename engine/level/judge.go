@@ -16,7 +16,8 @@ const (
 	// audibleFloor is the loudness, LUFS, under which nobody hears the noise in a pause of a levelled copy.
 	audibleFloor = -60
 	// drifted is the difference of length, s, past which something is wrong: a lossy encoder pads less.
-	drifted = 0.05
+	drifted   = 0.05
+	shortTerm = 30 // steps, the window of short-term loudness
 	// rangeLeast is how long, s, a recording must be for its loudness range to be held against it. It is not what it
 	// should be under a minute (EBU R 128, note 2), but it is what the ride went by.
 	rangeLeast = 20.0
@@ -113,7 +114,7 @@ func (d *doubts) outcome() {
 		d.add("length", nil, "the copy is %.2f s shorter or longer than the original", drift)
 	}
 	if over := audio.DB(r.TruePeak - p.Ceiling); over > peakTolerance {
-		d.add("ceiling", momentOf(r.timeline.Peak, nil), "its true peak is %.2f dB over the ceiling of %s dBTP", over, audio.Number(float64(p.Ceiling), 1))
+		d.add("ceiling", momentOf(r.timeline.Peak, 1, nil), "its true peak is %.2f dB over the ceiling of %s dBTP", over, audio.Number(float64(p.Ceiling), 1))
 	}
 	short := d.plan.Aim.Sub(r.anchored)
 	// Without dynamics the peaks decide how far the gain goes; that is what such a profile asks for.
@@ -121,7 +122,7 @@ func (d *doubts) outcome() {
 	if abs(short) <= p.Tolerance || asFarAsPeaksAllow {
 		return
 	}
-	at, why := momentOf(r.timeline.ShortTerm, nil), "its level moves too much"
+	at, why := momentOf(r.timeline.ShortTerm, shortTerm, nil), "its level moves too much"
 	if depth, step := deepest(r.work.Limited); depth > 0 {
 		at, why = new(seconds(step)), fmt.Sprintf("its peaks stand out too far, and may be held by no more than %s dB", audio.Number(float64(p.Limiter.Most), 1))
 	}
@@ -132,7 +133,7 @@ func (d *doubts) outcome() {
 // lifting is about noise that is lifted with the sound, or in the pauses.
 func (d *doubts) lifting() {
 	softest := func(v float32) float64 { return -float64(v) }
-	most, at := d.plan.Gain, momentOf(heardOnly(d.before.Timeline.ShortTerm, d.before.Timeline.Active), softest)
+	most, at := d.plan.Gain, momentOf(heardOnly(d.before.Timeline.ShortTerm, d.before.Timeline.Active), shortTerm, softest)
 	if ride := d.plan.Ride; ride != nil {
 		most += ride.Most
 		for i, on := range d.before.Timeline.Active {
@@ -182,19 +183,20 @@ func (d *doubts) rangeOf() {
 	switch {
 	case d.plan.Wider > d.p.Harm.RangeOver && after > asked+d.p.Harm.RangeOver && before > asked:
 		off := func(v float32) float64 { return math.Abs(float64(v) - float64(d.r.Integrated)) }
-		d.add("range", momentOf(heardOnly(d.r.timeline.ShortTerm, d.before.Timeline.Active), off), "its loudness range is still %s LU, %s were asked for", audio.Number(float64(after), 1), audio.Number(float64(asked), 0))
+		d.add("range", momentOf(heardOnly(d.r.timeline.ShortTerm, d.before.Timeline.Active), shortTerm, off), "its loudness range is still %s LU, %s were asked for", audio.Number(float64(after), 1), audio.Number(float64(asked), 0))
 	case after < min(before, asked)-d.p.Harm.RangeLost:
 		var gain []float32
 		if d.plan.Ride != nil {
 			gain = d.plan.Ride.Gain
 		}
 		moved := func(v float32) float64 { return math.Abs(float64(v)) }
-		d.add("range", momentOf(gain, moved), "its loudness range went down to %s LU, %s were asked for", audio.Number(float64(after), 1), audio.Number(float64(asked), 0))
+		d.add("range", momentOf(gain, 1, moved), "its loudness range went down to %s LU, %s were asked for", audio.Number(float64(after), 1), audio.Number(float64(asked), 0))
 	}
 }
 
-// momentOf is the moment at which a curve is highest, by a measure if there is one; nil if it has no values that count.
-func momentOf(curve []float32, measure func(float32) float64) *audio.Seconds {
+// momentOf is the moment at which a curve is highest, by a measure if there is one: the begin of the window of so many
+// steps that a value describes. It is nil if there are no values that count.
+func momentOf(curve []float32, window int, measure func(float32) float64) *audio.Seconds {
 	highest, at := math.Inf(-1), -1
 	for i, v := range curve {
 		m := float64(v)
@@ -208,7 +210,7 @@ func momentOf(curve []float32, measure func(float32) float64) *audio.Seconds {
 	if at < 0 {
 		return nil
 	}
-	return new(seconds(at))
+	return new(seconds(max(0, at+1-window)))
 }
 
 // heardOnly is a curve without what is not heard, which becomes undefined.

@@ -12,7 +12,7 @@ var ErrUnknown = errors.New("no such profile")
 
 // Timings of the limiter: short ones touch less of loud speech, long ones keep low notes clean.
 var (
-	forSpeech  = Limiter{Most: 10, LookAhead: 2, Hold: 2, Release: 30}
+	forSpeech  = Limiter{Most: 10, LookAhead: 2, Hold: 5, Release: 30}
 	forMusic   = Limiter{Most: 10, LookAhead: 5, Hold: 10, Release: 120}
 	forConcert = Limiter{Most: 6, LookAhead: 5, Hold: 20, Release: 120}
 )
@@ -58,7 +58,7 @@ var builtin = []Profile{
 			p.Ride = Ride{Speed: Medium, Fastest: 3, Strength: Evening, Range: 6, Lift: 20, Cut: 20, Step: 15, Silence: 3, Fades: KeepFades}
 			p.Compressor = Compressor{Over: 3, Ratio: 3, Knee: 6, Release: 80}
 			p.Limiter = forSpeech
-			p.Harm.SpeechShare = 0.5
+			p.Harm.SpeechShare = 0.4
 		}),
 	usual.with("transmitter",
 		"The feed in front of a transmitter or a hand-held radio: even from moment to moment, nothing over the ceiling.",

@@ -26,7 +26,7 @@ func TestWordsSayWhatTheProfileDoes(t *testing.T) {
 		{talk, []string{"Speech is brought to −16 LUFS, within 0.3 LU; where nobody speaks, the whole programme is.",
 			"The ride is of medium speed: it raises by 20 dB and lowers by 20 dB at the most.",
 			"It steps in pauses between voices: for a difference of 6 dB if that holds for 0.4 s.", // 15 dB²·s / (6 dB)² = 0.42 s
-			"It stands still in fades", "3:1", "No true peak passes −1 dBTP.", "Held for you when: less than 50 % of what is heard is speech"},
+			"It stands still in fades", "3:1", "No true peak passes −1 dBTP.", "Held for you when: less than 40 % of what is heard is speech"},
 			[]string{"change places", "stays where it is", "30 %"}},
 		{builtIn(t, "untouched"), []string{"The whole programme is brought", "There is no ride: one steady gain", "There is no compressor.", "Peaks are not touched"},
 			[]string{"limiting", "limited", "pause", "speech"}},
