@@ -12,6 +12,7 @@ const (
 	local       = 15   // steps to either side that are around
 	hidden      = 8    // a pause this long may hide someone much softer
 	layers      = 3    // how often it is looked for
+	ending      = 5    // what is no longer than this right beside someone louder, and cut off from the rest, is a sound of theirs
 	calmSpread  = 1.6  // between the quartiles of a pause that hides nobody, but is too short for steadySteps
 	musicUnder  = 40.0 // music goes down to this far below the programme
 	soundUnder  = 20.0 // and what only accompanies speech to this
@@ -45,7 +46,7 @@ func listen(level []float64, power running, loudness float64, spoken []bool, tal
 		return active
 	}
 	noise = besideSpeech.noise(level, loudness)
-	voices := voices(level, power, noiseFloor(level, noise), noise)
+	voices := voices(level, power, noiseFloor(level, power, noise), noise)
 	for i, s := range spoken {
 		if s {
 			active[i] = voices[i]
@@ -74,19 +75,24 @@ func (s steadiness) noise(level []float64, loudness float64) []bool {
 }
 
 // noiseFloor returns the noise floor of every step: the median of the steady steps within a quarter of a minute or
-// so around. Where there are none, nothing is known of it.
-func noiseFloor(level []float64, steady []bool) []float64 {
-	const block = 10 * StepsPerSecond
+// so around. Where there are none, since pauses are short, it is the softest third of a second there.
+func noiseFloor(level []float64, power running, steady []bool) []float64 {
+	const block, breath = 10 * StepsPerSecond, 3
 	floor := make([]float64, len(level))
 	var around []float64
 	for at := 0; at < len(level); at += block {
 		around = around[:0]
-		for i := max(0, at-block); i < min(len(level), at+2*block); i++ {
+		softest := math.Inf(1)
+		from, to := max(0, at-block), min(len(level), at+2*block)
+		for i := from; i < to; i++ {
 			if steady[i] {
 				around = append(around, level[i])
 			}
+			if i+breath <= to {
+				softest = min(softest, decibels(power.mean(i, i+breath)))
+			}
 		}
-		median := silence
+		median := softest
 		if len(around) > 0 {
 			slices.Sort(around)
 			median = around[len(around)/2]
@@ -99,7 +105,7 @@ func noiseFloor(level []float64, steady []bool) []float64 {
 // voices finds speech, in layers: whoever is much softer than those before and after is found in what they
 // leave as a pause.
 func voices(level []float64, power running, floor []float64, steady []bool) []bool {
-	active := make([]bool, len(level))
+	active, never := make([]bool, len(level)), slices.Clone(steady)
 	smooth := make([]float64, len(level))
 	pending := []Span{{0, len(level)}}
 	var top []float64
@@ -110,8 +116,9 @@ func voices(level []float64, power running, floor []float64, steady []bool) []bo
 			}
 			top = loudestAround(top, smooth[s.From:s.To], local)
 			for i := s.From; i < s.To; i++ {
-				active[i] = !steady[i] && level[i] > max(gate, floor[i]+overFloor, top[i-s.From]-underLocal)
+				active[i] = !never[i] && level[i] > max(gate, floor[i]+overFloor, top[i-s.From]-underLocal)
 			}
+			s.endings(level, active, never)
 		}
 		pending = pending[:0]
 		runs(active, func(from, to int, on bool) {
@@ -121,6 +128,39 @@ func voices(level []float64, power running, floor []float64, steady []bool) []bo
 		})
 	}
 	return active
+}
+
+// endings takes back what was heard at either end of a pause for a moment only, far softer than what is beyond: it is how
+// the word before dies away, or the breath before the next.
+func (s Span) endings(level []float64, active, never []bool) {
+	drop := func(at, step, end int) {
+		edge := at
+		for k := 0; k < ending && at != end && !active[at]; k++ { // a gap, or what was taken back before
+			at += step
+		}
+		reach, loudest := at, silence
+		for reach != end && active[reach] {
+			loudest = max(loudest, level[reach])
+			reach += step
+		}
+		beyond := silence
+		for k, i := 0, edge-step; k < StepsPerSecond && i >= 0 && i < len(level); k, i = k+1, i-step {
+			beyond = max(beyond, level[i])
+		}
+		short := max(reach-at, at-reach) <= ending && loudest < beyond-underLocal
+		for k, i := 0, reach; short && k <= pause+1 && i != end; k, i = k+1, i+step {
+			short = !active[i]
+		}
+		for i := at; short && i != reach; i += step {
+			active[i], never[i] = false, true
+		}
+	}
+	if s.From > 0 {
+		drop(s.From, 1, s.To)
+	}
+	if s.To < len(active) {
+		drop(s.To-1, -1, s.From-1)
+	}
 }
 
 // calm reports whether a pause is too short to be told by steadiness, but steady.

@@ -1,5 +1,7 @@
 package ride
 
+import "slices"
+
 const (
 	wideRange = 30.0 // dB from the softest to the loudest: more, and the anchor goes to the middle of what lift and cut reach
 	fewest    = 0.02 // of the time, at either end, that do not count
@@ -13,7 +15,11 @@ const (
 // follows a ride puts the anchor where it is wanted, so nothing is lost.
 func (j *job) anchor(slow []float64) float64 {
 	var voices, all []weighted
+	long := slices.ContainsFunc(j.phrases, phrase.voiced)
 	for _, p := range j.phrases {
+		if long && !p.voiced() { // says nothing of how far apart voices are
+			continue
+		}
 		said := 0
 		for i := p.From; i < p.To; i++ {
 			if j.spoken[i] {

@@ -10,6 +10,7 @@ type job struct {
 	Settings
 	level    []float64 // as it will be without a ride: with what compressor and limiter move
 	power    []float64 // of level
+	plain    []float64 // power without knocks: what is followed
 	loudness float64   // gated
 	spoken   []bool
 	active   []bool
@@ -67,6 +68,7 @@ func newJob(c Course, s Settings) *job {
 	if s.Speech {
 		j.background()
 	}
+	j.withoutKnocks(source)
 	cut := j.findVoices()
 	j.seams = seams(j.phrases, cut, s.Silence)
 	j.voices = between(j.seams, n)
@@ -97,7 +99,7 @@ func (j *job) background() {
 func (j *job) findVoices() (cut []bool) {
 	const rounds = 3
 	for range rounds {
-		j.phrases = phrases(j.power, j.heard, j.spoken, j.Step > 0)
+		j.phrases = phrases(j.plain, j.heard, j.spoken, j.Step > 0)
 		if j.Step == 0 {
 			cut = make([]bool, len(j.phrases))
 			for i, p := range j.phrases {
@@ -105,7 +107,7 @@ func (j *job) findVoices() (cut []bool) {
 			}
 			return cut
 		}
-		cut = voicesApart(j.phrases, j.Step)
+		cut = held(j.phrases, voicesApart(j.phrases, j.Step))
 		none := scraps(j.phrases, cut)
 		if len(none) == 0 {
 			return cut
@@ -114,8 +116,8 @@ func (j *job) findVoices() (cut []bool) {
 			clear(j.heard[s.From:s.To])
 		}
 	}
-	j.phrases = phrases(j.power, j.heard, j.spoken, true)
-	return voicesApart(j.phrases, j.Step)
+	j.phrases = phrases(j.plain, j.heard, j.spoken, true)
+	return held(j.phrases, voicesApart(j.phrases, j.Step))
 }
 
 // trial is a ride with one time constant.
@@ -129,6 +131,7 @@ type trial struct {
 
 const (
 	orderly     = 0.97 // with less, the order of loud and soft is lost
+	inaudible   = 45.0 // dB under the anchor, nobody hears the noise of a pause
 	worthFaster = 0.3  // LU, that a faster ride has to narrow the range by where none is enough
 )
 
@@ -155,15 +158,15 @@ func (j *job) solve(tau float64) trial {
 	for _, p := range j.phrases {
 		fill(weights[p.From:p.To], 1)
 	}
-	smooth := func() {
+	smooth := func(power []float64) {
 		for _, v := range j.voices {
-			j.smoother.level(t.level[v.From:v.To], j.power[v.From:v.To], weights[v.From:v.To], tau)
+			j.smoother.level(t.level[v.From:v.To], power[v.From:v.To], weights[v.From:v.To], tau)
 		}
 	}
-	smooth()
+	smooth(j.plain)
 	if slices.Contains(j.spoken, true) {
 		j.gate(weights, t.level)
-		smooth()
+		smooth(j.tamed(t.level))
 	}
 	t.anchor = j.anchor(t.level)
 	w := narrowing{job: j, to: rangeMap{t.anchor, j.Deadband, j.Lift, j.Cut}, slow: t.level,
@@ -192,7 +195,7 @@ func (j *job) solve(tau float64) trial {
 func (j *job) gate(weights, slow []float64) {
 	const block, under = 4, 10
 	for _, v := range j.voices {
-		r := sums(j.power[v.From:v.To])
+		r := sums(j.plain[v.From:v.To])
 		passed := make([]float64, v.To-v.From+1) // blocks that pass among those that begin before
 		for i := range v.To - v.From {
 			passed[i+1] = passed[i]
@@ -273,7 +276,7 @@ func (j *job) finish(ride *Ride, t trial) {
 		ride.Gain[i] = float32((math.Round(v*perHundred) + 0) / perHundred) // never −0
 		t.curve[i] = float64(ride.Gain[i])
 	}
-	lift, at := floorLift(t.curve, j.active)
+	lift, at := floorLift(t.curve, j.level, j.active, t.anchor-inaudible)
 	ride.FloorLift, ride.FloorAt = lift, float64(at)/StepsPerSecond
 	ridden := make([]float64, len(j.power))
 	for i, p := range j.power {

@@ -90,19 +90,37 @@ func hold(g []float64, first, last int) {
 	fill(g[last+1:], g[last])
 }
 
-// floorLift returns how far the gain of a pause lies over that of the quieter neighbour, as the mean over the pause,
-// where that is most, and the step at which that pause begins.
-func floorLift(g []float64, heard []bool) (lift float64, at int) {
-	runs(heard, func(from, to int, on bool) {
-		if on || to-from <= pause || from == 0 || to == len(heard) {
+// floorLift returns how far the gain of a pause lies over the lowest that its neighbours have, as the mean over the
+// pause, where that is most, and the step in its middle. A pause is where nothing is heard, and what is much softer for a
+// moment than what is on both sides: it must not matter whether it was taken for a voice. What is below least with its
+// gain is not audible, and does not count.
+func floorLift(g, level []float64, heard []bool, least float64) (lift float64, at int) {
+	const beside = StepsPerSecond * scrapLong
+	top := loudestAround(nil, level, beside/2)
+	quiet := make([]bool, len(level))
+	for i, l := range level {
+		quiet[i] = !heard[i] || l < min(top[max(0, i-beside/2)], top[min(len(top)-1, i+beside/2)])-scrapGap
+	}
+	runs(quiet, func(from, to int, on bool) {
+		middle := (from + to) / 2
+		if !on || to-from <= pause || from == 0 || to == len(quiet) || level[middle]+g[middle] < least {
 			return
 		}
 		sum := (g[from] + g[to]) / 2
 		for e := from + 1; e < to; e++ {
 			sum += g[e]
 		}
-		if l := sum/float64(to-from) - min(g[from], g[to]); l > lift {
-			lift, at = l, from
+		lowest := min(g[from], g[to])
+		for k := 1; k <= beside/2; k++ {
+			if e := from - k; e >= 0 && !quiet[e] {
+				lowest = min(lowest, g[e])
+			}
+			if e := to + k; e < len(quiet) && !quiet[e-1] {
+				lowest = min(lowest, g[e])
+			}
+		}
+		if l := sum/float64(to-from) - lowest; l > lift {
+			lift, at = l, middle
 		}
 	})
 	return lift, at

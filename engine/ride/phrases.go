@@ -1,13 +1,22 @@
 package ride
 
-import "math"
+import (
+	"math"
+	"slices"
+)
 
 // What may be cut, in steps.
 const (
 	pause     = 2    // without programme, a phrase ends
+	gap       = 3    // what is no longer lies between words
 	voiceSide = 10   // to either side of a change of voice in mid phrase that are compared
 	voiceJump = 5.0  // dB between the two
-	midPhrase = 4.0  // how many times the worth of a step at a pause a step within a phrase has to have
+	midPhrase = 3.0  // how many times the worth of a step at a pause a step within a phrase has to have
+	midBreath = 2.0  // and one where there is no more than a gap between words
+	sharpJump = 7.0  // dB, unless the level changes by this across it
+	heldJump  = 5.5  // dB that voices are apart at least, where there is no pause between them
+	heldTurn  = 4.5  // dB, if both go on for this long:
+	heldLong  = 5.0  // s
 	farthest  = 400  // phrases that may be of one voice
 	scrapLong = 1.0  // s: what is shorter is no voice
 	scrapGap  = 12.0 // dB, if it is softer by this than those before and after
@@ -25,23 +34,37 @@ type phrase struct {
 	long  float64 // s
 	cost  float64 // of a cut before it, in worths of a step
 	after bool    // it follows a jump in music: always a cut
+	held  bool    // there is no pause before it
 }
+
+// voiced reports whether a phrase is long enough to be told by its level.
+func (p phrase) voiced() bool { return p.long >= scrapLong }
 
 // phrases splits what is heard at pauses, at changes of level in mid phrase where people speak, and at
 // jumps where they do not.
-func phrases(power []float64, heard, spoken []bool, steps bool) []phrase {
+func phrases(powers []float64, heard, spoken []bool, steps bool) []phrase {
 	var found []phrase
+	var sorted []float64
+	r := sums(powers)
 	add := func(from, to int, cost float64, after bool) {
 		p := phrase{Span: Span{from, to}, cost: cost, after: after}
-		sum := 0.0
-		for _, v := range power[from:to] {
-			sum += v
+		sorted = append(sorted[:0], powers[from:to]...)
+		slices.Sort(sorted)
+		sum, most := 0.0, power(phraseOver)*sorted[int(phraseTop*float64(len(sorted)-1))]
+		for _, v := range sorted {
+			sum += min(v, most)
 		}
 		p.level = decibels(sum / float64(to-from))
 		p.long = float64(to-from) / StepsPerSecond
+		if n := len(found); n > 0 && from-found[n-1].To <= gap {
+			end := found[n-1].To
+			p.held = from-end <= pause
+			if across := r.mean(from, min(from+voiceSide, to)) / r.mean(max(found[n-1].From, end-voiceSide), end); math.Abs(decibels(across)) < sharpJump {
+				p.cost = max(cost, midBreath)
+			}
+		}
 		found = append(found, p)
 	}
-	r := sums(power)
 	var from, last = -1, -1
 	end := func() {
 		if from < 0 {
@@ -133,6 +156,9 @@ func voicesApart(p []phrase, worth float64) []bool {
 			if from > 0 && !p[from].after {
 				sum += worth * p[from].cost
 			}
+			if w[to]-w[from] < scrapLong && (p[from].held && !p[from].after || to < len(p) && p[to].held && !p[to].after) {
+				continue
+			}
 			if sum < least[to] {
 				least[to], begin[to] = sum, from
 			}
@@ -159,9 +185,8 @@ func voicesApart(p []phrase, worth float64) []bool {
 	return cut
 }
 
-// scraps returns what was cut out as a voice, but is too short and too far below those on both sides: a breath, or noise.
-func scraps(p []phrase, cut []bool) (found []Span) {
-	var voices []phrase
+// voicesOf joins the phrases of a voice.
+func voicesOf(p []phrase, cut []bool) (voices []phrase) {
 	for i, f := range p {
 		if i == 0 || cut[i] {
 			voices = append(voices, f)
@@ -171,15 +196,37 @@ func scraps(p []phrase, cut []bool) (found []Span) {
 		v.level = (v.level*v.long + f.level*f.long) / (v.long + f.long)
 		v.long, v.To = v.long+f.long, f.To
 	}
+	return voices
+}
+
+// held takes back the cuts within a sentence that are too small for a change of voice: people stress what they say.
+func held(p []phrase, cut []bool) []bool {
+	voices, v := voicesOf(p, cut), 0
+	for i := range p {
+		if i > 0 && cut[i] {
+			v++
+			a, b, least := voices[v-1], voices[v], heldJump
+			if min(a.long, b.long) >= heldLong {
+				least = heldTurn
+			}
+			cut[i] = !p[i].held || p[i].after || math.Abs(a.level-b.level) >= least
+		}
+	}
+	return cut
+}
+
+// scraps returns what was cut out as a voice, but is too short and too far from those on both sides: below them a breath
+// or noise, over them a cough or a knock.
+func scraps(p []phrase, cut []bool) (found []Span) {
+	voices := voicesOf(p, cut)
 	for i, v := range voices {
-		under := math.Inf(1)
-		if i > 0 {
-			under = voices[i-1].level - v.level
+		under, over := math.Inf(1), math.Inf(1)
+		for _, k := range []int{i - 1, i + 1} {
+			if k >= 0 && k < len(voices) {
+				under, over = min(under, voices[k].level-v.level), min(over, v.level-voices[k].level)
+			}
 		}
-		if i+1 < len(voices) {
-			under = min(under, voices[i+1].level-v.level)
-		}
-		if len(voices) > 1 && (under >= scrapGap && v.long < scrapLong || under >= noiseGap && v.long < noiseLong) {
+		if len(voices) > 1 && (v.long < scrapLong && (under >= scrapGap || over >= knockOver) || v.long < noiseLong && under >= noiseGap) {
 			found = append(found, v.Span)
 		}
 	}

@@ -4,6 +4,7 @@
 // The way from a Course to a Curve:
 //
 //	activity   which steps are heard at all; pauses and steady noise are not
+//	knocks     what juts out of speech for a moment, and is left to the compressor
 //	fades      where the gain has to stand still
 //	phrases    what lies between pauses, and where one voice gives way to another of a different level
 //	smooth     the slow level: what a fader has to follow
@@ -75,7 +76,8 @@ type Ride struct {
 	Anchor float64   // LUFS that the ride brings things towards; NaN if there is none
 	Range  float64   // LU, the loudness range predicted for the ridden sound; NaN if undefined
 	Kept   float64   // ρ, the share of differences past the deadband that stays, on average
-	// FloorLift is the most that a pause's gain lies above that of its quieter neighbour, dB, and FloorAt where, s.
+	// FloorLift is the most that a pause's gain lies above the lowest of its neighbours, dB, of those whose noise can be
+	// heard, and FloorAt the middle of that pause, s.
 	FloorLift, FloorAt float64
 	Fades              []Span // where the gain stands still for a fade
 	Steps              []Span // pauses in which the gain steps
