@@ -189,7 +189,7 @@ func (h *house) finish(job store.Job, state level.State) {
 			Ride:       &level.Ride{Speed: profile.Medium, Kept: 0.25, Range: 6, Least: -3.1, Most: 4, Gain: ride.Curve{-3.1, 0.04, 4, 4}},
 			Compressor: &dynamics.Compression{Threshold: -15, Ratio: 3, Knee: 6, Release: 0.08},
 			Limiter:    work.Profile.Limiter, Delivered: work.Profile.Delivered},
-		Treatment: &level.Treatment{Limited1: 0.031, Limited3: 0.004, Deepest: 5.2, DeepestAt: 0.2, Order: audio.Ratio(audio.Undefined)},
+		Treatment: &level.Treatment{Limited1: 0.031, Limited3: 0.004, Compressed: 2.3, Deepest: 5.2, DeepestAt: 0.2, Order: audio.Ratio(audio.Undefined)},
 		Verdict:   level.Verdict{State: state, Reason: "as heard"},
 		Renders:   1,
 	}

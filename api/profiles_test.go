@@ -112,6 +112,16 @@ func TestProfilesAreChecked(t *testing.T) {
 	if got.Valid || got.Profile != nil || len(got.Problems) != 2 || got.Problems[0] != (profile.Complaint{Line: 2, Field: "ride.lift_db", Words: "99 is not between 0 and 40"}) {
 		t.Errorf("%+v", got)
 	}
+	got = checkedProfile{}
+	check("["+strings.Repeat("a.", 32000)+"a]", "text/plain").into(t, 200, &got)
+	if got.Valid || len(got.Problems) != 1 || got.Problems[0].Words != "is nested deeper than 8: no profile is" {
+		t.Errorf("%+v", got)
+	}
+	got = checkedProfile{}
+	check("RIFF\x00\x00WAVE", "text/plain").into(t, 200, &got)
+	if got.Valid || len(got.Problems) != 1 || got.Problems[0].Words != "is not text" {
+		t.Errorf("%+v", got)
+	}
 	check("{}", "application/json").wantProblem(t, kindMediaType, "application/toml")
 	check(strings.Repeat("#", profile.LargestFile+1), "text/plain").wantProblem(t, kindTooLarge, "64.0 KiB")
 	check(strings.Repeat("#", profile.LargestFile), "text/plain").into(t, 200, &got)

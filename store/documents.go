@@ -32,7 +32,7 @@ func (d documents) into(j *Job) error {
 		}
 	}
 	if d.treatment != nil {
-		j.Treatment = new(level.Treatment)
+		j.Treatment = &level.Treatment{Compressed: audio.DB(audio.Undefined)}
 		if err := json.Unmarshal(d.treatment, j.Treatment); err != nil {
 			return fmt.Errorf("treatment: %w", err)
 		}

@@ -24,7 +24,7 @@ func ridden() level.Outcome {
 	}
 	o.Plan = &level.Plan{Anchor: profile.Speech, Anchored: -29.5, Aim: -18, Gain: 4.5, Ceiling: -1, Limit: true, Reason: "ridden",
 		Ride: &level.Ride{Speed: profile.Medium, Kept: 0.3, Range: 6.2, Least: -9.8, Most: 9.9, Gain: curve}}
-	o.Treatment = &level.Treatment{Limited1: 0.031, Limited3: 0.004, Deepest: 5.2, DeepestAt: 83.4, Order: audio.Ratio(audio.Undefined)}
+	o.Treatment = &level.Treatment{Limited1: 0.031, Limited3: 0.004, Compressed: 2.3, Deepest: 5.2, DeepestAt: 83.4, Order: audio.Ratio(audio.Undefined)}
 	foreseen := meter.Unmeasured()
 	foreseen.Integrated, foreseen.TruePeak = -18.01, -1.02
 	o.Foreseen = &foreseen
@@ -60,9 +60,11 @@ func TestJobTellsWhatWasDone(t *testing.T) {
 	if !reflect.DeepEqual(job.Doubts, want.Verdict.Doubts) {
 		t.Errorf("doubts: %+v", job.Doubts)
 	}
-	if tr := job.Treatment; tr == nil || tr.Limited1 != 0.031 || tr.DeepestAt != 83.4 || audio.Defined(tr.Order) {
+	if tr := job.Treatment; tr == nil || tr.Limited1 != 0.031 || tr.DeepestAt != 83.4 || tr.Compressed != 2.3 || audio.Defined(tr.Order) {
 		t.Errorf("treatment: %+v", tr)
 	}
+	near(t, "speech before", job.SpeechBefore, -29)
+	near(t, "speech after", list[0].SpeechAfter, -17)
 	near(t, "foreseen", job.Foreseen.Integrated, -18.01)
 	if job.Foreseen.Range != nil {
 		t.Errorf("a range out of nothing: %v", *job.Foreseen.Range)
@@ -219,5 +221,23 @@ func TestStandsOnlyWhatWouldComeOutAgain(t *testing.T) {
 	}
 	if ok, err := f.Stands(f.ctx, jobs[0], "another"); err != nil || ok {
 		t.Errorf("another profile: %v %v", ok, err)
+	}
+}
+
+// What a treatment of earlier did not note is not said to be none; nor is a speech that nobody measured.
+func TestOldTreatmentSaysNothingOfTheCompressor(t *testing.T) {
+	f := open(t)
+	f.found("a.wav")
+	_, jobs := f.run(Copy)
+	f.start(jobs[0])
+	f.finish(jobs[0], ridden(), "a.wav")
+	for _, change := range []string{`UPDATE jobs SET treatment = json_remove(treatment, '$.compressed_db')`, `UPDATE readings SET detail = json_remove(detail, '$.speech_lufs')`} {
+		if _, err := f.writer.ExecContext(f.ctx, change); err != nil {
+			t.Fatal(err)
+		}
+	}
+	job, err := f.Job(f.ctx, jobs[0])
+	if err != nil || audio.Defined(job.Treatment.Compressed) || job.Treatment.Limited1 != 0.031 || job.SpeechBefore != nil || job.SpeechAfter != nil {
+		t.Errorf("%+v, %v, %v, %v", job.Treatment, job.SpeechBefore, job.SpeechAfter, err)
 	}
 }

@@ -11,7 +11,7 @@ import (
 const jobQuery = `SELECT j.id, j.run_id, j.recording_id, rec.path, j.state, j.reason, j.output, coalesce(j.same_as, 0), j.renders, j.attempts,
 		j.started_at, j.finished_at, p.name, p.version, did.plan, did.doubts, did.treatment, did.foreseen,
 		b.id, b.integrated, b."range", b.peak, b.p10, b.p95, b.duration,
-		a.id, a.integrated, a."range", a.peak, a.p10, a.p95
+		a.id, a.integrated, a."range", a.peak, a.p10, a.p95, b.detail ->> 'speech_lufs', a.detail ->> 'speech_lufs'
 	FROM jobs j
 	JOIN jobs did ON did.id = coalesce(j.same_as, j.id)
 	JOIN recordings rec ON rec.id = j.recording_id
@@ -27,6 +27,7 @@ func scanJob(row scanner) (j Job, err error) {
 	dest := []any{&j.ID, &j.RunID, &j.RecordingID, &j.Path, &j.State, &j.Reason, &j.Output, &j.SameAs, &j.Renders, &j.Attempts,
 		&started, &finished, &j.Profile, &j.ProfileVersion, &d.plan, &d.doubts, &d.treatment, &d.foreseen}
 	dest = append(append(append(dest, before.dest()...), &j.Duration), after.dest()...)
+	dest = append(dest, &j.SpeechBefore, &j.SpeechAfter)
 	if err := row.Scan(dest...); err != nil {
 		return j, err
 	}

@@ -8,10 +8,11 @@ import (
 	"slices"
 	"strings"
 
+	"evenshelf/engine/audio"
 	"evenshelf/engine/profile"
 )
 
-const runQuery = `SELECT r.id, r.shelf_id, s.name, r.folder, p.name, p.version, p.document, r.delivery,
+const runQuery = `SELECT r.id, r.shelf_id, s.name, r.folder, p.name, p.version, p.target, p.document, r.delivery,
 		r.created_at, r.started_at, r.cancelled_at, r.finished_at,
 		r.waiting, r.working, r.done, r.held, r.failed, r.cancelled, r.seconds_done, r.bytes_done, r.bytes_total
 	FROM runs r JOIN shelves s ON s.id = r.shelf_id JOIN profiles p ON p.version = r.profile_version`
@@ -20,14 +21,16 @@ func scanRun(row scanner) (r Run, err error) {
 	var created int64
 	var started, cancelled, finished sql.NullInt64
 	var document []byte
-	err = row.Scan(&r.ID, &r.ShelfID, &r.ShelfName, &r.Folder, &r.Profile, &r.ProfileVersion, &document, &r.Delivery,
+	err = row.Scan(&r.ID, &r.ShelfID, &r.ShelfName, &r.Folder, &r.Profile, &r.ProfileVersion, &r.Target, &document, &r.Delivery,
 		&created, &started, &cancelled, &finished,
 		&r.Waiting, &r.Working, &r.Done, &r.Held, &r.Failed, &r.Cancelled, &r.SecondsDone, &r.BytesDone, &r.BytesTotal)
 	if err != nil {
 		return r, err
 	}
-	p, err := profile.UnmarshalStored(document)
-	r.Target, r.Tolerance, r.Ceiling = float64(p.Target), float64(p.Tolerance), float64(p.Ceiling)
+	r.Tolerance, r.Ceiling = audio.LU(audio.Undefined), audio.DBTP(audio.Undefined)
+	if p, err := profile.UnmarshalStored(document); err == nil { // one that cannot be read hides no run
+		r.Tolerance, r.Ceiling = p.Tolerance, p.Ceiling
+	}
 	r.CreatedAt, r.StartedAt, r.FinishedAt = fromMillis(created), fromNullMillis(started), fromNullMillis(finished)
 	r.Jobs = r.Waiting + r.Working + r.Done + r.Held + r.Failed + r.Cancelled
 	switch {
@@ -40,7 +43,7 @@ func scanRun(row scanner) (r Run, err error) {
 	default:
 		r.State = RunFinished
 	}
-	return r, err
+	return r, nil
 }
 
 func findRun(ctx context.Context, tx *sql.Tx, id int64) (Run, error) {

@@ -24,8 +24,7 @@ func scanShared(row scanner) (level.Shared, error) {
 	return sh, err
 }
 
-// Shared returns what the recordings that a run takes of a folder read as one programme. ErrNotFound until that
-// was measured.
+// Shared returns what the recordings of a folder read as one programme in a run. ErrNotFound until that was measured.
 func (s *Store) Shared(ctx context.Context, runID int64, folder string) (sh level.Shared, err error) {
 	err = s.read(ctx, func(tx *sql.Tx) error {
 		sh, err = one(ctx, tx, scanShared, fmt.Sprintf("shared reading of folder %q in run %d", folder, runID), sharedQuery, runID, folder)
@@ -52,8 +51,9 @@ func (s *Store) KeepShared(ctx context.Context, runID int64, folder string, meas
 	return sh, nil
 }
 
-// Members returns the recordings that a run takes of one folder ("" is the shelf's root) in path order, without
-// those of its sub-folders and those missing from the disk.
+// Members returns the recordings of one folder ("" is the root) of a run's shelf in path order, without those of its
+// sub-folders and those missing from the disk. All of them count, also those the run does not take: a folder that is
+// levelled bit by bit has to come out as one that is levelled at once.
 func (s *Store) Members(ctx context.Context, runID int64, folder string) (list []Recording, err error) {
 	err = s.read(ctx, func(tx *sql.Tx) error {
 		run, err := findRun(ctx, tx, runID)
@@ -68,7 +68,7 @@ func (s *Store) Members(ctx context.Context, runID int64, folder string) (list [
 			rest += len([]rune(folder)) + 1
 		}
 		w.add("instr(substr(path, ?), '/') = 0", rest)
-		w.add("missing = 0 AND EXISTS (SELECT 1 FROM jobs WHERE run_id = ? AND recording_id = recordings.id)", runID)
+		w.add("missing = 0")
 		list, err = collect(ctx, tx, scanRecording, `SELECT `+recordingColumns+` FROM recordings`+w.where()+` ORDER BY path`, w.args...)
 		return err
 	})

@@ -5,6 +5,7 @@ import (
 	"errors"
 	"time"
 
+	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
 	"evenshelf/engine/profile"
 )
@@ -206,8 +207,8 @@ type Run struct {
 	Profile        string     `json:"profile"`
 	ProfileVersion string     `json:"profile_version"`
 	Target         float64    `json:"target_lufs"`
-	Tolerance      float64    `json:"tolerance_lu"`
-	Ceiling        float64    `json:"ceiling_dbtp"`
+	Tolerance      audio.LU   `json:"tolerance_lu"` // undefined if the profile as it was kept cannot be read
+	Ceiling        audio.DBTP `json:"ceiling_dbtp"` // likewise
 	Delivery       Delivery   `json:"delivery"`
 	State          RunState   `json:"state"`
 	CreatedAt      time.Time  `json:"created_at"`
@@ -241,8 +242,10 @@ type Job struct {
 	StartedAt      *time.Time       `json:"started_at"`
 	FinishedAt     *time.Time       `json:"finished_at"`
 	Before         *Figures         `json:"before"`
-	Foreseen       *Figures         `json:"foreseen"` // of the rendering before it was encoded
+	Foreseen       *Figures         `json:"foreseen"` // for the plan as first made, before any correction for a lossy encoder
 	After          *Figures         `json:"after"`
+	SpeechBefore   *float64         `json:"-"` // LUFS, of the speech alone; nil if not defined or not known
+	SpeechAfter    *float64         `json:"-"` // likewise
 	Treatment      *level.Treatment `json:"treatment"`
 	Doubts         []level.Doubt    `json:"doubts"` // why it is held; never nil
 	Duration       *float64         `json:"duration_s"`

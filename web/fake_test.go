@@ -34,6 +34,7 @@ type fake struct {
 	jobList   []store.Job
 	attic     []store.Original
 	profiles  []profile.Listed
+	unusable  []gin.H     // files of the profiles folder
 	asked     chan string // bodies of the runs that were asked for
 	mu        sync.Mutex  // held where a restore changes what a page shows
 	broken    error       // returned by every call when set
@@ -56,7 +57,7 @@ var hostile = []string{
 // newFake invents a shelf of n recordings, most of them levelled by one run that is still at work.
 func newFake(n int) *fake {
 	rng := rand.New(rand.NewPCG(7, uint64(n)))
-	f := &fake{asked: make(chan string, 9), profiles: profile.Gather("").All[:2]}
+	f := &fake{asked: make(chan string, 9), profiles: profile.Gather("").All, unusable: []gin.H{}}
 	run := store.Run{ID: 12, ShelfID: 1, ShelfName: "evening-music", Profile: "rotation", ProfileVersion: "5f0c2a91b3de", Target: -18, Tolerance: 0.3, Ceiling: -1,
 		Delivery: store.Copy, State: store.RunWorking, CreatedAt: noon.Add(-40 * time.Minute), Jobs: n, BytesTotal: int64(n) * 41e6}
 	started := noon.Add(-38 * time.Minute)
@@ -330,7 +331,7 @@ func (f *fake) api(r gin.IRouter) {
 		for _, l := range f.profiles {
 			all = append(all, l.Described())
 		}
-		c.JSON(200, gin.H{"profiles": all, "problems": []any{}})
+		c.JSON(200, gin.H{"profiles": all, "problems": f.unusable})
 	})
 	g.POST("/runs", func(c *gin.Context) {
 		body, _ := c.GetRawData()

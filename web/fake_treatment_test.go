@@ -33,6 +33,9 @@ func inventTreatment(j *store.Job) {
 	}
 	j.Foreseen = j.After
 	j.Treatment = &level.Treatment{Order: 0.97}
+	if p.Compressor != nil {
+		j.Treatment.Compressed = 2.3
+	}
 	if p.Limit {
 		j.Treatment.Limited1, j.Treatment.Limited3, j.Treatment.Deepest, j.Treatment.DeepestAt = 0.031, 0.0004, 5.2, 41.7
 	}

@@ -34,7 +34,7 @@ func functions(a *assets, now func() time.Time) template.FuncMap {
 		"folder":   folder,
 		"spark":    newSpark,
 		"stateSay": stateWords,
-		"gain":     gainSpan,
+		"outcome":  newOutcome,
 		"listen":   newListen,
 		"doubtful": newDoubtful,
 		"doubtSay": doubtWords,
@@ -55,6 +55,15 @@ func value(v any) (float64, bool) {
 	}
 	f := r.Float()
 	return f, !math.IsNaN(f) && !math.IsInf(f, 0)
+}
+
+// known is a figure where it is defined, else nil.
+func known[F ~float64](f F) *float64 {
+	if !audio.Defined(f) {
+		return nil
+	}
+	v := float64(f)
+	return &v
 }
 
 // spreadWords writes a difference to one decimal; one that would read 0.0 is said to be small, not none.

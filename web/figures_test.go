@@ -7,7 +7,9 @@ import (
 	"time"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/dynamics"
 	"evenshelf/engine/level"
+	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
 
@@ -54,25 +56,36 @@ func TestWhen(t *testing.T) {
 
 func TestTold(t *testing.T) {
 	done := store.Recording{State: store.Done, Before: &store.Figures{}, After: &store.Figures{Integrated: new(-18.02)}}
+	job := func(before, after float64, p level.Plan) *store.Job {
+		return &store.Job{Plan: &p, Before: &store.Figures{Integrated: &before}, After: &store.Figures{Integrated: &after}}
+	}
+	planned := func(p level.Plan) *store.Job { return &store.Job{Plan: &p} }
+	speech := job(-27, -17.4, level.Plan{Gain: 12, Ceiling: -1, Limit: true, Anchor: profile.Speech, Compressor: &dynamics.Compression{Ratio: 3}})
+	speech.SpeechBefore, speech.SpeechAfter = new(-25.0), new(-16.0)
 	copied, replacing := &store.Run{Delivery: store.Copy}, &store.Run{Delivery: store.Replace}
 	for _, c := range []struct {
 		r    store.Recording
 		run  *store.Run
-		plan *level.Plan
+		job  *store.Job
 		want string
 	}{
-		{done, copied, &level.Plan{Gain: 11.3, Ceiling: -1, Limit: true}, "Lifted by 11.3 dB to −18.0 LUFS; peaks held under −1.0 dBTP."},
-		{done, copied, &level.Plan{Gain: -4.26}, "Lowered by 4.3 dB to −18.0 LUFS."},
-		{done, copied, &level.Plan{Untouched: true}, "Already within the profile: copied byte for byte, nothing changed."},
-		{done, replacing, &level.Plan{Untouched: true}, "Already within the profile: kept byte for byte, nothing changed."},
-		{done, copied, &level.Plan{Gain: 0.01}, "Left at its level, −18.0 LUFS."},
+		{done, copied, job(-29.32, -18.02, level.Plan{Gain: 11.3, Ceiling: -1, Limit: true}), "Lifted by 11.3 LU to −18.0 LUFS; peaks held under −1.0 dBTP."},
+		{done, copied, job(-13.76, -18.02, level.Plan{Gain: -4.26}), "Lowered by 4.3 LU to −18.0 LUFS."},
+		{done, copied, job(-27.02, -18.02, level.Plan{Gain: 12}), "Lifted by 9.0 LU to −18.0 LUFS, with a steady gain of +12.0 dB."},
+		{done, copied, job(-20, -18.02, level.Plan{Gain: 1, Ride: &level.Ride{Least: -3, Most: 5}}), "Lifted by 2.0 LU to −18.0 LUFS, with a ride between −2.0 and +6.0 dB."},
+		{done, copied, job(-18.02, -18.02, level.Plan{Gain: 1, Ride: &level.Ride{Least: -3, Most: 5}}), "Left at its level, −18.0 LUFS, with a ride between −2.0 and +6.0 dB."},
+		{done, copied, speech, "Speech lifted by 9.0 LU to −16.0 LUFS, with a steady gain of +12.0 dB; compressed; peaks held under −1.0 dBTP."},
+		{done, copied, planned(level.Plan{Gain: 11.3}), "Levelled with a steady gain of +11.3 dB."},
+		{done, copied, planned(level.Plan{Untouched: true}), "Already within the profile: copied byte for byte, nothing changed."},
+		{done, replacing, planned(level.Plan{Untouched: true}), "Already within the profile: kept byte for byte, nothing changed."},
+		{done, copied, job(-18.03, -18.02, level.Plan{Gain: 0.01}), "Left at its level, −18.0 LUFS."},
 		{done, &store.Run{Delivery: store.Measure}, nil, "Measured only; nothing was written."},
 		{store.Recording{}, nil, nil, "Not measured yet: it waits for a first run."},
 		{store.Recording{Path: "a/b.mp3", State: store.Failed, Reason: "the file is empty"}, copied, nil,
 			"Could not be levelled: the file is empty. The file on the shelf is as it was."},
 		{store.Recording{State: store.Done, Reason: "écho found."}, copied, nil, "Finished. Écho found."},
 	} {
-		if got := told(c.r, c.run, &store.Job{Plan: c.plan}); got != c.want {
+		if got := told(c.r, c.run, c.job); got != c.want {
 			t.Errorf("told %q, want %q", got, c.want)
 		}
 	}

@@ -239,10 +239,9 @@ func (s *Site) findRecording(c *gin.Context, n int64) (p recordingPage, err erro
 		}
 		p.Run = &run
 		p.Target = &run.Target
-		p.Ceiling = &run.Ceiling
+		p.Ceiling = known(run.Ceiling)
 		if p.Last.Plan != nil {
-			ceiling := float64(p.Last.Plan.Ceiling)
-			p.Ceiling = &ceiling
+			p.Ceiling = known(p.Last.Plan.Ceiling)
 		}
 	}
 	p.Levelled = levelledBy(p.AfterReading, p.Jobs)

@@ -32,7 +32,7 @@ func viewShelf(s store.ShelfSummary) shelfView {
 	}
 	v.TakesUploads = s.Name == store.UploadShelf
 	if s.LastRun != nil {
-		v.Tolerance = &s.LastRun.Tolerance
+		v.Tolerance = known(s.LastRun.Tolerance)
 		v.Measurements = s.LastRun.Delivery == store.Measure
 		v.Going = going(s.LastRun.State)
 	}

@@ -28,36 +28,40 @@ func (p recordingPage) Deeds() []deed {
 			all = append(all, deed{label, words, at})
 		}
 	}
-	add("Anchor", anchorWords(plan, p.Target), nil)
+	add("Loudness", loudnessWords(p.Levelled, p.Target), nil)
+	add("Range", rangeWords(p.Levelled), nil)
 	add("Gain", gainWords(plan), nil)
 	if r := plan.Ride; r != nil && r.FloorLift > 0.05 {
-		add("Pauses", fmt.Sprintf("lifted at the most %s dB over the quieter of their neighbours", audio.Number(float64(r.FloorLift), 1)), moment64(r.FloorAt))
+		add("Pauses", fmt.Sprintf("lifted at the most %s dB over the quieter of their neighbours", audio.Number(float64(r.FloorLift), 1)), known(r.FloorAt))
 	}
 	if c := plan.Compressor; c != nil { // whose threshold is a level before the steady gain
-		add("Compressor", fmt.Sprintf("from %s LUFS on, %s:1, with a soft knee of %s dB and a release of %s ms", audio.Number(float64(c.Threshold+plan.Gain), 1),
+		add("Compressor", tookWords(treated)+fmt.Sprintf("from %s LUFS on, %s:1, with a soft knee of %s dB and a release of %s ms", audio.Number(float64(c.Threshold+plan.Gain), 1),
 			short(c.Ratio), short(float64(c.Knee)), short(1000*c.Release)), nil)
 	}
 	words, at := limiterWords(plan, treated)
 	add("Peaks", words, at)
-	if treated != nil && audio.Defined(treated.Order) {
-		add("Order", fmt.Sprintf("what was louder stayed louder: %s, where 1 is all of it", audio.Number(float64(treated.Order), 2)), nil)
+	// A ride that evens speech is asked to take the order away.
+	if evens := plan.Ride != nil && plan.Anchor == profile.Speech; treated != nil && audio.Defined(treated.Order) && !evens {
+		add("Order", fmt.Sprintf("the order of loud and soft: %s (1: as it was, 0: none left)", audio.Number(float64(treated.Order), 2)), nil)
 	}
-	add("Encoding", p.encodingWords(), nil)
+	add("Foreseen", p.foreseenWords(), nil)
 	add("Written", writtenWords(plan.Delivered), nil)
 	return all
 }
 
-func anchorWords(plan *level.Plan, target *float64) string {
-	if !audio.Defined(plan.Anchored) {
+func loudnessWords(j *store.Job, target *float64) string {
+	plan := j.Plan
+	c, known := changeOf(j)
+	if !known {
 		return ""
 	}
 	s := "the whole programme"
-	if plan.Anchor == profile.Speech {
+	if c.Speech {
 		s = "what people say"
 	}
-	s += fmt.Sprintf(", at %s LUFS as it arrived", audio.Number(float64(plan.Anchored), 1))
+	s += fmt.Sprintf(" came from %s to %s LUFS: %s LU", audio.Number(c.From, 1), audio.Number(c.To, 1), signed(c.By()))
 	if audio.Defined(plan.Aim) {
-		s += fmt.Sprintf(", is brought to %s", audio.Number(float64(plan.Aim), 1))
+		s += fmt.Sprintf("; %s was aimed at", audio.Number(float64(plan.Aim), 1))
 		if target != nil && !near(float64(plan.Aim), *target) {
 			s += ": its gain is that of the whole folder, so that the balance within it stays"
 		}
@@ -74,14 +78,38 @@ func gainWords(plan *level.Plan) string {
 		return fmt.Sprintf("%s dB throughout", least)
 	}
 	r := plan.Ride
-	s := fmt.Sprintf("rides between %s and %s dB where something is heard, %s; %s dB of it are steady", least, most, speedWords(r.Speed), signed(float64(plan.Gain)))
-	if audio.Defined(r.Kept) {
-		s += fmt.Sprintf("; %s %% of the differences stay", share(r.Kept))
+	return fmt.Sprintf("rides between %s and %s dB where something is heard, %s; %s dB of it are steady", least, most, speedWords(r.Speed), signed(float64(plan.Gain)))
+}
+
+// gainSays is the gain of a plan within a sentence.
+func gainSays(plan *level.Plan) string {
+	least, most, moves := gainEnds(plan)
+	if !moves {
+		return fmt.Sprintf("a steady gain of %s dB", least)
 	}
-	if audio.Defined(r.Range) {
-		s += fmt.Sprintf("; a loudness range of %s LU is foreseen", audio.Number(float64(r.Range), 1))
+	return fmt.Sprintf("a ride between %s and %s dB", least, most)
+}
+
+// rangeWords tells what became of the loudness range where something was to change it.
+func rangeWords(j *store.Job) string {
+	if j.Plan.Ride == nil && j.Plan.Compressor == nil || j.Before == nil || j.After == nil || j.Before.Range == nil || j.After.Range == nil {
+		return ""
 	}
-	return s
+	if near(*j.Before.Range, *j.After.Range) {
+		return fmt.Sprintf("the loudness range stayed at %s LU", audio.Number(*j.After.Range, 1))
+	}
+	return fmt.Sprintf("a loudness range of %s LU became %s LU", audio.Number(*j.Before.Range, 1), audio.Number(*j.After.Range, 1))
+}
+
+// tookWords tells what the compressor took off; "" where that was not noted.
+func tookWords(t *level.Treatment) string {
+	switch {
+	case t == nil || !audio.Defined(t.Compressed):
+		return ""
+	case t.Compressed < 0.05:
+		return "took less than 0.1 dB off on average: "
+	}
+	return fmt.Sprintf("took %s dB off on average: ", audio.Number(float64(t.Compressed), 1))
 }
 
 func speedWords(s profile.Speed) string {
@@ -92,15 +120,6 @@ func speedWords(s profile.Speed) string {
 		return "fast"
 	}
 	return "at a " + string(s) + " speed"
-}
-
-// gainSpan is what a plan does to the level, for a table: "+4.2", or from the least to the most of a ride.
-func gainSpan(plan *level.Plan) string {
-	least, most, moves := gainEnds(plan)
-	if !moves {
-		return least
-	}
-	return least + " … " + most
 }
 
 // gainEnds are the least and the most that the level is changed by where something is heard, steady gain included;
@@ -115,6 +134,9 @@ func gainEnds(plan *level.Plan) (least, most string, moves bool) {
 
 func limiterWords(plan *level.Plan, t *level.Treatment) (words string, at *float64) {
 	ceiling := audio.Number(float64(plan.Ceiling), 1)
+	if !plan.Limit && plan.Compressor != nil {
+		return fmt.Sprintf("under %s dBTP after the compressor, with no limiting", ceiling), nil
+	}
 	if !plan.Limit {
 		return fmt.Sprintf("stay under %s dBTP by themselves", ceiling), nil
 	}
@@ -133,19 +155,20 @@ func limiterWords(plan *level.Plan, t *level.Treatment) (words string, at *float
 	}
 	if t.Deepest > 0.05 {
 		words += fmt.Sprintf("; %s dB at the most", audio.Number(float64(t.Deepest), 1))
-		at = moment64(t.DeepestAt)
+		at = known(t.DeepestAt)
 	}
 	return words, at
 }
 
-// encodingWords tells by how much an encoder moved the sound; "" where that cannot be seen.
-func (p recordingPage) encodingWords() string {
+// foreseenWords tells what the plan as first made was to come to where something else came out, as an encoder moves the
+// sound; "" where that cannot be seen.
+func (p recordingPage) foreseenWords() string {
 	f, a := p.Levelled.Foreseen, p.Levelled.After
 	if f == nil || a == nil || f.Integrated == nil || a.Integrated == nil || f.TruePeak == nil || a.TruePeak == nil ||
 		near(*f.Integrated, *a.Integrated) && near(*f.TruePeak, *a.TruePeak) {
 		return ""
 	}
-	return fmt.Sprintf("%s LUFS and %s dBTP became %s and %s", audio.Number(*f.Integrated, 1), audio.Number(*f.TruePeak, 1),
+	return fmt.Sprintf("%s LUFS and %s dBTP before it was encoded; %s and %s came out", audio.Number(*f.Integrated, 1), audio.Number(*f.TruePeak, 1),
 		audio.Number(*a.Integrated, 1), audio.Number(*a.TruePeak, 1))
 }
 
@@ -178,14 +201,6 @@ func share(r audio.Ratio) string {
 // short writes a figure to one decimal, or to none if that says as much.
 func short(v float64) string { return strings.TrimSuffix(audio.Number(v, 1), ".0") }
 
-func moment64(s audio.Seconds) *float64 {
-	if !audio.Defined(s) {
-		return nil
-	}
-	v := float64(s)
-	return &v
-}
-
 // listen is a button that plays a moment of the delivered sound, or says that the whole is meant.
 type listen struct {
 	At    float64
@@ -212,7 +227,8 @@ func doubtWords(d level.Doubt) string {
 // how many there are besides.
 type doubtful struct {
 	level.Doubt
-	Page string
+	Page string // opened at the moment
+	All  string // opened where they are listed
 	More int
 }
 
@@ -220,7 +236,8 @@ func newDoubtful(recordingID int64, doubts []level.Doubt) *doubtful {
 	if len(doubts) == 0 {
 		return nil
 	}
-	d := &doubtful{Doubt: doubts[0], Page: fmt.Sprintf("/recordings/%d", recordingID), More: len(doubts) - 1}
+	page := fmt.Sprintf("/recordings/%d", recordingID)
+	d := &doubtful{Doubt: doubts[0], Page: page, All: page, More: len(doubts) - 1}
 	if s, ok := value(d.At); ok {
 		d.Page += fmt.Sprintf("#at=%.1f", s)
 	}

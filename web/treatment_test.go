@@ -5,6 +5,7 @@ import (
 	"testing"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/dynamics"
 	"evenshelf/engine/level"
 	"evenshelf/engine/profile"
 	"evenshelf/store"
@@ -28,27 +29,28 @@ func TestDeeds(t *testing.T) {
 	f := newFake(30)
 	ridden := f.jobList[doubted-1]
 	ridden.Plan.Limit, ridden.Plan.Anchor, ridden.Plan.Gain = true, profile.Speech, 4.5
-	ridden.Plan.Anchored, ridden.Plan.Ride.Range = -31.26, 6.2
-	ridden.Treatment = &level.Treatment{Limited1: 0.031, Limited3: 0.0004, Deepest: 5.2, DeepestAt: 83.4, Order: 0.968}
+	ridden.SpeechBefore, ridden.SpeechAfter = new(-31.26), new(-18.14)
+	ridden.Before = &store.Figures{Integrated: new(-33.0), Range: new(20.06)}
+	ridden.Treatment = &level.Treatment{Limited1: 0.031, Limited3: 0.0004, Compressed: 2.34, Deepest: 5.2, DeepestAt: 83.4, Order: 0.968}
 	ridden.Foreseen = &store.Figures{Integrated: new(-18.0), TruePeak: new(-1.0)}
-	ridden.After = &store.Figures{Integrated: new(-18.4), TruePeak: new(-0.7)}
+	ridden.After = &store.Figures{Integrated: new(-18.4), Range: new(6.2), TruePeak: new(-0.7)}
 	old := &store.Job{Plan: &level.Plan{Gain: -3.2, Ceiling: -1, Anchor: profile.Programme, Anchored: audio.LUFS(none), Aim: audio.LUFS(none)}}
 	album := &store.Job{Plan: &level.Plan{Gain: 2, Limit: true, Ceiling: -2, Anchor: profile.Programme, Anchored: -20, Aim: -18.04,
-		Delivered: profile.Delivered{Dither: profile.NoDither}}, Treatment: &level.Treatment{Order: audio.Ratio(none)}}
+		Delivered: profile.Delivered{Dither: profile.NoDither}}, Treatment: &level.Treatment{Order: audio.Ratio(none)}, Before: &store.Figures{Integrated: new(-20.0)}, After: &store.Figures{Integrated: new(-18.1)}}
 	for what, c := range map[string]struct {
 		job  *store.Job
 		want string
 	}{
-		"ridden": {&ridden, `Anchor: what people say, at −31.3 LUFS as it arrived, is brought to −18.0
-Gain: rides between −1.7 and +10.5 dB where something is heard, slowly; +4.5 dB of it are steady; 42 % of the differences stay; a loudness range of 6.2 LU is foreseen
+		"ridden": {&ridden, `Loudness: what people say came from −31.3 to −18.1 LUFS: +13.1 LU; −18.0 was aimed at
+Range: a loudness range of 20.1 LU became 6.2 LU
+Gain: rides between −1.7 and +10.5 dB where something is heard, slowly; +4.5 dB of it are steady
 Pauses: lifted at the most 1.8 dB over the quieter of their neighbours @0:18.2
-Compressor: from −10.5 LUFS on, 3:1, with a soft knee of 6 dB and a release of 80 ms
+Compressor: took 2.3 dB off on average: from −10.5 LUFS on, 3:1, with a soft knee of 6 dB and a release of 80 ms
 Peaks: held under −1.0 dBTP: more than 1 dB for 3.1 %, more than 3 dB for under 0.1 % of what is heard; 5.2 dB at the most @1:23.4
-Order: what was louder stayed louder: 0.97, where 1 is all of it
-Encoding: −18.0 LUFS and −1.0 dBTP became −18.4 and −0.7
+Foreseen: −18.0 LUFS and −1.0 dBTP before it was encoded; −18.4 and −0.7 came out
 Written: with 24 bits, dithered where that is shorter than what was worked with`},
 		"by an engine that told less": {old, "Gain: −3.2 dB throughout\nPeaks: stay under −1.0 dBTP by themselves"},
-		"one of a folder": {album, "Anchor: the whole programme, at −20.0 LUFS as it arrived, is brought to −18.0\nGain: +2.0 dB throughout\n" +
+		"one of a folder": {album, "Loudness: the whole programme came from −20.0 to −18.1 LUFS: +1.9 LU; −18.0 was aimed at\nGain: +2.0 dB throughout\n" +
 			"Peaks: held under −2.0 dBTP\nWritten: with the word length of the source, without dither"},
 		"untouched":    {&store.Job{Plan: &level.Plan{Untouched: true}}, ""},
 		"only planned": {&store.Job{}, ""},
@@ -59,8 +61,20 @@ Written: with 24 bits, dithered where that is shorter than what was worked with`
 		}
 	}
 	album.Plan.Aim = -14.2
-	if got := deedsOf(album, -18); !strings.Contains(got, "is brought to −14.2: its gain is that of the whole folder") {
+	if got := deedsOf(album, -18); !strings.Contains(got, "−14.2 was aimed at: its gain is that of the whole folder") {
 		t.Errorf("a shared gain is not explained: %s", got)
+	}
+	album.Plan.Compressor, album.Plan.Limit, album.Treatment.Order = &dynamics.Compression{Ratio: 2}, false, 0.14
+	album.Treatment.Compressed = 0.01
+	for _, want := range []string{"Order: the order of loud and soft: 0.14 (1: as it was, 0: none left)", "Compressor: took less than 0.1 dB off on average: from",
+		"Peaks: under −2.0 dBTP after the compressor, with no limiting"} {
+		if got := deedsOf(album, -18); !strings.Contains(got, want) {
+			t.Errorf("it is not said that %q: %s", want, got)
+		}
+	}
+	album.Treatment.Compressed = audio.DB(none)
+	if got := deedsOf(album, -18); !strings.Contains(got, "Compressor: from") {
+		t.Errorf("a compressor of which it was not noted: %s", got)
 	}
 }
 
@@ -90,15 +104,31 @@ func TestTargetStandsBesideItsAnchor(t *testing.T) {
 	}
 }
 
-func TestGainSpan(t *testing.T) {
-	for want, p := range map[string]level.Plan{
-		"+4.2":          {Gain: 4.2},
-		"−6.2 … +9.8":   {Gain: 1.8, Ride: &level.Ride{Least: -8, Most: 8}},
-		"+3.0":          {Gain: 3, Ride: &level.Ride{Least: audio.DB(audio.Undefined), Most: audio.DB(audio.Undefined)}},
-		"−12.0 … −10.0": {Gain: -11, Ride: &level.Ride{Least: -1, Most: 1}},
+// What came out is told, not what was planned; the gain of the plan is told where it is another.
+func TestOutcome(t *testing.T) {
+	none := audio.DB(audio.Undefined)
+	at := func(lufs float64) *store.Figures { return &store.Figures{Integrated: &lufs} }
+	for want, j := range map[outcome]store.Job{
+		{"+4.2", ""}:              {Plan: &level.Plan{Gain: 4.2}, Before: at(-22.2), After: at(-18)},
+		{"+2.9", "+4.2"}:          {Plan: &level.Plan{Gain: 4.2}, Before: at(-22.2), After: at(-19.3)}, // a compressor or an encoder
+		{"+2.2", "−6.2 … +9.8"}:   {Plan: &level.Plan{Gain: 1.8, Ride: &level.Ride{Least: -8, Most: 8}}, Before: at(-20.2), After: at(-18)},
+		{"", "+3.0"}:              {Plan: &level.Plan{Gain: 3, Ride: &level.Ride{Least: none, Most: none}}, Before: at(-20)},
+		{"speech +9.0", "+12.0"}:  {Plan: &level.Plan{Gain: 12, Anchor: profile.Speech}, Before: at(-27), After: at(-17), SpeechBefore: new(-25.0), SpeechAfter: new(-16.0)},
+		{"+10.0", "+12.0"}:        {Plan: &level.Plan{Gain: 12, Anchor: profile.Speech}, Before: at(-27), After: at(-17), SpeechAfter: new(-16.0)},
+		{"−7.0", "−12.0 … −10.0"}: {Plan: &level.Plan{Gain: -11, Ride: &level.Ride{Least: -1, Most: 1}}, Before: at(-11), After: at(-18)},
 	} {
-		if got := gainSpan(&p); got != want {
-			t.Errorf("%s, want %s", got, want)
+		if got := newOutcome(j); got != want {
+			t.Errorf("%+v, want %+v", got, want)
+		}
+	}
+}
+
+// What a list has no room for is a press away, as is the moment to listen to.
+func TestListOfHeldLinksToAllDoubts(t *testing.T) {
+	_, body := fetch(t, newSite(t, newFake(96)), "/recordings?state=held")
+	for _, want := range []string{`href="/recordings/18#at=83.2"`, `href="/recordings/18">and 2 more</a>`} {
+		if !strings.Contains(body, want) {
+			t.Errorf("no link %s", want)
 		}
 	}
 }

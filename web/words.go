@@ -2,7 +2,6 @@ package web
 
 import (
 	"fmt"
-	"math"
 	"strings"
 	"unicode"
 	"unicode/utf8"
@@ -84,7 +83,8 @@ func told(r store.Recording, run *store.Run, job *store.Job) string {
 	return did + because(r.Reason)
 }
 
-// action is the levelling itself: "Lifted by 11.3 dB to −18.0 LUFS; peaks held under −1.0 dBTP."
+// action is the levelling itself, and first of all what came out: "Lifted by 11.3 LU to −18.0 LUFS; peaks held under
+// −1.0 dBTP."
 func action(r store.Recording, run *store.Run, job *store.Job) string {
 	if job == nil || job.Plan == nil {
 		if r.After != nil && r.After.Integrated != nil {
@@ -99,29 +99,31 @@ func action(r store.Recording, run *store.Run, job *store.Job) string {
 	if plan.Untouched {
 		return "Already within the profile: copied byte for byte, nothing changed."
 	}
-	gain := float64(plan.Gain)
-	var b strings.Builder
-	to := " to"
-	switch least, most, moves := gainEnds(plan); {
-	case moves:
-		fmt.Fprintf(&b, "Ridden between %s and %s dB", least, most)
-		to = ", now at"
-	case math.Abs(gain) < 0.05:
-		b.WriteString("Left at its level")
-		to = ","
-	case gain > 0:
-		fmt.Fprintf(&b, "Lifted by %s dB", audio.Number(gain, 1))
+	s := ""
+	c, known := changeOf(job)
+	switch {
+	case !known:
+		s = fmt.Sprintf("Levelled with %s", gainSays(plan))
+	case near(c.To, c.From):
+		s = fmt.Sprintf("Left at its level, %s LUFS", audio.Number(c.To, 1))
+	case c.To > c.From:
+		s = fmt.Sprintf("Lifted by %s LU to %s LUFS", audio.Number(c.By(), 1), audio.Number(c.To, 1))
 	default:
-		fmt.Fprintf(&b, "Lowered by %s dB", audio.Number(-gain, 1))
+		s = fmt.Sprintf("Lowered by %s LU to %s LUFS", audio.Number(-c.By(), 1), audio.Number(c.To, 1))
 	}
-	if r.After != nil && r.After.Integrated != nil {
-		fmt.Fprintf(&b, "%s %s LUFS", to, audio.Number(*r.After.Integrated, 1))
+	if c.Speech {
+		s = "Speech " + strings.ToLower(s[:1]) + s[1:]
+	}
+	if known && !plainGain(plan, c) {
+		s += ", with " + gainSays(plan)
+	}
+	if plan.Compressor != nil {
+		s += "; compressed"
 	}
 	if plan.Limit {
-		fmt.Fprintf(&b, "; peaks held under %s dBTP", audio.Number(float64(plan.Ceiling), 1))
+		s += fmt.Sprintf("; peaks held under %s dBTP", audio.Number(float64(plan.Ceiling), 1))
 	}
-	b.WriteString(".")
-	return b.String()
+	return s + "."
 }
 
 // replaced says whether a run puts its results in the place of originals.

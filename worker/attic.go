@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"io/fs"
 	"os"
 	"path/filepath"
 	"sync"
@@ -15,7 +16,7 @@ import (
 
 // firstGeneration returns the sound to level: what is on the shelf, or if that is a copy we put there, its
 // original in the attic, so that no sound is ever levelled twice. In that case ours is what the attic knows of
-// it, else nil. A replacing job that a crash cut short after its copy was in place is repeated the same way and
+// it, else nil. errNoOriginal if that original is not there. A replacing job that a crash cut short after its copy was in place is repeated the same way and
 // makes the same file.
 func (s *Service) firstGeneration(ctx context.Context, shelf store.Shelf, recordingID int64, onShelf string) (source string, ours *store.Original, err error) {
 	kept, err := s.store.Original(ctx, recordingID)
@@ -24,12 +25,21 @@ func (s *Service) firstGeneration(ctx context.Context, shelf store.Shelf, record
 		return onShelf, nil, nil
 	case err != nil:
 		return "", nil, err
-	case inAttic(kept).IsLevelled(onShelf):
-		return filepath.Join(shelf.Attic(), filepath.FromSlash(kept.Stored)), &kept, nil
-	default:
+	case !inAttic(kept).IsLevelled(onShelf):
 		return onShelf, nil, nil
 	}
+	source = filepath.Join(shelf.Attic(), filepath.FromSlash(kept.Stored))
+	if _, err := os.Stat(source); errors.Is(err, fs.ErrNotExist) {
+		return "", nil, errNoOriginal
+	} else if err != nil {
+		return "", nil, err
+	}
+	return source, &kept, nil
 }
+
+// errNoOriginal says that what is on the shelf is a copy of ours, which is not to be levelled, and that there is
+// nothing else to level.
+var errNoOriginal = errors.New("its original is missing from the attic")
 
 // already is the reason of a job that found its work done by an earlier one.
 const already = "levelled with this profile already"

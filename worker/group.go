@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"io/fs"
 	"os"
 	"path"
 
@@ -14,7 +15,7 @@ import (
 	"evenshelf/worker/discover"
 )
 
-// folder is the recordings that a run takes of one folder.
+// folder is one folder of recordings, for one run.
 type folder struct {
 	run  int64
 	path string // relative to the shelf's root, "" for the root itself
@@ -52,27 +53,21 @@ func (s *Service) task(ctx context.Context, w store.Work) (t level.Task, err err
 	return t, nil
 }
 
-// measureTogether measures the recordings of a folder as one programme: the sound that each will be levelled
-// from, so that it makes no difference which of them have been replaced already.
+// measureTogether measures all recordings of a folder as one programme: the sound that each would be levelled
+// from, so that it makes no difference which of them the run takes, nor which have been replaced already. One that
+// cannot be read is left out: its own turn says why.
 func (s *Service) measureTogether(ctx context.Context, w store.Work, f folder) (shared level.Shared, err error) {
 	members, err := s.store.Members(ctx, f.run, f.path)
 	if err != nil {
 		return shared, err
 	}
 	var sources []string
-	var first []os.FileInfo
+	var first []fs.FileInfo
 	for _, m := range members {
-		source, err := discover.Resolve(w.Shelf.Root, m.Path)
-		if isGone(err) { // as its own job will say
+		source, info, err := s.toLevel(ctx, w.Shelf, m)
+		if isGone(err) || errors.Is(err, fs.ErrNotExist) || errors.Is(err, fs.ErrPermission) {
 			continue
 		}
-		if err == nil {
-			source, _, err = s.firstGeneration(ctx, w.Shelf, m.ID, source)
-		}
-		if err != nil {
-			return shared, err
-		}
-		info, err := os.Stat(source)
 		if err != nil {
 			return shared, err
 		}
@@ -88,4 +83,16 @@ func (s *Service) measureTogether(ctx context.Context, w store.Work, f folder) (
 		}
 	}
 	return s.store.KeepShared(ctx, f.run, f.path, measured)
+}
+
+// toLevel finds the sound that a recording would be levelled from.
+func (s *Service) toLevel(ctx context.Context, shelf store.Shelf, r store.Recording) (source string, info fs.FileInfo, err error) {
+	if source, err = discover.Resolve(shelf.Root, r.Path); err != nil {
+		return "", nil, err
+	}
+	if source, _, err = s.firstGeneration(ctx, shelf, r.ID, source); err != nil {
+		return "", nil, err
+	}
+	info, err = os.Stat(source)
+	return source, info, err
 }

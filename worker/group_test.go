@@ -12,6 +12,7 @@ import (
 	"testing"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/level"
 	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
@@ -103,6 +104,95 @@ func TestFolderIsMeasuredFromOriginals(t *testing.T) {
 	run := b.wait(b.beginWith(s, store.Replace, byFolder).ID, ended)
 	if j := b.jobs(run.ID)["a/1.wav"]; j.State != store.Done || j.SameAs != 0 {
 		t.Errorf("%+v", j)
+	}
+}
+
+// A run that takes one file of a folder levels it as part of the whole folder, as a run of all of it does: the
+// balance within the folder does not depend on how it was split among runs.
+func TestFolderIsWholeWhenARunTakesPartOfIt(t *testing.T) {
+	b := newBench(t, "a/1.wav", "a/2.wav", "a/3.wav", "a/b/4.wav")
+	e := &engine{}
+	s := b.startService(e, 1)
+	b.wait(b.beginWith(scanned(b, s), store.Replace, byFolder).ID, ended)
+	whole := e.shared()["2"]
+	list, err := b.store.Recordings(b.ctx, store.RecordingQuery{ShelfID: b.shelf.ID, Search: "2.wav"})
+	if err != nil || len(list.Recordings) != 1 {
+		t.Fatalf("%+v %v", list, err)
+	}
+	own, err := profile.Named("rotation")
+	if err != nil {
+		t.Fatal(err)
+	}
+	byFolder(&own)
+	for _, target := range []audio.LUFS{-18, -21} { // the profile that levelled the folder, and another
+		own.Target = target
+		run, err := s.StartRun(b.ctx, store.NewRun{ShelfID: b.shelf.ID, Recordings: []int64{list.Recordings[0].ID}, Profile: own, Delivery: store.Copy})
+		if err != nil {
+			t.Fatal(err)
+		}
+		if run = b.wait(run.ID, ended); run.Jobs != 1 || run.Done != 1 {
+			t.Errorf("%+v", run)
+		}
+		if with := e.shared(); len(with) != 1 || with["2"] != whole || whole.Integrated != -3 {
+			t.Errorf("alone it shares %+v, in the whole folder %+v", with, whole)
+		}
+		if set := e.sets[len(e.sets)-1]; len(set) != 3 || !strings.HasPrefix(set[0], b.shelf.Attic()) {
+			t.Errorf("measured %q", set)
+		}
+	}
+}
+
+// shared returns what was shared since it was last asked, by the start of the recordings' names: those of originals
+// in the attic go on with a hash.
+func (e *engine) shared() map[string]level.Shared {
+	e.mu.Lock()
+	defer e.mu.Unlock()
+	all := map[string]level.Shared{}
+	for name, with := range e.with {
+		start, _, _ := strings.Cut(name, ".")
+		all[start] = *with
+	}
+	e.with = nil
+	return all
+}
+
+func scanned(b *bench, s *Service) *Service {
+	b.t.Helper()
+	if _, err := s.Scan(b.ctx, b.shelf.ID, ""); err != nil {
+		b.t.Fatal(err)
+	}
+	return s
+}
+
+// An original that is lost from the attic fails its own recording, in words without a path, and holds up no other.
+func TestLostOriginalFailsAlone(t *testing.T) {
+	b := newBench(t, "a/1.wav", "a/2.wav", "a/3.wav")
+	e := &engine{}
+	s := b.startService(e, 2)
+	first := b.wait(b.beginWith(scanned(b, s), store.Replace, byFolder).ID, ended)
+	kept, err := b.store.Originals(b.ctx, store.OriginalQuery{RunID: first.ID})
+	if err != nil || len(kept) != 3 || kept[1].Path != "a/2.wav" {
+		t.Fatalf("%+v %v", kept, err)
+	}
+	if err := os.Remove(filepath.Join(b.shelf.Attic(), kept[1].Stored)); err != nil {
+		t.Fatal(err)
+	}
+	e.shared()
+	for _, d := range []store.Delivery{store.Replace, store.Copy} {
+		run := b.wait(b.beginWith(s, d, func(p *profile.Profile) { byFolder(p); p.Target-- }).ID, ended)
+		if run.Done != 2 || run.Failed != 1 {
+			t.Errorf("%s: %+v", d, run)
+		}
+		j := b.jobs(run.ID)["a/2.wav"]
+		if j.State != store.Failed || j.Reason != "its original is missing from the attic" || j.Attempts != 1 {
+			t.Errorf("%s: %s after %d attempts: %q", d, j.State, j.Attempts, j.Reason)
+		}
+		if with := e.shared(); len(with) != 2 || with["1"].Integrated != -2 || with["3"] != with["1"] {
+			t.Errorf("%s: the others share %+v", d, with)
+		}
+	}
+	if got := b.onShelf("a/2.wav"); got != "levelled sound of a/2.wav" {
+		t.Errorf("on the shelf is %q", got)
 	}
 }
 

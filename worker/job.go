@@ -151,8 +151,12 @@ func (s *Service) attempt(ctx context.Context, w store.Work) (r result, err erro
 	case err != nil:
 		return r, err
 	}
-	if r, err = s.work(ctx, w, source); errors.Is(ctx.Err(), context.DeadlineExceeded) {
+	r, err = s.work(ctx, w, source)
+	switch {
+	case errors.Is(ctx.Err(), context.DeadlineExceeded):
 		return result{outcome: failedBecause(fmt.Sprintf("not done after %s", jobTimeout))}, nil
+	case isGone(err):
+		return result{outcome: failedBecause(err.Error())}, nil
 	}
 	if ctx.Err() != nil && err != nil {
 		return r, ctx.Err()
@@ -160,9 +164,9 @@ func (s *Service) attempt(ctx context.Context, w store.Work) (r result, err erro
 	return r, err
 }
 
-// isGone says that there is no file of ours at the path of a recording, which trying again does not change.
+// isGone says that there is no file of a recording to level, which trying again does not change.
 func isGone(err error) bool {
-	return errors.Is(err, discover.ErrMissing) || errors.Is(err, discover.ErrOutside) || errors.Is(err, discover.ErrNotFile)
+	return errors.Is(err, errNoOriginal) || errors.Is(err, discover.ErrMissing) || errors.Is(err, discover.ErrOutside) || errors.Is(err, discover.ErrNotFile)
 }
 
 // work does what the run asks with the file of a recording.

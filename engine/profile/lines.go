@@ -1,6 +1,7 @@
 package profile
 
 import (
+	"bytes"
 	"strings"
 
 	"github.com/pelletier/go-toml/v2/unstable"
@@ -11,11 +12,15 @@ func lines(text []byte) map[string]int {
 	at := map[string]int{}
 	var p unstable.Parser
 	p.Reset(text)
+	line, from := 1, 0 // where the last name begins; names come in the order of the text
 	note := func(name string, key unstable.Iterator) string {
 		for key.Next() {
 			name = strings.TrimPrefix(name+"."+string(key.Node().Data), ".")
+			if to := int(key.Node().Raw.Offset); to > from {
+				line, from = line+bytes.Count(text[from:to], []byte{'\n'}), to
+			}
 			if _, known := at[shortened(name)]; !known {
-				at[shortened(name)] = p.Shape(key.Node().Raw).Start.Line
+				at[shortened(name)] = line
 			}
 		}
 		return name

@@ -100,6 +100,9 @@ func Parse(name string, text []byte) (Profile, error) {
 		return Profile{}, Complaints{{Words: fmt.Sprintf("is larger than %d KiB", LargestFile>>10)}}
 	}
 	text = bytes.TrimPrefix(text, []byte("\ufeff")) // some editors begin every file with it
+	if c := refused(text); c.Words != "" {
+		return Profile{}, Complaints{c}
+	}
 	var given map[string]any
 	if err := toml.Unmarshal(text, &given); err != nil {
 		c := Complaint{Words: "is not TOML: " + strings.TrimPrefix(err.Error(), "toml: ")}

@@ -16,8 +16,12 @@ export function mount(button) {
   async function offer() {
     start.disabled = true;
     try {
-      const { profiles } = await get(form.dataset.profiles);
-      part.profiles.replaceChildren(...profiles.map(option));
+      const { profiles, problems } = await get(form.dataset.profiles);
+      const first = profiles.find(({ name }) => name === usual) ?? profiles[0];
+      part.profiles.replaceChildren(...[first, ...profiles.filter((p) => p !== first)].map(option));
+      const trouble = unusable(problems);
+      part.problems.hidden = !trouble;
+      part.problems.textContent = trouble;
       alike = new Set(profiles.map(({ mono }) => mono)).size < 2;
       how();
       start.disabled = false;
@@ -70,18 +74,32 @@ export function mount(button) {
   });
 }
 
-// brief is the start of what a profile says it does: to what loudness, with what ride, under what ceiling.
-function brief({ words }) {
-  const start = (title) => words.find((section) => section.title === title)?.words.slice(0, 2) ?? [];
-  return ["Loudness", "Ride", "Peaks"].flatMap(start).join(" ");
+const NAMED = 5; // files that are named; more would cover the choice
+
+// unusable says which files of the profiles folder are not among the profiles; "" if all are. A file can have several
+// things wrong with it, and the folder itself can be what cannot be read.
+export function unusable(problems) {
+  const files = [...new Set(problems.map(({ file }) => file))];
+  if (!files.length) return "";
+  if (!files[0].toLowerCase().endsWith(".toml")) return "The profiles folder cannot be read.";
+  const names = files.slice(0, NAMED).join(", ") + (files.length > NAMED ? `, and ${files.length - NAMED} more` : "");
+  return `${files.length === 1 ? "1 file" : `${files.length} files`} in the profiles folder cannot be used: ${names}.`;
 }
 
-function option(profile, index, all) {
-  return el("label", { class: "option" },
-    el("input", { type: "radio", name: "profile", value: profile.name, checked: index === Math.max(0, all.findIndex(({ name }) => name === usual)) }),
+// brief is the start of what a profile says it does: to what loudness, with what ride, under what ceiling; and that a
+// folder shares one gain.
+function brief({ words, group }) {
+  const start = (title, most) => words.find((section) => section.title === title)?.words.slice(0, most) ?? [];
+  return [...start("Loudness", group === "folder" ? 3 : 2), ...start("Ride", 1), ...start("Peaks", 1)].join(" ");
+}
+
+// option is a line for a profile. What it does in detail is told once it is chosen.
+function option(profile, index) {
+  return el("label", { class: "option profile" },
+    el("input", { type: "radio", name: "profile", value: profile.name, checked: index === 0 }),
     el("span", {},
-      el("b", {}, profile.name),
-      profile.source === "own" ? " (your own)" : null,
-      el("small", {}, profile.summary),
-      el("small", {}, brief(profile))));
+      el("span", { class: "title" },
+        el("span", {}, el("b", {}, profile.name), profile.source === "own" ? " (your own)" : null),
+        el("small", {}, profile.group === "folder" ? "One gain for a folder. " : null, profile.summary)),
+      el("small", { class: "more" }, brief(profile))));
 }

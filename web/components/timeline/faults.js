@@ -35,14 +35,16 @@ export class FaultMarks {
     this.box = el("div");
   }
 
-  // place puts the marks that are in view where they belong on the chart. heads are the first faults of each.
+  // place puts the marks that are in view where they belong on the chart, and says whether they are others than
+  // before. heads are the first faults of each.
   place(u) {
     const { over, scales: { x: { min, max } } } = u;
     const inView = this.faults.filter(({ at }) => at >= min && at <= max);
     const marks = clusters(inView, ({ at }) => over.offsetLeft + u.valToPos(at, "x"));
     this.heads = marks.map(({ faults: [first] }) => first);
     const shown = marks.map(({ faults }) => faults.map(({ at }) => at).join()).join(";");
-    if (shown !== this.shown || this.box.parentNode !== over.parentNode) { // a mark that goes takes its tip along
+    const others = shown !== this.shown;
+    if (others || this.box.parentNode !== over.parentNode) { // a mark that goes takes its tip along
       this.shown = shown;
       this.tip("");
       this.box.replaceChildren(...marks.map(({ faults }) => this.button(faults)));
@@ -53,6 +55,7 @@ export class FaultMarks {
       style.left = `${x}px`;
       style.top = `${over.offsetTop + over.offsetHeight}px`;
     });
+    return others;
   }
 
   button(faults) {

@@ -29,12 +29,13 @@ export function marks(u, { ink, font, target, ceiling, faults, playhead }) {
     line(pen, bbox.left, y, right, y);
     pen.setLineDash([]);
     pen.textAlign = "right";
-    pen.lineWidth = 4 * ratio;
-    pen.strokeStyle = ink.sheet;
-    pen.strokeText(words, right - 4 * ratio, y - 6 * ratio);
+    const wide = pen.measureText(words).width + 8 * ratio; // a ground, as curves may run under the words
+    pen.fillStyle = ink.sheet;
+    pen.globalAlpha = 0.85; // which do not vanish under it
+    pen.fillRect(right - wide, y - 18 * ratio, wide, 16 * ratio);
+    pen.globalAlpha = 1;
     pen.fillStyle = ink.ink;
     pen.fillText(words, right - 4 * ratio, y - 6 * ratio);
-    pen.lineWidth = ratio;
   };
   level(target, `target ${number(target)} LUFS`, [1, 3]);
   level(ceiling, `ceiling ${number(ceiling)} dBTP`, [6, 3]);

@@ -33,7 +33,7 @@ export class RideStrip {
   }
 
   // build draws it anew; axis and padding are those of the chart above, so that both share their times.
-  build({ width, ink, font, axis, padding, sync, playhead, placed }) {
+  build({ width, ink, font, axis, padding, sync, playhead, faults, placed }) {
     this.chart?.destroy();
     const [low, high] = this.range;
     this.chart = new uPlot({
@@ -44,7 +44,7 @@ export class RideStrip {
       cursor: { y: false, points: { show: false }, drag: { x: false, y: false }, sync },
       series: [{}, { stroke: ink.ink, width: 1.25, points: { show: false } }],
       axes: [{ show: false }, { ...axis, space: 22, incrs: [1, 2, 5, 10, 20], values: (_, splits) => splits.map((v) => signed(v, 0)) }],
-      hooks: { drawAxes: [(u) => zero(u, ink)], draw: [(u) => marks(u, { ink, font, faults: [], playhead: playhead() })], ready: [placed] },
+      hooks: { drawAxes: [(u) => zero(u, ink)], draw: [(u) => marks(u, { ink, font, faults: faults(), playhead: playhead() })], ready: [placed] },
     }, [this.x, this.db], this.plot);
   }
 

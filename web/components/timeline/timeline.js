@@ -108,7 +108,7 @@ class Timeline {
     const level = { ...axis, size: 48, gap: 14 };
     this.strip?.build({
       width: this.size().width, ink, font: FONT, axis: level, padding, sync: SYNC,
-      playhead: () => this.playhead, placed: (u) => this.seekable(u),
+      playhead: () => this.playhead, faults: () => this.marks.heads, placed: (u) => this.seekable(u),
     });
     const options = {
       ...this.size(),
@@ -132,7 +132,7 @@ class Timeline {
         draw: [(u) => {
           const ratio = devicePixelRatio;
           if (band) drawBand(u, { band, ink, top: u.bbox.top + u.bbox.height + BAND.from * ratio, height: BAND.height * ratio });
-          this.marks.place(u);
+          if (this.marks.place(u)) this.strip?.redraw();
           marks(u, { ink, font: FONT, target: this.target, ceiling: peak ? this.ceiling : NaN, faults: this.marks.heads, playhead: this.playhead });
         }],
         setCursor: [(u) => this.read(u)],
