@@ -32,7 +32,7 @@ func (p recordingPage) Deeds() []deed {
 	add("Range", rangeWords(p.Levelled), nil)
 	add("Gain", gainWords(plan), nil)
 	if r := plan.Ride; r != nil && r.FloorLift > 0.05 {
-		add("Pauses", fmt.Sprintf("lifted at the most %s dB over the quieter of their neighbours", audio.Number(float64(r.FloorLift), 1)), known(r.FloorAt))
+		add("Pauses", fmt.Sprintf("lifted at the most %s dB over the lower of the gains beside them", audio.Number(float64(r.FloorLift), 1)), known(r.FloorAt))
 	}
 	if c := plan.Compressor; c != nil { // whose threshold is a level before the steady gain
 		add("Compressor", tookWords(treated)+fmt.Sprintf("from %s LUFS on, %s:1, with a soft knee of %s dB and a release of %s ms", audio.Number(float64(c.Threshold+plan.Gain), 1),

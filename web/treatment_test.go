@@ -44,7 +44,7 @@ func TestDeeds(t *testing.T) {
 		"ridden": {&ridden, `Loudness: what people say came from −31.3 to −18.1 LUFS: +13.1 LU; −18.0 was aimed at
 Range: a loudness range of 20.1 LU became 6.2 LU
 Gain: rides between −1.7 and +10.5 dB where something is heard, slowly; +4.5 dB of it are steady
-Pauses: lifted at the most 1.8 dB over the quieter of their neighbours @0:18.2
+Pauses: lifted at the most 1.8 dB over the lower of the gains beside them @0:18.2
 Compressor: took 2.3 dB off on average: from −10.5 LUFS on, 3:1, with a soft knee of 6 dB and a release of 80 ms
 Peaks: held under −1.0 dBTP: more than 1 dB for 3.1 %, more than 3 dB for under 0.1 % of what is heard; 5.2 dB at the most @1:23.4
 Foreseen: −18.0 LUFS and −1.0 dBTP before it was encoded; −18.4 and −0.7 came out

@@ -17,7 +17,7 @@ func TestVoicesComeTogether(t *testing.T) {
 		name              string
 		shortest, longest float64    // pauses, s
 		residual          [4]float64 // LU at most, by difference; in the mean over programmes
-		over              [4]float64 // dB, mean gain of a pause over the quieter neighbour
+		over              [4]float64 // dB, mean gain of a pause over the lower of those beside it
 	}{
 		{"pauses from 0.4 s", 0.4, 1.5, [4]float64{1.2, 0.6, 0.6, 0.6}, [4]float64{2, 2, 3, 3}},
 		{"pauses from 0.25 s", 0.25, 0.4, [4]float64{1.5, 0.8, 0.8, 0.8}, [4]float64{3, 3, 5, 5}},
@@ -51,7 +51,7 @@ func TestVoicesComeTogether(t *testing.T) {
 				t.Errorf("%s, %v dB: the gain moves by %.2f dB/s within a phrase", c.name, difference, m)
 			}
 			if m := mean(over); m > c.over[k] {
-				t.Errorf("%s, %v dB: pauses are %.1f dB over their quieter neighbour", c.name, difference, m)
+				t.Errorf("%s, %v dB: pauses are %.1f dB over the lower gain beside them", c.name, difference, m)
 			}
 			if m := mean(out); m > 5 {
 				t.Errorf("%s, %v dB: the range came out at %.1f LU", c.name, difference, m)
