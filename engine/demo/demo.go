@@ -31,7 +31,6 @@ type Item struct {
 	Path    string // relative to the shelf, forward slashes
 	About   string // one sentence
 	Damaged bool   // should end held or failed
-	TooWide bool   // its range is too wide for a playout library: should end held
 
 	Loudness audio.LUFS         // integrated, of what Build returns; undefined for damaged items
 	Spec     media.Spec         // how it is stored
