@@ -16,8 +16,7 @@ const (
 	// audibleFloor is the loudness, LUFS, under which nobody hears the noise in a pause of a levelled copy.
 	audibleFloor = -60
 	// drifted is the difference of length, s, past which something is wrong: a lossy encoder pads less.
-	drifted   = 0.05
-	shortTerm = 30 // steps, the window of short-term loudness
+	drifted = 0.05
 	// rangeLeast is how long, s, a recording must be for its loudness range to be held against it. It is not what it
 	// should be under a minute (EBU R 128, note 2), but it is what the ride went by.
 	rangeLeast = 20.0
@@ -132,19 +131,12 @@ func (d *doubts) outcome() {
 
 // lifting is about noise that is lifted with the sound, or in the pauses.
 func (d *doubts) lifting() {
-	softest := func(v float32) float64 { return -float64(v) }
-	most, at := d.plan.Gain, momentOf(heardOnly(d.before.Timeline.ShortTerm, d.before.Timeline.Active), shortTerm, softest)
-	if ride := d.plan.Ride; ride != nil {
-		most += ride.Most
-		for i, on := range d.before.Timeline.Active {
-			if on && audio.DB(ride.Gain[i]) >= ride.Most-0.01 {
-				at = new(seconds(i))
-				break
-			}
-		}
+	most := d.plan.Gain
+	if d.plan.Ride != nil {
+		most += d.plan.Ride.Most
 	}
 	if most > d.p.Harm.Lift {
-		d.add("lifted", at, "it had to be lifted by %.1f dB, so its noise is louder too", most)
+		d.add("lifted", d.mostLifted(), "it had to be lifted by %.1f dB, so its noise is louder too", most)
 	}
 	if ride := d.plan.Ride; ride != nil && ride.FloorLift > d.p.Harm.Floor {
 		step := int(ride.FloorAt * audio.StepsPerSecond)
@@ -152,6 +144,15 @@ func (d *doubts) lifting() {
 			d.add("floor", new(ride.FloorAt), "the noise in a pause is lifted %.1f dB over that beside it", ride.FloorLift)
 		}
 	}
+}
+
+// mostLifted is where the gain is highest of what is heard, or if it is steady, where the softest passage is.
+func (d *doubts) mostLifted() *audio.Seconds {
+	active := d.before.Timeline.Active
+	if d.plan.Ride != nil {
+		return momentOf(heardOnly(d.plan.Ride.Gain, active), 1, nil)
+	}
+	return momentOf(heardOnly(d.before.Timeline.ShortTerm, active), shortTerm, func(v float32) float64 { return -float64(v) })
 }
 
 // limiting is about a ceiling that works too hard.

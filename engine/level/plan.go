@@ -8,6 +8,7 @@ import (
 
 	"evenshelf/engine/audio"
 	"evenshelf/engine/dynamics"
+	"evenshelf/engine/meter"
 	"evenshelf/engine/profile"
 	"evenshelf/engine/ride"
 )
@@ -37,7 +38,8 @@ func MakePlan(t Task, a *Analysis) (Plan, error) {
 		plan.Ride, plan.Wider = rideOf(p, a, plan.Anchor, nil)
 	}
 	if plan.Ride != nil {
-		foreseen = plan.anchoredIn(a, plan.ridden(a))
+		ridden := plan.ridden(a)
+		foreseen = plan.anchoredIn(a, meter.Together(ridden), ridden)
 	}
 	if p.Compressor.Ratio > 1 {
 		plan.Compressor = compression(p, a, foreseen)
@@ -56,7 +58,7 @@ func MakePlan(t Task, a *Analysis) (Plan, error) {
 	if t.Shared != nil {
 		plan.Aim = a.Integrated + audio.LUFS(plan.Gain)
 	}
-	fits := a.TruePeak <= p.Ceiling+peakTolerance && plan.Ride == nil && fitsWord(p, a)
+	fits := a.TruePeak <= p.Ceiling+peakTolerance && plan.Ride == nil && a.Info.HasWord(p.Delivered.Bits)
 	switch {
 	case p.Within == profile.Leave && fits && abs(audio.LU(wanted)) <= p.Tolerance:
 		plan.leave("already within the profile")
@@ -96,11 +98,6 @@ func hasLoudness(a *Analysis) error {
 	default:
 		return errors.New("nothing to level: nothing in it is louder than −70 LUFS")
 	}
-}
-
-// fitsWord reports whether a recording has the word length a profile asks for.
-func fitsWord(p profile.Profile, a *Analysis) bool {
-	return p.Delivered.Bits == 0 || a.Info.HasWord(p.Delivered.Bits)
 }
 
 // anchorOf returns what a profile brings to the target in a recording, and its loudness: speech only if
@@ -146,21 +143,13 @@ func rideOf(p profile.Profile, a *Analysis, anchor profile.Anchor, moved []float
 	}
 	out = &Ride{Speed: p.Ride.Speed, Kept: audio.Ratio(r.Kept), Range: audio.LU(r.Range), Gain: r.Gain,
 		FloorLift: audio.DB(r.FloorLift), FloorAt: audio.Seconds(r.FloorAt)}
-	out.Least, out.Most = audio.DB(audio.Undefined), audio.DB(audio.Undefined)
+	out.Least, out.Most = audio.DB(math.Inf(1)), audio.DB(math.Inf(-1))
 	for i, on := range r.Active {
 		if g := audio.DB(r.Gain[i]); on {
-			out.Least, out.Most = least(out.Least, g), -least(-out.Most, -g)
+			out.Least, out.Most = min(out.Least, g), max(out.Most, g)
 		}
 	}
 	return out, audio.LU(r.Over)
-}
-
-// least is the lesser of two gains, of which the first may be undefined.
-func least(a, b audio.DB) audio.DB {
-	if a < b {
-		return a
-	}
-	return b
 }
 
 func abs[F ~float64](v F) F {

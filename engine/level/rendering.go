@@ -18,11 +18,7 @@ type rendering struct {
 }
 
 func (j *turn) rendering(r meter.Reading, t meter.Timeline, w Work) rendering {
-	anchored := r.Integrated
-	if j.plan.Anchor == profile.Speech {
-		anchored = speechLoudness(j.before.Timeline.Course, t)
-	}
-	return rendering{r, t, anchored, w}
+	return rendering{r, t, j.plan.anchoredIn(j.before, r.Integrated, t), w}
 }
 
 // shifted is the source with a steady gain.
@@ -48,12 +44,12 @@ func (plan Plan) ridden(a *Analysis) meter.Timeline {
 	return a.Timeline.Timeline.Ridden(func(i int) float64 { return (float64(g[i]) + float64(g[i+1])) / 2 })
 }
 
-// anchoredIn is the loudness of the plan's anchor in a timeline of the recording.
-func (plan Plan) anchoredIn(a *Analysis, t meter.Timeline) audio.LUFS {
+// anchoredIn is the loudness of the plan's anchor in a rendering of the recording, by its integrated loudness and timeline.
+func (plan Plan) anchoredIn(a *Analysis, integrated audio.LUFS, t meter.Timeline) audio.LUFS {
 	if plan.Anchor == profile.Speech {
 		return speechLoudness(a.Timeline.Course, t)
 	}
-	return meter.Together(t)
+	return integrated
 }
 
 // moved is what a rendering did to the level in each of n steps, dB.

@@ -8,8 +8,8 @@ import (
 )
 
 const (
-	orderBlock = 3 * audio.StepsPerSecond  // steps of which the order is looked at
-	orderLeast = 60 * audio.StepsPerSecond // under a minute there are too few
+	shortTerm  = 3 * audio.StepsPerSecond  // steps, the window of short-term loudness
+	orderLeast = 60 * audio.StepsPerSecond // steps: under a minute there are too few blocks to have an order
 )
 
 // treatmentOf sums up what a rendering did to the sound of a recording.
@@ -57,9 +57,9 @@ func order(before, after []float32, integrated audio.LUFS) (rho audio.Ratio, at 
 	}
 	var a, b []float64
 	var begins []int
-	for i := orderBlock - 1; i < n; i += orderBlock {
+	for i := shortTerm - 1; i < n; i += shortTerm {
 		if x, y := float64(before[i]), float64(after[i]); x > max(-70, float64(integrated)-20) && y > -70 {
-			a, b, begins = append(a, x), append(b, y), append(begins, i+1-orderBlock)
+			a, b, begins = append(a, x), append(b, y), append(begins, i+1-shortTerm)
 		}
 	}
 	a, b = ride.Ranks(a), ride.Ranks(b)

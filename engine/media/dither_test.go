@@ -217,3 +217,16 @@ func TestSlackBoundsRounding(t *testing.T) {
 		t.Error("slack where nothing is rounded")
 	}
 }
+
+// Slack is how far, dB, rounding can carry a sample over a peak: 1 LSB of dither and ½ of rounding. It is 0 for
+// floating point and lossy codecs. At 16 bits and −1 dBTP it is 0.0004 dB.
+func (s Spec) Slack(peak audio.DBTP) audio.DB {
+	if s.Float || s.BitDepth == 0 {
+		return 0
+	}
+	steps := 1.5
+	if s.Plain {
+		steps = 0.5
+	}
+	return audio.DB(audio.ToDB(1 + steps*math.Ldexp(1, 1-s.BitDepth)/peak.Linear()))
+}

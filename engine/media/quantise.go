@@ -3,8 +3,6 @@ package media
 import (
 	"math"
 	"math/rand/v2"
-
-	"evenshelf/engine/audio"
 )
 
 // quantiser rounds one channel of float samples to integers of so many bits with triangular dither, or plainly.
@@ -33,19 +31,6 @@ func newQuantisers(spec Spec) []quantiser {
 		q[c] = quantiser{scale: full, low: -full, high: full - 1, plain: spec.Plain, noise: *rand.NewPCG(1, uint64(c))}
 	}
 	return q
-}
-
-// Slack is how far, dB, rounding can carry a sample over a peak: 1 LSB of dither and ½ of rounding. It is 0 for
-// floating point and lossy codecs. At 16 bits and −1 dBTP it is 0.0004 dB.
-func (s Spec) Slack(peak audio.DBTP) audio.DB {
-	if s.Float || s.BitDepth == 0 {
-		return 0
-	}
-	steps := 1.5
-	if s.Plain {
-		steps = 0.5
-	}
-	return audio.DB(audio.ToDB(1 + steps*math.Ldexp(1, 1-s.BitDepth)/peak.Linear()))
 }
 
 // quantise writes the integers for src to dst, which must be as long. Values past full scale, after

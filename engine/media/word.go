@@ -30,5 +30,5 @@ func (s Spec) WithWord(bits int) Spec {
 
 // HasWord reports whether a recording has the word length that WithWord would give it. Lossy ones always do.
 func (i Info) HasWord(bits int) bool {
-	return i.BitDepth == 0 || !i.Float && i.BitDepth == wordOf(i.Container, bits)
+	return bits == 0 || i.BitDepth == 0 || !i.Float && i.BitDepth == wordOf(i.Container, bits)
 }
