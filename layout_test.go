@@ -14,14 +14,15 @@ import (
 // way; a room that is not listed may not exist.
 var mayImport = map[string][]string{
 	"engine/audio":    {},
-	"engine/media":    {"engine/audio"},
+	"engine/tags":     {"engine/audio"},
+	"engine/media":    {"engine/audio", "engine/tags"},
 	"engine/meter":    {"engine/audio"},
 	"engine/faults":   {"engine/audio"},
 	"engine/speech":   {"engine/audio"},
 	"engine/profile":  {"engine/audio"},
 	"engine/dynamics": {"engine/audio"},
 	"engine/ride":     {},
-	"engine/level":    {"engine/audio", "engine/media", "engine/meter", "engine/speech", "engine/faults", "engine/profile", "engine/ride", "engine/dynamics"},
+	"engine/level":    {"engine/audio", "engine/media", "engine/tags", "engine/meter", "engine/speech", "engine/faults", "engine/profile", "engine/ride", "engine/dynamics"},
 	"engine/demo":     {"engine/audio", "engine/media", "engine/meter"},
 	"migrations":      {},
 	"store":           {"engine", "migrations"},

@@ -180,10 +180,14 @@ func writtenWords(d profile.Delivered) string {
 	if d.Bits > 0 {
 		s = fmt.Sprintf("with %d bits", d.Bits)
 	}
-	if d.Dither == profile.Triangular {
+	switch d.Dither {
+	case profile.Triangular:
 		return s + ", dithered where that is shorter than what was worked with"
+	case profile.Shaped:
+		return s + ", dithered with shaped noise where that is shorter than what was worked with"
+	default:
+		return s + ", without dither"
 	}
-	return s + ", without dither"
 }
 
 // share is a part of 1 in percent; a little is said to be little, not none.

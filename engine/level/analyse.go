@@ -50,7 +50,8 @@ func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error
 		fault, talk = faults.New(src.Format()), newVoices(src.Format())
 		others = append(others, func(b audio.Block) { fault.Write(b); talk.write(b) })
 	}
-	frames, err := audio.Spread(src, m.Write, others...)
+	identity := newFingerprint(src.Format())
+	frames, err := audio.Spread(src, func(b audio.Block) { m.Write(b); identity.write(b) }, others...)
 	damage, err := damageOf(src, frames, err)
 	if err != nil {
 		return nil, err
@@ -62,6 +63,7 @@ func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error
 	a.FormatName, a.Decoder, a.Engine, a.Info = src.Info().FormatName(), src.Info().Decoder, Version, src.Info()
 	a.Faults = append(damage, unplaced(src.Format().Layout)...)
 	a.Reading, a.Timeline.Timeline = m.Finish()
+	a.AudioHash = identity.sum()
 	if o.LoudnessOnly {
 		return a, nil
 	}

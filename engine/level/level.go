@@ -32,9 +32,11 @@ type Analysis struct {
 	meter.Reading
 	faults.Condition
 	Dialogue
-	Decoder string         `json:"decoder"`
-	Engine  string         `json:"engine"`
-	Faults  []faults.Fault `json:"faults"` // never nil
+	Decoder string `json:"decoder"`
+	Engine  string `json:"engine"`
+	// AudioHash is of the decoded samples (see fingerprint): the same sound has the same, whatever its file is called and tagged.
+	AudioHash string         `json:"audio_hash"`
+	Faults    []faults.Fault `json:"faults"` // never nil
 
 	Info     media.Info `json:"-"`
 	Timeline Timeline   `json:"-"`

@@ -8,6 +8,7 @@ import (
 
 	"evenshelf/engine/audio"
 	"evenshelf/engine/dynamics"
+	"evenshelf/engine/media"
 	"evenshelf/engine/meter"
 	"evenshelf/engine/profile"
 	"evenshelf/engine/ride"
@@ -58,7 +59,7 @@ func MakePlan(t Task, a *Analysis) (Plan, error) {
 	if t.Shared != nil {
 		plan.Aim = a.Integrated + audio.LUFS(plan.Gain)
 	}
-	fits := a.TruePeak <= p.Ceiling+peakTolerance && plan.Ride == nil && a.Info.HasWord(p.Delivered.Bits)
+	fits := a.TruePeak <= p.Ceiling+peakTolerance && plan.Ride == nil && wish(p).MetBy(a.Info)
 	switch {
 	case p.Within == profile.Leave && fits && abs(audio.LU(wanted)) <= p.Tolerance:
 		plan.leave("already within the profile")
@@ -69,6 +70,19 @@ func MakePlan(t Task, a *Analysis) (Plan, error) {
 		plan.Reason = plan.words(p)
 	}
 	return plan, nil
+}
+
+// wish is what a profile asks of the file.
+func wish(p profile.Profile) media.Wish {
+	d := p.Delivered
+	w := media.Wish{
+		BitRate: 1000 * d.BitRate, Bits: d.Bits, Plain: d.Dither == profile.NoDither, Shaped: d.Dither == profile.Shaped,
+		InPlace: d.Film == profile.ReplaceTrack, Stereo: d.Downmix == profile.StereoMix, Title: fmt.Sprintf("Levelled (%s)", p.Name),
+	}
+	if d.Format != profile.OwnFormat {
+		w.Format = string(d.Format)
+	}
+	return w
 }
 
 // compression is a profile's compressor for a recording whose anchor has a loudness after the ride. The threshold goes by

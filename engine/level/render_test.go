@@ -37,7 +37,7 @@ func TestClosestRenderingIsDelivered(t *testing.T) {
 	if err := j.foresee(ctx); err != nil {
 		t.Fatal(err)
 	}
-	spec := e.Media.SpecFor(j.before.Info)
+	spec := e.Media.SpecFor(j.before.Info, media.Wish{})
 	spec.TagsFrom = source
 	best, last, plan := math.Inf(1), 0.0, j.plan
 	for more, n := true, 0; more && n < mostRenders; n++ {

@@ -7,7 +7,6 @@ import (
 	"evenshelf/engine/audio"
 	"evenshelf/engine/media"
 	"evenshelf/engine/meter"
-	"evenshelf/engine/profile"
 )
 
 const (
@@ -51,9 +50,8 @@ func (j *turn) tell(o *Outcome, r rendering) {
 // deliver renders until no rendering comes closer to the aim, and leaves the one that came closest in
 // scratch: a lossy encoder may answer the smallest change of gain with a jump. It returns the extension.
 func (j *turn) deliver(ctx context.Context, scratch string, o *Outcome) (string, error) {
-	spec := j.engine.Media.SpecFor(j.before.Info).WithWord(j.plan.Delivered.Bits)
+	spec := j.engine.Media.SpecFor(j.before.Info, wish(j.task.Profile))
 	spec.TagsFrom = j.source
-	spec.Plain = j.plan.Delivered.Dither == profile.NoDither
 	if err := j.foresee(ctx); err != nil {
 		return "", err
 	}

@@ -10,6 +10,8 @@ import (
 	"slices"
 	"strconv"
 	"strings"
+
+	"evenshelf/engine/tags"
 )
 
 // tagSource is the recording whose tags, chunks and pictures a delivery carries on. A nil tagSource
@@ -104,14 +106,6 @@ func (t *tagSource) body(c chunk) io.Reader {
 	return io.MultiReader(bytes.NewReader(head), io.NewSectionReader(t.f, c.start+end, c.len-end))
 }
 
-// stale reports whether a tag states a level or a length that the new file no longer has: anything that
-// speaks of a gain, Opus's R128_ tags, and the "…NORM" and "…SMPB" notes of MP4 players.
-func stale(name string) bool {
-	name = strings.ToUpper(name)
-	return strings.Contains(name, "GAIN") || strings.HasPrefix(name, "R128_") ||
-		strings.HasSuffix(name, "NORM") || strings.HasSuffix(name, "SMPB")
-}
-
 // technical tags describe the file they were in, not the recording. Where people name the tags, as in FLAC,
 // Ogg and MP3, the names after the first mean what they say and are kept.
 var technical = []string{
@@ -132,20 +126,20 @@ func (t *Toolbox) ffmpegTags(ctx context.Context, src *tagSource, pictures bool)
 		return nil, err
 	}
 	args := []string{"-map_metadata", "-1", "-map_chapters", "1"}
-	tags := map[string]string{}
+	kept := map[string]string{}
 	leaveOut := technical
 	if slices.Contains([]string{"flac", "ogg", "mp3"}, src.kind.container) {
 		leaveOut = technical[:1]
 	}
 	if s := p.sound(); s != nil { // Ogg keeps its tags on the stream, the others on the file
-		keepTags(tags, s.Tags, leaveOut)
+		keepTags(kept, s.Tags, leaveOut)
 		if language := s.Tags["language"]; src.kind.demuxer == "mov" && language != "" {
 			args = append(args, "-metadata:s:a:0", "language="+language)
 		}
 	}
-	keepTags(tags, p.Format.Tags, leaveOut)
-	for _, name := range slices.Sorted(maps.Keys(tags)) {
-		args = append(args, "-metadata", name+"="+tags[name])
+	keepTags(kept, p.Format.Tags, leaveOut)
+	for _, name := range slices.Sorted(maps.Keys(kept)) {
+		args = append(args, "-metadata", name+"="+kept[name])
 	}
 	if pictures {
 		for n, picture := range p.pictures() {
@@ -165,7 +159,7 @@ func keepTags(dst, src map[string]string, leaveOut []string) {
 	for name, value := range src {
 		name, value = strings.ReplaceAll(name, "\x00", ""), strings.ReplaceAll(value, "\x00", "")
 		lower := strings.ToLower(name)
-		if name == "" || strings.Contains(name, "=") || len(value) > maxTag || stale(name) || slices.Contains(leaveOut, lower) || strings.HasPrefix(lower, "_statistics") {
+		if name == "" || strings.Contains(name, "=") || len(value) > maxTag || tags.Stale(name) || slices.Contains(leaveOut, lower) || strings.HasPrefix(lower, "_statistics") {
 			continue
 		}
 		dst[name] = value

@@ -17,7 +17,7 @@ type ffWriter struct {
 	child *child
 	pack  *packer
 	f     *os.File
-	head  []byte // metadata to put in front of a FLAC's sound; nil: FFmpeg's stays
+	carry carrier
 }
 
 func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *tagSource) (*ffWriter, error) {
@@ -41,31 +41,18 @@ func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *
 		args = append(args, guarded(tags.kind)...)
 		files = []*os.File{tags.f, f}
 	}
-	args = append(args, "-map", "0:a:0")
-	var head []byte
-	var carried []string
-	var err error
-	if spec.Codec == "flac" && tags != nil && tags.kind.container == "flac" {
-		if head, err = flacHead(spec, tags); err == nil {
-			carried = []string{"-map_metadata", "-1", "-metadata_header_padding", strconv.Itoa(len(head) + flacPadding)}
-		}
-	} else {
-		carried, err = t.ffmpegTags(ctx, tags, muxer != "ogg" && muxer != "aiff")
-	}
+	carry, err := t.carrierFor(ctx, spec, tags)
 	if err != nil {
 		return nil, err
 	}
-	args = append(args, carried...)
-	if mask := unusualMask(spec.Format.Layout); spec.Codec == "flac" && head == nil {
-		args = append(args, "-metadata", maskComment+"="+mask) // empty: none, not even the source's
-	}
+	args = append(append(args, "-map", "0:a:0"), carry.args()...)
 	args = append(args, t.encoderArgs(spec)...)
 	args = append(args, "-fflags", "+bitexact", "-f", muxer, fmt.Sprintf("file:/dev/fd/%d", 2+len(files)))
 	c, err := startChild(ctx, false, files, t.ffmpeg, args...)
 	if err != nil {
 		return nil, err
 	}
-	w := &ffWriter{child: c, pack: newPacker(pcm), f: f, head: head}
+	w := &ffWriter{child: c, pack: newPacker(pcm), f: f, carry: carry}
 	if err := w.send(streamHead(pcm)); err != nil {
 		c.kill()
 		return nil, err
@@ -139,10 +126,10 @@ func (w *ffWriter) send(b []byte) error {
 }
 
 func (w *ffWriter) finish() error {
-	if err := w.child.wait(); err != nil || w.head == nil {
+	if err := w.child.wait(); err != nil {
 		return err
 	}
-	return putHead(w.f, w.head)
+	return w.carry.finish(w.f)
 }
 
 func (w *ffWriter) abort() { w.child.kill() }

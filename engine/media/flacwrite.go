@@ -12,6 +12,7 @@ import (
 	"github.com/mewkiz/flac/meta"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/tags"
 )
 
 // flacBlock is the length of a FLAC frame, the reference encoder's default.
@@ -53,17 +54,17 @@ func newFLACWriter(f *os.File, spec Spec, tags *tagSource) (*flacWriter, error) 
 
 // flacTags returns the metadata blocks: comments and pictures of a FLAC source, and the loudspeaker
 // positions where they are not the usual ones.
-func flacTags(spec Spec, tags *tagSource) []*meta.Block {
+func flacTags(spec Spec, src *tagSource) []*meta.Block {
 	comment := &meta.VorbisComment{Vendor: "evenshelf"}
 	if mask := unusualMask(spec.Format.Layout); mask != "" {
 		comment.Tags = append(comment.Tags, [2]string{maskComment, mask})
 	}
 	var pictures []*meta.Block
-	if tags != nil && tags.kind.container == "flac" {
-		if m, err := readFLACBlocks(io.NewSectionReader(tags.f, tags.kind.start, tags.size-tags.kind.start), true); err == nil {
+	if src != nil && src.kind.container == "flac" {
+		if m, err := readFLACBlocks(io.NewSectionReader(src.f, src.kind.start, src.size-src.kind.start), true); err == nil {
 			pictures = m.pictures
 			for _, c := range m.comments {
-				if !stale(c[0]) && !strings.EqualFold(c[0], maskComment) {
+				if !tags.Stale(c[0]) && !strings.EqualFold(c[0], maskComment) {
 					comment.Tags = append(comment.Tags, c)
 				}
 			}

@@ -77,6 +77,7 @@ type Spec struct {
 	BitDepth  int // integer PCM and FLAC: 8, 16, 24, 32; float PCM: 32, 64
 	Float     bool
 	Plain     bool   // integers are rounded as they are, without dither
+	Shaped    bool   // the noise of dither is shaped
 	BitRate   int    // bit/s for lossy codecs, 0 for the codec's best quality
 	Extension string // of the delivered file, with its dot: ".wav"
 	Note      string // why this is not the source's own format, or empty

@@ -25,20 +25,26 @@ var lossyCodecs = map[string]lossy{
 	"aac":    {"aac", "ipod", ".m4a", "mp4", []int{8000, 11025, 12000, 16000, 22050, 24000, 32000, 44100, 48000, 64000, 88200, 96000}, 8},
 }
 
-// SpecFor says how a recording is best delivered: in its own format where that can be written, else as
+// SpecFor says how a recording is best delivered: as wished, or in its own format where that can be written, else as
 // FLAC, else as WAV, and then Note says why. Integer depths are kept, 8 bits and other odd depths grow to
 // the next of 16, 24 and 32; lossy bit rates are kept. Of a film only the sound is delivered.
-func (t *Toolbox) SpecFor(info Info) Spec {
+func (t *Toolbox) SpecFor(info Info, w Wish) Spec {
 	var why []string
 	if info.Video {
 		why = append(why, "only the sound is delivered: films are not written yet")
 	}
 	s, note := t.ownFormat(info)
+	if w.Format != "" && w.Format != formatOf(info) {
+		s, note = t.inFormat(w.Format, info)
+	}
 	if note != "" {
 		why = append(why, note)
 	}
-	s.Format, s.Note = info.Format, strings.Join(why, "; ")
-	return s
+	s.Format, s.Note, s.Plain, s.Shaped = info.Format, strings.Join(why, "; "), w.Plain, w.Shaped
+	if w.BitRate != 0 {
+		s.BitRate = w.BitRate
+	}
+	return s.withWord(w.Bits)
 }
 
 func (t *Toolbox) ownFormat(info Info) (Spec, string) {

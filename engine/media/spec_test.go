@@ -61,7 +61,7 @@ func TestSpecFor(t *testing.T) {
 			if box.FFmpeg() == "" {
 				want, note = test.without, test.noteOut
 			}
-			s := box.SpecFor(test.info)
+			s := box.SpecFor(test.info, Wish{})
 			if got := fmt.Sprint(s.Container, " ", s.Codec, " ", s.BitDepth, " ", s.Extension); got != want {
 				t.Errorf("%s: %s, want %s", test.name, got, want)
 			}
@@ -84,7 +84,7 @@ func TestSourceToDelivery(t *testing.T) {
 	for name, file := range formats(t) {
 		source := save(t, "a."+name, file)
 		snd, info := decode(t, box, source)
-		spec := box.SpecFor(info)
+		spec := box.SpecFor(info, Wish{})
 		spec.TagsFrom = source
 		if spec.Note != "" || spec.Extension != filepath.Ext(source) {
 			t.Errorf("%s: %+v", name, spec)

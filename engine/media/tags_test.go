@@ -48,7 +48,7 @@ func TestTagsThatSoundTechnical(t *testing.T) {
 		source, path := filepath.Join(dir, name), filepath.Join(dir, "copy-"+name)
 		run(t, "ffmpeg", append(append([]string{"-v", "error", "-i", wav}, args...), source)...)
 		r := open(t, box, source)
-		spec := box.SpecFor(r.Info())
+		spec := box.SpecFor(r.Info(), Wish{})
 		spec.TagsFrom = source
 		write(t, box, path, spec, snd)
 		wanted := []string{"language=eng"}

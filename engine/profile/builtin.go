@@ -23,7 +23,7 @@ var usual = Profile{
 	Ride:       Ride{Speed: Still, Fastest: 2, Strength: Evening, Range: 20, Lift: 20, Cut: 20, Silence: 3, Fades: KeepFades},
 	Compressor: Compressor{Over: 3, Ratio: 1, Knee: 6, Release: 150},
 	Limiter:    forMusic,
-	Delivered:  Delivered{Dither: Triangular},
+	Delivered:  Delivered{Format: OwnFormat, Dither: Triangular, Film: AddTrack, Downmix: AllChannels},
 	Harm: Harm{
 		Over1: 0.5, Over3: 0.25, Over6: 0.05, Lift: 40, Floor: 6, Order: -1, RangeOver: 3, RangeLost: 6, SpeechShare: 0.1, SpeechLikelihood: 0.95,
 	},

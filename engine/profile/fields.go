@@ -22,6 +22,7 @@ var fields = []Field{
 	{Name: "group", Means: "Which recordings share one gain, so that the balance between them stays.", Words: []Word{
 		{string(Alone), "none do: each recording has a gain of its own"},
 		{string(Folder), "those of one folder, which are brought to the target as one programme; there can be no ride and no compressor then, and the anchor is the programme"},
+		{string(Album), "the same for those whose tags name one album; one without is alone"},
 	}},
 
 	{Name: "ride.speed", Means: "How fast the ride, the slow gain curve of a recording, follows. With none nothing else in this table matters.", Needed: true, Words: []Word{
@@ -56,10 +57,29 @@ var fields = []Field{
 	{Name: "limiter.hold_ms", Means: "How long the gain stays low after a peak. Long keeps low notes clean, short touches less of the sound.", Unit: "ms", Low: 0, High: 100},
 	{Name: "limiter.release_ms", Means: "How long the limiter takes to let go.", Unit: "ms", Low: 5, High: 2000},
 
+	{Name: "delivered.format", Means: "What a recording is delivered in.", Words: []Word{
+		{string(OwnFormat), "the format of the source"},
+		{string(WAV), "WAV, RF64 where it is longer than 4 GiB"},
+		{string(FLAC), "FLAC"},
+		{string(MP3), "MP3"},
+		{string(M4A), "AAC in M4A"},
+		{string(Vorbis), "Vorbis in Ogg"},
+		{string(Opus), "Opus in Ogg"},
+	}},
+	{Name: "delivered.bit_rate_kbps", Means: "Bit rate of a lossy format; 0 is the source's own, or the format's best if that has none.", Unit: "kbit/s", Numbers: []int{0, 32, 48, 64, 80, 96, 112, 128, 160, 192, 224, 256, 320}},
 	{Name: "delivered.bits", Means: "Word length of the delivered sound; 0 is the source's own.", Unit: "bits", Numbers: []int{0, 16, 24, 32}},
 	{Name: "delivered.dither", Means: "The noise that hides rounding to a word length.", Words: []Word{
 		{string(Triangular), "two independent uniform draws, ±1 LSB in all"},
+		{string(Shaped), "the same, its noise moved to where hearing is least sensitive; for the last step before listening"},
 		{string(NoDither), "plain rounding"},
+	}},
+	{Name: "delivered.film", Means: "Where the levelled sound of a film goes.", Words: []Word{
+		{string(AddTrack), "a further track, beside all that were there"},
+		{string(ReplaceTrack), "in the place of the track it was made from"},
+	}},
+	{Name: "delivered.downmix", Means: "What becomes of sound with more than two channels.", Words: []Word{
+		{string(AllChannels), "all channels stay"},
+		{string(StereoMix), "mixed down to two, with the coefficients of ITU-R BS.775"},
 	}},
 
 	{Name: "harm.limited_1db", Means: "Held if more than 1 dB is limited for more than this share of the time in which something is heard.", Low: 0, High: 1},

@@ -59,6 +59,7 @@ type Group string
 const (
 	Alone  Group = "none"   // each recording has a gain of its own
 	Folder Group = "folder" // the recordings of one folder are brought to the target as one programme
+	Album  Group = "album"  // the same for the recordings whose tags name one album; those without one are alone
 )
 
 // Speed of the ride.
@@ -129,9 +130,45 @@ type Limiter struct {
 
 // Delivered says how the sound is written.
 type Delivered struct {
-	Bits   int    `json:"bits" toml:"bits"` // word length: 16, 24, 32, or 0 for the source's own
-	Dither Dither `json:"dither" toml:"dither"`
+	Format  Format `json:"format" toml:"format"`
+	BitRate int    `json:"bit_rate_kbps" toml:"bit_rate_kbps"` // of a lossy format; 0 is the source's, or the best if it has none
+	Bits    int    `json:"bits" toml:"bits"`                   // word length: 16, 24, 32, or 0 for the source's own
+	Dither  Dither `json:"dither" toml:"dither"`
+	Film    Film   `json:"film" toml:"film"`
+	Downmix Mix    `json:"downmix" toml:"downmix"`
 }
+
+// Format is what a recording is delivered in.
+type Format string
+
+// The formats.
+const (
+	OwnFormat Format = "source" // that of the source
+	WAV       Format = "wav"
+	FLAC      Format = "flac"
+	MP3       Format = "mp3"
+	M4A       Format = "m4a" // AAC
+	Vorbis    Format = "ogg" // Vorbis in Ogg
+	Opus      Format = "opus"
+)
+
+// Film says where the levelled sound of a film goes.
+type Film string
+
+// The places.
+const (
+	AddTrack     Film = "add"     // a further track, beside all that were there
+	ReplaceTrack Film = "replace" // in the place of the track it was made from
+)
+
+// Mix is what becomes of sound with more than two channels.
+type Mix string
+
+// The mixes.
+const (
+	AllChannels Mix = "none"   // all stay
+	StereoMix   Mix = "stereo" // mixed down to two, with the coefficients of ITU-R BS.775
+)
 
 // Dither is the noise that hides rounding to a word length.
 type Dither string
@@ -139,6 +176,7 @@ type Dither string
 // The kinds.
 const (
 	Triangular Dither = "triangular" // two independent uniform draws, ±1 LSB in all
+	Shaped     Dither = "shaped"     // the same, its noise moved to where hearing is least sensitive
 	NoDither   Dither = "none"
 )
 

@@ -155,7 +155,7 @@ func TestValidateKnowsEveryBound(t *testing.T) {
 			}
 		case f.Numbers != nil:
 			v.SetInt(20)
-			if got := says(p, f); got != "20 is not one of 0, 16, 24, 32" {
+			if got := says(p, f); !strings.HasPrefix(got, "20 is not one of 0, ") {
 				t.Errorf("%s 20: %q", f.Name, got)
 			}
 		case v.Kind() == reflect.Float64:

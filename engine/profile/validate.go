@@ -106,12 +106,12 @@ type rule struct {
 }
 
 func (p Profile) rules() []rule {
-	rides, together := p.Ride.Speed != Still, p.Group == Folder
+	rides, together := p.Ride.Speed != Still, p.Group != Alone
 	return []rule{
 		{!(float64(p.Ceiling) > float64(p.Target)), "ceiling_dbtp", "target_lufs", fmt.Sprintf("%g is not above the target of %g LUFS", p.Ceiling, p.Target)},
-		{together && p.Anchor != Programme, "anchor", "group", fmt.Sprintf("%s does not go with the group folder, whose recordings are brought to the target as one programme", p.Anchor)},
-		{together && rides, "ride.speed", "group", fmt.Sprintf("%s does not go with the group folder, whose recordings share one gain: it has to be none", p.Ride.Speed)},
-		{together && p.Compressor.Ratio != 1, "compressor.ratio", "group", fmt.Sprintf("%g does not go with the group folder, whose recordings share one gain: it has to be 1", p.Compressor.Ratio)},
+		{together && p.Anchor != Programme, "anchor", "group", fmt.Sprintf("%s does not go with the group %s, whose recordings are brought to the target as one programme", p.Anchor, p.Group)},
+		{together && rides, "ride.speed", "group", fmt.Sprintf("%s does not go with the group %s, whose recordings share one gain: it has to be none", p.Ride.Speed, p.Group)},
+		{together && p.Compressor.Ratio != 1, "compressor.ratio", "group", fmt.Sprintf("%g does not go with the group %s, whose recordings share one gain: it has to be 1", p.Compressor.Ratio, p.Group)},
 		{rides && p.Ride.Lift == 0 && p.Ride.Cut == 0, "ride.speed", "ride.lift_db", fmt.Sprintf("%s is a ride, but lift_db and cut_db are both 0 and leave it nothing to do", p.Ride.Speed)},
 		{rides && 2*float64(p.Ride.Deadband) > float64(p.Ride.Range), "ride.deadband_db", "ride.range_lu",
 			fmt.Sprintf("%g leaves up to %g LU as they are, more than the range_lu of %g", p.Ride.Deadband, 2*p.Ride.Deadband, p.Ride.Range)},

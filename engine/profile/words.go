@@ -21,7 +21,7 @@ func (p Profile) Words() []Section {
 		{"Ride", p.rideWords()},
 		{"Compressor", []string{p.compressorWords()}},
 		{"Peaks", p.peakWords()},
-		{"Delivered", []string{p.deliveredWords()}},
+		{"Delivered", p.deliveredWords()},
 		{"Held for you when", p.harmWords()},
 		{"Mind", []string{
 			"Loud playback harms hearing: start quiet when you listen to what came out, as the dashboard's player does.",
@@ -39,8 +39,11 @@ func (p Profile) loudnessWords() []string {
 		fmt.Sprintf("%s is brought to %s, within %s%s.", what, withUnit(float64(p.Target), "LUFS"), withUnit(float64(p.Tolerance), "LU"), otherwise),
 		fmt.Sprintf("A recording with one channel counts %s.", p.Mono.Words()),
 	}
-	if p.Group == Folder {
+	switch p.Group {
+	case Folder:
 		words = append(words, "The recordings of a folder share one gain, so that the balance between them stays.")
+	case Album:
+		words = append(words, "The recordings of an album, by their tags, share one gain, so that the balance between them stays.")
 	}
 	if p.Within == Leave {
 		return append(words, "What is so already is delivered as it is, byte for byte.")
@@ -94,15 +97,31 @@ func (p Profile) peakWords() []string {
 		withUnit(p.Limiter.LookAhead, "ms"), withUnit(p.Limiter.Hold, "ms"), withUnit(p.Limiter.Release, "ms"))}
 }
 
-func (p Profile) deliveredWords() string {
-	length, dither := "In the word length of the source", ", with triangular dither."
-	if p.Delivered.Bits != 0 {
-		length = fmt.Sprintf("In %d bits", p.Delivered.Bits)
+// formatWords are the formats as people know them.
+var formatWords = map[Format]string{WAV: "WAV", FLAC: "FLAC", MP3: "MP3", M4A: "AAC in M4A", Vorbis: "Vorbis in Ogg", Opus: "Opus in Ogg"}
+
+func (p Profile) deliveredWords() []string {
+	d := p.Delivered
+	format, length := "the format of the source", "the word length of the source"
+	if d.Format != OwnFormat {
+		format = formatWords[d.Format]
 	}
-	if p.Delivered.Dither == NoDither {
-		dither = ", without dither."
+	if d.Bits != 0 {
+		length = fmt.Sprintf("%d bits", d.Bits)
 	}
-	return length + dither
+	dither := map[Dither]string{Triangular: "with triangular dither", Shaped: "with dither whose noise is shaped", NoDither: "without dither"}[d.Dither]
+	words := []string{fmt.Sprintf("In %s; where that keeps whole numbers, in %s, %s.", format, length, dither)}
+	if d.BitRate != 0 {
+		words = append(words, fmt.Sprintf("A lossy format gets %d kbit/s.", d.BitRate))
+	}
+	film := "The levelled sound of a film becomes a further track; pictures, subtitles and other tracks stay as they are"
+	if d.Film == ReplaceTrack {
+		film = "The levelled sound of a film takes the place of its track; pictures, subtitles and other tracks stay as they are"
+	}
+	if d.Downmix == StereoMix {
+		return append(words, film+".", "More than two channels are mixed down to stereo, with the coefficients of ITU-R BS.775.")
+	}
+	return append(words, film+".")
 }
 
 // harmWords leaves out the limits that cannot be met with in this profile.

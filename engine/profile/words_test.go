@@ -34,9 +34,10 @@ func TestWordsSayWhatTheProfileDoes(t *testing.T) {
 		{builtIn(t, "transmitter"), []string{"fast", "Mind: Levelling does not replace a station's own protection before the transmitter; the licence and local rules stand.",
 			"Mind: Loud playback harms hearing: start quiet"}, nil},
 		{parse(t, "based_on = 'film'\nwithin = 'level'\ndelivered = {bits = 24, dither = 'none'}\nride = {strength = 'gentle', fades = 'ride'}"),
-			[]string{"narrowed to that, but at least 30 % of each difference stays", "levelled all the same", "In 24 bits, without dither.", "Fades at the start and the end are ridden"},
+			[]string{"narrowed to that, but at least 30 % of each difference stays", "levelled all the same", "in 24 bits, without dither.", "Fades at the start and the end are ridden"},
 			[]string{"3:1"}},
 		{parse(t, "based_on = 'untouched'\ngroup = 'folder'"), []string{"share one gain"}, nil},
+		{parse(t, "based_on = 'untouched'\ngroup = 'album'"), []string{"recordings of an album, by their tags, share one gain"}, nil},
 	} {
 		got := told(c.p)
 		for _, s := range c.says {
@@ -59,7 +60,7 @@ func TestWordsSayWhatTheProfileDoes(t *testing.T) {
 			case f.Words != nil:
 				v.SetString(f.Words[(indexOf(f.Words, v.String())+1)%len(f.Words)].Word)
 			case f.Numbers != nil:
-				v.SetInt(24)
+				v.SetInt(int64(f.Numbers[1]))
 			case f.Name == "name" || f.Name == "summary":
 				continue
 			default:

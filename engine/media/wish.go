@@ -1,0 +1,91 @@
+package media
+
+import (
+	"fmt"
+	"strings"
+)
+
+// Wish is what a delivery asks for where the source's own format would not do. The zero value asks for nothing.
+type Wish struct {
+	Format  string // "wav", "flac", "mp3", "m4a", "ogg", "opus"; "" the source's own
+	BitRate int    // bit/s of a lossy format; 0: the source's, or the format's best
+	Bits    int    // word length where whole numbers or floats are stored: 16, 24, 32; 0: the source's own
+	Plain   bool   // rounding without dither
+	Shaped  bool   // dither with shaped noise
+	// InPlace puts the levelled sound of a film where the track was that it was made from; else it is a further one.
+	InPlace bool
+	Stereo  bool   // more than two channels are mixed down to two
+	Title   string // of a further track of a film
+}
+
+// MetBy reports whether a recording is as wished already, so that it need not be written for that.
+func (w Wish) MetBy(i Info) bool {
+	own := w.Format == "" || w.Format == formatOf(i)
+	word := w.Bits == 0 || i.BitDepth == 0 || !i.Float && i.BitDepth == wordOf(i.Container, w.Bits)
+	return own && word && !(w.Stereo && i.Format.Layout.Channels > 2)
+}
+
+// formatOf is the name that a Wish has for the format of a recording, or "".
+func formatOf(i Info) string {
+	switch {
+	case i.Video:
+		return ""
+	case i.Container == "wav", i.Container == "flac", i.Container == "mp3" && i.Codec == "mp3":
+		return i.Container
+	case i.Container == "mp4" && i.Codec == "aac":
+		return "m4a"
+	case i.Container == "ogg" && i.Codec == "vorbis":
+		return "ogg"
+	case i.Container == "ogg" && i.Codec == "opus":
+		return "opus"
+	}
+	return ""
+}
+
+// wordOf is the word length a container's whole numbers have if so many bits are asked for: FLAC and ALAC have
+// room for 24.
+func wordOf(container string, bits int) int {
+	if container == "wav" || container == "aiff" {
+		return bits
+	}
+	return min(bits, 24)
+}
+
+// withWord returns the spec with another word length where it stores whole numbers or floating point; 0 keeps the
+// spec's own. Formats that have no room for a length get their longest, lossy ones have none.
+func (s Spec) withWord(bits int) Spec {
+	if bits == 0 || s.BitDepth == 0 {
+		return s
+	}
+	s.BitDepth, s.Float = wordOf(s.Container, bits), false
+	switch s.Container {
+	case "wav":
+		s.Codec = fmt.Sprintf("pcm_s%dle", bits)
+	case "aiff":
+		s.Codec = fmt.Sprintf("pcm_s%dbe", bits)
+	}
+	return s
+}
+
+// inFormat is the spec of a recording in a format that is not its own.
+func (t *Toolbox) inFormat(format string, info Info) (Spec, string) {
+	depth := wholeDepth(info.BitDepth)
+	if info.BitDepth == 0 || info.Float {
+		depth = 24 // lossy and floating-point sound is finer than 16 bits
+	}
+	switch format {
+	case "wav":
+		return wavSpec(depth, info.Float), ""
+	case "flac":
+		return flacOrWAV(Info{Format: info.Format, BitDepth: depth}, "")
+	}
+	codec := map[string]string{"m4a": "aac", "ogg": "vorbis"}[format]
+	if codec == "" {
+		codec = format
+	}
+	l := lossyCodecs[codec]
+	if why := t.cannot(l.encoder, info.Format, l.rates, l.channels); why != "" {
+		return flacOrWAV(info, fmt.Sprintf("%s cannot be written: %s", strings.ToUpper(format), why))
+	}
+	return Spec{Container: l.container, Codec: codec, BitRate: info.BitRate, Extension: l.extension}, ""
+}
