@@ -3,6 +3,7 @@
 package level
 
 import (
+	"bytes"
 	"context"
 	"crypto/sha256"
 	"errors"
@@ -51,6 +52,11 @@ func TestHostileFiles(t *testing.T) {
 	ffmpeg(t, nil, "-f", "lavfi", "-i", "sine=997:d=2", away)
 	corpus := damaged(files)
 	maps.Copy(corpus, lies(files, away, "http://"+listener.Addr().String()+"/away.wav"))
+	for lie, file := range map[string]string{"elsewhere.m4a": "aac.m4a", "elsewhere.mov": "a.mov"} {
+		if bytes.Equal(corpus[lie], files[file]) {
+			t.Errorf("%s leads nowhere else", lie)
+		}
+	}
 	if len(corpus) < 200 {
 		t.Fatalf("only %d files", len(corpus))
 	}
