@@ -38,8 +38,8 @@ ratios: build ## print what measuring costs, as ratios to FFmpeg's decoding and 
 	@scripts/need test
 	scripts/ratios
 
-fuzz: ## run each fuzz target for a minute
-	@GO=$(GO) scripts/fuzz
+fuzz: ## run each fuzz target for a minute (PACKAGES=./engine/media for some of them)
+	@GO=$(GO) scripts/fuzz 60s $(PACKAGES)
 
 clean: ## remove what was built
 	rm -rf bin
