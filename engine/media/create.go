@@ -80,7 +80,7 @@ func (t *Toolbox) checkSpec(s Spec) error {
 	case s.Container == "aiff":
 		ok = slices.Contains([]int{16, 24, 32}, s.BitDepth)
 	case isLossy && s.Container == l.container:
-		if why := t.cannot(l.encoder, s.Format, l.rates, l.channels); why != "" {
+		if why := t.cannot(l.encoder, s.delivered(), l.rates, l.channels); why != "" {
 			return fmt.Errorf("%w: %s cannot be written: %s", ErrUnsupported, s.Codec, why)
 		}
 		ok = true

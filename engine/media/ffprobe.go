@@ -49,6 +49,8 @@ type probeStream struct {
 	BitRate     string            `json:"bit_rate"`
 	RawBits     string            `json:"bits_per_raw_sample"`
 	Bits        int               `json:"bits_per_sample"`
+	Width       int               `json:"width"`
+	Height      int               `json:"height"`
 	Disposition map[string]int    `json:"disposition"`
 	Tags        map[string]string `json:"tags"`
 }
@@ -102,11 +104,12 @@ func (p *probe) sound() *probeStream {
 	return nil
 }
 
-// pictures returns the streams of cover art, of the kinds every container takes.
+// pictures returns the streams of cover art, of the kinds every container takes. One that is damaged has no size, and
+// FFmpeg would write nothing at all with it.
 func (p *probe) pictures() []probeStream {
 	var list []probeStream
 	for _, s := range p.Streams {
-		if s.Type == "video" && s.Disposition["attached_pic"] == 1 && (s.Codec == "mjpeg" || s.Codec == "png") {
+		if s.Type == "video" && s.Disposition["attached_pic"] == 1 && (s.Codec == "mjpeg" || s.Codec == "png") && s.Width > 0 && s.Height > 0 {
 			list = append(list, s)
 		}
 	}

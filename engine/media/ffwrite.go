@@ -68,6 +68,10 @@ func streamHead(spec Spec) []byte {
 
 // encoderArgs chooses the encoder and its quality.
 func (t *Toolbox) encoderArgs(spec Spec) []string {
+	if spec.Rate != 0 && spec.Rate != spec.Format.Rate {
+		spec.Format = spec.delivered()
+		return append([]string{"-ar", strconv.Itoa(spec.Rate)}, t.encoderArgs(spec)...)
+	}
 	rate := strconv.Itoa
 	channels := spec.Format.Layout.Channels
 	switch spec.Codec {

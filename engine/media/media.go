@@ -80,6 +80,7 @@ type Spec struct {
 	Shaped    bool   // the noise of dither is shaped
 	BitRate   int    // bit/s for lossy codecs, 0 for the codec's best quality
 	Extension string // of the delivered file, with its dot: ".wav"
+	Rate      int    // of a lossy file, Hz, where the codec has not the source's; 0: that of Format
 	Note      string // why this is not the source's own format, or empty
 	TagsFrom  string // path of the file whose tags and chunks are carried over, or empty
 }

@@ -1,8 +1,11 @@
 package media
 
 import (
+	"cmp"
 	"fmt"
-	"strings"
+	"slices"
+
+	"evenshelf/engine/audio"
 )
 
 // Wish is what a delivery asks for where the source's own format would not do. The zero value asks for nothing.
@@ -84,8 +87,28 @@ func (t *Toolbox) inFormat(format string, info Info) (Spec, string) {
 		codec = format
 	}
 	l := lossyCodecs[codec]
-	if why := t.cannot(l.encoder, info.Format, l.rates, l.channels); why != "" {
-		return flacOrWAV(info, fmt.Sprintf("%s cannot be written: %s", strings.ToUpper(format), why))
+	at, note := info.Format, ""
+	if at.Rate = l.rateFor(at.Rate); at.Rate != info.Format.Rate {
+		note = fmt.Sprintf("%s has no sampling rate of %d Hz: it is delivered with %d Hz", format, info.Format.Rate, at.Rate)
 	}
-	return Spec{Container: l.container, Codec: codec, BitRate: info.BitRate, Extension: l.extension}, ""
+	if why := t.cannot(l.encoder, at, l.rates, l.channels); why != "" {
+		return flacOrWAV(Info{Format: info.Format, BitDepth: depth}, fmt.Sprintf("%s cannot be written: %s", format, why))
+	}
+	return Spec{Container: l.container, Codec: codec, BitRate: info.BitRate, Rate: at.Rate, Extension: l.extension}, note
+}
+
+// delivered is the format of the file that is written.
+func (s Spec) delivered() audio.Format {
+	f := s.Format
+	f.Rate = cmp.Or(s.Rate, f.Rate)
+	return f
+}
+
+// rateFor is the sampling rate a codec has for sound of a rate: the same, the next higher, or its highest.
+func (l lossy) rateFor(rate int) int {
+	if l.rates == nil {
+		return rate
+	}
+	i, _ := slices.BinarySearch(l.rates, rate)
+	return l.rates[min(i, len(l.rates)-1)]
 }
