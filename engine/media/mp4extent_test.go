@@ -87,7 +87,7 @@ func TestM4AEditListInMilliseconds(t *testing.T) {
 	}
 }
 
-// editBoxes overwrites every box of a kind in a file by another kind, so that nobody reads it.
+// hideBox makes every box of a kind in a file one of another kind, so that nobody reads it.
 func hideBox(file []byte, kind string) []byte {
 	return bytes.ReplaceAll(file, []byte(kind), []byte("skip"))
 }
