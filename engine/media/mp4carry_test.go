@@ -11,6 +11,7 @@ import (
 	"testing"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/tags"
 )
 
 // mp4Tagged has mutagen put into an M4A whatever it knows, and the boxes that it does not know by hand: a loudness box
@@ -242,5 +243,30 @@ func TestM4ADamagedTags(t *testing.T) {
 		if got, _ := decode(t, withFFmpeg(t), path); got.Frames() != snd.Frames() {
 			t.Errorf("%s: %d frames", kind, got.Frames())
 		}
+	}
+}
+
+// Gain tags go into an M4A by way of the toolbox, and the sound stays; what has none is refused.
+func TestRetagM4A(t *testing.T) {
+	source := mp4Source(t, programme(1, 20_000, 16, 0.5), true, "-c:a", "aac")
+	path := filepath.Join(t.TempDir(), "copy.m4a")
+	if err := withFFmpeg(t).Retag(context.Background(), source, path, tags.Gains{Track: tags.Loudness{Integrated: -20, Peak: -6}}); err != nil {
+		t.Fatal(err)
+	}
+	want, got := mp4Carries(t, source), mp4Carries(t, path)
+	for key := range want {
+		if old := strings.Contains(strings.ToLower(key), "gain"); old == slices.Equal(got[key], want[key]) {
+			t.Errorf("%s: %.200q, was %.200q", key, got[key], want[key])
+		}
+	}
+	if _, tags := ffprobe(t, path); tags["replaygain_track_gain"] != "2.00 dB" || tags["replaygain_track_peak"] != "0.501187" {
+		t.Errorf("%v", tags)
+	}
+	if !bytes.Equal(rawInts(t, source), rawInts(t, path)) {
+		t.Error("the sound is another")
+	}
+	torn := save(t, "torn.m4a", load(t, source)[:20_000])
+	if err := withFFmpeg(t).Retag(context.Background(), torn, path, tags.Gains{}); err == nil || !strings.HasPrefix(err.Error(), torn+": ") {
+		t.Errorf("%v", err)
 	}
 }
