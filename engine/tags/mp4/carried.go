@@ -92,9 +92,14 @@ func (c *Carried) dress(moov, sound *box) {
 	to.replace("hdlr", mdia.all("hdlr")...) // it has the track's name
 	to.replace("elng", mdia.all("elng")...)
 	for _, kind := range []string{"udta", "meta", "uuid"} {
-		moov.replace(kind, from.all(kind)...)
-		sound.replace(kind, c.sound.all(kind)...)
+		moov.replace(kind, unbound(from.all(kind))...)
+		sound.replace(kind, unbound(c.sound.all(kind))...)
 	}
+}
+
+// unbound returns those boxes that do not point into the file, as pictures in a meta box may.
+func unbound(list []*box) []*box {
+	return slices.DeleteFunc(list, func(x *box) bool { return movable(x) != nil })
 }
 
 // brand marks the copy of an audiobook as one: players remember the place in it.
@@ -111,20 +116,19 @@ func (c *Carried) brand(f Target, ftyp span) error {
 	return err
 }
 
-// others returns the boxes of the source file that stand beside its movie box and are about the recording. What
-// points into the file, as pictures in a file's meta box may, is left out.
+// others returns the boxes of the source file that stand beside its movie box and are about the recording.
 func (c *Carried) others() (list []*box) {
 	size := int64(0)
 	for _, s := range c.from.spans {
 		if !slices.Contains([]string{"uuid", "meta", "udta"}, s.kind) || size+s.len > maxOther {
 			continue
 		}
-		if x, err := c.from.load(s, maxOther); err == nil && movable(x) == nil {
+		if x, err := c.from.load(s, maxOther); err == nil {
 			level(x)
 			list, size = append(list, x), size+s.len
 		}
 	}
-	return list
+	return unbound(list)
 }
 
 // writeAll writes boxes at an offset and ends the file behind them.

@@ -143,7 +143,7 @@ func (f *file) copy(dst io.Writer, s span, m move) error {
 		correct = m.index
 	}
 	if correct == nil {
-		_, err := io.Copy(dst, io.NewSectionReader(f.r, s.at, s.len))
+		_, err := io.CopyN(dst, io.NewSectionReader(f.r, s.at, s.len), s.len)
 		return err
 	}
 	x, err := f.load(s, maxOther)

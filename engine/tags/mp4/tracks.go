@@ -187,7 +187,7 @@ func (c *Carried) writeTracks(f Target, at int64, tracks []track) (end int64, er
 	at += boxHead
 	for _, t := range tracks {
 		for i, s := range t.chunks {
-			if _, err := io.Copy(w, io.NewSectionReader(c.from.r, s.at, s.len)); err != nil {
+			if _, err := io.CopyN(w, io.NewSectionReader(c.from.r, s.at, s.len), s.len); err != nil {
 				return at, err
 			}
 			t.table.set(i, uint64(at))
