@@ -2,7 +2,8 @@
 // beside its sound, and the tables that say where the sound lies.
 //
 // What is not edited is written as it was found, byte for byte. A box of descriptions that breaks the rules of its
-// form is kept as it is; only the boxes on the way to the sound have to be in order.
+// form is kept as it is; only the boxes on the way to the sound have to be in order. The standard's clauses are cited
+// from memory.
 package mp4
 
 import (

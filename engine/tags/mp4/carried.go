@@ -120,7 +120,7 @@ func (c *Carried) brand(f Target, ftyp span) error {
 func (c *Carried) others() (list []*box) {
 	size := int64(0)
 	for _, s := range c.from.spans {
-		if !slices.Contains([]string{"uuid", "meta", "udta"}, s.kind) || size+s.len > maxOther {
+		if !slices.Contains([]string{"uuid", "meta", "udta"}, s.kind) || size+s.len > maxOther || len(list) == maxBeside {
 			continue
 		}
 		if x, err := c.from.load(s, maxOther); err == nil {

@@ -69,13 +69,12 @@ func extentOf(r io.ReaderAt, size int64) (e Extent, media int64, ok bool) {
 // is the frames in front, the third those behind, the fourth the length.
 func noted(moov *box) (e Extent, ok bool) {
 	meta := moov.child("udta", "meta")
+	name := namesOf(meta)
 	for _, item := range meta.child("ilst").list() {
-		if item.kind != "----" || !strings.HasSuffix(strings.ToUpper(nameOf(meta, item)), "SMPB") {
+		if item.kind != "----" || !strings.HasSuffix(strings.ToUpper(name(item)), "SMPB") {
 			continue
 		}
-		left := maxBoxes
-		parts, _, _ := parse(item.body, maxDepth, &left)
-		for _, p := range parts {
+		for _, p := range parts(item.body) {
 			var zero, behind int64
 			if p.kind == "data" && len(p.body) > 8 {
 				n, _ := fmt.Sscanf(string(p.body[8:min(len(p.body), 200)]), "%x %x %x %x", &zero, &e.Start, &behind, &e.Frames)
@@ -123,7 +122,7 @@ func editsOf(trak *box) (list []edit, ok bool) {
 	if x.body[0] == 1 {
 		size = 20
 	}
-	if uint64(be32(x.body[4:])) > uint64(len(b)/size) {
+	if n := int64(be32(x.body[4:])); n > int64(len(b)/size) || n > maxBoxes {
 		return nil, false
 	}
 	for range be32(x.body[4:]) {

@@ -108,7 +108,7 @@ func (f *file) load(s span, limit int64) (*box, error) {
 }
 
 // holdsSound reports whether a box of the file is one that the movie box's tables point into.
-func (s span) holdsSound() bool { return s.kind == "mdat" || s.kind == "moof" || s.kind == "idat" }
+func (s span) holdsSound() bool { return s.kind == "mdat" || s.kind == "moof" }
 
 // front reports whether the movie box stands in front of the sound, so that playing can begin before all has arrived.
 func (f *file) front() bool {

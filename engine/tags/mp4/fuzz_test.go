@@ -13,8 +13,9 @@ import (
 func items(t *testing.T, moov *box, gone func(kind, name string) bool) (list []string) {
 	moov.each(func(meta *box) {
 		if meta.kind == "meta" {
+			name := namesOf(meta)
 			for _, item := range meta.child("ilst").list() {
-				if !gone(item.kind, nameOf(meta, item)) {
+				if !gone(item.kind, name(item)) {
 					list = append(list, string(written(t, item)))
 				}
 			}

@@ -11,42 +11,40 @@ import (
 // their own.
 const freeform = "\x63\x6F\x6D\x2E\x61\x70\x70\x6C\x65\x2E\x69\x54\x75\x6E\x65\x73"
 
-// nameOf returns the name in words of an item in a list of metadata: that of a freeform item, or the key that its
-// number stands for where the list has keys. Others have none.
-func nameOf(meta, item *box) string {
-	if item.kind == "----" {
-		left := maxBoxes
-		parts, _, _ := parse(item.body, maxDepth, &left)
-		for _, p := range parts {
-			if p.kind == "name" && len(p.body) >= 4 {
-				return string(p.body[4:])
+// namesOf returns what names the items of a list of metadata in words: a freeform item has its own, where the list has
+// keys the number of an item stands for one. Others have none.
+func namesOf(meta *box) func(item *box) string {
+	var keys []*box // a key is shaped like a box: its length, the name space, the name
+	if x := meta.child("keys"); x != nil && len(x.body) >= 8 {
+		keys = parts(x.body[8:])
+	}
+	return func(item *box) string {
+		if item.kind == "----" {
+			for _, p := range parts(item.body) {
+				if p.kind == "name" && len(p.body) >= 4 {
+					return string(p.body[4:])
+				}
 			}
+		} else if n := be32([]byte(item.kind)); n >= 1 && uint64(n) <= uint64(len(keys)) {
+			return string(keys[n-1].body)
 		}
 		return ""
 	}
-	keys := meta.child("keys")
-	if keys == nil || len(keys.body) < 8 {
-		return ""
-	}
-	n, b := be32([]byte(item.kind)), keys.body[8:]
-	for i := uint32(1); len(b) >= boxHead; i++ {
-		size := be32(b)
-		if size < boxHead || uint64(size) > uint64(len(b)) {
-			break
-		}
-		if i == n {
-			return string(b[boxHead:size])
-		}
-		b = b[size:]
-	}
-	return ""
+}
+
+// parts reads the boxes in an item, of which none holds others.
+func parts(b []byte) []*box {
+	left := maxBoxes
+	list, _, _ := parse(b, maxDepth, &left)
+	return list
 }
 
 // dropItems removes the items of all lists below x that are to go.
 func dropItems(x *box, gone func(kind, name string) bool) {
 	x.each(func(meta *box) {
 		if list := meta.child("ilst"); meta.kind == "meta" && list != nil {
-			list.kids = slices.DeleteFunc(list.kids, func(item *box) bool { return gone(item.kind, nameOf(meta, item)) })
+			name := namesOf(meta)
+			list.kids = slices.DeleteFunc(list.kids, func(item *box) bool { return gone(item.kind, name(item)) })
 		}
 	})
 }
@@ -65,7 +63,7 @@ func level(x *box) {
 	dropItems(x, untrue)
 	x.each(func(k *box) {
 		if k.kind == "udta" {
-			k.drop("ludt", "tlou", "alou", tool) // 14496-12, 12.2.7: loudness
+			k.drop("ludt", "tlou", "alou", tool) // loudness boxes
 		}
 	})
 }

@@ -7,7 +7,10 @@ import (
 	"slices"
 )
 
-const maxTracks = 64 << 20 // bytes of all chapter titles and pictures
+const (
+	maxTracks = 64 << 20 // bytes of all chapter titles and pictures
+	maxBeside = 1000     // tracks one refers to, boxes beside the movie box
+)
 
 // track is one that is carried as it is beside the sound: chapter titles, their pictures and links, lyrics.
 type track struct {
@@ -68,7 +71,7 @@ func (c *Carried) tracks(moov, sound *box) (list []track) {
 // references returns the tracks a reference names.
 func references(x *box) (ids []uint32) {
 	if x != nil {
-		for b := x.body; len(b) >= 4; b = b[4:] {
+		for b := x.body; len(b) >= 4 && len(ids) < maxBeside; b = b[4:] {
 			ids = append(ids, be32(b))
 		}
 	}
