@@ -80,7 +80,7 @@ func (j *turn) deliver(ctx context.Context, scratch string, o *Outcome) (string,
 		o.Renders++
 		j.made, o.After = work, after
 	}
-	return spec.Extension, nil
+	return spec.ExtensionFor(j.source), nil
 }
 
 // render renders into the file scratch and measures what is there then.

@@ -4,6 +4,8 @@ import (
 	"context"
 	"os"
 	"strconv"
+
+	"evenshelf/engine/tags/mp4"
 )
 
 // carrier puts what a source carries beside its sound into a file that FFmpeg encodes.
@@ -19,6 +21,10 @@ func (t *Toolbox) carrierFor(ctx context.Context, spec Spec, src *tagSource) (ca
 	case src != nil && spec.Container == "flac" && src.kind.container == "flac":
 		head, err := flacHead(spec, src)
 		return flacCarrier(head), err
+	case src != nil && spec.Container == "mp4" && src.kind.container == "mp4":
+		if c, err := mp4.Read(src.f, src.size); err == nil { // else it is damaged, and FFmpeg takes what it understands
+			return mp4Carrier{c}, nil
+		}
 	}
 	list, err := t.ffmpegTags(ctx, src, spec.Container != "ogg" && spec.Container != "aiff")
 	if mask := unusualMask(spec.Format.Layout); err == nil && spec.Codec == "flac" {

@@ -7,6 +7,8 @@ import (
 	"fmt"
 	"io"
 	"os"
+
+	"evenshelf/engine/tags/mp4"
 )
 
 // decoders names FFmpeg's decoder for a codec where it is not the codec's own name. Naming it makes
@@ -17,7 +19,8 @@ var decoders = map[string]string{"mp3": "mp3float", "mp2": "mp2float", "mp1": "m
 type finding struct {
 	info    Info // but for Decoder
 	gapless gapless
-	wire    string // FFmpeg's name of the encoding in which the samples come to us
+	extent  *mp4.Extent // where the sound of an MP4 is; nil: FFmpeg is to find out
+	wire    string      // FFmpeg's name of the encoding in which the samples come to us
 }
 
 // Samples come through the pipe as the decoder makes them: FFmpeg has nothing to convert, and those of 16
@@ -51,6 +54,7 @@ func (t *Toolbox) look(ctx context.Context, f *os.File, k kind) (finding, error)
 		return finding{}, err
 	}
 	l.wire = p.sound().wire()
+	l.takeExtent(f, k)
 	if l.info.Codec == "opus" && l.info.Container == "ogg" && l.info.Frames > 0 {
 		skip, err := opusPreSkip(f)
 		if err != nil {
@@ -75,7 +79,14 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if k.container == "flac" { // it checks the frames' checksums only if told to
 		args = append(args, "-err_detect", "+crccheck")
 	}
-	args = append(append(args, "-c:a", decoder), guarded(k)...)
+	args = append(args, "-c:a", decoder)
+	if l.extent != nil {
+		args = append(args, "-ignore_editlist", "1", "-flags2", "+skip_manual")
+	}
+	args = append(args, guarded(k)...)
+	if l.extent != nil && l.extent.Start > 0 {
+		args = append(args, "-af", fmt.Sprintf("atrim=start_sample=%d", l.extent.Start))
+	}
 	args = append(args, "-vn", "-sn", "-dn", "-map", "0:a:0", "-map_metadata", "-1", "-fflags", "+bitexact", "-flush_packets", "0")
 	args = append(args, "-c:a", l.wire, "-f", "wav", "pipe:1")
 	c, err := startChild(ctx, true, []*os.File{f}, t.ffmpeg, args...)

@@ -257,3 +257,12 @@ func peakRMS(b audio.Block) (peak, rms float64) {
 }
 
 func stereo(rate int) audio.Format { return audio.Format{Rate: rate, Layout: audio.Stereo} }
+
+// saveAs writes a file over whatever is there and returns its path.
+func saveAs(t testing.TB, path string, data []byte) string {
+	t.Helper()
+	if err := os.WriteFile(path, data, 0o644); err != nil {
+		t.Fatal(err)
+	}
+	return path
+}

@@ -27,3 +27,19 @@ func LooksLikeMedia(name string) bool {
 	_, found := slices.BinarySearch(extensions, strings.ToLower(filepath.Ext(base)))
 	return found
 }
+
+// twins are extensions of one format, whose files keep the one they have. A film's is not among them: what is made of
+// its sound must not take its place.
+var twins = [][]string{{".m4a", ".m4b"}, {".aiff", ".aif"}, {".ogg", ".oga"}, {".wav", ".wave", ".bwf"}}
+
+// ExtensionFor is the extension of a delivery made from a file of this name: the file's own where it is usual for the
+// delivery's format too, as an audiobook's is.
+func (s Spec) ExtensionFor(source string) string {
+	own := filepath.Ext(source)
+	for _, list := range twins {
+		if slices.Contains(list, s.Extension) && slices.Contains(list, strings.ToLower(own)) {
+			return own
+		}
+	}
+	return s.Extension
+}

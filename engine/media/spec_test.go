@@ -139,3 +139,15 @@ func TestToolboxWithoutTools(t *testing.T) {
 		t.Errorf("version %q", v)
 	}
 }
+
+// A copy keeps the extension of its source where it says the same, or it could not take its place.
+func TestExtensionFor(t *testing.T) {
+	for _, test := range [][3]string{
+		{".m4a", "a/book.m4b", ".m4b"}, {".m4a", "book.M4B", ".M4B"}, {".m4a", "film.mp4", ".m4a"}, {".m4a", "x.flac", ".m4a"},
+		{".aiff", "x.aif", ".aif"}, {".ogg", "x.oga", ".oga"}, {".wav", "x.bwf", ".bwf"}, {".wav", "x.aif", ".wav"}, {".mp3", "x", ".mp3"},
+	} {
+		if got := (Spec{Extension: test[0]}).ExtensionFor(test[1]); got != test[2] {
+			t.Errorf("%v: %q", test, got)
+		}
+	}
+}
