@@ -3,7 +3,6 @@ package media
 import (
 	"context"
 	"os"
-	"strconv"
 )
 
 // carrier puts what a source carries beside its sound into a file that FFmpeg encodes.
@@ -17,8 +16,11 @@ type carrier interface {
 func (t *Toolbox) carrierFor(ctx context.Context, spec Spec, src *tagSource) (carrier, error) {
 	switch {
 	case src != nil && spec.Container == "flac" && src.kind.container == "flac":
-		head, err := flacHead(spec, src)
-		return flacCarrier(head), err
+		return flacHead(spec, src), nil
+	case src != nil && spec.Container == "ogg" && src.kind.container == "ogg":
+		if own := oggHead(spec, src); own != nil {
+			return own, nil
+		}
 	}
 	list, err := t.ffmpegTags(ctx, src, spec.Container != "ogg" && spec.Container != "aiff")
 	if mask := unusualMask(spec.Format.Layout); err == nil && spec.Codec == "flac" {
@@ -32,12 +34,3 @@ type ffmpegCarrier []string
 
 func (c ffmpegCarrier) args() []string        { return c }
 func (c ffmpegCarrier) finish(*os.File) error { return nil }
-
-// flacCarrier is the metadata blocks that go into the room FFmpeg leaves for them.
-type flacCarrier []byte
-
-func (c flacCarrier) args() []string {
-	return []string{"-map_metadata", "-1", "-metadata_header_padding", strconv.Itoa(len(c) + flacPadding)}
-}
-
-func (c flacCarrier) finish(f *os.File) error { return putHead(f, c) }
