@@ -1,6 +1,8 @@
 package media
 
 import (
+	"errors"
+	"fmt"
 	"io"
 	"os"
 
@@ -51,6 +53,23 @@ func (c *oggCarrier) put(codec string, written *vorbis.Comment) {
 	if rest := c.comment.Rest; codec == "opus" && len(rest) > 0 && rest[0]&1 == 1 {
 		written.Rest = rest
 	}
+}
+
+// checkChain refuses chained files that FFmpeg would decode wrongly.
+func checkChain(f *os.File, k kind) error {
+	stat, err := f.Stat()
+	if err != nil {
+		return err
+	}
+	return otherOgg(ogg.CheckChain(k.section(f), stat.Size()-k.start))
+}
+
+// otherOgg makes an error of this package of one that says that a file holds something else.
+func otherOgg(err error) error {
+	if errors.Is(err, ogg.ErrOther) {
+		return fmt.Errorf("%w: %w", ErrUnsupported, err)
+	}
+	return err
 }
 
 // counter counts what is written.

@@ -32,11 +32,7 @@ func behindTags(retag retagger) retagger {
 		if _, err := io.CopyN(dst, io.NewSectionReader(src, 0, k.start), k.start); err != nil {
 			return err
 		}
-		err = retag(dst, io.NewSectionReader(src, k.start, src.Size()-k.start), g)
-		if errors.Is(err, ogg.ErrOther) {
-			err = fmt.Errorf("%w: %w", ErrUnsupported, err)
-		}
-		return err
+		return otherOgg(retag(dst, io.NewSectionReader(src, k.start, src.Size()-k.start), g))
 	}
 }
 

@@ -98,11 +98,7 @@ func (r *pages) next() (page, error) {
 	if _, err := io.ReadFull(r.r, p[pageHead:]); err != nil {
 		return nil, r.cut(err)
 	}
-	size := len(p)
-	for _, n := range p.lacing() {
-		size += int(n)
-	}
-	head := len(p)
+	head, size := len(p), p.size()
 	p = page(r.buf[:size])
 	if _, err := io.ReadFull(r.r, p[head:]); err != nil {
 		return nil, r.cut(err)
