@@ -47,7 +47,11 @@ func Made(kind byte, body []byte) Block {
 
 // bytes reads the body. It takes no more memory than the file has bytes, whatever a length says.
 func (b Block) bytes() ([]byte, error) {
-	return io.ReadAll(io.NewSectionReader(b.Body, 0, b.Body.Size()))
+	body, err := io.ReadAll(io.NewSectionReader(b.Body, 0, b.Body.Size()))
+	if err == nil && int64(len(body)) < b.Body.Size() {
+		err = io.ErrUnexpectedEOF
+	}
+	return body, err
 }
 
 // Blocks lists the metadata blocks of the FLAC that src begins with, and says where its first frame is. With an error

@@ -27,7 +27,7 @@ func ReadInfo(list []Block) (Info, error) {
 	bits := binary.BigEndian.Uint64(b[10:])
 	return Info{
 		BlockSize:     int(binary.BigEndian.Uint16(b[:])),
-		MaxFrame:      int(binary.BigEndian.Uint32(b[6:]) >> 8),
+		MaxFrame:      int(binary.BigEndian.Uint32(b[6:]) & MaxBody),
 		SampleRate:    int(bits >> 44),
 		NChannels:     int(bits>>41&7) + 1,
 		BitsPerSample: int(bits>>36&31) + 1,
