@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"slices"
 	"strings"
 
 	"evenshelf/engine/tags"
@@ -19,7 +20,7 @@ const flacPadding = 8 << 10 // bytes left for later changes of tags
 
 // flacCarrier is the metadata of a delivery: what stands behind STREAMINFO, in order.
 type flacCarrier struct {
-	blocks []flac.Block // the seek table is an empty place among them
+	blocks []flac.Block // noPoints is one of them
 	room   int64        // bytes that are asked for: with the table, but without the padding's header
 }
 
@@ -31,8 +32,7 @@ func flacHead(spec Spec, src *tagSource) *flacCarrier {
 	if mask := unusualMask(spec.Format.Layout); mask != "" {
 		edit.Add = [][2]string{{maskComment, mask}}
 	}
-	table := flac.Made(flac.SeekTable, nil)
-	c, list := &flacCarrier{blocks: []flac.Block{table}}, []flac.Block(nil)
+	var list []flac.Block
 	length := int64(0)
 	if src != nil && src.kind.container == "flac" {
 		// What is damaged is left out: of blocks those behind the damage, of comments too.
@@ -42,22 +42,27 @@ func flacHead(spec Spec, src *tagSource) *flacCarrier {
 		}
 	}
 	list, _ = flac.EditComments(list, edit)
-	for _, b := range list {
-		switch b.Type {
-		case flac.StreamInfo, flac.Padding, flac.Forbidden:
-		case flac.SeekTable:
-			if c.blocks[0].Type == flac.SeekTable { // it keeps its place
-				c.blocks = c.blocks[1:]
-				b = table
-			}
-			fallthrough
-		default:
+	own := slices.IndexFunc(list, isSeekTable)
+	c := &flacCarrier{}
+	if own < 0 {
+		c.blocks = append(c.blocks, noPoints)
+	}
+	for i, b := range list {
+		switch {
+		case i == own: // it keeps its place
+			c.blocks = append(c.blocks, noPoints)
+		case !slices.Contains([]byte{flac.StreamInfo, flac.Padding, flac.SeekTable, flac.Forbidden}, b.Type):
 			c.blocks = append(c.blocks, b)
 		}
 	}
 	c.room = min(flac.Size(c.blocks)+length+flacPadding, flac.MaxBody)
 	return c
 }
+
+// noPoints holds the place of the seek table, which is made of the new sound.
+var noPoints = flac.Made(flac.SeekTable, nil)
+
+func isSeekTable(b flac.Block) bool { return b.Type == flac.SeekTable }
 
 func (c *flacCarrier) args() []string {
 	return []string{"-map_metadata", "-1", "-metadata_header_padding", fmt.Sprint(c.room)}
@@ -82,12 +87,8 @@ func (c *flacCarrier) finish(f *os.File) error {
 	if err != nil {
 		return err
 	}
-	blocks := append([]flac.Block{}, c.blocks...)
-	for i, b := range blocks {
-		if b.Type == flac.SeekTable {
-			blocks[i] = flac.Made(flac.SeekTable, table)
-		}
-	}
+	blocks := slices.Clone(c.blocks)
+	blocks[slices.IndexFunc(blocks, isSeekTable)] = flac.Made(flac.SeekTable, table)
 	padding := sound - flac.First - flac.Size(blocks) - 4
 	if padding < 0 {
 		if err := moveBack(f, sound, stat.Size(), flacPadding-padding); err != nil {

@@ -51,9 +51,10 @@ func (p page) crc() uint32 {
 	return checksum(crc, p[crcAt+4:])
 }
 
-// crcTable is for the polynomial 0x04C11DB7, highest bit first, without inversions (RFC 3533, 6).
-var crcTable = func() (table [256]uint32) {
-	for i := range table {
+// crcTables are for the polynomial 0x04C11DB7, highest bit first, without inversions (RFC 3533, 6): the first for the
+// last byte of eight that are taken at once, and so on to the eighth for the first.
+var crcTables = func() (tables [8][256]uint32) {
+	for i := range tables[0] {
 		crc := uint32(i) << 24
 		for range 8 {
 			if crc&(1<<31) != 0 {
@@ -62,14 +63,24 @@ var crcTable = func() (table [256]uint32) {
 				crc <<= 1
 			}
 		}
-		table[i] = crc
+		tables[0][i] = crc
 	}
-	return table
+	for k := 1; k < len(tables); k++ {
+		for i, crc := range tables[k-1] {
+			tables[k][i] = crc<<8 ^ tables[0][crc>>24]
+		}
+	}
+	return tables
 }()
 
 func checksum(crc uint32, b []byte) uint32 {
+	t := &crcTables
+	for ; len(b) >= 8; b = b[8:] {
+		crc ^= binary.BigEndian.Uint32(b)
+		crc = t[7][crc>>24] ^ t[6][crc>>16&255] ^ t[5][crc>>8&255] ^ t[4][crc&255] ^ t[3][b[4]] ^ t[2][b[5]] ^ t[1][b[6]] ^ t[0][b[7]]
+	}
 	for _, x := range b {
-		crc = crc<<8 ^ crcTable[byte(crc>>24)^x]
+		crc = crc<<8 ^ t[0][byte(crc>>24)^x]
 	}
 	return crc
 }
