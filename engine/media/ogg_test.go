@@ -55,7 +55,7 @@ func oggSource(t testing.TB, codec, wav string, args ...string) string {
 // byItsOwn decodes an Ogg file with the codec's own library (opus-tools; sox with libvorbis) and returns it as WAV. sox
 // leaves channels in the order of the stream, which Vorbis I, 4.3.9, gives: front left, centre, right, rear left, right,
 // LFE.
-func byItsOwn(t testing.TB, codec, path string) string {
+func byItsOwn(t testing.TB, codec, path string, channels int) string {
 	t.Helper()
 	wav := filepath.Join(t.TempDir(), "decoded.wav")
 	if codec == "opus" {
@@ -63,15 +63,15 @@ func byItsOwn(t testing.TB, codec, path string) string {
 		return wav
 	}
 	args := []string{"-D", "-t", "ogg", path, wav}
-	if stream, _ := ffprobe(t, path); stream["channels"] == 6.0 {
+	if channels == 6 {
 		args = append(args, "remix", "1", "3", "2", "6", "4", "5")
 	}
 	run(t, "sox", args...)
 	return wav
 }
 
-// lags says, by numpy, of each pair of WAVs how far the channels of the second are behind those of the first, in frames,
-// and whether they are alike. Of an LFE, channel 3 of 6, nothing is said: Opus keeps too little of it.
+// lags says, by numpy, of each pair of WAVs how many frames the second has, how far its channels are behind those of the
+// first, in frames, and whether they are alike. Of an LFE, channel 3 of 6, nothing is said: Opus keeps too little of it.
 func lags(t testing.TB, pairs []string) string {
 	t.Helper()
 	return string(run(t, "/usr/bin/python3", append([]string{"-c", `
@@ -81,6 +81,7 @@ def load(p):
     return np.frombuffer(subprocess.check_output(['sox', p, '-t', 'f32', '-']), np.float32).reshape(-1, n).T.astype(float)
 for p, q in zip(sys.argv[1::2], sys.argv[2::2]):
     a, b = load(p), load(q)
+    print(b.shape[1], end=': ')
     n = 1 << (a.shape[1] + b.shape[1]).bit_length()
     for i, (x, y) in enumerate(zip(a, b)):
         if len(a) == 6 and i == 3: continue
@@ -97,7 +98,7 @@ func TestOggLengthIsExact(t *testing.T) {
 	var pairs []string
 	var want strings.Builder
 	for _, test := range []struct{ channels, frames int }{
-		{1, 997}, {1, 9601}, {1, 131_071}, {2, 1}, {2, 960}, {2, 2881}, {2, 48_000}, {2, 61_337}, {6, 2879}, {6, 70_001},
+		{1, 997}, {1, 131_071}, {2, 960}, {2, 2881}, {2, 61_337}, {6, 2879}, {6, 70_001},
 	} {
 		for codec, rate := range map[string]int{"vorbis": 44100, "opus": 48000} {
 			name := fmt.Sprintf("%s, %d × %d", codec, test.channels, test.frames)
@@ -109,14 +110,8 @@ func TestOggLengthIsExact(t *testing.T) {
 			if snd.Frames() != test.frames || got.Frames() != test.frames || info.Frames != int64(test.frames) {
 				t.Errorf("%s: source %d, copy %d, promised %d", name, snd.Frames(), got.Frames(), info.Frames)
 			}
-			outside := byItsOwn(t, codec, path)
-			if n := strings.TrimSpace(string(run(t, "soxi", "-s", outside))); n != fmt.Sprint(test.frames) {
-				t.Errorf("%s: its own decoder says %s frames", name, n)
-			}
-			if test.frames > 500 {
-				pairs = append(pairs, wav, outside)
-				want.WriteString(strings.Repeat("0 alike ", min(test.channels, 5)) + "\n")
-			}
+			pairs = append(pairs, wav, byItsOwn(t, codec, path, test.channels))
+			want.WriteString(fmt.Sprint(test.frames, ": ", strings.Repeat("0 alike ", min(test.channels, 5)), "\n"))
 		}
 	}
 	if got := lags(t, pairs); got != want.String() {
@@ -136,7 +131,7 @@ func TestOggChannelOrder(t *testing.T) {
 		}
 		source, path := oggSource(t, codec, writeWAV(t, snd, 48000)), filepath.Join(t.TempDir(), "copy")
 		level(t, box, source, path)
-		outside, _ := decode(t, box, byItsOwn(t, codec, path))
+		outside, _ := decode(t, box, byItsOwn(t, codec, path, 6))
 		for c := range snd {
 			best, power := -1, 0.0
 			for tone := range 6 {
@@ -179,7 +174,7 @@ func TestOpusOutputGain(t *testing.T) {
 	if out := string(run(t, "opusinfo", path)); !strings.Contains(out, "Playback gain: 0 dB") {
 		t.Error(out)
 	}
-	if _, rms := peakRMS(first(decode(t, box, byItsOwn(t, "opus", path)))); math.Abs(plain-6-rms) > 0.1 {
+	if _, rms := peakRMS(first(decode(t, box, byItsOwn(t, "opus", path, 2)))); math.Abs(plain-6-rms) > 0.1 {
 		t.Errorf("the copy is %.2f dB, its source without the gain %.2f dB", rms, plain)
 	}
 }

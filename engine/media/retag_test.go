@@ -25,13 +25,10 @@ func retag(t testing.TB, source string) string {
 	t.Helper()
 	box, dir := withoutFFmpeg(), t.TempDir()
 	once, twice := filepath.Join(dir, "once"), filepath.Join(dir, "twice")
-	for from, to := range map[string]string{source: once} {
-		if err := box.Retag(context.Background(), from, to, someGains); err != nil {
+	for _, pair := range [][2]string{{source, once}, {once, twice}} {
+		if err := box.Retag(context.Background(), pair[0], pair[1], someGains); err != nil {
 			t.Fatal(err)
 		}
-	}
-	if err := box.Retag(context.Background(), once, twice, someGains); err != nil {
-		t.Fatal(err)
 	}
 	if !bytes.Equal(load(t, once), load(t, twice)) {
 		t.Error("tags that are right already were changed")
@@ -125,6 +122,11 @@ func TestRetagOgg(t *testing.T) {
 			t.Errorf("%s: packets have changed", codec)
 		}
 		inOrder(t, codec, path)
+		if codec == "vorbis" {
+			if out := string(run(t, "vorbiscomment", "-R", "-l", path)); !strings.HasSuffix(out, strings.Join(gains, "\n")+"\n") {
+				t.Errorf("vorbiscomment: %.500s", out)
+			}
+		}
 	}
 }
 
@@ -197,6 +199,5 @@ func TestRetagRefusesDamage(t *testing.T) {
 		if _, e := os.Stat(path); e == nil {
 			t.Errorf("%s: a file is left", name)
 		}
-		t.Log(err)
 	}
 }
