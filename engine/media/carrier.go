@@ -15,8 +15,10 @@ type carrier interface {
 // else FFmpeg, which translates what both formats have a name for.
 func (t *Toolbox) carrierFor(ctx context.Context, spec Spec, src *tagSource) (carrier, error) {
 	switch {
-	case src != nil && spec.Container == "flac" && src.kind.container == "flac":
-		return flacHead(spec, src), nil
+	case spec.Container == "flac":
+		if list := flacSource(src); list != nil {
+			return flacHead(spec, list), nil
+		}
 	case src != nil && spec.Container == "ogg" && src.kind.container == "ogg":
 		if own := oggHead(spec, src); own != nil {
 			return own, nil

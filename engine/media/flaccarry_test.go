@@ -124,6 +124,27 @@ func TestFLACBlocksAreCarried(t *testing.T) {
 	}
 }
 
+// So they do from a FLAC in Ogg.
+func TestOggFLACBlocksAreCarried(t *testing.T) {
+	snd, dir := programme(2, 100_003, 24, 0.5), t.TempDir()
+	source, path, wav := filepath.Join(dir, "source.oga"), filepath.Join(dir, "x"), writeWAV(t, snd, 44100)
+	image := filepath.Join(dir, "big.jpg")
+	if err := os.WriteFile(image, append(load(t, cover(t)), make([]byte, 1<<20)...), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	run(t, "flac", "-s", "--ogg", "-T", "ARTIST=One", "-T", "Artist=Two", "-T", "REPLAYGAIN_TRACK_GAIN=-7.00 dB", "--picture", "4|image/jpeg|Back||"+image, "-o", source, wav)
+	plain := filepath.Join(dir, "plain.flac")
+	run(t, "flac", "-s", "--picture", "4|image/jpeg|Back||"+image, "-o", plain, wav)
+	level(t, withFFmpeg(t), source, path)
+	run(t, "flac", "-t", "-s", "--warnings-as-errors", path)
+	if _, got := entries(t, path); !slices.Equal(got, []string{"ARTIST=One", "Artist=Two"}) {
+		t.Errorf("%q", got)
+	}
+	if got, want := carriedBlocks(t, path), carriedBlocks(t, plain); len(want) != 1 || !slices.EqualFunc(got, want, bytes.Equal) {
+		t.Errorf("%d blocks, want %d", len(got), len(want))
+	}
+}
+
 var seekPoint = regexp.MustCompile(`point \d+: sample_number=(\d+), stream_offset=(\d+), frame_samples=(\d+)`)
 
 // The seek table points at frames of the new file, about every ten seconds, also where its bit rate jumps. The reference

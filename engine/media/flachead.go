@@ -2,6 +2,7 @@ package media
 
 import (
 	"bufio"
+	"bytes"
 	"fmt"
 	"io"
 	"os"
@@ -10,6 +11,7 @@ import (
 
 	"evenshelf/engine/tags"
 	"evenshelf/engine/tags/flac"
+	"evenshelf/engine/tags/ogg"
 	"evenshelf/engine/tags/vorbis"
 )
 
@@ -24,24 +26,34 @@ type flacCarrier struct {
 	room   int64        // bytes that are asked for: with the table, but without the padding's header
 }
 
-// flacHead chooses the metadata of a delivery. Every block of a FLAC is carried as it is, but for those that a new
-// encoding makes anew and the comments that a new level makes wrong; other sources have none. Where loudspeakers are
-// not the usual ones, a comment names them.
-func flacHead(spec Spec, src *tagSource) *flacCarrier {
+// flacSource lists the metadata blocks of a source that is a FLAC, by itself or in Ogg; those behind damage are left
+// out. Other sources have none.
+func flacSource(src *tagSource) (list []flac.Block) {
+	switch {
+	case src == nil:
+	case src.kind.container == "flac":
+		list, _, _ = flac.Blocks(io.NewSectionReader(src.f, src.kind.start, src.size-src.kind.start))
+	case src.kind.container == "ogg":
+		if head, err := ogg.FLACHead(src.kind.section(src.f)); err == nil {
+			list, _, _ = flac.Blocks(bytes.NewReader(head))
+		}
+	}
+	return list
+}
+
+// flacHead chooses the metadata of a delivery from that of its source. Every block is carried as it is, but for those
+// that a new encoding makes anew and the comments that a new level makes wrong. Where loudspeakers are not the usual
+// ones, a comment names them.
+func flacHead(spec Spec, list []flac.Block) *flacCarrier {
 	edit := vorbis.Edit{Vendor: vorbis.Vendor, Drop: func(name string) bool { return tags.Stale(name) || strings.EqualFold(name, maskComment) }}
 	if mask := unusualMask(spec.Format.Layout); mask != "" {
 		edit.Add = [][2]string{{maskComment, mask}}
 	}
-	var list []flac.Block
 	length := int64(0)
-	if src != nil && src.kind.container == "flac" {
-		// What is damaged is left out: of blocks those behind the damage, of comments too.
-		list, _, _ = flac.Blocks(io.NewSectionReader(src.f, src.kind.start, src.size-src.kind.start))
-		if info, err := flac.ReadInfo(list); err == nil {
-			length = flac.SeekBytes(info.NSamples, info.SampleRate)
-		}
+	if info, err := flac.ReadInfo(list); err == nil {
+		length = flac.SeekBytes(info.NSamples, info.SampleRate)
 	}
-	list, _ = flac.EditComments(list, edit)
+	list, _ = flac.EditComments(list, edit) // of damaged ones, those in front of the damage
 	own := slices.IndexFunc(list, isSeekTable)
 	c := &flacCarrier{}
 	if own < 0 {

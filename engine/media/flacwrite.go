@@ -34,7 +34,7 @@ func newFLACWriter(f *os.File, spec Spec, tags *tagSource) (*flacWriter, error) 
 		BlockSizeMin: flacBlock, BlockSizeMax: flacBlock, SampleRate: uint32(spec.Format.Rate),
 		NChannels: uint8(channels), BitsPerSample: uint8(spec.BitDepth),
 	}
-	w := &flacWriter{f: f, out: &seekBuffer{f: f, w: bufio.NewWriterSize(f, 1<<16)}, quantisers: newQuantisers(spec), carry: flacHead(spec, tags)}
+	w := &flacWriter{f: f, out: &seekBuffer{f: f, w: bufio.NewWriterSize(f, 1<<16)}, quantisers: newQuantisers(spec), carry: flacHead(spec, flacSource(tags))}
 	room := &meta.Block{Header: meta.Header{Type: meta.TypePadding, Length: w.carry.room}}
 	var err error
 	if w.enc, err = flac.NewEncoder(w.out, info, room); err != nil {

@@ -40,17 +40,13 @@ func MakeSeekTable(r io.ReaderAt, from, to int64, info Info) ([]byte, error) {
 		return nil, nil
 	}
 	table := s.point(nil, from, last)
-	for by := step(info.NSamples, info.SampleRate); ; {
-		target := (last.sample+by/2)/by*by + by
-		if target >= end.sample {
-			return table, s.err
+	by := step(info.NSamples, info.SampleRate)
+	for target := by; target < end.sample && s.err == nil; target += by {
+		if p := s.near(target, int64(info.SampleRate), last, end); p.sample > last.sample {
+			table, last = s.point(table, from, p), p
 		}
-		p := s.near(target, int64(info.SampleRate), last, end)
-		if s.err != nil || p.sample <= last.sample {
-			return table, s.err
-		}
-		table, last = s.point(table, from, p), p
 	}
+	return table, s.err
 }
 
 // point appends a seek point. Its last figure is the length of the frame, which only the last frame has shorter.
@@ -73,7 +69,7 @@ type search struct {
 // It returns lo if there is none.
 func (s *search) near(target, within int64, lo, hi place) place {
 	best := lo
-	for range 2 * bits.Len64(uint64(hi.at-lo.at)) {
+	for range 2 * bits.Len64(uint64(max(0, hi.at-lo.at))) {
 		guess := lo.at + int64(float64(target-lo.sample)/float64(hi.sample-lo.sample)*float64(hi.at-lo.at))
 		p, ok := s.next(max(guess, lo.at+1))
 		switch {

@@ -6,6 +6,7 @@ package ogg
 import (
 	"bufio"
 	"bytes"
+	"encoding/binary"
 	"fmt"
 	"io"
 
@@ -25,9 +26,15 @@ type codec struct {
 var codecs = []codec{
 	{"vorbis", "\x01vorbis", "\x03vorbis", 3},
 	{"opus", "OpusHead", "OpusTags", 2},
-	{"flac", "\x7FFLAC", "", 0},
-	{"speex", "Speex   ", "", 0},
+	{"flac", "\x7FFLAC\x01", "", 1}, // and as many as it says itself
+	{"speex", "Speex   ", "", 1},
 }
+
+// In the first packet of a FLAC, the number of further headers and the FLAC's own beginning (RFC 9639, 10.1).
+const (
+	flacHeaders = 7
+	flacMark    = 9
+)
 
 func codecOf(p page) (codec, bool) {
 	for _, c := range codecs {
@@ -41,12 +48,22 @@ func codecOf(p page) (codec, bool) {
 // maxHeaders is more than pictures and setup of any recording take; a hostile file can take no more memory.
 const maxHeaders = 64 << 20
 
-// headers gathers the packets in front of the sound, without the first, which is alone on its page.
+// headers gathers the packets in front of the sound. The first is alone on its page, and kept apart.
 type headers struct {
 	codec   codec
+	first   []byte
 	packets [][]byte
 	open    bool // the last packet goes on
 	bytes   int
+}
+
+// begin begins with the first page of a stream.
+func begin(c codec, p page) *headers {
+	h := &headers{codec: c, first: bytes.Clone(p.body())}
+	if c.name == "flac" && len(h.first) >= flacMark {
+		h.codec.headers += int(binary.BigEndian.Uint16(h.first[flacHeaders:]))
+	}
+	return h
 }
 
 func (h *headers) complete() bool { return len(h.packets) == h.codec.headers-1 && !h.open }
@@ -88,41 +105,58 @@ func (h *headers) comments() (vorbis.Comment, error) {
 	return c, nil
 }
 
-// Comments reads the comments of the first stream of sound in a file. codec is FFmpeg's name of it, also with an error
-// if that much is known.
-func Comments(src io.Reader) (codec string, c vorbis.Comment, err error) {
-	var h *headers
+// readHeaders reads the headers of the first stream of sound in a file. With an error after its first page comes what
+// was read.
+func readHeaders(src io.Reader) (h *headers, err error) {
 	var serial uint32
-	for in := newPages(src); ; {
+	for in := newPages(src); h == nil || !h.complete(); {
 		p, err := in.next()
 		switch {
-		case err == io.EOF && h == nil:
-			return "", c, fmt.Errorf("%w: there is no sound in it", ErrOther)
+		case h == nil && (err == io.EOF || err == nil && !p.has(first)): // behind all beginnings
+			return nil, fmt.Errorf("%w: there is no sound in it", ErrOther)
 		case err == io.EOF:
-			return h.codec.name, c, fmt.Errorf("%w: its headers are cut off", ErrDamaged)
+			return h, fmt.Errorf("%w: its headers are cut off", ErrDamaged)
 		case err != nil:
-			return "", c, err
-		case h == nil && !p.has(first): // behind all beginnings
-			return "", c, fmt.Errorf("%w: there is no sound in it", ErrOther)
+			return h, err
 		case h == nil:
-			found, ok := codecOf(p)
-			if !ok {
-				continue
+			if c, ok := codecOf(p); ok {
+				h, serial = begin(c, p), p.serial()
 			}
-			if found.comment == "" {
-				return found.name, c, fmt.Errorf("%w, and this is %s", ErrOther, found.name)
-			}
-			h, serial = &headers{codec: found}, p.serial()
 		case p.serial() == serial:
 			if err := h.add(p); err != nil {
-				return h.codec.name, c, err
-			}
-			if h.complete() {
-				c, err = h.comments()
-				return h.codec.name, c, err
+				return h, err
 			}
 		}
 	}
+	return h, nil
+}
+
+// Comments reads the comments of the first stream of sound in a file, if that is Vorbis or Opus. codec is FFmpeg's name of
+// it, also with an error if that much is known.
+func Comments(src io.Reader) (codec string, c vorbis.Comment, err error) {
+	h, err := readHeaders(src)
+	switch {
+	case h == nil:
+		return "", c, err
+	case err == nil && h.codec.comment == "":
+		err = fmt.Errorf("%w, and this is %s", ErrOther, h.codec.name)
+	case err == nil:
+		c, err = h.comments()
+	}
+	return h.codec.name, c, err
+}
+
+// FLACHead returns the metadata of a FLAC in Ogg as it would stand in front of a FLAC by itself: its mark and its blocks
+// (RFC 9639, 10.1). It is an error if there is none.
+func FLACHead(src io.Reader) ([]byte, error) {
+	h, err := readHeaders(src)
+	if err != nil {
+		return nil, err
+	}
+	if h.codec.name != "flac" || len(h.packets) == 0 { // none: their number is not told
+		return nil, fmt.Errorf("%w: its FLAC headers are not found", ErrDamaged)
+	}
+	return append(h.first[flacMark:], bytes.Join(h.packets, nil)...), nil
 }
 
 // Edit copies an Ogg file with its comments edited, link by link if it is a chained one. Only pages of comments, and
@@ -152,7 +186,7 @@ func Edit(dst io.Writer, src io.Reader, edit func(codec string, c *vorbis.Commen
 			if !ok || c.comment == "" {
 				return ErrOther
 			}
-			h, begun, serial, number, shift = &headers{codec: c}, true, p.serial(), p.sequence()+1, 0
+			h, begun, serial, number, shift = begin(c, p), true, p.serial(), p.sequence()+1, 0
 			err = put(p)
 		case p.has(first) || p.serial() != serial: // streams side by side
 			return ErrOther

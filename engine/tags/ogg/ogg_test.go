@@ -143,9 +143,27 @@ func TestCommentsOfTheFirstSound(t *testing.T) {
 	if codec, c, err := Comments(bytes.NewReader(b)); err != nil || codec != "opus" || !slices.Equal(c.Entries, []string{"a=1"}) {
 		t.Errorf("%s %q %v", codec, c.Entries, err)
 	}
-	for name, b := range map[string][]byte{"film": film, "FLAC": made(first, 0, 1, 0, []byte{5}, "\x7FFLAC"), "none": made(0, 0, 1, 0, nil, "")} {
+	for name, b := range map[string][]byte{"film": film, "FLAC": made(first, 0, 1, 0, []byte{6}, "\x7FFLAC\x01"), "none": made(0, 0, 1, 0, nil, "")} {
 		if codec, _, err := Comments(bytes.NewReader(b)); !errors.Is(err, ErrOther) || (codec == "flac") != (name == "FLAC") {
 			t.Errorf("%s: %s %v", name, codec, err)
+		}
+	}
+}
+
+func oggFLAC(headers byte) []byte {
+	id := "\x7FFLAC\x01\x00\x00" + string([]byte{headers}) + "fLaC\x00\x00\x00\x03abc"
+	return slices.Concat(made(first, 0, 1, 0, []byte{byte(len(id))}, id), made(0, 0, 1, 1, []byte{6}, "\x84\x00\x00\x02xy"), made(lastOf, 9, 1, 2, []byte{1}, "s"))
+}
+
+// The example is put together by RFC 9639, 10.1: one more header, the mark, a block, and a packet with the last block.
+func TestFLACHead(t *testing.T) {
+	b := oggFLAC(1)
+	if got, err := FLACHead(bytes.NewReader(b)); err != nil || string(got) != "fLaC\x00\x00\x00\x03abc\x84\x00\x00\x02xy" {
+		t.Errorf("%q, %v", got, err)
+	}
+	for name, b := range map[string][]byte{"cut": b[:60], "Opus": file(1), "number not told": oggFLAC(0)} {
+		if got, err := FLACHead(bytes.NewReader(b)); err == nil {
+			t.Errorf("%s: %q", name, got)
 		}
 	}
 }
@@ -175,6 +193,7 @@ func FuzzOgg(f *testing.F) {
 	f.Add(file(1, "a=b"))
 	f.Add(slices.Concat(file(1, "a=b"), file(2, "R128_TRACK_GAIN=1")))
 	f.Add(edited(f, file(1), strings.Repeat("x", 1000)))
+	f.Add(oggFLAC(1))
 	id := "\x01vorbis" + string(make([]byte, 23))
 	note := "\x03vorbis" + comment("a=b") + "\x01"
 	f.Add(slices.Concat(made(first, 0, 1, 0, []byte{byte(len(id))}, id), made(0, 0, 1, 1, []byte{byte(len(note)), 9}, note+"\x05vorbisxx"), made(lastOf, 9, 1, 2, []byte{1}, "x")))
@@ -192,6 +211,7 @@ func FuzzOgg(f *testing.F) {
 		}
 		CheckChain(bytes.NewReader(b), int64(len(b)))
 		Comments(bytes.NewReader(b))
+		FLACHead(bytes.NewReader(b))
 		gains := tags.Gains{Track: tags.Loudness{Integrated: -20, Peak: 0}}
 		var once, twice bytes.Buffer
 		if err := Retag(&once, section(b), gains); err != nil {
