@@ -64,9 +64,9 @@ func checkChain(f *os.File, k kind) error {
 	return otherOgg(ogg.CheckChain(k.section(f), stat.Size()-k.start))
 }
 
-// otherOgg makes an error of this package of one that says that a file holds something else.
+// otherOgg makes an error of this package of one that says that there is no help for a file.
 func otherOgg(err error) error {
-	if errors.Is(err, ogg.ErrOther) {
+	if errors.Is(err, ogg.ErrOther) || errors.Is(err, ogg.ErrUnlike) {
 		return fmt.Errorf("%w: %w", ErrUnsupported, err)
 	}
 	return err

@@ -9,7 +9,7 @@ import (
 
 // CheckChain refuses a chained file, one stream behind the end of another, whose links are not alike enough to be
 // decoded as one sound: of another codec, or Opus with another output gain, which FFmpeg takes from the first link for
-// all of them. Its error wraps ErrOther. Damage is no concern of it.
+// all of them. Its error wraps ErrUnlike. Damage is no concern of it.
 func CheckChain(r io.ReaderAt, size int64) error {
 	begin, err := pageAt(r, 0)
 	if err != nil {
@@ -18,13 +18,19 @@ func CheckChain(r io.ReaderAt, size int64) error {
 	if end := lastPage(r, size); end == nil || end.serial() == begin.serial() {
 		return nil // the usual file: one link
 	}
-	var link page // the first page of the first link
+	var link page                   // where the sound of the first link begins
+	beginning, sound := true, false // of a link: streams side by side begin before any goes on; the first sound counts
 	for at := int64(0); ; {
 		p, err := pageAt(r, at)
 		if err != nil {
 			return nil
 		}
-		if _, sound := codecOf(p); p.has(first) && sound {
+		if p.has(first) && !beginning {
+			sound = false
+		}
+		beginning = p.has(first)
+		if _, ok := codecOf(p); ok && beginning && !sound {
+			sound = true
 			if link == nil {
 				link = p
 			} else if err := alike(link, p); err != nil {
@@ -40,9 +46,9 @@ func alike(a, b page) error {
 	other, _ := codecOf(b)
 	switch {
 	case one.name != other.name:
-		return fmt.Errorf("%w: it is %s and goes on as %s", ErrOther, one.name, other.name)
+		return fmt.Errorf("%w: it is %s and goes on as %s", ErrUnlike, one.name, other.name)
 	case one.name == "opus" && outputGain(a) != outputGain(b):
-		return fmt.Errorf("%w: its output gain is %.2f dB and goes on as %.2f dB", ErrOther, outputGain(a), outputGain(b))
+		return fmt.Errorf("%w: its output gain is %.2f dB and goes on as %.2f dB", ErrUnlike, outputGain(a), outputGain(b))
 	}
 	return nil
 }

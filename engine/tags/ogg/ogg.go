@@ -139,7 +139,7 @@ func Comments(src io.Reader) (codec string, c vorbis.Comment, err error) {
 	case h == nil:
 		return "", c, err
 	case err == nil && h.codec.comment == "":
-		err = fmt.Errorf("%w, and this is %s", ErrOther, h.codec.name)
+		err = fmt.Errorf("%w: %s", ErrOther, h.codec.name)
 	case err == nil:
 		c, err = h.comments()
 	}

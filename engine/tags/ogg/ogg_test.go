@@ -178,10 +178,12 @@ func TestCheckChain(t *testing.T) {
 	}{
 		"one": {file(1), true}, "two": {slices.Concat(file(1), file(2)), true}, "junk": {[]byte("OggS junk"), true},
 		"another gain": {slices.Concat(file(1), quiet), false}, "the same gain": {slices.Concat(quiet, quiet), true},
-		"another codec": {slices.Concat(file(1), made(first, 0, 8, 0, []byte{7}, "\x01vorbis")), false},
-		"a film":        {slices.Concat(film, file(1)), true}, "cut": {slices.Concat(file(1), quiet)[:150], true},
+		"another codec":              {slices.Concat(file(1), made(first, 0, 8, 0, []byte{7}, "\x01vorbis")), false},
+		"side by side":               {slices.Concat(file(1)[:47], quiet[:47], file(1)[47:], quiet[47:]), true},
+		"side by side, then another": {slices.Concat(file(1)[:47], quiet[:47], file(1)[47:], quiet[47:], quiet), false},
+		"a film":                     {slices.Concat(film, file(1)), true}, "cut": {slices.Concat(file(1), quiet)[:150], true},
 	} {
-		if err := CheckChain(bytes.NewReader(test.b), int64(len(test.b))); (err == nil) != test.ok || err != nil && !errors.Is(err, ErrOther) {
+		if err := CheckChain(bytes.NewReader(test.b), int64(len(test.b))); (err == nil) != test.ok || err != nil && !errors.Is(err, ErrUnlike) {
 			t.Errorf("%s: %v", name, err)
 		}
 	}

@@ -147,7 +147,9 @@ var (
 	// ErrDamaged is wrapped when a file breaks the rules of Ogg or of its codec.
 	ErrDamaged = errors.New("damaged")
 	// ErrOther is wrapped when a file holds something else than one stream of Vorbis or Opus after the other.
-	ErrOther = errors.New("only Ogg files with one stream of Vorbis or Opus at a time have tags that can be written")
+	ErrOther = errors.New("this is Ogg with something else than a stream of Vorbis or Opus")
+	// ErrUnlike is wrapped when the links of a chained file do not make one sound.
+	ErrUnlike = errors.New("the parts of this chained Ogg file do not make one sound")
 )
 
 // paginate cuts packets into pages of a logical stream, the first of which has the number given, and hands them to
