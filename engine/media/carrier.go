@@ -3,7 +3,6 @@ package media
 import (
 	"context"
 	"os"
-	"strconv"
 
 	"evenshelf/engine/tags/mp4"
 )
@@ -18,9 +17,14 @@ type carrier interface {
 // else FFmpeg, which translates what both formats have a name for.
 func (t *Toolbox) carrierFor(ctx context.Context, spec Spec, src *tagSource) (carrier, error) {
 	switch {
-	case src != nil && spec.Container == "flac" && src.kind.container == "flac":
-		head, err := flacHead(spec, src)
-		return flacCarrier(head), err
+	case spec.Container == "flac":
+		if list := flacSource(src); list != nil {
+			return flacHead(spec, list), nil
+		}
+	case src != nil && spec.Container == "ogg" && src.kind.container == "ogg":
+		if own := oggHead(spec, src); own != nil {
+			return own, nil
+		}
 	case src != nil && spec.Container == "mp4" && src.kind.container == "mp4":
 		if c, err := mp4.Read(src.f, src.size); err == nil { // else it is damaged, and FFmpeg takes what it understands
 			return mp4Carrier{c}, nil
@@ -38,12 +42,3 @@ type ffmpegCarrier []string
 
 func (c ffmpegCarrier) args() []string        { return c }
 func (c ffmpegCarrier) finish(*os.File) error { return nil }
-
-// flacCarrier is the metadata blocks that go into the room FFmpeg leaves for them.
-type flacCarrier []byte
-
-func (c flacCarrier) args() []string {
-	return []string{"-map_metadata", "-1", "-metadata_header_padding", strconv.Itoa(len(c) + flacPadding)}
-}
-
-func (c flacCarrier) finish(f *os.File) error { return putHead(f, c) }

@@ -45,6 +45,11 @@ func (t *Toolbox) look(ctx context.Context, f *os.File, k kind) (finding, error)
 	case "mp3":
 		return lookMPEG(f, k.start)
 	}
+	if k.container == "ogg" {
+		if err := checkChain(f, k); err != nil {
+			return finding{}, err
+		}
+	}
 	p, err := t.runProbe(ctx, f, k)
 	if err != nil {
 		return finding{}, err
@@ -78,6 +83,9 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	args := []string{"-nostdin", "-v", "error", "-max_alloc", "268435456", "-filter_threads", "1", "-threads", "1", "-guess_layout_max", "0"}
 	if k.container == "flac" { // it checks the frames' checksums only if told to
 		args = append(args, "-err_detect", "+crccheck")
+	}
+	if k.container == "ogg" { // or it looks for the length, which is known, and takes the last link of a chain for damage
+		args = append(args, "-seekable", "0")
 	}
 	args = append(args, "-c:a", decoder)
 	if l.extent != nil {

@@ -1,65 +1,141 @@
 package media
 
 import (
+	"bufio"
 	"bytes"
 	"fmt"
 	"io"
 	"os"
+	"slices"
+	"strings"
 
-	"github.com/mewkiz/flac"
-	"github.com/mewkiz/flac/meta"
+	"evenshelf/engine/tags"
+	"evenshelf/engine/tags/flac"
+	"evenshelf/engine/tags/ogg"
+	"evenshelf/engine/tags/vorbis"
 )
 
-// FFmpeg joins comments of one name and renames some. So when it encodes a FLAC from
-// a FLAC, it only leaves room in front of the sound, and what belongs there is put in afterwards.
+// FFmpeg joins comments of one name, renames some and drops the blocks it has no use for. So encoders only leave room
+// in front of the sound, and what belongs there is put in afterwards, together with a seek table of the new sound.
 
-const (
-	flacFirst   = 4 + 4 + 34 // where the block after STREAMINFO begins
-	flacPadding = 8 << 10    // room left for later changes of tags
-	maxBlock    = 1<<24 - 1  // bytes of one block: its length has 24 bits
-)
+const flacPadding = 8 << 10 // bytes left for later changes of tags
 
-// flacHead returns the metadata blocks of a delivery as bytes, without STREAMINFO and none of them marked
-// as the last. Pictures are left out, the last first, where all of it is more than one padding block.
-func flacHead(spec Spec, tags *tagSource) ([]byte, error) {
-	for blocks := flacTags(spec, tags); ; blocks = blocks[:len(blocks)-1] {
-		var buf bytes.Buffer
-		_, err := guard(func() (*flac.Encoder, error) {
-			return flac.NewEncoder(&buf, &meta.StreamInfo{NChannels: 1, BitsPerSample: 16}, append(blocks, &meta.Block{Header: meta.Header{Type: meta.TypePadding}})...)
-		})
-		if err != nil {
-			return nil, err
-		}
-		head := buf.Bytes()[flacFirst : buf.Len()-4] // the empty padding only kept the others from being last
-		if len(head) <= maxBlock-flacPadding || len(blocks) == 1 {
-			return head, nil
-		}
-	}
+// flacCarrier is the metadata of a delivery: what stands behind STREAMINFO, in order.
+type flacCarrier struct {
+	blocks []flac.Block // noPoints is one of them
+	room   int64        // bytes that are asked for: with the table, but without the padding's header
 }
 
-// putHead overwrites all blocks after STREAMINFO with head and a padding that fills the rest.
-func putHead(f *os.File, head []byte) error {
-	end, at := int64(0), int64(flacFirst)
-	for end == 0 {
-		b, err := readAt(f, at, 4)
-		if err != nil {
+// flacSource lists the metadata blocks of a source that is a FLAC, by itself or in Ogg; those behind damage are left
+// out. Other sources have none.
+func flacSource(src *tagSource) (list []flac.Block) {
+	switch {
+	case src == nil:
+	case src.kind.container == "flac":
+		list, _, _ = flac.Blocks(io.NewSectionReader(src.f, src.kind.start, src.size-src.kind.start))
+	case src.kind.container == "ogg":
+		if head, err := ogg.FLACHead(src.kind.section(src.f)); err == nil {
+			list, _, _ = flac.Blocks(bytes.NewReader(head))
+		}
+	}
+	return list
+}
+
+// flacHead chooses the metadata of a delivery from that of its source. Every block is carried as it is, but for those
+// that a new encoding makes anew and the comments that a new level makes wrong. Where loudspeakers are not the usual
+// ones, a comment names them.
+func flacHead(spec Spec, list []flac.Block) *flacCarrier {
+	edit := vorbis.Edit{Vendor: vorbis.Vendor, Drop: func(name string) bool { return tags.Stale(name) || strings.EqualFold(name, maskComment) }}
+	if mask := unusualMask(spec.Format.Layout); mask != "" {
+		edit.Add = [][2]string{{maskComment, mask}}
+	}
+	length := int64(0)
+	if info, err := flac.ReadInfo(list); err == nil {
+		length = flac.SeekBytes(info.NSamples, info.SampleRate)
+	}
+	list, _ = flac.EditComments(list, edit) // of damaged ones, those in front of the damage
+	own := slices.IndexFunc(list, isSeekTable)
+	c := &flacCarrier{}
+	if own < 0 {
+		c.blocks = append(c.blocks, noPoints)
+	}
+	for i, b := range list {
+		switch {
+		case i == own: // it keeps its place
+			c.blocks = append(c.blocks, noPoints)
+		case !slices.Contains([]byte{flac.StreamInfo, flac.Padding, flac.SeekTable, flac.Forbidden}, b.Type):
+			c.blocks = append(c.blocks, b)
+		}
+	}
+	c.room = min(flac.Size(c.blocks)+length+flacPadding, flac.MaxBody)
+	return c
+}
+
+// noPoints holds the place of the seek table, which is made of the new sound.
+var noPoints = flac.Made(flac.SeekTable, nil)
+
+func isSeekTable(b flac.Block) bool { return b.Type == flac.SeekTable }
+
+func (c *flacCarrier) args() []string {
+	return []string{"-map_metadata", "-1", "-metadata_header_padding", fmt.Sprint(c.room)}
+}
+
+// finish overwrites all blocks behind STREAMINFO with those of the delivery and a padding that fills the rest. Where
+// they do not fit, the sound is moved back.
+func (c *flacCarrier) finish(f *os.File) error {
+	stat, err := f.Stat()
+	if err != nil {
+		return err
+	}
+	written, sound, err := flac.Blocks(f)
+	if err != nil {
+		return err
+	}
+	info, err := flac.ReadInfo(written)
+	if err != nil {
+		return err
+	}
+	table, err := flac.MakeSeekTable(f, sound, stat.Size(), info)
+	if err != nil {
+		return err
+	}
+	blocks := slices.Clone(c.blocks)
+	blocks[slices.IndexFunc(blocks, isSeekTable)] = flac.Made(flac.SeekTable, table)
+	padding := sound - flac.First - flac.Size(blocks) - 4
+	if padding < 0 {
+		if err := moveBack(f, sound, stat.Size(), flacPadding-padding); err != nil {
 			return err
 		}
-		if len(b) < 4 {
-			return io.ErrUnexpectedEOF
+		padding = flacPadding
+	}
+	blocks = append(blocks, flac.Block{Type: flac.Padding, Body: io.NewSectionReader(zeros{}, 0, padding)})
+	w := bufio.NewWriter(io.NewOffsetWriter(f, flac.First))
+	if err := flac.Write(w, blocks, true); err != nil {
+		return err
+	}
+	return w.Flush()
+}
+
+// zeros is as many zeros as are asked for.
+type zeros struct{}
+
+func (zeros) ReadAt(b []byte, _ int64) (int, error) {
+	clear(b)
+	return len(b), nil
+}
+
+// moveBack moves the bytes of a file from one place to its end so many bytes towards the end.
+func moveBack(f *os.File, from, end, by int64) error {
+	buf := make([]byte, 1<<20)
+	for end > from {
+		b := buf[:min(int64(len(buf)), end-from)]
+		end -= int64(len(b))
+		if _, err := f.ReadAt(b, end); err != nil {
+			return err
 		}
-		at += 4 + int64(b[1])<<16 + int64(b[2])<<8 + int64(b[3])
-		if b[0]&0x80 != 0 {
-			end = at
+		if _, err := f.WriteAt(b, end+by); err != nil {
+			return err
 		}
 	}
-	left := end - flacFirst - int64(len(head)) - 4
-	if left < 0 || left > maxBlock {
-		return fmt.Errorf("FFmpeg left %d bytes too little for the tags", -left)
-	}
-	padding := make([]byte, 4+left)
-	padding[0] = 0x80 | byte(meta.TypePadding)
-	padding[1], padding[2], padding[3] = byte(left>>16), byte(left>>8), byte(left)
-	_, err := f.WriteAt(append(head, padding...), flacFirst)
-	return err
+	return nil
 }

@@ -3,16 +3,13 @@ package media
 import (
 	"bufio"
 	"fmt"
-	"io"
 	"os"
-	"strings"
 
 	"github.com/mewkiz/flac"
 	"github.com/mewkiz/flac/frame"
 	"github.com/mewkiz/flac/meta"
 
 	"evenshelf/engine/audio"
-	"evenshelf/engine/tags"
 )
 
 // flacBlock is the length of a FLAC frame, the reference encoder's default.
@@ -25,6 +22,7 @@ type flacWriter struct {
 	enc        *flac.Encoder
 	out        *seekBuffer
 	quantisers []quantiser
+	carry      *flacCarrier
 	frame      *frame.Frame
 	samples    [][]int32 // one FLAC frame being filled
 	fill       int
@@ -36,9 +34,10 @@ func newFLACWriter(f *os.File, spec Spec, tags *tagSource) (*flacWriter, error) 
 		BlockSizeMin: flacBlock, BlockSizeMax: flacBlock, SampleRate: uint32(spec.Format.Rate),
 		NChannels: uint8(channels), BitsPerSample: uint8(spec.BitDepth),
 	}
-	w := &flacWriter{f: f, out: &seekBuffer{f: f, w: bufio.NewWriterSize(f, 1<<16)}, quantisers: newQuantisers(spec)}
+	w := &flacWriter{f: f, out: &seekBuffer{f: f, w: bufio.NewWriterSize(f, 1<<16)}, quantisers: newQuantisers(spec), carry: flacHead(spec, flacSource(tags))}
+	room := &meta.Block{Header: meta.Header{Type: meta.TypePadding, Length: w.carry.room}}
 	var err error
-	if w.enc, err = flac.NewEncoder(w.out, info, flacTags(spec, tags)...); err != nil {
+	if w.enc, err = flac.NewEncoder(w.out, info, room); err != nil {
 		return nil, err
 	}
 	w.frame = &frame.Frame{Header: frame.Header{
@@ -50,32 +49,6 @@ func newFLACWriter(f *os.File, spec Spec, tags *tagSource) (*flacWriter, error) 
 		w.frame.Subframes = append(w.frame.Subframes, &frame.Subframe{})
 	}
 	return w, nil
-}
-
-// flacTags returns the metadata blocks: comments and pictures of a FLAC source, and the loudspeaker
-// positions where they are not the usual ones.
-func flacTags(spec Spec, src *tagSource) []*meta.Block {
-	comment := &meta.VorbisComment{Vendor: "evenshelf"}
-	if mask := unusualMask(spec.Format.Layout); mask != "" {
-		comment.Tags = append(comment.Tags, [2]string{maskComment, mask})
-	}
-	var pictures []*meta.Block
-	if src != nil && src.kind.container == "flac" {
-		if m, err := readFLACBlocks(io.NewSectionReader(src.f, src.kind.start, src.size-src.kind.start), true); err == nil {
-			pictures = m.pictures
-			for _, c := range m.comments {
-				if !tags.Stale(c[0]) && !strings.EqualFold(c[0], maskComment) {
-					comment.Tags = append(comment.Tags, c)
-				}
-			}
-		}
-	}
-	length := 8 + len(comment.Vendor)
-	for _, c := range comment.Tags {
-		length += 4 + len(c[0]) + 1 + len(c[1])
-	}
-	blocks := []*meta.Block{{Header: meta.Header{Type: meta.TypeVorbisComment, Length: int64(length)}, Body: comment}}
-	return append(blocks, pictures...)
 }
 
 // unusualMask returns the text of the comment that names the loudspeakers, or "" where it is not needed.
@@ -129,8 +102,10 @@ func (w *flacWriter) finish() error {
 		return err
 	}
 	// The encoder counts the last, shorter frame as the smallest; STREAMINFO's minimum leaves it out.
-	_, err := w.f.WriteAt([]byte{flacBlock >> 8, flacBlock & 0xFF, flacBlock >> 8, flacBlock & 0xFF}, 8)
-	return err
+	if _, err := w.f.WriteAt([]byte{flacBlock >> 8, flacBlock & 0xFF, flacBlock >> 8, flacBlock & 0xFF}, 8); err != nil {
+		return err
+	}
+	return w.carry.finish(w.f)
 }
 
 func (w *flacWriter) abort() {}

@@ -8,13 +8,35 @@ import (
 	"os"
 
 	"evenshelf/engine/tags"
+	"evenshelf/engine/tags/flac"
 	"evenshelf/engine/tags/mp4"
+	"evenshelf/engine/tags/ogg"
 )
+
+type retagger func(dst io.Writer, src *io.SectionReader, g tags.Gains) error
 
 // retaggers write a file of a container anew with other gain tags; every byte of its sound stays. Each room of tags
 // that has one is entered here.
-var retaggers = map[string]func(dst io.Writer, src *io.SectionReader, g tags.Gains) error{
-	"mp4": mp4.Retag, "mov": mp4.Retag,
+var retaggers = map[string]retagger{
+	"flac": behindTags(flac.Retag),
+	"mp4":  mp4.Retag,
+	"mov":  mp4.Retag,
+	"ogg":  behindTags(ogg.Retag),
+}
+
+// behindTags is a retagger that leaves what taggers of other formats put in front of the file, also if there are gains
+// in it: the format's own are what players go by.
+func behindTags(retag retagger) retagger {
+	return func(dst io.Writer, src *io.SectionReader, g tags.Gains) error {
+		k, err := sniff(src)
+		if err != nil {
+			return err
+		}
+		if _, err := io.CopyN(dst, io.NewSectionReader(src, 0, k.start), k.start); err != nil {
+			return err
+		}
+		return otherOgg(retag(dst, io.NewSectionReader(src, k.start, src.Size()-k.start), g))
+	}
 }
 
 // Retag writes a copy of the recording at source to path in which its gain tags are those given, instead of

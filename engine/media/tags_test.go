@@ -1,7 +1,6 @@
 package media
 
 import (
-	"os"
 	"path/filepath"
 	"strings"
 	"testing"
@@ -61,25 +60,5 @@ func TestTagsThatSoundTechnical(t *testing.T) {
 				t.Errorf("%s: %q is missing in %s", name, want, got)
 			}
 		}
-	}
-}
-
-// More pictures than one block of room holds: the first ones are kept and the file is in order.
-func TestFLACWithHugePictures(t *testing.T) {
-	snd, dir := programme(2, 10_000, 16, 0.5), t.TempDir()
-	jpeg := load(t, cover(t))
-	huge := filepath.Join(dir, "huge.jpg")
-	if err := os.WriteFile(huge, append(jpeg, make([]byte, 9<<20)...), 0o644); err != nil {
-		t.Fatal(err)
-	}
-	source, path := filepath.Join(dir, "source.flac"), filepath.Join(dir, "x.flac")
-	run(t, "flac", "-s", "-T", "TITLE=T", "--picture", "3|image/jpeg|||"+huge, "--picture", "4|image/jpeg|||"+huge, "-o", source, writeWAV(t, snd, 44100))
-	spec := flacSpec(16, 44100)
-	spec.TagsFrom = source
-	write(t, withFFmpeg(t), path, spec, snd)
-	run(t, "flac", "-t", "-s", path)
-	out := string(run(t, "metaflac", "--list", "--block-type=PICTURE,VORBIS_COMMENT", path))
-	if n := strings.Count(out, "type: 6 (PICTURE)"); n != 1 || !strings.Contains(out, "TITLE=T") {
-		t.Errorf("%d pictures", n)
 	}
 }
