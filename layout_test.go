@@ -15,7 +15,8 @@ import (
 var mayImport = map[string][]string{
 	"engine/audio":    {},
 	"engine/tags":     {"engine/audio"},
-	"engine/media":    {"engine/audio", "engine/tags"},
+	"engine/tags/id3": {"engine/tags"},
+	"engine/media":    {"engine/audio", "engine/tags", "engine/tags/id3"},
 	"engine/meter":    {"engine/audio"},
 	"engine/faults":   {"engine/audio"},
 	"engine/speech":   {"engine/audio"},

@@ -8,11 +8,14 @@ import (
 	"os"
 
 	"evenshelf/engine/tags"
+	"evenshelf/engine/tags/id3"
 )
 
 // retaggers write a file of a container anew with other gain tags; every byte of its sound stays. Each room of tags
 // that has one is entered here.
-var retaggers = map[string]func(dst io.Writer, src *io.SectionReader, g tags.Gains) error{}
+var retaggers = map[string]func(dst io.Writer, src *io.SectionReader, g tags.Gains) error{
+	"mp3": id3.Retag, "aac": id3.Retag,
+}
 
 // Retag writes a copy of the recording at source to path in which its gain tags are those given, instead of
 // whatever it had. Nothing else of it changes. What is at path is overwritten. Errors name the file and wrap
