@@ -42,21 +42,32 @@ type mark struct {
 	editable bool  // it is one of those that rules are for
 }
 
-// lastTag looks for the tag that b ends with. A tag may itself end in zeros.
+// lastTag looks for the tag that b ends with: at the very end first, for a tag may itself end in zeros, and then with
+// zeros behind it.
 func lastTag(b []byte) mark {
 	full := len(bytes.TrimRight(b, "\x00"))
-	find := func(magic string, size int) (at int, ok bool) { // the last tag, or its end, of so many bytes
-		if at := len(b) - size; at >= 0 && bytes.HasPrefix(b[at:], []byte(magic)) {
-			return at, true
-		}
-		from := max(0, full-size)
-		to := min(full, len(b)-size+len(magic)) // where the tag still fits
-		if from >= to {
-			return 0, false
-		}
-		at = bytes.Index(b[from:to], []byte(magic))
-		return from + at, at >= 0
+	begins := func(at int, magic string) bool { // "TAG" is in "APETAGEX", too
+		return bytes.HasPrefix(b[at:], []byte(magic)) && !bytes.HasSuffix(b[:at], []byte("APE"))
 	}
+	m := tagAt(b, len(b), func(magic string, size int) (int, bool) {
+		at := len(b) - size
+		return at, at >= 0 && begins(at, magic)
+	})
+	if m.length > 0 || full == len(b) {
+		return m
+	}
+	return tagAt(b, full, func(magic string, size int) (int, bool) {
+		for at := max(0, full-size); at < full && at+size <= len(b); at++ {
+			if begins(at, magic) {
+				return at, true
+			}
+		}
+		return 0, false
+	})
+}
+
+// tagAt looks for a tag whose end find finds by its magic and size, or whose last letter is the one before end.
+func tagAt(b []byte, end int, find func(magic string, size int) (at int, ok bool)) mark {
 	if at, ok := find(apeMagic, apeLen); ok {
 		size, flags := int64(binary.LittleEndian.Uint32(b[at+12:])), binary.LittleEndian.Uint32(b[at+20:]) // the size counts the footer but not the header
 		if size < apeLen || flags&apeIsHeader != 0 {
@@ -68,11 +79,11 @@ func lastTag(b []byte) mark {
 		zeros := len(b) - at - apeLen
 		return mark{size + int64(zeros), zeros, true}
 	}
-	const end, digits = "LYRICS200", 6
-	if words := b[:full]; full > len(end)+digits && bytes.HasSuffix(words, []byte(end)) {
-		size := full - len(end) - digits
+	const magic, digits = "LYRICS200", 6
+	if words := b[:end]; end > len(magic)+digits && bytes.HasSuffix(words, []byte(magic)) {
+		size := end - len(magic) - digits
 		if n, ok := decimal(words[size : size+digits]); ok {
-			return mark{n + int64(len(b)-size), len(b) - full, false}
+			return mark{n + int64(len(b)-size), len(b) - end, false}
 		}
 	}
 	if at, ok := find("3DI", headLen); ok { // the footer of an ID3v2.4 tag
