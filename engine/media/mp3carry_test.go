@@ -194,6 +194,29 @@ func TestMP3WithoutTags(t *testing.T) {
 	}
 }
 
+// Tags far larger than usual, several in a row, and both with junk behind them, are carried to the last byte.
+func TestMP3HugeTags(t *testing.T) {
+	box := withFFmpeg(t)
+	bare := mp3Source(t, 0)
+	snd, info := decode(t, box, bare)
+	tag := func(size int) []byte { // one frame (ID3v2.3.0, 3.1 and 3.3)
+		head := []byte{'I', 'D', '3', 3, 0, 0, byte((size + 10) >> 21), byte((size + 10) >> 14 & 127), byte((size + 10) >> 7 & 127), byte((size + 10) & 127)}
+		return slices.Concat(head, []byte{'P', 'R', 'I', 'V', byte(size >> 24), byte(size >> 16), byte(size >> 8), byte(size), 0, 0},
+			bytes.Repeat([]byte("x\x00\xFF\xFB\x90\x00"), size/6+1)[:size])
+	}
+	tags := slices.Concat(tag(30<<20), tag(5))
+	source, path := save(t, "source.mp3", slices.Concat(tags, make([]byte, 500), load(t, bare))), filepath.Join(t.TempDir(), "copy.mp3")
+	spec := box.SpecFor(info, Wish{})
+	spec.TagsFrom = source
+	write(t, box, path, spec, snd)
+	if got := load(t, path); !bytes.HasPrefix(got, tags) || parseMPEG(got[len(tags):]).layer != 3 {
+		t.Errorf("it begins with %q", got[:50])
+	}
+	if got, _ := decode(t, box, path); got.Frames() != snd.Frames() {
+		t.Errorf("%d frames of %d", got.Frames(), snd.Frames())
+	}
+}
+
 // soundMD5 is the sum of all packets of a file, as FFmpeg cuts it into them.
 func soundMD5(t testing.TB, path string) string {
 	t.Helper()
@@ -259,5 +282,26 @@ func TestRetagADTS(t *testing.T) {
 	}
 	if _, found := ffprobe(t, path); soundMD5(t, source) != soundMD5(t, path) || found["REPLAYGAIN_TRACK_GAIN"] != "2.00 dB" {
 		t.Errorf("%v", found)
+	}
+}
+// An APEv2 tag in front of the sound, with a picture in it that looks like sound, is passed over.
+func TestAPEInFront(t *testing.T) {
+	source := mp3Source(t, 0)
+	file := load(t, source)
+	file = file[:bytes.Index(file, []byte("APETAGEX"))]
+	want, info := decode(t, withFFmpeg(t), save(t, "a.mp3", file))
+	for _, size := range []int{100, 100_000, 500_000} {
+		cover := bytes.Repeat([]byte("\xFF\xFB\x90\x00a picture"), size/13)
+		item := slices.Concat([]byte(u32(int64(len(cover)))), []byte("\x02\x00\x00\x00Cover Art (Front)\x00"), cover)
+		edge := func(flags int64) []byte {
+			return []byte("APETAGEX" + u32(2000) + u32(int64(len(item)+32)) + u32(1) + u32(flags) + "\x00\x00\x00\x00\x00\x00\x00\x00")
+		}
+		path := save(t, "b.mp3", slices.Concat(edge(1<<31|1<<29), item, edge(1<<31), file))
+		for _, box := range []*Toolbox{withFFmpeg(t), withoutFFmpeg()} {
+			got, is := decode(t, box, path)
+			if got.Frames() != want.Frames() || is.Frames != info.Frames || is.BitRate != info.BitRate {
+				t.Errorf("%d bytes by %s: %d frames of %d, %+v", size, is.Decoder, got.Frames(), want.Frames(), is)
+			}
+		}
 	}
 }

@@ -18,7 +18,7 @@ const (
 )
 
 // soundEnd returns where the sound of a FLAC or of MPEG audio ends that begins at offset start of a file of so
-// many bytes: in front of all ID3v1, APEv2 and Lyrics3v2 tags and zeros that follow its last frame.
+// many bytes: in front of all tags and zeros that follow its last frame.
 func soundEnd(r io.ReaderAt, start, size int64, mpeg bool) (int64, error) {
 	end, err := id3.TailStart(r, start, size)
 	if err != nil {

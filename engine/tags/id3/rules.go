@@ -20,9 +20,9 @@ type rule struct {
 // levelled is for a copy with another level, encoded anew.
 //
 // TSSE names the encoder of the sound that was, and its settings: it would be untrue. TENC names who encoded the recording,
-// a person or a station: it is kept like every other word about its history. TLEN is kept, for the length is. Times that
-// count MPEG frames (in ETCO, SYTC, SYLT and POSS) are kept as well: the copy has frames of the same length, and its encoder's
-// delay differs from any other's by less than two of them, which is 50 ms at most where music is kept.
+// a person or a station: it is kept like every other word about its history. TLEN is kept, for the length is. So are times
+// that count MPEG frames instead of milliseconds (ETCO, SYTC, SYLT, POSS allow both): the copy has the source's sampling rate and
+// so frames of the same length, and a sound is in the same frame or the one beside it, as the two encoders' delays differ.
 var levelled = rule{
 	frames: []string{
 		"RVA2", "XRVA", "RVAD", "RGAD", // gains to play the sound at, as it was
@@ -86,7 +86,10 @@ func (t *tag) edited(b []byte, r rule, gains [][2]string) []byte {
 		return nil
 	}
 	t.frames = kept
-	return t.render()
+	if out := t.render(); int64(len(out)) == HeadLength(out) { // its size has room for no more
+		return out
+	}
+	return b
 }
 
 // mendChapter makes a chapter be found by its times alone: its places in the file are marked as unused (chapter
