@@ -284,6 +284,7 @@ func TestRetagADTS(t *testing.T) {
 		t.Errorf("%v", found)
 	}
 }
+
 // An APEv2 tag in front of the sound, with a picture in it that looks like sound, is passed over.
 func TestAPEInFront(t *testing.T) {
 	source := mp3Source(t, 0)
