@@ -19,6 +19,7 @@ var mayImport = map[string][]string{
 	"engine/tags/flac":   {"engine/tags", "engine/tags/vorbis"},
 	"engine/tags/ogg":    {"engine/tags", "engine/tags/vorbis"},
 	"engine/tags/mp4":    {"engine/tags"},
+	"engine/tags/id3":    {"engine/tags"},
 	"engine/media":       {"engine/audio", "engine/tags"},
 	"engine/meter":       {"engine/audio"},
 	"engine/faults":      {"engine/audio"},

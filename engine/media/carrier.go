@@ -29,10 +29,15 @@ func (t *Toolbox) carrierFor(ctx context.Context, spec Spec, src *tagSource) (ca
 		if c, err := mp4.Read(src.f, src.size); err == nil { // else it is damaged, and FFmpeg takes what it understands
 			return mp4Carrier{c}, nil
 		}
+	case src != nil && spec.Container == "mp3" && src.kind.container == "mp3":
+		return newMP3Carrier(src)
 	}
 	list, err := t.ffmpegTags(ctx, src, spec.Container != "ogg" && spec.Container != "aiff")
 	if mask := unusualMask(spec.Format.Layout); err == nil && spec.Codec == "flac" {
 		list = append(list, "-metadata", maskComment+"="+mask) // empty: none, not even the source's
+	}
+	if spec.Container == "mp3" {
+		list = append(list, "-id3v2_version", "3") // the version old players read too
 	}
 	return ffmpegCarrier(list), err
 }

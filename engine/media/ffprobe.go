@@ -18,11 +18,16 @@ import (
 const inputFD = "file:/dev/fd/3"
 
 // guarded are the options that stand for every input FFmpeg is given, the last of which names it. What is behind
-// the end of the sound is kept from it: only a number is added to the name.
+// the end of the sound is kept from it, and what is in front of MPEG audio, where it would look for a frame in whatever it
+// does not know: only numbers are added to the name.
 func guarded(k kind) []string {
 	protocols, name := "file,pipe", inputFD
 	if k.end > 0 {
-		protocols, name = protocols+",subfile", fmt.Sprintf("subfile,,start,0,end,%d,,:%s", k.end, inputFD)
+		start := int64(0)
+		if k.container == "mp3" {
+			start = k.start
+		}
+		protocols, name = protocols+",subfile", fmt.Sprintf("subfile,,start,%d,end,%d,,:%s", start, k.end, inputFD)
 	}
 	return []string{"-protocol_whitelist", protocols, "-f", k.demuxer, "-i", name}
 }

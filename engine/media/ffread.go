@@ -31,7 +31,7 @@ type ffReader struct {
 type promise struct {
 	frames int64 // −1 if nothing is promised
 	slack  int64 // fewer by so many is not yet a cut recording
-	cut    bool  // a little more, up to slack, is the codec's padding and is left out
+	over   int64 // more by so many is the codec's padding and is left out
 }
 
 // maxPacket is the longest packet of a lossy codec, in frames, with room to spare (HE-AAC: 2048).
@@ -41,12 +41,13 @@ const maxPacket = 4096
 func promiseOf(info Info, g gapless) promise {
 	p := promise{frames: info.Frames}
 	switch {
-	case g.trimmed: // exact
+	case g.trimmed: // exact, but FFmpeg misses padding in the packet that its skipping ends in
+		p.over = 1152
 	case info.Container == "mp3":
 		p.slack = 2 * 1152 // some encoders count the note itself, or leave a frame out
 	case info.BitDepth == 0:
 		// The length is that of the presentation; packets are whole, so the last one overshoots.
-		p.slack, p.cut = maxPacket, true
+		p.slack, p.over = maxPacket, maxPacket
 	}
 	return p
 }
@@ -85,7 +86,7 @@ func (r *ffReader) begin(g gapless) error {
 	r.info.Format = h.format
 	r.promise = promiseOf(r.info, g)
 	frames := int64(math.MaxInt64)
-	if r.promise.cut && r.promise.frames >= 0 {
+	if r.promise.over > 0 && r.promise.frames >= 0 {
 		frames = r.promise.frames
 	}
 	r.stream = newBlockStream(out, unpackerFor(h.container, h.tag == tagFloat), h.align, frames)
@@ -133,8 +134,8 @@ func (r *ffReader) ReadBlock(dst audio.Block) (int, error) {
 // more reports whether more follows what was promised than a packet's padding. Then the header is wrong
 // (the last part of a chained Ogg file counts from 0 again) and everything is delivered.
 func (r *ffReader) more() bool {
-	extra, _ := r.stream.r.Peek(int(r.promise.slack+1) * r.stream.align)
-	return int64(len(extra)/r.stream.align) > r.promise.slack
+	extra, _ := r.stream.r.Peek(int(r.promise.over+1) * r.stream.align)
+	return int64(len(extra)/r.stream.align) > r.promise.over
 }
 
 // finish reaps the child and decides how the recording ended.

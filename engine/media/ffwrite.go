@@ -18,6 +18,9 @@ type ffWriter struct {
 	pack  *packer
 	f     *os.File
 	carry carrier
+
+	mp3    bool
+	frames int64 // written so far
 }
 
 func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *tagSource) (*ffWriter, error) {
@@ -52,7 +55,7 @@ func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *
 	if err != nil {
 		return nil, err
 	}
-	w := &ffWriter{child: c, pack: newPacker(pcm), f: f, carry: carry}
+	w := &ffWriter{child: c, pack: newPacker(pcm), f: f, carry: carry, mp3: spec.Codec == "mp3"}
 	if err := w.send(streamHead(pcm)); err != nil {
 		c.kill()
 		return nil, err
@@ -76,11 +79,7 @@ func (t *Toolbox) encoderArgs(spec Spec) []string {
 	channels := spec.Format.Layout.Channels
 	switch spec.Codec {
 	case "mp3":
-		args := []string{"-c:a", "libmp3lame", "-id3v2_version", "3"} // the version old players read too
-		if spec.BitRate == 0 {
-			return append(args, "-q:a", "0")
-		}
-		return append(args, "-b:a", rate(mp3BitRate(spec.BitRate, spec.Format.Rate)))
+		return append([]string{"-c:a", "libmp3lame"}, mp3Rate(spec)...)
 	case "vorbis":
 		return []string{"-c:a", "libvorbis", "-q:a", fmt.Sprint(vorbisQuality(spec.BitRate, spec.Format))}
 	case "opus":
@@ -104,6 +103,23 @@ func (t *Toolbox) encoderArgs(spec Spec) []string {
 	}
 }
 
+// mp3Rate chooses a rate of the kind the source has, and no worse a quality.
+func mp3Rate(spec Spec) []string {
+	// Sound that is easy to code gets less from LAME than the mean asked for, by up to a quarter. Above its limit for
+	// means there is little left to vary.
+	const headroom, limit = 1.25, 310_000
+	mean := int(headroom * float64(spec.BitRate))
+	switch {
+	case spec.BitRate == 0:
+		return []string{"-q:a", "0"}
+	case spec.Variable && spec.Quality >= 0:
+		return []string{"-q:a", strconv.Itoa(spec.Quality)}
+	case spec.Variable && mean <= limit:
+		return []string{"-abr", "1", "-b:a", strconv.Itoa(mean)}
+	}
+	return []string{"-b:a", strconv.Itoa(mp3BitRate(spec.BitRate, spec.Format.Rate))}
+}
+
 // exactLength has an MP4 file count its length in frames instead of milliseconds, so that the padding of
 // the last packet can be told from sound. Older FFmpegs cannot do it.
 func (t *Toolbox) exactLength(spec Spec) []string {
@@ -115,7 +131,10 @@ func (t *Toolbox) exactLength(spec Spec) []string {
 	return []string{"-movie_timescale", strconv.Itoa(spec.Format.Rate)}
 }
 
-func (w *ffWriter) write(src audio.Block) error { return w.send(w.pack.pack(src)) }
+func (w *ffWriter) write(src audio.Block) error {
+	w.frames += int64(src.Frames())
+	return w.send(w.pack.pack(src))
+}
 
 // send writes to the child. If the child has ended, its own words are the error.
 func (w *ffWriter) send(b []byte) error {
@@ -132,6 +151,11 @@ func (w *ffWriter) send(b []byte) error {
 func (w *ffWriter) finish() error {
 	if err := w.child.wait(); err != nil {
 		return err
+	}
+	if w.mp3 {
+		if err := noteLength(w.f, w.frames); err != nil {
+			return err
+		}
 	}
 	return w.carry.finish(w.f)
 }

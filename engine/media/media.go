@@ -30,7 +30,9 @@ type Info struct {
 	Frames    int64  // as the header promises; −1 if it does not
 	BitDepth  int    // bits a sample of integer or float PCM and FLAC; 0 for lossy codecs
 	Float     bool   // floating-point PCM
-	BitRate   int    // bit/s of a lossy stream; 0 if not known
+	BitRate   int    // bit/s of a lossy stream, on average; 0 if not known
+	Variable  bool   // the bit rate of an MP3 varies
+	Quality   int    // LAME's quality of such, 0 (best) to 9; −1 if not stated
 	Video     bool   // there are moving pictures beside the sound (cover art does not count)
 	Decoder   string // who decodes it, with version, e.g. "ffmpeg 5.1.6 mp3float"
 }
@@ -76,9 +78,11 @@ type Spec struct {
 	Format    audio.Format
 	BitDepth  int // integer PCM and FLAC: 8, 16, 24, 32; float PCM: 32, 64
 	Float     bool
-	Plain     bool   // integers are rounded as they are, without dither
-	Shaped    bool   // the noise of dither is shaped
-	BitRate   int    // bit/s for lossy codecs, 0 for the codec's best quality
+	Plain     bool // integers are rounded as they are, without dither
+	Shaped    bool // the noise of dither is shaped
+	BitRate   int  // bit/s for lossy codecs, 0 for the codec's best quality
+	Variable  bool // the bit rate of an MP3 varies: after Quality, or if that is −1 about BitRate
+	Quality   int
 	Extension string // of the delivered file, with its dot: ".wav"
 	Rate      int    // of a lossy file, Hz, where the codec has not the source's; 0: that of Format
 	Note      string // why this is not the source's own format, or empty

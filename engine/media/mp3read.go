@@ -37,8 +37,9 @@ func newMP3Reader(ctx context.Context, f *os.File, path string, k kind) (*mp3Rea
 	if err != nil {
 		return nil, err
 	}
-	if l.info.Codec != "mp3" {
-		return nil, fmt.Errorf("%w: reading %s needs FFmpeg, and %s", ErrUnsupported, l.info.Codec, needFFmpeg)
+	const lowest = 16_000 // Hz; go-mp3 does not know the rates below, which are MPEG-2.5
+	if l.info.Codec != "mp3" || l.info.Format.Rate < lowest {
+		return nil, fmt.Errorf("%w: reading %s at %d Hz needs FFmpeg, and %s", ErrUnsupported, l.info.Codec, l.info.Format.Rate, needFFmpeg)
 	}
 	// A reader of the reading must know that overs are missing from it.
 	l.info.Decoder = "go-mp3 0.3.4, 16 bits, clips at full scale"

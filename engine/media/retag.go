@@ -9,6 +9,7 @@ import (
 
 	"evenshelf/engine/tags"
 	"evenshelf/engine/tags/flac"
+	"evenshelf/engine/tags/id3"
 	"evenshelf/engine/tags/mp4"
 	"evenshelf/engine/tags/ogg"
 )
@@ -18,7 +19,9 @@ type retagger func(dst io.Writer, src *io.SectionReader, g tags.Gains) error
 // retaggers write a file of a container anew with other gain tags; every byte of its sound stays. Each room of tags
 // that has one is entered here.
 var retaggers = map[string]retagger{
+	"aac":  id3.Retag,
 	"flac": behindTags(flac.Retag),
+	"mp3":  id3.Retag,
 	"mp4":  mp4.Retag,
 	"mov":  mp4.Retag,
 	"ogg":  behindTags(ogg.Retag),

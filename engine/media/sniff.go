@@ -9,13 +9,15 @@ import (
 	"math"
 	"slices"
 	"unicode/utf8"
+
+	"evenshelf/engine/tags/id3"
 )
 
 // kind is what a file turned out to be.
 type kind struct {
 	container string // as in Info.Container
 	demuxer   string // FFmpeg's name of the demuxer that is forced on it
-	start     int64  // where the format's own bytes begin, after an ID3v2 tag or junk
+	start     int64  // where the format's own bytes begin, after tags or junk
 	end       int64  // where they end, in front of tags and zeros; 0 if that is where the file does
 }
 
@@ -77,8 +79,8 @@ func sniff(r io.ReaderAt) (kind, error) {
 		return kind{}, ErrEmpty
 	}
 	var start int64
-	for range 4 { // an ID3v2 tag may stand before MP3, AAC and even FLAC; careless taggers add another
-		n := id3Length(head)
+	for range 4 { // an ID3v2 or APEv2 tag may stand before MP3, AAC and even FLAC; careless taggers add another
+		n := id3.HeadLength(head)
 		if n == 0 {
 			break
 		}
@@ -88,7 +90,7 @@ func sniff(r io.ReaderAt) (kind, error) {
 		}
 	}
 	if len(head) == 0 {
-		return kind{}, &FormatError{start, "nothing follows its ID3 tag: the sound is missing"}
+		return kind{}, &FormatError{start, "nothing follows its tag: the sound is missing"}
 	}
 	if k, ok := byMagic(head); ok {
 		k.start = start
@@ -179,18 +181,6 @@ func adtsLength(b []byte) int {
 		return 0
 	}
 	return n
-}
-
-// id3Length returns the length of the ID3v2 tag that b begins with, or 0. Sizes are 4 × 7 bits.
-func id3Length(b []byte) int64 {
-	if len(b) < 10 || string(b[:3]) != "ID3" || (b[6]|b[7]|b[8]|b[9])&0x80 != 0 {
-		return 0
-	}
-	n := int64(b[6])<<21 | int64(b[7])<<14 | int64(b[8])<<7 | int64(b[9])
-	if b[5]&0x10 != 0 {
-		n += 10 // a footer
-	}
-	return n + 10
 }
 
 // describe says in a few words what an unknown file seems to hold.

@@ -16,6 +16,7 @@ import (
 	"time"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/tags/id3"
 )
 
 // apeTag is an APEv2 tag of one item, laid out as hydrogenaudio's description of the format says: a footer, and
@@ -38,16 +39,16 @@ func apeTag(header bool) []byte {
 // tails are what is found behind the sound of good recordings, alone and piled up.
 func tails() map[string][]byte {
 	zeros := func(n int) []byte { return make([]byte, n) }
-	id3 := append([]byte("TAGA song"), zeros(119)...) // ends in zeros itself
+	v1 := append([]byte("TAGA song"), zeros(119)...) // ends in zeros itself
 	words := "LYRICSBEGININD0000200ETT00004Song"
 	lyrics := fmt.Appendf([]byte(words), "%06dLYRICS200", len(words))
 	all := map[string][]byte{
 		"a zero": zeros(1), "9 zeros": zeros(9), "10 zeros": zeros(10), "2 KiB of zeros": zeros(2048), "60,000 zeros": zeros(60_000),
-		"ID3v1": id3, "enhanced ID3v1": slices.Concat([]byte("TAG+A song"), zeros(217), id3),
+		"ID3v1": v1, "enhanced ID3v1": slices.Concat([]byte("TAG+A song"), zeros(217), v1),
 		"APEv2": apeTag(false), "APEv2 with header": apeTag(true), "Lyrics3v2": lyrics,
 	}
-	all["everything"] = slices.Concat(zeros(777), apeTag(true), lyrics, id3)
-	all["everything, the other way round"] = slices.Concat(id3, zeros(77), lyrics, zeros(5), apeTag(false), zeros(5000))
+	all["everything"] = slices.Concat(zeros(777), apeTag(true), lyrics, v1)
+	all["everything, the other way round"] = slices.Concat(v1, zeros(77), lyrics, zeros(5), apeTag(false), zeros(5000))
 	return all
 }
 
@@ -180,16 +181,16 @@ func TestSoundEndOfRealMP3s(t *testing.T) {
 // The last bytes of a FLAC are a checksum, which may end in zeros: they stay. And a file that is nothing but
 // tags, or zeros without end, ends the search.
 func TestSoundEndIsCareful(t *testing.T) {
-	for _, zeros := range []int{0, 1, 2, 8, 9, 10, 11, 500, 40_000, maxZeros} {
+	for _, zeros := range []int{0, 1, 2, 8, 9, 10, 11, 500, 40_000, id3.MaxZeros} {
 		file := append([]byte("fLaC, frames and a checksum: \x12"), make([]byte, zeros)...)
 		end, err := soundEnd(bytes.NewReader(file), 0, int64(len(file)), false)
 		if want := len(file) - zeros + min(zeros, keepZeros); err != nil || end != int64(want) {
 			t.Fatalf("%d zeros: %d, want %d: %v", zeros, end, want, err)
 		}
 	}
-	end, err := soundEnd(bytes.NewReader(append([]byte("fLaC"), make([]byte, maxZeros+1)...)), 0, maxZeros+5, false)
-	if err != nil || end != maxZeros+5 {
-		t.Errorf("%d of %d: %v", end, maxZeros+5, err)
+	end, err := soundEnd(bytes.NewReader(append([]byte("fLaC"), make([]byte, id3.MaxZeros+1)...)), 0, id3.MaxZeros+5, false)
+	if err != nil || end != id3.MaxZeros+5 {
+		t.Errorf("%d of %d: %v", end, id3.MaxZeros+5, err)
 	}
 	f, err := os.Create(filepath.Join(t.TempDir(), "sparse"))
 	if err != nil {

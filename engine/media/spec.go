@@ -42,7 +42,7 @@ func (t *Toolbox) SpecFor(info Info, w Wish) Spec {
 	}
 	s.Format, s.Note, s.Plain, s.Shaped = info.Format, strings.Join(why, "; "), w.Plain, w.Shaped
 	if w.BitRate != 0 {
-		s.BitRate = w.BitRate
+		s.BitRate, s.Variable = w.BitRate, false
 	}
 	return s.withWord(w.Bits)
 }
@@ -94,7 +94,11 @@ func (t *Toolbox) lossySpec(info Info) (Spec, string) {
 	if codec == "aac" && info.Container == "aac" {
 		note = "bare AAC is delivered in M4A"
 	}
-	return Spec{Container: l.container, Codec: codec, BitRate: info.BitRate, Extension: l.extension}, note
+	s := Spec{Container: l.container, Codec: codec, BitRate: info.BitRate, Extension: l.extension}
+	if codec == "mp3" {
+		s.Variable, s.Quality = info.Variable, info.Quality
+	}
+	return s, note
 }
 
 // cannot says why an encoder cannot be used for a format, or "". An empty encoder means any FFmpeg does.

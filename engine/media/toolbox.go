@@ -156,7 +156,7 @@ func recognise(f *os.File, size int64) (kind, error) {
 	}
 	if end, err := soundEnd(f, k.start, size, k.container == "mp3"); err != nil {
 		return kind{}, err
-	} else if end < size {
+	} else if end < size || k.container == "mp3" && k.start > 0 {
 		k.end = end
 	}
 	return k, nil
