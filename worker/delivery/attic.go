@@ -52,16 +52,16 @@ type Place struct {
 // Whatever is in the recording's place and is not, byte for byte, what was put there goes to the attic too: somebody
 // has written other tags since. Only the original is recorded.
 func Replace(ctx context.Context, eng Leveller, at Place, t level.Task, key string, record func(context.Context, Original) error) (level.Outcome, string, error) {
-	return replace(ctx, eng.Level, at, t, key, record)
+	return replace(ctx, eng.Level, &at, t, key, record)
 }
 
 // Tag writes gain tags into a recording's own file, on the path of Replace. One whose tags are right already stays as
-// it is.
-func Tag(ctx context.Context, eng Tagger, at Place, t level.Task, key string, record func(context.Context, Original) error) (level.Outcome, string, error) {
+// it is. at.Ours is not looked at before the engine is done: whoever knows the sound may only then know the file.
+func Tag(ctx context.Context, eng Tagger, at *Place, t level.Task, key string, record func(context.Context, Original) error) (level.Outcome, string, error) {
 	return replace(ctx, eng.Tag, at, t, key, record)
 }
 
-func replace(ctx context.Context, engine maker, at Place, t level.Task, key string, record func(context.Context, Original) error) (o level.Outcome, output string, err error) {
+func replace(ctx context.Context, engine maker, at *Place, t level.Task, key string, record func(context.Context, Original) error) (o level.Outcome, output string, err error) {
 	d, refusal, err := open(at.Source, at.Root, at.Rel, key, Options{Overwrite: true})
 	if err != nil || refusal != "" {
 		return failed(level.Outcome{}, refusal), "", err
@@ -143,7 +143,7 @@ func (d *delivery) hold(copies, extension string) (output string, err error) {
 
 // toAttic keeps what is in the recording's place, unless we made it from what is in the attic already, and returns the
 // original.
-func (d *delivery) toAttic(at Place, target string) (Original, error) {
+func (d *delivery) toAttic(at *Place, target string) (Original, error) {
 	sum, _, err := digest(target)
 	if err != nil {
 		return Original{}, err
