@@ -106,7 +106,7 @@ func (k *known) same(w store.Work) result {
 		return result{outcome: level.Outcome{Verdict: level.Verdict{State: level.Done, Reason: already}}, same: k.JobID}
 	}
 	reason := fmt.Sprintf("%s: it sounds the same as %s", already, k.Path)
-	return result{outcome: level.Outcome{Before: k.before, Verdict: level.Verdict{State: level.Done, Reason: reason}}, output: w.Recording.Path}
+	return result{outcome: level.Outcome{Before: k.before, Verdict: level.Verdict{State: level.Done, Reason: reason}}}
 }
 
 // tag writes gain tags into the recording's own file.
@@ -138,7 +138,7 @@ func (s *Service) tag(ctx context.Context, w store.Work, t level.Task, onShelf, 
 		}
 		return s.keepOriginal(ctx, w.Recording.ID, job, o)
 	}
-	r.outcome, r.output, err = delivery.Tag(ctx, s.engine, &at, t, key, keep)
+	r.outcome, _, err = delivery.Tag(ctx, s.engine, &at, t, key, keep)
 	return r, err
 }
 

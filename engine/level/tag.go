@@ -79,7 +79,9 @@ func (e *Engine) tag(ctx context.Context, source string, t Task, scratch string,
 }
 
 // Album reads which album a file is from; its title is "" if it names none. Errors name the file.
-func (e *Engine) Album(ctx context.Context, path string) (media.Album, error) { return e.Media.Album(ctx, path) }
+func (e *Engine) Album(ctx context.Context, path string) (media.Album, error) {
+	return e.Media.Album(ctx, path)
+}
 
 // isDamage reports whether a fault is of the file rather than of the sound in it.
 func isDamage(f faults.Fault) bool { return f.Code == "truncated" || f.Code == "damaged" }
