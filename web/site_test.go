@@ -160,7 +160,7 @@ func TestSentences(t *testing.T) {
 		{"full", "/shelves/1", "/srv/radio/evening-even.attic"},
 		{"full", "/runs/12", "levelled copies; originals not touched."},
 		{"replaced", "/runs/12", "levelled files in place of the originals, which go to the attic first."},
-		{"replaced", "/runs/12", "The originals it replaced are in the attic; a recording's page brings its own back, evenshelf restore --of-run 12 all of them."},
+		{"replaced", "/runs/12", "The originals it replaced are in the attic; a recording's page brings its own back, the button above all of them, as does evenshelf restore --of-run 12."},
 		{"replaced", "/recordings/2", "The original is in the attic; the levelled file of run 12 took its place today at 11:31."},
 		{"replaced", "/recordings/2", "Delivered in the original's place."},
 		{"replaced", "/recordings/18", "The file on the shelf was not replaced."},
