@@ -54,7 +54,7 @@ func originalOf(ctx context.Context, tx *sql.Tx, l Levelling) (*Original, error)
 
 // MovedFrom returns the recording that a job's file was before it was moved and perhaps tagged: the only one of the
 // shelf that is missing and whose file had this sound. 0 if there is none, or if the job's recording has a story of its
-// own, which is not to be mixed with another.
+// own, which is not to be mixed with another, or a job in a run that the other is in too.
 func (s *Store) MovedFrom(ctx context.Context, jobID int64, audioHash string) (recordingID int64, err error) {
 	err = s.read(ctx, func(tx *sql.Tx) error {
 		job, err := findJob(ctx, tx, jobID)
@@ -67,12 +67,12 @@ func (s *Store) MovedFrom(ctx context.Context, jobID int64, audioHash string) (r
 				AND a.id = CASE WHEN EXISTS (SELECT 1 FROM attic WHERE recording_id = rec.id) THEN coalesce(rec.after_id, rec.before_id) ELSE rec.before_id END
 				AND NOT EXISTS (SELECT 1 FROM attic WHERE recording_id = here.id)
 				AND NOT EXISTS (SELECT 1 FROM jobs WHERE recording_id = here.id AND state IN ('done', 'held', 'failed'))
-				AND NOT EXISTS (SELECT 1 FROM jobs x JOIN jobs y ON y.run_id = x.run_id WHERE x.recording_id = here.id AND y.recording_id = rec.id)
 			LIMIT 2`, audioHash, job.RecordingID)
-		if len(ids) == 1 {
-			recordingID = ids[0]
+		if err != nil || len(ids) != 1 {
+			return err
 		}
-		return err
+		return tx.QueryRowContext(ctx, `SELECT CASE WHEN EXISTS (SELECT 1 FROM jobs x JOIN jobs y ON y.run_id = x.run_id
+			WHERE x.recording_id = ?1 AND y.recording_id = ?2) THEN 0 ELSE ?2 END`, job.RecordingID, ids[0]).Scan(&recordingID)
 	})
 	if err != nil {
 		return 0, fmt.Errorf("what job %d was before: %w", jobID, err)
