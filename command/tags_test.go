@@ -117,9 +117,9 @@ func TestLevelWithWishes(t *testing.T) {
 	if g := level("--format", "flac", "--group", "album"); g["1.flac"] != g["2.flac"] || g["3.flac"] == g["2.flac"] {
 		t.Errorf("gains of an album: %v", g)
 	}
-	level("--format", "mp3", "--bit-rate", "192")
+	level("--format", "mp3", "--bit-rate", "96")
 	rate, err := exec.Command("ffprobe", "-v", "error", "-show_entries", "stream=bit_rate", "-of", "csv=p=0", filepath.Join(dir, "mp3", "x", "1.flac.mp3")).Output()
-	if err != nil || strings.TrimSpace(string(rate)) != "192000" {
+	if err != nil || strings.TrimSpace(string(rate)) != "96000" {
 		t.Errorf("ffprobe says %q %v", rate, err)
 	}
 }
