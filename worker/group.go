@@ -8,6 +8,7 @@ import (
 	"os"
 	"path"
 	"slices"
+	"sync"
 
 	"evenshelf/engine/level"
 	"evenshelf/engine/media"
@@ -84,30 +85,56 @@ func (s *Service) readAlbums(ctx context.Context, shelf store.Shelf) error {
 	if err != nil {
 		return err
 	}
-	const batch = 100 // stored at once, so that a stop loses little
-	for some := range slices.Chunk(unread, batch) {
-		keys := make(map[int64]string, len(some))
+	// A file takes some 70 ms, nearly all of it to start FFmpeg; the other jobs of the run wait, so there are hands free.
+	// What was read is stored in between, so that a stop loses little.
+	for some := range slices.Chunk(unread, 50*s.workers) {
+		var mu sync.Mutex
+		var failed error
+		keys, queue := make(map[int64]string, len(some)), make(chan store.Recording, len(some))
 		for _, r := range some {
-			album := media.Album{}
-			source, err := discover.Resolve(shelf.Root, r.Path)
-			if err == nil {
-				album, err = s.engine.Album(ctx, source)
-			}
-			switch {
-			case ctx.Err() != nil:
-				return context.Cause(ctx)
-			case errors.Is(err, media.ErrKilled):
-				return err
-			case err != nil:
-				s.log.InfoContext(ctx, "album not read", "path", r.Path, "error", err)
-			}
-			keys[r.ID] = store.AlbumKey(album.Title, album.Artist)
+			queue <- r
+		}
+		close(queue)
+		var hands sync.WaitGroup
+		for range s.workers {
+			hands.Go(func() {
+				for r := range queue {
+					key, err := s.readAlbum(ctx, shelf, r)
+					mu.Lock()
+					keys[r.ID], failed = key, errors.Join(failed, err)
+					mu.Unlock()
+					if err != nil {
+						return
+					}
+				}
+			})
+		}
+		hands.Wait()
+		if failed != nil {
+			return failed
 		}
 		if err := s.store.KeepAlbums(ctx, keys); err != nil {
 			return err
 		}
 	}
 	return nil
+}
+
+func (s *Service) readAlbum(ctx context.Context, shelf store.Shelf, r store.Recording) (key string, err error) {
+	source, err := discover.Resolve(shelf.Root, r.Path)
+	album := media.Album{}
+	if err == nil {
+		album, err = s.engine.Album(ctx, source)
+	}
+	switch {
+	case ctx.Err() != nil:
+		return "", context.Cause(ctx)
+	case errors.Is(err, media.ErrKilled):
+		return "", err
+	case err != nil:
+		s.log.InfoContext(ctx, "album not read", "path", r.Path, "error", err)
+	}
+	return store.AlbumKey(album.Title, album.Artist), nil
 }
 
 // measureTogether measures all recordings of a group as one programme: the sound that each would be levelled

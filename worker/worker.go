@@ -79,6 +79,7 @@ type Service struct {
 	log    *slog.Logger
 	client *river.Client[*store.Tx]
 
+	workers    int
 	retryAfter func(attempt int) time.Duration
 	places     turnstile[int64] // one job or restore at a time may change a recording's own file
 	groups     turnstile[group] // one job at a time measures the recordings of a group together
@@ -99,7 +100,7 @@ func New(o Options) (*Service, error) {
 	if o.Workers <= 0 {
 		o.Workers = runtime.GOMAXPROCS(0)
 	}
-	s := &Service{store: o.Store, engine: o.Engine, log: o.Log, retryAfter: retryAfter}
+	s := &Service{store: o.Store, engine: o.Engine, log: o.Log, workers: o.Workers, retryAfter: retryAfter}
 	workers := river.NewWorkers()
 	river.AddWorker(workers, &levelWorker{service: s})
 	client, err := river.NewClient(riversqlite.New(o.Store.Writer()), &river.Config{
