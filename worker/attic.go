@@ -84,7 +84,11 @@ func (s *Service) replace(ctx context.Context, w store.Work, t level.Task, onShe
 	if source, t, err = s.again(w.Shelf, k, t, onShelf); err != nil {
 		return r, err
 	}
-	return r, put()
+	err = put()
+	if plan := r.outcome.Plan; err == nil && plan != nil && plan.Untouched { // copied byte for byte, tags and all
+		r.outcome.Verdict.Reason = "the original is within the profile and is back with the tags it had; the file with other tags is in the attic"
+	}
+	return r, err
 }
 
 // stands reports whether levelling would only make again what a levelling made: it was by this engine, with this

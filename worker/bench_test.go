@@ -160,6 +160,13 @@ func (e *engine) Level(ctx context.Context, source string, t level.Task, scratch
 		}
 		_, other, _ = strings.Cut(string(b), tagMark)
 	}
+	if t.Profile.Target == -30 { // as it is already
+		if err := os.WriteFile(scratch, b, 0o600); err != nil {
+			return level.Outcome{}, err
+		}
+		return level.Outcome{Before: before, After: heard(scratch, -30), Plan: &level.Plan{Untouched: true},
+			Verdict: level.Verdict{State: level.Done}, Extension: filepath.Ext(source)}, nil
+	}
 	levelled := "levelled " + sound
 	if t.Profile.Target != -18 { // as another target makes another sound
 		levelled = fmt.Sprintf("levelled%g %s", float64(t.Profile.Target), sound)

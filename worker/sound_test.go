@@ -113,6 +113,22 @@ func TestTaggedSinceItWasLevelled(t *testing.T) {
 	}
 }
 
+// An original that is within another profile as it is comes back byte for byte, which is said.
+func TestTaggedSinceAndTheOriginalWillDo(t *testing.T) {
+	b := newBench(t, "a.wav")
+	s := b.startService(&engine{}, 1)
+	b.wait(b.begin(s, store.Replace).ID, ended)
+	b.put("a.wav", "levelled sound of a.wav|title")
+	run := b.wait(b.beginWith(scanned(b, s), store.Replace, func(p *profile.Profile) { p.Target = -30 }).ID, ended)
+	j := b.job(run.ID, "a.wav", store.Done, false)
+	if !strings.Contains(j.Reason, "the file with other tags is in the attic") || b.onShelf("a.wav") != "sound of a.wav" {
+		t.Errorf("%+v %q", j, b.onShelf("a.wav"))
+	}
+	if got := b.attic(); !slices.Contains(got, "levelled sound of a.wav|title") {
+		t.Errorf("attic: %q", got)
+	}
+}
+
 // A copy is made from the original too, though somebody tagged the levelled file.
 func TestCopyOfWhatWasTagged(t *testing.T) {
 	b := newBench(t, "a.wav")
