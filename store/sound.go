@@ -61,9 +61,10 @@ func (s *Store) MovedFrom(ctx context.Context, jobID int64, audioHash string) (r
 		if err != nil {
 			return err
 		}
-		ids, err := collect(ctx, tx, scanID, `SELECT DISTINCT rec.id FROM readings a JOIN recordings rec ON rec.id = a.recording_id
-			JOIN recordings here ON here.shelf_id = rec.shelf_id
-			WHERE a.audio_hash = ? AND a.audio_hash <> '' AND here.id = ? AND here.missing = 0 AND rec.missing = 1
+		// CROSS JOIN keeps SQLite to this order: the few readings with the sound first, not all recordings of the shelf.
+		ids, err := collect(ctx, tx, scanID, `SELECT DISTINCT rec.id FROM readings a CROSS JOIN recordings rec CROSS JOIN recordings here
+			WHERE a.audio_hash = ? AND a.audio_hash <> '' AND rec.id = a.recording_id AND rec.shelf_id = here.shelf_id
+				AND here.id = ? AND here.missing = 0 AND rec.missing = 1
 				AND a.id = CASE WHEN EXISTS (SELECT 1 FROM attic WHERE recording_id = rec.id) THEN coalesce(rec.after_id, rec.before_id) ELSE rec.before_id END
 				AND NOT EXISTS (SELECT 1 FROM attic WHERE recording_id = here.id)
 				AND NOT EXISTS (SELECT 1 FROM jobs WHERE recording_id = here.id AND state IN ('done', 'held', 'failed'))
