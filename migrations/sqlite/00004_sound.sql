@@ -8,7 +8,7 @@ CREATE INDEX readings_sound ON readings (audio_hash, id) WHERE audio_hash <> '';
 
 ALTER TABLE recordings ADD COLUMN inode INTEGER NOT NULL DEFAULT 0; -- of the file as it was last scanned; 0 if not known
 ALTER TABLE recordings ADD COLUMN album TEXT; -- what it shares with others of its album; '' if it names none, NULL until read
-CREATE INDEX recordings_album ON recordings (shelf_id, album) WHERE album <> '';
+CREATE INDEX recordings_album ON recordings (shelf_id, album); -- also finds those still to be read, which each job asks for
 
 -- A check on a column cannot be changed; a column can take another's place.
 ALTER TABLE runs ADD COLUMN goes TEXT NOT NULL DEFAULT 'measure' CHECK (goes IN ('measure', 'copy', 'replace', 'tags'));
