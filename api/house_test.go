@@ -261,7 +261,7 @@ func (q queue) Restore(ctx context.Context, id int64) (store.Recording, error) {
 	if err != nil {
 		return fail(err)
 	}
-	if err := q.db.Restored(ctx, o, info.Size()); err != nil {
+	if err := q.db.Restored(ctx, o, info.Size(), info.ModTime()); err != nil {
 		return fail(err)
 	}
 	return q.db.Recording(ctx, id)

@@ -5,10 +5,12 @@ import (
 	"fmt"
 	"net/http"
 	"slices"
+	"strings"
 
 	"github.com/gin-gonic/gin"
 	"golang.org/x/sys/unix"
 
+	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
 
@@ -19,6 +21,9 @@ type runRequest struct {
 	Recordings []int64        `json:"recordings"`
 	Profile    string         `json:"profile"`
 	Delivery   store.Delivery `json:"delivery"`
+	Format     profile.Format `json:"format"`
+	BitRate    int            `json:"bit_rate_kbps"`
+	Group      profile.Group  `json:"group"`
 }
 
 func (a *API) startRun(c *gin.Context) (int, any, error) {
@@ -36,9 +41,9 @@ func (a *API) startRun(c *gin.Context) (int, any, error) {
 			errs = append(errs, complaint{"shelf_id", fmt.Sprintf("there is no shelf %d", asked.ShelfID)})
 		case err != nil:
 			return 0, nil, err
-		case asked.Delivery == store.Replace:
+		case asked.Delivery.Writes():
 			if err := writable(shelf.Root); err != nil {
-				errs = append(errs, complaint{"delivery", fmt.Sprintf("replace has to write to the folder of shelf %q, and that is not possible here (%s)", shelf.Name, err)})
+				errs = append(errs, complaint{"delivery", fmt.Sprintf("%s has to write to the folder of shelf %q, and that is not possible here (%s)", asked.Delivery, shelf.Name, err)})
 			}
 		}
 	}
@@ -55,8 +60,6 @@ func (a *API) startRun(c *gin.Context) (int, any, error) {
 	c.Header("Location", fmt.Sprintf("/api/v1/runs/%d", run.ID))
 	return http.StatusCreated, run, nil
 }
-
-var deliveries = []store.Delivery{store.Measure, store.Copy, store.Replace}
 
 // writable reports why this process cannot make and remove files in a folder, nil if it can: a shelf is often
 // mounted read-only, and a run should not start only for each of its recordings to fail.
@@ -77,9 +80,11 @@ func (a *API) newRun(asked runRequest) (n store.NewRun, errs []complaint) {
 	if err != nil {
 		errs = append(errs, complaint{"profile", err.Error()})
 	}
-	if !slices.Contains(deliveries, asked.Delivery) {
-		errs = append(errs, complaint{"delivery", fmt.Sprintf("%q is not one of measure, copy, replace", asked.Delivery)})
+	if !slices.Contains(store.Deliveries, asked.Delivery) {
+		errs = append(errs, complaint{"delivery", fmt.Sprintf("%q is not one of measure, copy, replace, tags", asked.Delivery)})
 	}
+	own, complaints := asked.profile(p.Profile)
+	errs = append(errs, complaints...)
 	ids := slices.Clone(asked.Recordings)
 	slices.Sort(ids)
 	ids = slices.Compact(ids)
@@ -92,7 +97,28 @@ func (a *API) newRun(asked runRequest) (n store.NewRun, errs []complaint) {
 	case folder != "":
 		errs = append(errs, complaint{"recordings", "cannot go together with folder"})
 	}
-	return store.NewRun{ShelfID: asked.ShelfID, Folder: folder, Recordings: ids, Profile: p.Profile, Delivery: asked.Delivery}, errs
+	return store.NewRun{ShelfID: asked.ShelfID, Folder: folder, Recordings: ids, Profile: own, Delivery: asked.Delivery}, errs
+}
+
+// profile is the profile as the run is to have it.
+func (asked runRequest) profile(p profile.Profile) (own profile.Profile, errs []complaint) {
+	if p.Name == "" { // that has been said
+		return p, nil
+	}
+	if (asked.Format != "" || asked.BitRate != 0) && !asked.Delivery.Levels() {
+		return p, []complaint{{"format", fmt.Sprintf("means nothing with delivery %s, which encodes no sound; nor does bit_rate_kbps", asked.Delivery)}}
+	}
+	if asked.Delivery == store.Tags {
+		p = p.ForTags()
+	}
+	own, err := p.With(profile.Wishes{Format: asked.Format, BitRate: asked.BitRate, Group: asked.Group})
+	var all profile.Complaints
+	if errors.As(err, &all) {
+		for _, c := range all {
+			errs = append(errs, complaint{strings.TrimPrefix(c.Field, "delivered."), c.Words})
+		}
+	}
+	return own, errs
 }
 
 func (a *API) listRuns(c *gin.Context) (int, any, error) {

@@ -134,7 +134,7 @@ func (a *API) fileAfter(ctx context.Context, shelf store.Shelf, r store.Recordin
 	if reading == nil || reading.JobID != cmp.Or(job.SameAs, job.ID) {
 		return "", "", notFound(fmt.Sprintf("recording %d has no levelled file now", r.ID))
 	}
-	return shelf.Root, job.Output, nil
+	return shelf.Root, r.Path, nil // where it was delivered, or moved since
 }
 
 // latestDelivery is the recording's newest job that delivered a file.

@@ -42,7 +42,7 @@ type cli struct {
 
 	Serve    serveCmd    `cmd:"" help:"Run the server: the dashboard, the HTTP API and the queue."`
 	Measure  measureCmd  `cmd:"" help:"Measure recordings and print their loudness, range, peaks, speech and faults. Nothing is written."`
-	Level    levelCmd    `cmd:"" help:"Make levelled copies of recordings in another folder. Originals are not touched."`
+	Level    levelCmd    `cmd:"" help:"Make levelled copies of recordings in another folder, or write only gain tags into them. Originals are not touched, or kept."`
 	Runs     runsCmd     `cmd:"" help:"List the runs of a server, or show one run with its recordings."`
 	Restore  restoreCmd  `cmd:"" help:"Bring originals back from the attic after a run that replaced them."`
 	Profiles profilesCmd `cmd:"" help:"List the levelling profiles, show one in words, check files with profiles of your own."`

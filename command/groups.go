@@ -7,13 +7,20 @@ import (
 
 	"evenshelf/engine/level"
 	"evenshelf/engine/profile"
+	"evenshelf/store"
 )
 
-// groups measures the recordings that share a gain: those of one folder, each group once and only when its first
-// recording's turn comes.
+// groups measures the recordings that share a gain: those of one folder, or of one album by their tags, each group once
+// and only when its first recording's turn comes.
 type groups struct {
-	measure func(ctx context.Context, folder string) (level.Shared, error)
+	engine  *level.Engine
 	profile profile.Profile
+	files   []input
+
+	sort    sync.Once
+	failed  error
+	name    map[string]string   // of each recording's group, by its path
+	members map[string][]string // paths
 
 	mu    sync.Mutex
 	known map[string]*group
@@ -26,30 +33,51 @@ type group struct {
 }
 
 func newGroups(e *level.Engine, p profile.Profile, files []input) *groups {
-	members := map[string][]string{}
-	for _, f := range files {
-		if f.err == nil {
-			members[filepath.Dir(f.path)] = append(members[filepath.Dir(f.path)], f.path)
-		}
-	}
-	return &groups{profile: p, known: map[string]*group{}, measure: func(ctx context.Context, folder string) (level.Shared, error) {
-		return e.Group(ctx, members[folder], p.Mono)
-	}}
+	return &groups{engine: e, profile: p, files: files, known: map[string]*group{}, name: map[string]string{}, members: map[string][]string{}}
 }
 
-// of returns the reading of the group that a recording belongs to; nil if the profile groups nothing.
+// sorted finds out who belongs together. A recording whose tags cannot be read is on its own: its turn says why.
+func (g *groups) sorted(ctx context.Context) error {
+	for _, f := range g.files {
+		if f.err != nil {
+			continue
+		}
+		name := filepath.Dir(f.path)
+		if g.profile.Group == profile.Album {
+			album, err := g.engine.Album(ctx, f.path)
+			if ctx.Err() != nil {
+				return context.Cause(ctx)
+			}
+			if name = store.AlbumKey(album.Title, album.Artist); err != nil || name == "" {
+				continue
+			}
+		}
+		g.name[f.path] = name
+		g.members[name] = append(g.members[name], f.path)
+	}
+	return nil
+}
+
+// of returns the reading of the group that a recording belongs to; nil if it belongs to none.
 func (g *groups) of(ctx context.Context, in input) (*level.Shared, error) {
-	if g.profile.Group != profile.Folder || in.err != nil {
+	if g.profile.Group == profile.Alone || in.err != nil {
 		return nil, nil
 	}
-	folder := filepath.Dir(in.path)
+	g.sort.Do(func() { g.failed = g.sorted(ctx) })
+	if g.failed != nil {
+		return nil, g.failed
+	}
+	name, ok := g.name[in.path]
+	if !ok {
+		return nil, nil
+	}
 	g.mu.Lock()
-	one := g.known[folder]
+	one := g.known[name]
 	if one == nil {
 		one = &group{}
-		g.known[folder] = one
+		g.known[name] = one
 	}
 	g.mu.Unlock()
-	one.once.Do(func() { one.shared, one.err = g.measure(ctx, folder) })
+	one.once.Do(func() { one.shared, one.err = g.engine.Group(ctx, g.members[name], g.profile.Mono) })
 	return &one.shared, one.err
 }

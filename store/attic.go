@@ -4,11 +4,14 @@ import (
 	"context"
 	"database/sql"
 	"fmt"
+	"time"
 )
 
-const originalQuery = `SELECT a.recording_id, r.shelf_id, j.run_id, a.job_id, r.path, a.kept_at, a.sha256, a.stored, a.levelled, a.size
-	FROM attic a JOIN recordings r ON r.id = a.recording_id JOIN jobs j ON j.id = a.job_id
-	WHERE NOT EXISTS (SELECT 1 FROM attic b WHERE b.recording_id = a.recording_id AND (b.kept_at, b.sha256) > (a.kept_at, a.sha256))`
+// allOriginals are all that is in the attic, originalQuery those kept last of their recording.
+const allOriginals = `SELECT a.recording_id, r.shelf_id, j.run_id, a.job_id, r.path, a.kept_at, a.sha256, a.stored, a.levelled, a.size
+	FROM attic a JOIN recordings r ON r.id = a.recording_id JOIN jobs j ON j.id = a.job_id`
+
+const originalQuery = allOriginals + ` WHERE NOT EXISTS (SELECT 1 FROM attic b WHERE b.recording_id = a.recording_id AND (b.kept_at, b.sha256) > (a.kept_at, a.sha256))`
 
 func scanOriginal(row scanner) (o Original, err error) {
 	var kept int64
@@ -29,7 +32,7 @@ func (s *Store) KeepOriginal(ctx context.Context, o Original) error {
 			return err
 		}
 		// The new file keeps the time of the old one; with its size known, the next scan sees no change.
-		_, err = tx.ExecContext(ctx, `UPDATE recordings SET size = ? WHERE id = ?`, o.Size, o.RecordingID)
+		_, err = tx.ExecContext(ctx, `UPDATE recordings SET size = ?, inode = 0 WHERE id = ?`, o.Size, o.RecordingID)
 		return err
 	})
 	if err != nil {
@@ -63,16 +66,16 @@ func (s *Store) Originals(ctx context.Context, q OriginalQuery) (list []Original
 	return list, nil
 }
 
-// Restored records that an original is back in its place; size is its length in bytes. The recording is
+// Restored records that an original is back in its place, with its length in bytes and its time. The recording is
 // then as if it had never been levelled; its history tells the rest.
-func (s *Store) Restored(ctx context.Context, o Original, size int64) error {
+func (s *Store) Restored(ctx context.Context, o Original, size int64, modified time.Time) error {
 	err := s.write(ctx, func(tx *sql.Tx) error {
 		if _, err := tx.ExecContext(ctx, `DELETE FROM attic WHERE recording_id = ? AND sha256 = ?`, o.RecordingID, o.SHA256); err != nil {
 			return err
 		}
-		_, err := tx.ExecContext(ctx, `UPDATE recordings SET size = ?, missing = 0, state = '', reason = '', levelled = '', levelled_reason = '', profile = '',
+		_, err := tx.ExecContext(ctx, `UPDATE recordings SET size = ?, modified_at = ?, inode = 0, album = NULL, missing = 0, state = '', reason = '', levelled = '', levelled_reason = '', profile = '',
 			after_id = NULL, after_integrated = NULL, after_range = NULL, after_peak = NULL, after_p10 = NULL, after_p95 = NULL
-			WHERE id = ?`, size, o.RecordingID)
+			WHERE id = ?`, size, modified.UnixMilli(), o.RecordingID)
 		if err != nil {
 			return err
 		}

@@ -125,13 +125,13 @@ func (s *Store) Plan(ctx context.Context, jobID int64) (plan *level.Plan, err er
 	return plan, nil
 }
 
-// Stands reports whether what a job delivered is what levelling would give again: it is done, with that version of
-// a profile and by this engine.
+// Stands reports whether what a job delivered is what levelling would give again: it levelled and is done, with that
+// version of a profile and by this engine.
 func (s *Store) Stands(ctx context.Context, jobID int64, profileVersion string) (ok bool, err error) {
 	err = s.read(ctx, func(tx *sql.Tx) error {
 		return tx.QueryRowContext(ctx, `SELECT EXISTS (SELECT 1 FROM jobs j JOIN runs r ON r.id = j.run_id
 			JOIN readings a ON a.job_id = coalesce(j.same_as, j.id) AND a.kind = 'after'
-			WHERE j.id = ? AND j.state = 'done' AND r.profile_version = ? AND a.engine = ?)`, jobID, profileVersion, level.Version).Scan(&ok)
+			WHERE j.id = ? AND j.state = 'done' AND r.delivery IN ('copy', 'replace') AND r.profile_version = ? AND a.engine = ?)`, jobID, profileVersion, level.Version).Scan(&ok)
 	})
 	if err != nil {
 		return false, fmt.Errorf("result of job %d: %w", jobID, err)

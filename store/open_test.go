@@ -4,6 +4,7 @@ import (
 	"errors"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 
@@ -129,6 +130,51 @@ func TestMigrations(t *testing.T) {
 		}
 		if again := schema(f); again != first {
 			t.Errorf("up after down gives another schema:\n%s\nwant\n%s", again, first)
+		}
+	})
+	t.Run("4: up and down over rows of before", func(t *testing.T) {
+		f := open(t)
+		f.found("a.wav")
+		var ids []int64
+		for _, d := range []Delivery{Measure, Copy, Replace, Tags} {
+			run, jobs := f.run(d)
+			ids = append(ids, run.ID)
+			f.start(jobs[0])
+			f.finish(jobs[0], sounding("before", "after"), "a.wav")
+		}
+		list := files("b.wav")
+		list[0].Inode = 5
+		f.scan("", list[:0])
+		f.exec(`INSERT INTO history (at, recording_id, what, words) VALUES (1, 1, 'moved', 'here')`)
+		before := f.texts(`SELECT what || words FROM history ORDER BY id`)
+		ours, err := ourMigrations(f.writer, migrations.SQLite)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if _, err := ours.DownTo(f.ctx, 3); err != nil {
+			t.Fatal(err)
+		}
+		if got := f.texts(`SELECT delivery FROM runs ORDER BY id`); !slices.Equal(got, []string{"measure", "copy", "replace", "replace"}) {
+			t.Errorf("down: %q", got)
+		}
+		f.exec(`UPDATE readings SET detail = json_remove(detail, '$.audio_hash') WHERE kind = 'before'`) // as an older engine left them
+		if _, err := ours.Up(f.ctx); err != nil {
+			t.Fatal(err)
+		}
+		if got := f.texts(`SELECT DISTINCT audio_hash FROM readings ORDER BY kind`); !slices.Equal(got, []string{"after", ""}) {
+			t.Errorf("hashes: %q", got)
+		}
+		after := f.texts(`SELECT what || words FROM history ORDER BY id`)
+		if len(after) != len(before) || !slices.Equal(after[:len(after)-1], before[:len(before)-1]) || after[len(after)-1] != "foundhere" {
+			t.Errorf("history %q, was %q", after, before)
+		}
+		for i, want := range []Delivery{Measure, Copy, Replace, Replace} {
+			if got := f.getRun(ids[i]); got.Delivery != want || got.Done != 1 {
+				t.Errorf("%+v", got)
+			}
+		}
+		if list, err := f.Levelled(f.ctx, f.shelf.ID, "after"); err != nil || len(list) != 3 {
+			t.Errorf("%+v %v", list, err)
 		}
 	})
 	t.Run("up from a populated database keeps it", func(t *testing.T) {

@@ -30,6 +30,7 @@ func scanRun(row scanner) (r Run, err error) {
 	r.Tolerance, r.Ceiling = audio.LU(audio.Undefined), audio.DBTP(audio.Undefined)
 	if p, err := profile.UnmarshalStored(document); err == nil { // one that cannot be read hides no run
 		r.Tolerance, r.Ceiling = p.Tolerance, p.Ceiling
+		r.Format, r.BitRate, r.Group = p.Delivered.Format, p.Delivered.BitRate, p.Group
 	}
 	r.CreatedAt, r.StartedAt, r.FinishedAt = fromMillis(created), fromNullMillis(started), fromNullMillis(finished)
 	r.Jobs = r.Waiting + r.Working + r.Done + r.Held + r.Failed + r.Cancelled
@@ -121,7 +122,7 @@ func (s *Store) CreateRun(ctx context.Context, n NewRun, enqueue func(ctx contex
 
 // pick returns which recordings the run is about.
 func (n NewRun) pick(ctx context.Context, tx *sql.Tx) (w conditions, err error) {
-	if !slices.Contains([]Delivery{Measure, Copy, Replace}, n.Delivery) {
+	if !slices.Contains(Deliveries, n.Delivery) {
 		return w, fmt.Errorf("delivery %q: %w", n.Delivery, ErrInvalid)
 	}
 	if err := checkFolder(n.Folder); err != nil {

@@ -55,6 +55,17 @@ func (s *Store) FoundPartly(ctx context.Context, shelfID int64, folder string, f
 		have := make(map[string]bool, len(known))
 		for _, k := range known {
 			have[k.path] = true
+		}
+		moved := movedFiles(known, have, files, found, unread)
+		for _, k := range known {
+			if to, ok := moved[k.path]; ok {
+				res.Moved++
+				have[to] = true
+				if err := diff.follow(ctx, k, found[to]); err != nil {
+					return err
+				}
+				continue
+			}
 			f, here := found[k.path]
 			switch {
 			case !here && !k.missing && !underAny(unread, k.path):
@@ -65,6 +76,9 @@ func (s *Store) FoundPartly(ctx context.Context, shelfID int64, folder string, f
 				err = diff.change(ctx, k, f)
 			case here && k.missing:
 				err = diff.mark(ctx, diff.back, k, "found", "there again")
+			}
+			if err == nil && here && f.Inode != 0 && int64(f.Inode) != k.inode {
+				_, err = diff.place.ExecContext(ctx, int64(f.Inode), k.id)
 			}
 			if err != nil {
 				return err
@@ -94,6 +108,7 @@ type knownFile struct {
 	size     int64
 	modified int64
 	missing  bool
+	inode    int64
 }
 
 func knownFiles(ctx context.Context, tx *sql.Tx, shelfID int64, folder string) ([]knownFile, error) {
@@ -101,16 +116,16 @@ func knownFiles(ctx context.Context, tx *sql.Tx, shelfID int64, folder string) (
 	w.add("shelf_id = ?", shelfID)
 	w.folder("path", folder)
 	return collect(ctx, tx, func(row scanner) (k knownFile, err error) {
-		return k, row.Scan(&k.id, &k.path, &k.size, &k.modified, &k.missing)
-	}, `SELECT id, path, size, modified_at, missing FROM recordings`+w.where()+` ORDER BY path`, w.args...)
+		return k, row.Scan(&k.id, &k.path, &k.size, &k.modified, &k.missing, &k.inode)
+	}, `SELECT id, path, size, modified_at, missing, inode FROM recordings`+w.where()+` ORDER BY path`, w.args...)
 }
 
 // scanDiff holds the prepared statements of one scan: a first one adds 100,000 rows.
 type scanDiff struct {
-	shelfID                           int64
-	at                                int64
-	insert, gone, back, differ, event *sql.Stmt
-	all                               []*sql.Stmt
+	shelfID                                        int64
+	at                                             int64
+	insert, gone, back, differ, move, place, event *sql.Stmt
+	all                                            []*sql.Stmt
 }
 
 func newScanDiff(ctx context.Context, tx *sql.Tx, shelfID int64) (*scanDiff, error) {
@@ -119,13 +134,15 @@ func newScanDiff(ctx context.Context, tx *sql.Tx, shelfID int64) (*scanDiff, err
 		stmt  **sql.Stmt
 		query string
 	}{
-		{&d.insert, `INSERT INTO recordings (shelf_id, path, folded, size, modified_at, added_at) VALUES (?, ?, ?, ?, ?, ?)`},
+		{&d.insert, `INSERT INTO recordings (shelf_id, path, folded, size, modified_at, added_at, inode) VALUES (?, ?, ?, ?, ?, ?, ?)`},
 		{&d.gone, `UPDATE recordings SET missing = 1 WHERE id = ?`},
 		{&d.back, `UPDATE recordings SET missing = 0 WHERE id = ?`},
+		{&d.move, `UPDATE recordings SET path = ?, folded = ?, inode = ?, missing = 0 WHERE id = ?`},
+		{&d.place, `UPDATE recordings SET inode = ? WHERE id = ?`},
 		// A job that waits or is at work keeps its state: it will read the new file.
 		{&d.differ, `UPDATE recordings SET size = ?, modified_at = ?, missing = 0,
 			state = CASE WHEN state IN ('waiting', 'working') THEN state ELSE '' END,
-			reason = '', levelled = '', levelled_reason = '', faults = 0, duration = NULL, format = '',
+			reason = '', levelled = '', levelled_reason = '', faults = 0, duration = NULL, format = '', album = NULL,
 			before_id = NULL, before_integrated = NULL, before_range = NULL, before_peak = NULL, before_p10 = NULL, before_p95 = NULL,
 			after_id = NULL, after_integrated = NULL, after_range = NULL, after_peak = NULL, after_p10 = NULL, after_p95 = NULL
 			WHERE id = ?`},
@@ -160,6 +177,13 @@ func (d *scanDiff) mark(ctx context.Context, stmt *sql.Stmt, k knownFile, what, 
 	return d.tell(ctx, k.id, what, words)
 }
 
+func (d *scanDiff) follow(ctx context.Context, k knownFile, f FoundFile) error {
+	if _, err := d.move.ExecContext(ctx, f.Path, fold(f.Path), int64(f.Inode), k.id); err != nil {
+		return fmt.Errorf("move %q to %q: %w", k.path, f.Path, err)
+	}
+	return d.tell(ctx, k.id, "moved", movedFrom(k.path))
+}
+
 func (d *scanDiff) change(ctx context.Context, k knownFile, f FoundFile) error {
 	if _, err := d.differ.ExecContext(ctx, f.Size, f.ModifiedAt.UnixMilli(), k.id); err != nil {
 		return err
@@ -172,7 +196,7 @@ func (d *scanDiff) change(ctx context.Context, k knownFile, f FoundFile) error {
 }
 
 func (d *scanDiff) add(ctx context.Context, f FoundFile) error {
-	added, err := d.insert.ExecContext(ctx, d.shelfID, f.Path, fold(f.Path), f.Size, f.ModifiedAt.UnixMilli(), d.at)
+	added, err := d.insert.ExecContext(ctx, d.shelfID, f.Path, fold(f.Path), f.Size, f.ModifiedAt.UnixMilli(), d.at, int64(f.Inode))
 	if err != nil {
 		return fmt.Errorf("add %q: %w", f.Path, err)
 	}

@@ -9,7 +9,7 @@ import (
 	"evenshelf/engine/level"
 )
 
-const sharedQuery = `SELECT integrated, peak FROM shared WHERE run_id = ? AND folder = ?`
+const sharedQuery = `SELECT integrated, peak FROM shared WHERE run_id = ? AND name = ?`
 
 func scanShared(row scanner) (level.Shared, error) {
 	var integrated, peak sql.NullFloat64
@@ -37,7 +37,7 @@ func (s *Store) Shared(ctx context.Context, runID int64, folder string) (sh leve
 // recordings of the folder get one gain even if two jobs measured it.
 func (s *Store) KeepShared(ctx context.Context, runID int64, folder string, measured level.Shared) (sh level.Shared, err error) {
 	err = s.write(ctx, func(tx *sql.Tx) error {
-		_, err := tx.ExecContext(ctx, `INSERT INTO shared (run_id, folder, integrated, peak) VALUES (?, ?, ?, ?) ON CONFLICT (run_id, folder) DO NOTHING`,
+		_, err := tx.ExecContext(ctx, `INSERT INTO shared (run_id, name, integrated, peak) VALUES (?, ?, ?, ?) ON CONFLICT (run_id, name) DO NOTHING`,
 			runID, folder, pointer(measured.Integrated), pointer(measured.TruePeak))
 		if err != nil {
 			return err

@@ -217,3 +217,25 @@ func numbered(n int) (paths []string) {
 	}
 	return paths
 }
+
+// texts returns a column of text.
+func (f *fixture) texts(query string) []string {
+	f.t.Helper()
+	rows, err := f.writer.Query(query)
+	if err != nil {
+		f.t.Fatal(err)
+	}
+	defer rows.Close()
+	var list []string
+	for rows.Next() {
+		var s string
+		if err := rows.Scan(&s); err != nil {
+			f.t.Fatal(err)
+		}
+		list = append(list, s)
+	}
+	if err := rows.Err(); err != nil {
+		f.t.Fatal(err)
+	}
+	return list
+}

@@ -84,6 +84,7 @@ type FoundFile struct {
 	Path       string // relative to the shelf's root, with forward slashes
 	Size       int64
 	ModifiedAt time.Time
+	Inode      uint64 // 0 if not known
 }
 
 // ScanResult says what a scan changed.
@@ -91,6 +92,7 @@ type ScanResult struct {
 	Found   int `json:"found"`
 	Added   int `json:"added"`
 	Changed int `json:"changed"` // size or time differs: readings are out of date
+	Moved   int `json:"moved"`   // known under another path, which is no longer there
 	Missing int `json:"missing"` // were known, are no longer there
 	// Unread names the folders that could not be looked into; what is known below them was left as it is.
 	Unread []string `json:"unread,omitempty"`
@@ -176,7 +178,17 @@ const (
 	Measure Delivery = "measure" // nothing is written
 	Copy    Delivery = "copy"    // a mirrored tree under the shelf's Copies folder
 	Replace Delivery = "replace" // the copy takes the original's place; the original moves to the attic
+	Tags    Delivery = "tags"    // gain tags are written into the file itself, on the way of Replace
 )
+
+// Deliveries are all of them.
+var Deliveries = []Delivery{Measure, Copy, Replace, Tags}
+
+// Writes reports whether a delivery changes files on the shelf.
+func (d Delivery) Writes() bool { return d == Replace || d == Tags }
+
+// Levels reports whether a delivery levels; the others leave the sound, and what is known of its levelling, as it is.
+func (d Delivery) Levels() bool { return d == Copy || d == Replace }
 
 // NewRun asks for work on recordings: all of a shelf, a folder of it, or a list.
 type NewRun struct {
@@ -210,20 +222,24 @@ type Run struct {
 	Tolerance      audio.LU   `json:"tolerance_lu"` // undefined if the profile as it was kept cannot be read
 	Ceiling        audio.DBTP `json:"ceiling_dbtp"` // likewise
 	Delivery       Delivery   `json:"delivery"`
-	State          RunState   `json:"state"`
-	CreatedAt      time.Time  `json:"created_at"`
-	StartedAt      *time.Time `json:"started_at"`
-	FinishedAt     *time.Time `json:"finished_at"`
-	Jobs           int        `json:"jobs"`
-	Waiting        int        `json:"waiting"`
-	Working        int        `json:"working"`
-	Done           int        `json:"done"`
-	Held           int        `json:"held"`
-	Failed         int        `json:"failed"`
-	Cancelled      int        `json:"cancelled"`
-	SecondsDone    float64    `json:"audio_done_s"` // duration of the recordings whose job has ended, cancelled ones left out
-	BytesDone      int64      `json:"bytes_done"`   // likewise
-	BytesTotal     int64      `json:"bytes_total"`
+	// What the profile as it was kept says of the file and of sharing a gain; "" if it cannot be read.
+	Format      profile.Format `json:"format"`
+	BitRate     int            `json:"bit_rate_kbps"` // 0: the source's, or the best
+	Group       profile.Group  `json:"group"`
+	State       RunState       `json:"state"`
+	CreatedAt   time.Time      `json:"created_at"`
+	StartedAt   *time.Time     `json:"started_at"`
+	FinishedAt  *time.Time     `json:"finished_at"`
+	Jobs        int            `json:"jobs"`
+	Waiting     int            `json:"waiting"`
+	Working     int            `json:"working"`
+	Done        int            `json:"done"`
+	Held        int            `json:"held"`
+	Failed      int            `json:"failed"`
+	Cancelled   int            `json:"cancelled"`
+	SecondsDone float64        `json:"audio_done_s"` // duration of the recordings whose job has ended, cancelled ones left out
+	BytesDone   int64          `json:"bytes_done"`   // likewise
+	BytesTotal  int64          `json:"bytes_total"`
 }
 
 // Job is one recording's turn.
@@ -287,6 +303,6 @@ type Event struct {
 	RunID       int64     `json:"run_id"`       // 0 if none
 	RecordingID int64     `json:"recording_id"` // 0 if it concerns the run as a whole
 	JobID       int64     `json:"job_id"`
-	What        string    `json:"what"` // a job state, or: found, changed, missing, restored, run-started, run-finished, run-cancelled
+	What        string    `json:"what"` // a job state, or: found, changed, missing, moved, restored, run-started, run-finished, run-cancelled
 	Words       string    `json:"words"`
 }

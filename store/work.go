@@ -153,7 +153,7 @@ func (s *Store) finish(ctx context.Context, jobID int64, v level.Verdict, comple
 const newestEnded = `NOT EXISTS (SELECT 1 FROM jobs WHERE recording_id = recordings.id AND id > ? AND state IN ('done', 'held', 'failed'))`
 
 // storeReadings stores what was measured and shows it on the recording if it is the latest. A levelling that
-// delivered nothing clears the after figures; measuring leaves them alone.
+// delivered nothing clears the after figures; measuring and tagging leave them alone.
 func storeReadings(ctx context.Context, tx *sql.Tx, w Work, o level.Outcome, at int64) error {
 	show := func(query string, args ...any) error {
 		_, err := tx.ExecContext(ctx, `UPDATE recordings SET `+query+` WHERE id = ? AND `+newestEnded, append(args, w.Recording.ID, w.Job.ID)...)
@@ -170,7 +170,11 @@ func storeReadings(ctx context.Context, tx *sql.Tx, w Work, o level.Outcome, at 
 			return err
 		}
 	}
-	if w.Delivery == Measure {
+	if !w.Delivery.Levels() {
+		if a := o.After; a != nil {
+			_, err := insertReading(ctx, tx, w.Recording.ID, w.Job.ID, kindAfter, at, a)
+			return err
+		}
 		return nil
 	}
 	args := []any{nil, nil, nil, nil, nil, nil}
@@ -199,12 +203,12 @@ func showSame(ctx context.Context, tx *sql.Tx, w Work) error {
 	return nil
 }
 
-// showVerdict shows the end of a job on its recording. Measuring well does not hide the verdict of an
+// showVerdict shows the end of a job on its recording. Measuring or tagging well does not hide the verdict of an
 // earlier levelling: a recording that is held stays held until it is levelled again.
 func showVerdict(ctx context.Context, tx *sql.Tx, w Work, end JobState, reason string) error {
 	var err error
 	switch {
-	case w.Delivery != Measure:
+	case w.Delivery.Levels():
 		if err := showState(ctx, tx, w.Job, end, reason); err != nil {
 			return err
 		}

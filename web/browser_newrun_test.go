@@ -37,6 +37,59 @@ func testProfiles(t *testing.T, ctx context.Context) {
 	until(t, ctx, chosen+`.value === "film" && `+says("Speech is brought to −23 LUFS, within 0.3 LU")+` && !`+says("programme is brought to −18 LUFS"))
 }
 
+// testTags starts a run that writes gain tags: it asks which recordings belong together instead of how they should sound,
+// and takes a second step, as it writes to the shelf.
+func testTags(t *testing.T, ctx context.Context, url string, f *fake) {
+	for len(f.asked) > 0 {
+		<-f.asked
+	}
+	webtest.Do(t, ctx, chromedp.Navigate(url+"/"))
+	until(t, ctx, `!document.querySelector("[data-component=newrun]").disabled`)
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=newrun]").click()`)
+	until(t, ctx, `!document.querySelector("dialog[open] [type=submit]").disabled`)
+	shown := func(part string) bool {
+		return webtest.Eval[bool](t, ctx, fmt.Sprintf(`!!document.querySelector("dialog[open] [data-part=%s]").offsetParent`, part))
+	}
+	if !shown("file") || shown("group") {
+		t.Error("a run that levels asks for a group, or not for a format")
+	}
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [name=format]").value = "flac"`)
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [value=replace]").click()`)
+	if !webtest.Eval[bool](t, ctx, `!document.querySelector("dialog[open] [data-part=inplace]").hidden`) {
+		t.Error("nothing is said of files that cannot take their original's place")
+	}
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [value=tags]").click()`)
+	if shown("file") || !shown("group") || !shown("sure") {
+		t.Error("a run for tags asks for a format, or not for a group and a second step")
+	}
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [name=group]").value = "album"`)
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [name=sure]").click()`)
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [type=submit]").click()`)
+	until(t, ctx, `location.pathname === "/runs/12"`)
+	if body := <-f.asked; !strings.Contains(body, `"delivery":"tags"`) || !strings.Contains(body, `"group":"album"`) || strings.Contains(body, "format") {
+		t.Errorf("asked for %s", body)
+	}
+}
+
+// testRestoreAll brings all originals of a run back; those that cannot be are named, and stay.
+func testRestoreAll(t *testing.T, ctx context.Context) {
+	for _, page := range []string{"/runs/12", "/shelves/1"} {
+		f := newReplaced(40)
+		webtest.Do(t, ctx, chromedp.Navigate(serve(t, f)+page))
+		until(t, ctx, `document.querySelector("[data-component=restoreall]")?.disabled === false`)
+		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=restoreall]").click()`)
+		f.apiDown.Store(true)
+		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [type=submit]").click()`)
+		until(t, ctx, `document.querySelector("dialog[open] .says").textContent.startsWith("0 originals are back in place.") && document.querySelector("dialog[open] .failed").textContent.includes("changed since")`)
+		f.apiDown.Store(false)
+		webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [type=submit]").click()`)
+		until(t, ctx, `document.readyState === "complete" && !document.querySelector("[data-component=restoreall]")`)
+		if len(f.attic) > 0 {
+			t.Errorf("%s: %d are left", page, len(f.attic))
+		}
+	}
+}
+
 func testReplacing(t *testing.T, ctx context.Context, url string, f *fake) {
 	for len(f.asked) > 0 {
 		<-f.asked // those of other tests

@@ -74,6 +74,8 @@ func TestInBrowser(t *testing.T) {
 		until(t, ctx, `location.pathname === "/runs/12"`)
 	})
 	t.Run("replacing takes a second step", func(t *testing.T) { testReplacing(t, ctx, url, f) })
+	t.Run("tags", func(t *testing.T) { testTags(t, ctx, url, f) })
+	t.Run("all originals are brought back", func(t *testing.T) { testRestoreAll(t, ctx) })
 	t.Run("measuring asks for a profile where it matters", func(t *testing.T) {
 		for _, c := range []struct {
 			rule audio.MonoRule

@@ -112,9 +112,11 @@ func (f *fake) Original(_ context.Context, id int64) (store.Original, error) {
 }
 
 func (f *fake) Originals(_ context.Context, q store.OriginalQuery) ([]store.Original, error) {
+	f.mu.Lock()
+	defer f.mu.Unlock()
 	var list []store.Original
 	for _, o := range f.attic {
-		if o.RunID == q.RunID && len(list) < q.Limit {
+		if (q.RunID == 0 || o.RunID == q.RunID) && (q.ShelfID == 0 || o.ShelfID == q.ShelfID) && len(list) < q.Limit {
 			list = append(list, o)
 		}
 	}
@@ -345,6 +347,18 @@ func (f *fake) api(r gin.IRouter) {
 			return
 		}
 		c.JSON(200, f.recs[0])
+	})
+	g.GET("/attic", func(c *gin.Context) {
+		after, _ := strconv.ParseInt(c.Query("after"), 10, 64)
+		f.mu.Lock()
+		defer f.mu.Unlock()
+		page := []store.Original{}
+		for _, o := range f.attic {
+			if o.RecordingID > after && len(page) < 5 && (c.Query("run") == "12" || c.Query("shelf") == "1") {
+				page = append(page, o)
+			}
+		}
+		c.JSON(200, gin.H{"originals": page})
 	})
 	g.POST("/shelves/:id/scan", func(c *gin.Context) { c.JSON(200, store.ScanResult{Found: len(f.recs)}) })
 	g.GET("/recordings/:id/timeline", func(c *gin.Context) {

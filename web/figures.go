@@ -38,6 +38,8 @@ func functions(a *assets, now func() time.Time) template.FuncMap {
 		"listen":   newListen,
 		"doubtful": newDoubtful,
 		"doubtSay": doubtWords,
+		"bitrates": bitRates,
+		"askall":   func(of string, id int64, asks string) restoreAll { return restoreAll{of, id, asks} },
 	}
 }
 

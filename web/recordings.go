@@ -191,6 +191,7 @@ type recordingPage struct {
 	Jobs          []store.Job
 	History       []store.Event
 	Original      *store.Original // in the attic; nil if none is there
+	OnlyTagged    bool            // what took its place differs in its gain tags alone
 }
 
 func (s *Site) recording(c *gin.Context) {
@@ -224,6 +225,11 @@ func (s *Site) findRecording(c *gin.Context, n int64) (p recordingPage, err erro
 	switch original, err := s.store.Original(ctx, n); {
 	case err == nil:
 		p.Original = &original
+		by, err := s.store.Run(ctx, original.RunID)
+		if err != nil {
+			return p, err
+		}
+		p.OnlyTagged = tagged(&by)
 	case !errors.Is(err, store.ErrNotFound):
 		return p, err
 	}

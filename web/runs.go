@@ -4,12 +4,14 @@ import (
 	"fmt"
 	"net/http"
 	"net/url"
+	"slices"
 	"strconv"
 	"time"
 
 	"github.com/gin-gonic/gin"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
 
@@ -25,10 +27,12 @@ type runView struct {
 	Ended    int    // done, held, failed or cancelled
 	Reached  int    // those of them that had their turn: all but the cancelled
 	Delivers string // the delivery in words
+	Encoded  string // in what the files are written, if not as they were
+	Together string // which recordings share a gain
 	Pace     string // audio done in a minute, in words; "" while not known
 	Left     string // time left in words, "" while not known or when finished
 	Going    bool   // waiting or working
-	Measures bool   // nothing is written, so there is no after
+	Measures bool   // nothing is levelled, so there is no after
 }
 
 // part is one state's stretch of the progress bar, in thousandths of its length.
@@ -40,10 +44,16 @@ type part struct {
 
 func viewRun(r store.Run, now time.Time) runView {
 	v := runView{Run: r, Delivers: deliveryWords(r.Delivery)}
+	if r.Delivery.Levels() {
+		v.Encoded = encodedWords(r)
+	}
+	if r.Delivery != store.Measure {
+		v.Together = groupWords(r)
+	}
 	v.Reached = r.Done + r.Held + r.Failed
 	v.Ended = v.Reached + r.Cancelled
 	v.Going = going(r.State)
-	v.Measures = r.Delivery == store.Measure
+	v.Measures = !r.Delivery.Levels()
 	at := 0.0
 	for _, p := range []part{
 		{State: store.Done, Jobs: r.Done}, {State: store.Held, Jobs: r.Held}, {State: store.Failed, Jobs: r.Failed},
@@ -123,6 +133,23 @@ func (s *Site) runs(c *gin.Context) {
 	s.render(c, http.StatusOK, "runs", p)
 }
 
+// restoreAll asks whether all that the attic has of a run or a shelf is to be brought back.
+type restoreAll struct {
+	Of   string // "run" or "shelf"
+	ID   int64
+	Asks string
+}
+
+// bitRates are those a run can ask for, kbit/s; 0, the profile's own, is not among them.
+func bitRates() []int {
+	for _, f := range profile.Fields() {
+		if f.Name == "delivered.bit_rate_kbps" {
+			return slices.DeleteFunc(slices.Clone(f.Numbers), func(n int) bool { return n == 0 })
+		}
+	}
+	return nil
+}
+
 type runPage struct {
 	runView
 	List    []store.Job
@@ -186,7 +213,7 @@ func (s *Site) findRun(c *gin.Context, n int64) (p runPage, err error) {
 			return p, err
 		}
 	}
-	if r.Delivery == store.Replace {
+	if r.Delivery.Writes() {
 		kept, err := s.store.Originals(ctx, store.OriginalQuery{RunID: n, Limit: 1})
 		if err != nil {
 			return p, err

@@ -20,6 +20,7 @@ type shelfView struct {
 	Going        bool     // the last run has not ended yet
 	Whole        bool     // the shelf has a page, or the start page, to itself
 	TakesUploads bool     // it is the one shelf that does
+	Kept         bool     // there are originals in the attic; only where the page of a shelf asks
 }
 
 func viewShelf(s store.ShelfSummary) shelfView {
@@ -33,7 +34,7 @@ func viewShelf(s store.ShelfSummary) shelfView {
 	v.TakesUploads = s.Name == store.UploadShelf
 	if s.LastRun != nil {
 		v.Tolerance = known(s.LastRun.Tolerance)
-		v.Measurements = s.LastRun.Delivery == store.Measure
+		v.Measurements = !s.LastRun.Delivery.Levels()
 		v.Going = going(s.LastRun.State)
 	}
 	return v
@@ -78,7 +79,12 @@ func (s *Site) shelf(c *gin.Context) {
 		s.fail(c, err)
 		return
 	}
+	kept, err := s.store.Originals(c.Request.Context(), store.OriginalQuery{ShelfID: n, Limit: 1})
+	if err != nil {
+		s.fail(c, err)
+		return
+	}
 	v := viewShelf(sh)
-	v.Whole = true
+	v.Whole, v.Kept = true, len(kept) > 0
 	s.render(c, http.StatusOK, "shelf", v)
 }

@@ -11,6 +11,7 @@ import (
 
 	"github.com/gin-gonic/gin"
 
+	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
 
@@ -61,6 +62,8 @@ func everyPage() map[string]struct {
 	measuring := newFake(40)
 	measuring.runList[0].Delivery = store.Measure
 	measuring.shelfList[0].LastRun = &measuring.runList[0]
+	withTags := newReplaced(40)
+	withTags.runList[0].Delivery, withTags.runList[0].Group = store.Tags, profile.Album
 	waiting.runList[0].State, waiting.runList[0].StartedAt = store.RunWaiting, nil
 	cancelled := newFake(30)
 	stopped := &cancelled.runList[0]
@@ -76,6 +79,7 @@ func everyPage() map[string]struct {
 		"measuring":  {measuring, []string{"/", "/runs", "/runs/12"}},
 		"waiting":    {waiting, []string{"/runs/12"}},
 		"replaced":   {newReplaced(40), []string{"/", "/shelves/1", "/runs", "/runs/12", "/recordings/1", "/recordings/2", "/recordings/18"}},
+		"tags":       {withTags, []string{"/", "/shelves/1", "/runs", "/runs/12", "/recordings/1", "/recordings/2"}},
 		"cancelled":  {cancelled, []string{"/runs/12"}},
 		"unmeasured": {unmeasured, []string{"/"}},
 		"fresh":      {fresh, []string{"/", "/shelves/1"}},
@@ -160,12 +164,15 @@ func TestSentences(t *testing.T) {
 		{"full", "/shelves/1", "/srv/radio/evening-even.attic"},
 		{"full", "/runs/12", "levelled copies; originals not touched."},
 		{"replaced", "/runs/12", "levelled files in place of the originals, which go to the attic first."},
-		{"replaced", "/runs/12", "The originals it replaced are in the attic; a recording's page brings its own back, evenshelf restore --of-run 12 all of them."},
+		{"replaced", "/runs/12", "The originals it replaced are in the attic; a recording's page brings its own back, the button above all of them, as does evenshelf restore --of-run 12."},
 		{"replaced", "/recordings/2", "The original is in the attic; the levelled file of run 12 took its place today at 11:31."},
 		{"replaced", "/recordings/2", "Delivered in the original's place."},
 		{"replaced", "/recordings/18", "The file on the shelf was not replaced."},
 		{"replaced", "/recordings/1", "The original is back in its place, bit for bit."},
 		{"replaced", "/recordings/1", "the original is back, bit for bit"},
+		{"tags", "/runs/12", "gain tags written into the files; the originals go to the attic first, one gain for an album."},
+		{"tags", "/recordings/2", "The original is in the attic; the same with the gain tags of run 12 took its place today at 11:31."},
+		{"tags", "/shelves/1", "Bring back every original of evening-music?"},
 		{"waiting", "/runs/12", "recordings wait for the first free hand."},
 		{"cancelled", "/runs/12", "Cancelled after 14 of 30 recordings; what was done stays done."},
 		{"unmeasured", "/", "5 recordings found, none measured yet."},

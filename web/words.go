@@ -7,6 +7,7 @@ import (
 	"unicode/utf8"
 
 	"evenshelf/engine/audio"
+	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
 
@@ -32,8 +33,36 @@ func deliveryWords(d store.Delivery) string {
 		return "levelled copies; originals not touched"
 	case store.Replace:
 		return "levelled files in place of the originals, which go to the attic first"
+	case store.Tags:
+		return "gain tags written into the files; the originals go to the attic first"
 	}
 	return string(d)
+}
+
+// encodedWords says in what a run's files are written where that is not the source's own: "as MP3, 192 kbit/s".
+func encodedWords(r store.Run) string {
+	words := ""
+	if name := formatNames[r.Format]; name != "" {
+		words = "as " + name
+	}
+	if r.BitRate != 0 {
+		words += fmt.Sprintf(", %d kbit/s", r.BitRate)
+	}
+	return strings.TrimPrefix(words, ", ")
+}
+
+var formatNames = map[profile.Format]string{profile.WAV: "WAV", profile.FLAC: "FLAC", profile.MP3: "MP3", profile.M4A: "AAC in M4A",
+	profile.Vorbis: "Vorbis in Ogg", profile.Opus: "Opus in Ogg"}
+
+// groupWords says which recordings of a run share a gain; "" if none do.
+func groupWords(r store.Run) string {
+	switch r.Group {
+	case profile.Folder:
+		return "one gain for a folder"
+	case profile.Album:
+		return "one gain for an album"
+	}
+	return ""
 }
 
 // spread is the distance from the quietest to the loudest, LU; nil where either is missing.
@@ -61,12 +90,21 @@ func told(r store.Recording, run *store.Run, job *store.Job) string {
 	case store.Working:
 		return "Being worked on right now."
 	case store.Failed:
+		if tagged(run) {
+			return "No gain tags could be written: " + reasonOr(r.Reason, "the reason was not recorded") + ". The file on the shelf is as it was."
+		}
 		return "Could not be levelled: " + reasonOr(r.Reason, "the reason was not recorded") + ". The file on the shelf is as it was."
 	case store.Cancelled:
 		return "Cancelled before its turn came. The file on the shelf is as it was."
 	}
 	if run != nil && run.Delivery == store.Measure {
 		return "Measured only; nothing was written." + because(r.Reason)
+	}
+	if tagged(run) {
+		if job == nil {
+			return "Its gain tags say what it measures; the sound is as it was."
+		}
+		return strings.TrimPrefix(because(reasonOr(job.Reason, "its gain tags say what it measures")), " ") + " The sound is as it was."
 	}
 	did := action(r, run, job)
 	if r.State == store.Held {
@@ -127,7 +165,10 @@ func action(r store.Recording, run *store.Run, job *store.Job) string {
 }
 
 // replaced says whether a run puts its results in the place of originals.
-func replaced(run *store.Run) bool { return run != nil && run.Delivery == store.Replace }
+func replaced(run *store.Run) bool { return run != nil && run.Delivery.Writes() }
+
+// tagged says whether a run writes nothing but gain tags.
+func tagged(run *store.Run) bool { return run != nil && run.Delivery == store.Tags }
 
 func reasonOr(reason, otherwise string) string {
 	if reason == "" {

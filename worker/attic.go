@@ -4,7 +4,6 @@ import (
 	"context"
 	"errors"
 	"fmt"
-	"io/fs"
 	"os"
 	"path/filepath"
 	"sync"
@@ -14,27 +13,30 @@ import (
 	"evenshelf/worker/delivery"
 )
 
-// firstGeneration returns the sound to level: what is on the shelf, or if that is a copy we put there, its
-// original in the attic, so that no sound is ever levelled twice. In that case ours is what the attic knows of
-// it, else nil. errNoOriginal if that original is not there. A replacing job that a crash cut short after its copy was in place is repeated the same way and
-// makes the same file.
+// firstGeneration returns the sound to level: what is on the shelf, or if that is, byte for byte, a file we put there,
+// its original in the attic, so that no sound is ever levelled twice. In that case ours is what the attic knows of
+// it, else nil. errNoOriginal if that original is not there. A replacing job that a crash cut short after its copy was in
+// place is repeated the same way and makes the same file.
 func (s *Service) firstGeneration(ctx context.Context, shelf store.Shelf, recordingID int64, onShelf string) (source string, ours *store.Original, err error) {
+	if ours, err = s.ours(ctx, recordingID, onShelf); err != nil || ours == nil {
+		return onShelf, nil, err
+	}
+	source, err = stored(shelf, *ours)
+	return source, ours, err
+}
+
+// ours is what the attic has of a file that is, byte for byte, what we put in a recording's place; nil if it is not.
+func (s *Service) ours(ctx context.Context, recordingID int64, onShelf string) (*store.Original, error) {
 	kept, err := s.store.Original(ctx, recordingID)
 	switch {
 	case errors.Is(err, store.ErrNotFound):
-		return onShelf, nil, nil
+		return nil, nil
 	case err != nil:
-		return "", nil, err
+		return nil, err
 	case !inAttic(kept).IsLevelled(onShelf):
-		return onShelf, nil, nil
+		return nil, nil
 	}
-	source = filepath.Join(shelf.Attic(), filepath.FromSlash(kept.Stored))
-	if _, err := os.Stat(source); errors.Is(err, fs.ErrNotExist) {
-		return "", nil, errNoOriginal
-	} else if err != nil {
-		return "", nil, err
-	}
-	return source, &kept, nil
+	return &kept, nil
 }
 
 // errNoOriginal says that what is on the shelf is a copy of ours, which is not to be levelled, and that there is
@@ -56,29 +58,51 @@ func (s *Service) replace(ctx context.Context, w store.Work, t level.Task, onShe
 		return r, err
 	}
 	if ours != nil {
-		switch stands, err := s.stands(ctx, w, t, *ours); {
-		case err != nil:
-			return r, err
-		case stands:
-			return result{outcome: level.Outcome{Verdict: level.Verdict{State: level.Done, Reason: already}}, same: ours.JobID}, nil
+		l := store.Levelling{JobID: ours.JobID, RunID: ours.RunID, RecordingID: w.Recording.ID, Path: w.Recording.Path}
+		if stands, err := s.stands(ctx, w, t, l); err != nil || stands {
+			return (&known{Levelling: l}).same(w), err
 		}
+	} else {
+		t.Known = s.whoever(ctx, w, s.levelledBefore(ctx, w, t))
 	}
-	at := delivery.Place{Root: w.Shelf.Root, Rel: w.Recording.Path, Attic: w.Shelf.Attic(), Copies: w.Shelf.Copies, Source: source}
-	r.outcome, r.output, err = delivery.Replace(ctx, s.engine, at, t, key, func(ctx context.Context, o delivery.Original) error {
-		return s.store.KeepOriginal(ctx, store.Original{RecordingID: w.Recording.ID, JobID: w.Job.ID,
-			SHA256: o.SHA256, Stored: o.Stored, Levelled: o.Levelled, Size: o.Size})
-	})
+	put := func() error {
+		r.outcome, r.output, err = delivery.Replace(ctx, s.engine, place(w, source, ours), t, key, func(ctx context.Context, o delivery.Original) error {
+			return s.keepOriginal(ctx, w.Recording.ID, w.Job.ID, o)
+		})
+		return err
+	}
+	var k *known
+	if err := put(); !errors.As(err, &k) {
+		return r, err
+	}
+	if k.stands {
+		return k.same(w), nil
+	}
+	if k.RecordingID == w.Recording.ID {
+		ours = k.Original
+	}
+	if source, t, err = s.again(w.Shelf, k, t, onShelf); err != nil {
+		return r, err
+	}
+	err = put()
+	if plan := r.outcome.Plan; err == nil && plan != nil && plan.Untouched { // copied byte for byte, tags and all
+		r.outcome.Verdict.Reason = "the original is within the profile and is back with the tags it had; the file with other tags is in the attic"
+	}
 	return r, err
 }
 
-// stands reports whether levelling would only make the file again that we put on the shelf: it was made by this
-// engine, with this version of the profile and, if it shares its gain with others, with the same gain.
-func (s *Service) stands(ctx context.Context, w store.Work, t level.Task, ours store.Original) (bool, error) {
-	ok, err := s.store.Stands(ctx, ours.JobID, w.Job.ProfileVersion)
+// stands reports whether levelling would only make again what a levelling made: it was by this engine, with this
+// version of the profile and, if it shares its gain with others, with the same gain.
+func (s *Service) stands(ctx context.Context, w store.Work, t level.Task, l store.Levelling) (bool, error) {
+	ok, err := s.store.Stands(ctx, l.JobID, w.Job.ProfileVersion)
 	if err != nil || !ok || t.Shared == nil {
 		return ok, err
 	}
-	then, err := s.store.Shared(ctx, ours.RunID, folderOf(w.Recording))
+	name, err := s.groupOf(ctx, w.Profile, l.RecordingID, l.Path)
+	if err != nil {
+		return false, err
+	}
+	then, err := s.store.Shared(ctx, l.RunID, name)
 	if errors.Is(err, store.ErrNotFound) {
 		return false, nil
 	}
@@ -86,12 +110,25 @@ func (s *Service) stands(ctx context.Context, w store.Work, t level.Task, ours s
 }
 
 // deliverCopy puts a levelled copy into the shelf's copies folder.
-func (s *Service) deliverCopy(ctx context.Context, w store.Work, t level.Task, onShelf, key string) (level.Outcome, string, error) {
-	source, _, err := s.firstGeneration(ctx, w.Shelf, w.Recording.ID, onShelf)
+func (s *Service) deliverCopy(ctx context.Context, w store.Work, t level.Task, onShelf, key string) (o level.Outcome, output string, err error) {
+	source, ours, err := s.firstGeneration(ctx, w.Shelf, w.Recording.ID, onShelf)
 	if err != nil {
 		return level.Outcome{}, "", err
 	}
-	return delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, t, key, delivery.Options{Overwrite: true})
+	if ours == nil {
+		t.Known = s.whoever(ctx, w, s.levelledBefore(ctx, w, t))
+	}
+	deliver := func() (level.Outcome, string, error) {
+		return delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, t, key, delivery.Options{Overwrite: true})
+	}
+	var k *known
+	if o, output, err = deliver(); !errors.As(err, &k) {
+		return o, output, err
+	}
+	if source, t, err = s.again(w.Shelf, k, t, onShelf); err != nil {
+		return level.Outcome{}, "", err
+	}
+	return deliver()
 }
 
 func inAttic(o store.Original) delivery.Original {
@@ -134,7 +171,7 @@ func (s *Service) Restore(ctx context.Context, recordingID int64) (store.Recordi
 	if err != nil {
 		return fail(err)
 	}
-	if err := s.store.Restored(ctx, kept, info.Size()); err != nil {
+	if err := s.store.Restored(ctx, kept, info.Size(), info.ModTime()); err != nil {
 		return fail(err)
 	}
 	return s.store.Recording(ctx, recordingID)

@@ -38,7 +38,7 @@ func TestReplaceAndRestore(t *testing.T) {
 	}
 	// A run with another profile levels the originals again, not the copies.
 	again := b.wait(b.beginWith(s, store.Replace, func(p *profile.Profile) { p.Target-- }).ID, ended)
-	if again.Done != 2 || b.onShelf("b.wav") != "levelled sound of b.wav" {
+	if again.Done != 2 || b.onShelf("b.wav") != "levelled-19 sound of b.wav" {
 		t.Errorf("%+v, %q", again, b.onShelf("b.wav"))
 	}
 	b.wait(b.begin(s, store.Copy).ID, ended)

@@ -15,6 +15,7 @@ import (
 	"evenshelf/engine/audio"
 	"evenshelf/engine/faults"
 	"evenshelf/engine/level"
+	"evenshelf/engine/media"
 	"evenshelf/engine/meter"
 	"evenshelf/engine/profile"
 	"evenshelf/store"
@@ -66,7 +67,58 @@ func (e *engine) Analyse(ctx context.Context, path string, o level.Options) (*le
 	if err := e.begin(ctx, path); err != nil {
 		return nil, err
 	}
-	return reading(-30), nil
+	return heard(path, -30), nil
+}
+
+// tagMark begins what stands for tags in a file; what is before it stands for the sound.
+const tagMark = "|"
+
+// heard is the reading of a file with the hash of its sound.
+func heard(path string, lufs audio.LUFS) *level.Analysis {
+	a := reading(lufs)
+	if b, err := os.ReadFile(path); err == nil {
+		sound, _, _ := strings.Cut(string(b), tagMark)
+		a.AudioHash = fmt.Sprintf("%x", sound)
+	}
+	return a
+}
+
+func (e *engine) Tag(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error) {
+	if err := e.begin(ctx, source); err != nil {
+		return level.Outcome{}, err
+	}
+	o := level.Outcome{Before: heard(source, -30), Verdict: level.Verdict{State: level.Done}}
+	if t.Known != nil {
+		if err := t.Known(o.Before); err != nil {
+			return level.Outcome{}, err
+		}
+	}
+	b, err := os.ReadFile(source)
+	gain := tagMark + "gain"
+	if t.Shared != nil {
+		gain += fmt.Sprint(t.Shared.Integrated)
+	}
+	if err != nil || strings.HasSuffix(string(b), gain) {
+		return o, err
+	}
+	sound, other, _ := strings.Cut(string(b), tagMark)
+	if !strings.HasPrefix(other, "gain") && other != "" {
+		sound += tagMark + other
+	}
+	if err := os.WriteFile(scratch, []byte(sound+gain), 0o600); err != nil {
+		return o, err
+	}
+	o.After, o.Extension = heard(scratch, -30), filepath.Ext(source)
+	return o, nil
+}
+
+// Album says that a file is of the album its name begins with: "one-1.wav" is of "one".
+func (e *engine) Album(_ context.Context, path string) (media.Album, error) {
+	title, _, ok := strings.Cut(filepath.Base(path), "-")
+	if !ok {
+		return media.Album{}, nil
+	}
+	return media.Album{Title: title}, nil
 }
 
 // Group says that a folder's loudness is minus the number of its recordings.
@@ -90,18 +142,46 @@ func (e *engine) Level(ctx context.Context, source string, t level.Task, scratch
 	if err := e.begin(ctx, source); err != nil {
 		return level.Outcome{}, err
 	}
+	before := heard(source, -30)
+	if t.Known != nil {
+		if err := t.Known(before); err != nil {
+			return level.Outcome{}, err
+		}
+	}
 	b, err := os.ReadFile(source)
 	if err != nil {
 		return level.Outcome{}, err
 	}
-	if err := os.WriteFile(scratch, append([]byte("levelled "), b...), 0o600); err != nil {
+	sound, other, _ := strings.Cut(string(b), tagMark)
+	if t.TagsFrom != "" {
+		b, err := os.ReadFile(t.TagsFrom)
+		if err != nil {
+			return level.Outcome{}, err
+		}
+		_, other, _ = strings.Cut(string(b), tagMark)
+	}
+	if t.Profile.Target == -30 { // as it is already
+		if err := os.WriteFile(scratch, b, 0o600); err != nil {
+			return level.Outcome{}, err
+		}
+		return level.Outcome{Before: before, After: heard(scratch, -30), Plan: &level.Plan{Untouched: true},
+			Verdict: level.Verdict{State: level.Done}, Extension: filepath.Ext(source)}, nil
+	}
+	levelled := "levelled " + sound
+	if t.Profile.Target != -18 { // as another target makes another sound
+		levelled = fmt.Sprintf("levelled%g %s", float64(t.Profile.Target), sound)
+	}
+	if other != "" {
+		levelled += tagMark + other
+	}
+	if err := os.WriteFile(scratch, []byte(levelled), 0o600); err != nil {
 		return level.Outcome{}, err
 	}
 	state := level.Done
 	if strings.Contains(source, "doubtful") {
 		state = level.Held
 	}
-	return level.Outcome{Before: reading(-30), After: reading(-18), Plan: &level.Plan{Gain: 12}, Renders: 1,
+	return level.Outcome{Before: before, After: heard(scratch, -18), Plan: &level.Plan{Gain: 12}, Renders: 1,
 		Verdict: level.Verdict{State: state}, Extension: filepath.Ext(source)}, nil
 }
 

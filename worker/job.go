@@ -11,7 +11,6 @@ import (
 	"github.com/riverqueue/river"
 	"github.com/riverqueue/river/riverdriver/riversqlite"
 
-	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
 	"evenshelf/store"
 	"evenshelf/worker/delivery"
@@ -152,6 +151,12 @@ func (s *Service) attempt(ctx context.Context, w store.Work) (r result, err erro
 		return r, err
 	}
 	r, err = s.work(ctx, w, source)
+	var m *moved
+	if errors.As(err, &m) { // its story goes on here; everything from the top, as that recording
+		if w, err = s.follow(ctx, w, m); err == nil {
+			r, err = s.work(ctx, w, source)
+		}
+	}
 	switch {
 	case errors.Is(ctx.Err(), context.DeadlineExceeded):
 		return result{outcome: failedBecause(fmt.Sprintf("not done after %s", jobTimeout))}, nil
@@ -172,7 +177,7 @@ func isGone(err error) bool {
 // work does what the run asks with the file of a recording.
 func (s *Service) work(ctx context.Context, w store.Work, source string) (r result, err error) {
 	if w.Delivery == store.Measure {
-		r.outcome, err = s.measure(ctx, source, w.Profile.Mono)
+		r.outcome, err = s.measure(ctx, w, source)
 		return r, err
 	}
 	task, err := s.task(ctx, w)
@@ -180,20 +185,23 @@ func (s *Service) work(ctx context.Context, w store.Work, source string) (r resu
 		return r, err
 	}
 	key := fmt.Sprintf("job-%d", w.Job.ID)
-	if w.Delivery == store.Replace {
+	switch w.Delivery {
+	case store.Replace:
 		return s.replace(ctx, w, task, source, key)
+	case store.Tags:
+		return s.tag(ctx, w, task, source, key)
 	}
 	r.outcome, r.output, err = s.deliverCopy(ctx, w, task, source, key)
 	return r, err
 }
 
 // measure only takes the before reading. A file that cannot be read will not be readable next time.
-func (s *Service) measure(ctx context.Context, source string, mono audio.MonoRule) (level.Outcome, error) {
+func (s *Service) measure(ctx context.Context, w store.Work, source string) (level.Outcome, error) {
 	first, err := os.Stat(source)
 	if err != nil {
 		return level.Outcome{}, err
 	}
-	a, err := s.engine.Analyse(ctx, source, level.Options{Mono: mono})
+	a, err := s.engine.Analyse(ctx, source, level.Options{Mono: w.Profile.Mono})
 	if unchanged := delivery.Unchanged(source, first); unchanged != nil {
 		return level.Outcome{}, unchanged
 	}
@@ -202,6 +210,9 @@ func (s *Service) measure(ctx context.Context, source string, mono audio.MonoRul
 		return level.Outcome{}, ctx.Err()
 	case err != nil:
 		return failedBecause(level.Reason(err, source)), nil
+	}
+	if err := s.whoever(ctx, w, nil)(a); err != nil {
+		return level.Outcome{}, err
 	}
 	return level.Outcome{Before: a, Verdict: level.Verdict{State: level.Done}}, nil
 }

@@ -28,6 +28,7 @@ import (
 
 	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
+	"evenshelf/engine/media"
 	"evenshelf/store"
 	"evenshelf/worker/delivery"
 	"evenshelf/worker/discover"
@@ -40,6 +41,11 @@ type Engine interface {
 	// Level writes the levelled sound to scratch and syncs it; if the outcome has no After there is no
 	// scratch file. A damaged source is an outcome with the verdict failed; an error may heal.
 	Level(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error)
+	// Tag writes a copy of source with its gain tags as measured to scratch; otherwise as Level. An outcome that is done
+	// without After says that there is nothing to write.
+	Tag(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error)
+	// Album reads which album a file is from; its title is "" if it names none.
+	Album(ctx context.Context, path string) (media.Album, error)
 	// Group measures recordings as one programme and leaves out those it cannot read. An error may heal.
 	Group(ctx context.Context, paths []string, mono audio.MonoRule) (level.Shared, error)
 }
@@ -73,9 +79,11 @@ type Service struct {
 	log    *slog.Logger
 	client *river.Client[*store.Tx]
 
+	workers    int
 	retryAfter func(attempt int) time.Duration
-	places     turnstile[int64]  // one job or restore at a time may change a recording's own file
-	groups     turnstile[folder] // one job at a time measures the recordings of a folder together
+	places     turnstile[int64] // one job or restore at a time may change a recording's own file
+	groups     turnstile[group] // one job at a time measures the recordings of a group together
+	albums     turnstile[int64] // one job at a time reads the albums of a shelf
 
 	mu      sync.Mutex
 	started bool
@@ -92,7 +100,7 @@ func New(o Options) (*Service, error) {
 	if o.Workers <= 0 {
 		o.Workers = runtime.GOMAXPROCS(0)
 	}
-	s := &Service{store: o.Store, engine: o.Engine, log: o.Log, retryAfter: retryAfter}
+	s := &Service{store: o.Store, engine: o.Engine, log: o.Log, workers: o.Workers, retryAfter: retryAfter}
 	workers := river.NewWorkers()
 	river.AddWorker(workers, &levelWorker{service: s})
 	client, err := river.NewClient(riversqlite.New(o.Store.Writer()), &river.Config{

@@ -57,8 +57,20 @@ func (e *Engine) Foresee(ctx context.Context, source string, t Task) (Outcome, e
 
 // begin measures and plans. There is no turn if the recording cannot be levelled; the outcome says why.
 func (e *Engine) begin(ctx context.Context, source string, t Task) (*turn, Outcome, error) {
-	j := &turn{engine: e, source: source, task: t}
-	before, err := e.Analyse(ctx, source, j.how())
+	before, o, err := e.measured(ctx, source, t)
+	if before == nil || err != nil {
+		return nil, o, err
+	}
+	j := &turn{engine: e, source: source, task: t, before: before}
+	if j.plan, err = MakePlan(t, before); err != nil {
+		return nil, failed(before, err.Error()), nil
+	}
+	return j, o, nil
+}
+
+// measured takes the before reading of a task's recording; nil if that cannot be read, the outcome says why.
+func (e *Engine) measured(ctx context.Context, source string, t Task) (*Analysis, Outcome, error) {
+	before, err := e.Analyse(ctx, source, Options{Mono: t.Profile.Mono})
 	if cause := context.Cause(ctx); cause != nil {
 		return nil, Outcome{}, cause
 	}
@@ -68,11 +80,12 @@ func (e *Engine) begin(ctx context.Context, source string, t Task) (*turn, Outco
 	if err != nil {
 		return nil, failed(nil, Reason(err, source)), nil
 	}
-	j.before = before
-	if j.plan, err = MakePlan(t, before); err != nil {
-		return nil, failed(before, err.Error()), nil
+	if t.Known != nil {
+		if err := t.Known(before); err != nil {
+			return nil, Outcome{}, err
+		}
 	}
-	return j, Outcome{Before: before}, nil
+	return before, Outcome{Before: before}, nil
 }
 
 func failed(before *Analysis, reason string) Outcome {

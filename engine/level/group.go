@@ -17,6 +17,11 @@ type Task struct {
 	Profile profile.Profile
 	// Shared is the reading of the group of recordings that this one shares its gain with; nil: it has one of its own.
 	Shared *Shared
+	// TagsFrom is the file whose tags the copy carries; "": the source's own.
+	TagsFrom string
+	// Known, if there is one, is asked once the recording is measured. Its error ends the turn before anything is
+	// written and is what Level, Foresee and Tag return: whoever knows the sound by its hash need not have it levelled.
+	Known func(before *Analysis) error
 }
 
 // Shared is the reading of several recordings as one programme.

@@ -1,6 +1,7 @@
 package level
 
 import (
+	"cmp"
 	"context"
 	"fmt"
 
@@ -51,7 +52,7 @@ func (j *turn) tell(o *Outcome, r rendering) {
 // scratch: a lossy encoder may answer the smallest change of gain with a jump. It returns the extension.
 func (j *turn) deliver(ctx context.Context, scratch string, o *Outcome) (string, error) {
 	spec := j.engine.Media.SpecFor(j.before.Info, wish(j.task.Profile))
-	spec.TagsFrom = j.source
+	spec.TagsFrom = cmp.Or(j.task.TagsFrom, j.source)
 	if err := j.foresee(ctx); err != nil {
 		return "", err
 	}

@@ -12,6 +12,7 @@ import (
 	"path"
 	"path/filepath"
 	"strings"
+	"time"
 
 	"evenshelf/engine/level"
 )
@@ -34,7 +35,9 @@ type Place struct {
 	Rel    string // the recording's path below Root, with forward slashes
 	Attic  string
 	Copies string // what is held goes to _held below it
-	Source string // the sound to level: Root/Rel itself, or its original in the attic
+	Source string // the sound to work on: Root/Rel itself, or an original in the attic
+	// Ours is what the attic has of the file at Root/Rel, if that file was made from it; nil: that file is an original.
+	Ours *Original
 }
 
 // Replace levels a recording and puts the copy in its place, in an order that can be cut short anywhere
@@ -45,8 +48,20 @@ type Place struct {
 // A recording that was replaced before is levelled from its original, so that no sound is ever levelled
 // twice. One that is within its profile stays as it is. What is held goes where held copies go, and the
 // recording stays. output is relative to Root, or to Copies if the outcome is held. Errors as for Deliver.
-func Replace(ctx context.Context, eng Leveller, at Place, t level.Task, key string,
-	record func(context.Context, Original) error) (o level.Outcome, output string, err error) {
+//
+// Whatever is in the recording's place and is not, byte for byte, what was put there goes to the attic too: somebody
+// has written other tags since. Only the original is recorded.
+func Replace(ctx context.Context, eng Leveller, at Place, t level.Task, key string, record func(context.Context, Original) error) (level.Outcome, string, error) {
+	return replace(ctx, eng.Level, &at, t, key, record)
+}
+
+// Tag writes gain tags into a recording's own file, on the path of Replace. One whose tags are right already stays as
+// it is. at.Ours is not looked at before the engine is done: whoever knows the sound may only then know the file.
+func Tag(ctx context.Context, eng Tagger, at *Place, t level.Task, key string, record func(context.Context, Original) error) (level.Outcome, string, error) {
+	return replace(ctx, eng.Tag, at, t, key, record)
+}
+
+func replace(ctx context.Context, engine maker, at *Place, t level.Task, key string, record func(context.Context, Original) error) (o level.Outcome, output string, err error) {
 	d, refusal, err := open(at.Source, at.Root, at.Rel, key, Options{Overwrite: true})
 	if err != nil || refusal != "" {
 		return failed(level.Outcome{}, refusal), "", err
@@ -62,39 +77,34 @@ func Replace(ctx context.Context, eng Leveller, at Place, t level.Task, key stri
 		// The link would be replaced, and what it leads to be taken for the original in the attic.
 		return failed(level.Outcome{}, "a symbolic link leads to it now, so nothing can take its place"), "", nil
 	}
-	if o, err = d.level(ctx, eng, t); err != nil || o.After == nil {
+	if o, err = d.make(ctx, engine, t); err != nil {
 		return o, "", err
 	}
 	switch {
+	case o.After == nil && o.Verdict.State == level.Done: // nothing to write: it is as it should be
+		return o, at.Rel, nil
+	case o.After == nil:
+		return o, "", nil
 	case o.Verdict.State == level.Held:
-		output = path.Join(Held, at.Rel)
-		if !strings.EqualFold(path.Ext(at.Rel), o.Extension) {
-			output += o.Extension
-		}
-		if err := d.dress(0o644); err != nil {
-			return o, "", err
-		}
-		sum, _, err := digest(d.path(d.scratch))
-		if err != nil {
-			return o, "", err
-		}
-		return o, output, keep(d.path(d.scratch), sum, filepath.Join(at.Copies, filepath.FromSlash(output)))
+		output, err = d.hold(at.Copies, o.Extension)
+		return o, output, err
 	case !strings.EqualFold(path.Ext(at.Rel), o.Extension):
-		return failed(o, fmt.Sprintf("it can only be written as %s here, so the copy cannot take its place", o.Extension)), "", nil
+		return failed(o, notInPlace(at.Rel, o.Extension)), "", nil
 	case first && o.Plan != nil && o.Plan.Untouched:
 		return o, at.Rel, nil
 	}
-	kept, err := d.toAttic(at.Attic, first)
+	step("made")
+	kept, err := d.toAttic(at, target)
 	if err != nil {
 		return o, "", fmt.Errorf("attic: %w", err)
 	}
 	if kept.Levelled, kept.Size, err = digest(d.path(d.scratch)); err != nil {
 		return o, "", err
 	}
-	if err := d.dress(d.info.Mode().Perm()); err != nil {
+	if err := d.dress(target, replaced); err != nil {
 		return o, "", err
 	}
-	d.own(replaced)
+	step("dressed")
 	// The work took its time, and copying into the attic too: what somebody put there meanwhile is not in it.
 	if err := Unchanged(target, replaced); err != nil {
 		return o, "", err
@@ -102,26 +112,55 @@ func Replace(ctx context.Context, eng Leveller, at Place, t level.Task, key stri
 	if err := record(ctx, kept); err != nil {
 		return o, "", err
 	}
+	step("recorded")
 	if err := d.root.Rename(d.scratch, at.Rel); err != nil {
 		return o, "", err
 	}
+	step("renamed")
 	return o, at.Rel, d.syncFolder(path.Dir(at.Rel))
 }
 
-// toAttic keeps the source in the attic, unless it is there already.
-func (d *delivery) toAttic(attic string, first bool) (Original, error) {
-	sum, _, err := digest(d.source)
+// notInPlace is why a file of another format cannot take a recording's place: whoever plays it knows it by its name.
+func notInPlace(rel, extension string) string {
+	return fmt.Sprintf("its levelled file would be %s, which cannot take the place of %s; delivery copy can make it", extension, path.Ext(rel))
+}
+
+// hold puts the scratch file where held copies wait.
+func (d *delivery) hold(copies, extension string) (output string, err error) {
+	output = path.Join(Held, d.rel)
+	if !strings.EqualFold(path.Ext(d.rel), extension) {
+		output += extension
+	}
+	if err := d.dress(d.source, d.info); err != nil {
+		return "", err
+	}
+	sum, _, err := digest(d.path(d.scratch))
+	if err != nil {
+		return "", err
+	}
+	return output, keep(d.path(d.scratch), sum, filepath.Join(copies, filepath.FromSlash(output)))
+}
+
+// toAttic keeps what is in the recording's place, unless we made it from what is in the attic already, and returns the
+// original.
+func (d *delivery) toAttic(at *Place, target string) (Original, error) {
+	sum, _, err := digest(target)
 	if err != nil {
 		return Original{}, err
 	}
-	if !first {
-		stored, err := filepath.Rel(attic, d.source)
-		return Original{Stored: filepath.ToSlash(stored), SHA256: sum}, err
+	if at.Ours != nil && sum == at.Ours.Levelled {
+		return *at.Ours, nil
 	}
 	// The name carries the hash, so that another recording that comes to this path later has a place too.
 	ext := path.Ext(d.rel)
 	stored := strings.TrimSuffix(d.rel, ext) + "." + sum[:12] + ext
-	return Original{Stored: stored, SHA256: sum}, keep(d.source, sum, filepath.Join(attic, filepath.FromSlash(stored)))
+	if err := keep(target, sum, filepath.Join(at.Attic, filepath.FromSlash(stored))); err != nil {
+		return Original{}, err
+	}
+	if at.Ours != nil {
+		return *at.Ours, nil
+	}
+	return Original{Stored: stored, SHA256: sum}, nil
 }
 
 // Restore puts the original back at rel below root, bit for bit, and takes it out of the attic. It may be
@@ -164,9 +203,11 @@ func Restore(root, rel, attic string, kept Original, key string) error {
 	if err := keep(stored, kept.SHA256, d.path(d.scratch)); err != nil {
 		return err
 	}
+	step("brought")
 	if err := r.Rename(d.scratch, rel); err != nil {
 		return errors.Join(err, removeIfThere(d.path(d.scratch)))
 	}
+	step("renamed")
 	return errors.Join(d.syncFolder(path.Dir(rel)), removeIfThere(stored))
 }
 
@@ -197,18 +238,27 @@ func keep(from, sum, to string) error {
 	if err := removeIfThere(to); err != nil {
 		return err
 	}
-	if os.Link(from, to) != nil {
+	if link(from, to) != nil {
 		if err := copyFile(from, to); err != nil {
 			return errors.Join(err, removeIfThere(to))
 		}
+		step("copied")
 		if there, _, err := digest(to); err != nil || there != sum {
 			return errors.Join(fmt.Errorf("%s: the copy differs from its original", to), err, removeIfThere(to))
 		}
 	}
+	step("kept")
 	return syncFolder(folder)
 }
 
-// copyFile copies content, mode and time, and syncs.
+// link and step are as they are for the sake of tests: those have no other file system, and the power does not go
+// between two steps when it is asked to.
+var (
+	link = os.Link
+	step = func(string) {}
+)
+
+// copyFile copies content and dress, and syncs.
 func copyFile(from, to string) error {
 	in, err := os.Open(from)
 	if err != nil {
@@ -223,11 +273,12 @@ func copyFile(from, to string) error {
 	if err != nil {
 		return err
 	}
+	step("begun")
 	_, err = io.Copy(out, in)
-	if err = errors.Join(err, out.Sync(), out.Close()); err != nil {
+	if err = errors.Join(err, dress(out, from, info), out.Sync(), out.Close()); err != nil {
 		return err
 	}
-	return os.Chtimes(to, info.ModTime(), info.ModTime())
+	return os.Chtimes(to, time.Time{}, info.ModTime())
 }
 
 // digest returns the SHA-256 of a file, in hexadecimal, and its length in bytes.

@@ -41,6 +41,11 @@ func (b *atticBench) replace(l *leveller, cut bool) (level.Outcome, string, erro
 	})
 }
 
+// again has the next levelling start from an original that was kept.
+func (b *atticBench) again(n int) {
+	b.place.Source, b.place.Ours = filepath.Join(b.place.Attic, b.kept[n].Stored), &b.kept[n]
+}
+
 func (b *atticBench) check(shelf, attic []string) {
 	b.t.Helper()
 	if got := files(b.t, b.src); !slices.Equal(got, shelf) {
@@ -68,7 +73,7 @@ func TestReplaceAndRestore(t *testing.T) {
 		t.Errorf("mode %v, time %v, %v", info.Mode(), info.ModTime(), err)
 	}
 	// Levelled again, from the original.
-	b.place.Source = filepath.Join(b.place.Attic, b.kept[0].Stored)
+	b.again(0)
 	if _, _, err := b.replace(&leveller{text: " two"}, false); err != nil {
 		t.Fatal(err)
 	}
@@ -111,7 +116,7 @@ func TestReplaceCutShort(t *testing.T) {
 	if !b.kept[1].IsLevelled(filepath.Join(b.src, "m/a.wav")) {
 		t.Error("the copy is not known again")
 	}
-	b.place.Source = filepath.Join(b.place.Attic, b.kept[1].Stored)
+	b.again(1)
 	if _, output, err := b.replace(&leveller{}, false); output != "m/a.wav" || err != nil {
 		t.Errorf("%q %v", output, err)
 	}
@@ -181,7 +186,7 @@ func TestReplaceLeavesWhatWasPutThereMeanwhile(t *testing.T) {
 			if _, _, err := b.replace(&leveller{}, false); err != nil {
 				t.Fatal(err)
 			}
-			b.place.Source = filepath.Join(b.place.Attic, b.kept[0].Stored)
+			b.again(0)
 			b.kept = nil
 		}
 		putThere := func() { b.write(filepath.Join(b.src, "m/a.wav"), "somebody's own") }

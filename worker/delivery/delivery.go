@@ -40,6 +40,14 @@ type Leveller interface {
 	Level(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error)
 }
 
+// Tagger is the part of the engine that Tag needs: like Leveller, but the copy differs only in its gain tags.
+type Tagger interface {
+	Tag(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error)
+}
+
+// maker makes a scratch file: Leveller.Level or Tagger.Tag.
+type maker func(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error)
+
 // Options says what delivery may do.
 type Options struct {
 	// Overwrite says that the output folder is ours: a copy that is there already is replaced, and a held
@@ -60,7 +68,7 @@ func Deliver(ctx context.Context, eng Leveller, source, outDir, relPath string, 
 		return failed(level.Outcome{}, refusal), "", err
 	}
 	defer func() { err = errors.Join(err, d.close()) }()
-	if o, err = d.level(ctx, eng, t); err != nil || o.After == nil {
+	if o, err = d.make(ctx, eng.Level, t); err != nil || o.After == nil {
 		return o, "", err
 	}
 	output, refusal, err = d.place(o)
@@ -136,9 +144,9 @@ func (d *delivery) prepare() (refusal string, err error) {
 	return "", nil
 }
 
-// level has the engine make the scratch file. If there is nothing to deliver the outcome has no After.
-func (d *delivery) level(ctx context.Context, eng Leveller, t level.Task) (level.Outcome, error) {
-	o, err := eng.Level(ctx, d.source, t, d.path(d.scratch))
+// make has the engine make the scratch file. If there is nothing to deliver the outcome has no After.
+func (d *delivery) make(ctx context.Context, engine maker, t level.Task) (level.Outcome, error) {
+	o, err := engine(ctx, d.source, t, d.path(d.scratch))
 	if err != nil {
 		return o, fmt.Errorf("level %s: %w", d.rel, err)
 	}
@@ -184,7 +192,7 @@ func (d *delivery) place(o level.Outcome) (output, refusal string, err error) {
 	if refusal, err := d.makeFolder(path.Dir(target)); refusal != "" || err != nil {
 		return "", refusal, err
 	}
-	if err := d.dress(0o644); err != nil {
+	if err := d.dress(d.source, d.info); err != nil {
 		return "", "", fmt.Errorf("deliver %s: %w", name, err)
 	}
 	if refusal, err := d.move(target); refusal != "" || err != nil {

@@ -10,6 +10,7 @@ import (
 	"path"
 	"path/filepath"
 	"regexp"
+	"strings"
 	"syscall"
 	"time"
 
@@ -138,28 +139,69 @@ func syncFolder(name string) error {
 	return errors.Join(f.Sync(), f.Close())
 }
 
-// own gives the scratch file the owner and group of the file it is to replace, so that whoever could use that
-// one can use the new one. Only root may give files away; others can do as much as a group they are in.
-func (d *delivery) own(like fs.FileInfo) {
-	if owner, ok := like.Sys().(*syscall.Stat_t); ok && d.root.Lchown(d.scratch, int(owner.Uid), int(owner.Gid)) != nil {
-		_ = d.root.Lchown(d.scratch, -1, int(owner.Gid))
-	}
-}
-
-// dress gives the scratch file its mode and the time of its source, so that tools which
-// copy what is newer see no change where there is none.
-func (d *delivery) dress(mode fs.FileMode) error {
-	info, err := d.root.Lstat(d.scratch)
+// dress makes the scratch file look like another to whoever keeps files, once it is one.
+func (d *delivery) dress(like string, info fs.FileInfo) error {
+	made, err := d.root.Lstat(d.scratch)
 	if err != nil {
 		return fmt.Errorf("the engine left no file: %w", err)
 	}
-	if !info.Mode().IsRegular() || info.Size() == 0 {
+	if !made.Mode().IsRegular() || made.Size() == 0 {
 		return fmt.Errorf("the engine left no sound in %s", d.scratch)
 	}
-	if err := d.root.Chmod(d.scratch, mode); err != nil {
+	f, err := d.root.Open(d.scratch)
+	if err != nil {
 		return err
 	}
-	return d.root.Chtimes(d.scratch, time.Time{}, d.info.ModTime())
+	if err := errors.Join(dress(f, like, info), f.Close()); err != nil {
+		return err
+	}
+	return d.root.Chtimes(d.scratch, time.Time{}, info.ModTime())
+}
+
+// dress gives a file the owner, mode and extended attributes of another, so that whoever could use that one can use
+// this one. Its time is for the caller to set at the very end. Only root may give files away; others can do as much as a
+// group they are in. A file system that has no room for an attribute keeps none.
+func dress(f *os.File, like string, info fs.FileInfo) error {
+	if owner, ok := info.Sys().(*syscall.Stat_t); ok && f.Chown(int(owner.Uid), int(owner.Gid)) != nil {
+		_ = f.Chown(-1, int(owner.Gid))
+	}
+	if err := f.Chmod(info.Mode().Perm()); err != nil {
+		return err
+	}
+	for _, name := range attributes(like) {
+		if value, err := attribute(like, name); err == nil {
+			_ = unix.Fsetxattr(int(f.Fd()), name, value, 0)
+		}
+	}
+	return nil
+}
+
+// accessList is the attribute in which Linux keeps a file's POSIX access control list.
+const accessList = "system.posix_acl_access"
+
+// attributes are the names of what people and programs have noted beside a file (user.*), and its access control
+// list. What the system keeps for itself, such as security labels, is not ours to hand on.
+func attributes(path string) (names []string) {
+	list := make([]byte, 64<<10) // the most that Linux gives
+	n, err := unix.Llistxattr(path, list)
+	if err != nil {
+		return nil
+	}
+	for name := range strings.SplitSeq(string(list[:n]), "\x00") {
+		if strings.HasPrefix(name, "user.") || name == accessList {
+			names = append(names, name)
+		}
+	}
+	return names
+}
+
+func attribute(path, name string) ([]byte, error) {
+	value := make([]byte, 64<<10) // likewise
+	n, err := unix.Lgetxattr(path, name, value)
+	if err != nil {
+		return nil, err
+	}
+	return value[:n], nil
 }
 
 // spare is what a copy may need beyond the size of its source before we would rather not begin.

@@ -17,6 +17,7 @@ import (
 	"path/filepath"
 	"slices"
 	"strings"
+	"syscall"
 
 	"evenshelf/engine/media"
 	"evenshelf/store"
@@ -104,7 +105,7 @@ func (w *walk) folder(ctx context.Context, name string) error {
 				w.unread.add(name, err)
 				continue
 			}
-			if err := w.fn(store.FoundFile{Path: p, Size: info.Size(), ModifiedAt: info.ModTime()}); err != nil {
+			if err := w.fn(store.FoundFile{Path: p, Size: info.Size(), ModifiedAt: info.ModTime(), Inode: inodeOf(info)}); err != nil {
 				return err
 			}
 		}
@@ -151,4 +152,12 @@ func plainFolder(r *os.Root, folder string) error {
 		}
 	}
 	return nil
+}
+
+// inodeOf is a file's number in its file system, by which it is known when it was moved; 0 where there is none.
+func inodeOf(info fs.FileInfo) uint64 {
+	if s, ok := info.Sys().(*syscall.Stat_t); ok {
+		return s.Ino
+	}
+	return 0
 }

@@ -32,19 +32,26 @@ export function mount(button) {
     }
   }
 
-  // Measuring needs no profile to choose, unless they count a single channel differently.
+  // What does not level needs no profile to choose, unless they count a single channel differently.
+  const chosen = () => form.elements.delivery.value;
+  const levels = () => chosen() === "copy" || chosen() === "replace";
   function how() {
-    part.how.hidden = alike && form.elements.delivery.value === "measure";
+    part.how.hidden = alike && !levels();
+    part.asks.textContent = levels() ? "How should they sound?" : "Which profile's rule for a single channel?";
   }
 
-  // Replacing is the one delivery that changes the shelf: it takes a second step, anew each time.
+  // What changes the shelf takes a second step, anew each time.
   const { sure } = form.elements;
   function ask() {
-    const replaces = form.elements.delivery.value === "replace";
+    const writes = chosen() === "replace" || chosen() === "tags";
     how();
-    part.sure.hidden = !replaces;
-    sure.required = replaces;
+    part.sure.hidden = !writes;
+    part.yes.textContent = chosen() === "tags" ? "Yes, write into the files on this shelf" : "Yes, replace the files on this shelf";
+    sure.required = writes;
     sure.checked = false;
+    part.group.hidden = chosen() !== "tags";
+    part.file.hidden = !levels();
+    part.inplace.hidden = chosen() !== "replace";
   }
   for (const choice of form.elements.delivery) choice.addEventListener("change", ask);
 
@@ -64,7 +71,8 @@ export function mount(button) {
         shelf_id: Number(form.dataset.shelf),
         folder: form.elements.folder.value.trim(),
         profile: form.elements.profile.value,
-        delivery: form.elements.delivery.value,
+        delivery: chosen(),
+        ...wishes(form.elements, levels(), chosen() === "tags"),
       });
       location.assign(`/runs/${run.id}`);
     } catch (error) {
@@ -72,6 +80,12 @@ export function mount(button) {
       start.disabled = false;
     }
   });
+}
+
+// wishes are what a run asks for beside its profile; what is not shown is not asked for.
+export function wishes({ format, rate, group }, levels, tags) {
+  if (tags) return { group: group.value };
+  return levels ? { format: format.value, bit_rate_kbps: Number(rate.value) } : {};
 }
 
 const NAMED = 5; // files that are named; more would cover the choice
@@ -90,7 +104,7 @@ export function unusable(problems) {
 // folder shares one gain.
 function brief({ words, group }) {
   const start = (title, most) => words.find((section) => section.title === title)?.words.slice(0, most) ?? [];
-  return [...start("Loudness", group === "folder" ? 3 : 2), ...start("Ride", 1), ...start("Peaks", 1)].join(" ");
+  return [...start("Loudness", group === "none" ? 2 : 3), ...start("Ride", 1), ...start("Peaks", 1)].join(" ");
 }
 
 // option is a line for a profile. What it does in detail is told once it is chosen.
@@ -100,6 +114,6 @@ function option(profile, index) {
     el("span", {},
       el("span", { class: "title" },
         el("span", {}, el("b", {}, profile.name), profile.source === "own" ? " (your own)" : null),
-        el("small", {}, profile.group === "folder" ? "One gain for a folder. " : null, profile.summary)),
+        el("small", {}, { folder: "One gain for a folder. ", album: "One gain for an album. " }[profile.group] ?? null, profile.summary)),
       el("small", { class: "more" }, brief(profile))));
 }

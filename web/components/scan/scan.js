@@ -10,10 +10,10 @@ export function mount(button) {
     say(says, "Looking through the folder …");
     try {
       const result = await post(button.dataset.url);
-      const changes = result.added + result.changed + result.missing;
+      const changes = result.added + result.changed + result.moved + result.missing;
       const unread = result.unread ?? [];
       const words = changes
-        ? `${plural(result.found, "recording", "recordings")}: ${count(result.added)} new, ${count(result.changed)} changed, ${count(result.missing)} gone.`
+        ? `${plural(result.found, "recording", "recordings")}: ${count(result.added)} new, ${count(result.changed)} changed, ${result.moved ? `${count(result.moved)} moved, ` : ""}${count(result.missing)} gone.`
         : `${plural(result.found, "recording", "recordings")}, nothing new.`;
       say(says, unread.length ? `${words} Could not be looked into: ${unread.join(", ")}.` : words, unread.length > 0);
       if (changes && !unread.length) setTimeout(() => location.reload(), 1200);

@@ -1,0 +1,167 @@
+package worker
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io/fs"
+	"os"
+	"path/filepath"
+
+	"evenshelf/engine/level"
+	"evenshelf/store"
+	"evenshelf/worker/delivery"
+)
+
+// A recording is known by the bytes of its file where that can be (attic.go), and else by its sound, once it is measured:
+// other tags, another place and another name change nothing about that. A sound that another decoder read has another
+// hash and is then taken for a new one, which costs a levelling and harms nothing.
+
+// known ends a turn of the engine: its recording is one that was levelled here before.
+type known struct {
+	store.Levelling
+	stands bool            // levelling would only make the same again
+	before *level.Analysis // of what is on the shelf
+}
+
+func (k *known) Error() string { return fmt.Sprintf("it was levelled by job %d already", k.JobID) }
+
+// moved ends a turn of the engine: its recording is one that went missing elsewhere.
+type moved struct{ from int64 }
+
+func (m *moved) Error() string { return fmt.Sprintf("it is recording %d, moved", m.from) }
+
+// whoever returns the question whether a recording's sound is that of one that was moved. Where levelled is given and it
+// is not, it is asked about the levellings that made this sound.
+func (s *Service) whoever(ctx context.Context, w store.Work, levelled func([]store.Levelling, *level.Analysis) error) func(*level.Analysis) error {
+	return func(before *level.Analysis) error {
+		if before.AudioHash == "" {
+			return nil
+		}
+		from, err := s.store.MovedFrom(ctx, w.Job.ID, before.AudioHash)
+		switch {
+		case err != nil:
+			return err
+		case from != 0:
+			return &moved{from}
+		case levelled == nil:
+			return nil
+		}
+		list, err := s.store.Levelled(ctx, w.Shelf.ID, before.AudioHash)
+		if err != nil {
+			return err
+		}
+		return levelled(list, before)
+	}
+}
+
+// levelledBefore is the question a levelling asks: it ends if its result stands already, or if there is an original to
+// level instead of what is on the shelf.
+func (s *Service) levelledBefore(ctx context.Context, w store.Work, t level.Task) func([]store.Levelling, *level.Analysis) error {
+	return func(list []store.Levelling, before *level.Analysis) error {
+		var best *known
+		for _, l := range list {
+			stands := false
+			if w.Delivery == store.Replace { // a copy is asked for where there may be none
+				var err error
+				if stands, err = s.stands(ctx, w, t, l); err != nil {
+					return err
+				}
+			}
+			if stands || best == nil && l.Original != nil {
+				best = &known{Levelling: l, stands: stands, before: before}
+			}
+			if stands {
+				break
+			}
+		}
+		if best == nil {
+			return nil
+		}
+		return best
+	}
+}
+
+// again is a levelling of a recording that is known: from its original, with the tags of the file that is there now.
+func (s *Service) again(shelf store.Shelf, k *known, t level.Task, onShelf string) (source string, _ level.Task, err error) {
+	t.Known, t.TagsFrom = nil, onShelf
+	source, err = stored(shelf, *k.Original)
+	return source, t, err
+}
+
+// stored is where the attic has an original; errNoOriginal if it is gone.
+func stored(shelf store.Shelf, o store.Original) (string, error) {
+	path := filepath.Join(shelf.Attic(), filepath.FromSlash(o.Stored))
+	if _, err := os.Stat(path); errors.Is(err, fs.ErrNotExist) {
+		return "", errNoOriginal
+	} else if err != nil {
+		return "", err
+	}
+	return path, nil
+}
+
+// same is the result of a levelling that stands already.
+func (k *known) same(w store.Work) result {
+	if k.RecordingID == w.Recording.ID {
+		return result{outcome: level.Outcome{Verdict: level.Verdict{State: level.Done, Reason: already}}, same: k.JobID}
+	}
+	reason := fmt.Sprintf("%s: it sounds the same as %s", already, k.Path)
+	return result{outcome: level.Outcome{Before: k.before, Verdict: level.Verdict{State: level.Done, Reason: reason}}}
+}
+
+// tag writes gain tags into the recording's own file.
+func (s *Service) tag(ctx context.Context, w store.Work, t level.Task, onShelf, key string) (r result, err error) {
+	leave, err := s.places.enter(ctx, w.Recording.ID)
+	if err != nil {
+		return r, err
+	}
+	defer leave()
+	ours, err := s.ours(ctx, w.Recording.ID, onShelf)
+	if err != nil {
+		return r, err
+	}
+	at := place(w, onShelf, ours)
+	t.Known = s.whoever(ctx, w, func(list []store.Levelling, _ *level.Analysis) error {
+		for _, l := range list { // somebody else has tagged it since it was levelled
+			if ours == nil && l.RecordingID == w.Recording.ID && l.Original != nil {
+				ours = l.Original
+				o := inAttic(*ours)
+				at.Ours = &o
+			}
+		}
+		return nil
+	})
+	keep := func(ctx context.Context, o delivery.Original) error {
+		job := w.Job.ID
+		if ours != nil { // what was levelled stays so, and known by the job that did it
+			job = ours.JobID
+		}
+		return s.keepOriginal(ctx, w.Recording.ID, job, o)
+	}
+	r.outcome, _, err = delivery.Tag(ctx, s.engine, &at, t, key, keep)
+	return r, err
+}
+
+func (s *Service) keepOriginal(ctx context.Context, recordingID, jobID int64, o delivery.Original) error {
+	return s.store.KeepOriginal(ctx, store.Original{RecordingID: recordingID, JobID: jobID, SHA256: o.SHA256, Stored: o.Stored, Levelled: o.Levelled, Size: o.Size})
+}
+
+// place is where a job that changes the shelf finds and puts things.
+func place(w store.Work, source string, ours *store.Original) delivery.Place {
+	at := delivery.Place{Root: w.Shelf.Root, Rel: w.Recording.Path, Attic: w.Shelf.Attic(), Copies: w.Shelf.Copies, Source: source}
+	if ours != nil {
+		o := inAttic(*ours)
+		at.Ours = &o
+	}
+	return at
+}
+
+// follow has the recording that a job's file was before take its place, and returns the job's work then.
+func (s *Service) follow(ctx context.Context, w store.Work, m *moved) (store.Work, error) {
+	leave, err := s.places.enter(ctx, m.from)
+	if err != nil {
+		return w, err
+	}
+	defer leave()
+	return s.store.Follow(ctx, m.from, w.Job.ID)
+}
