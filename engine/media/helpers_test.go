@@ -266,3 +266,20 @@ func saveAs(t testing.TB, path string, data []byte) string {
 	}
 	return path
 }
+
+// lag returns by how many frames got is behind want: where their cross-correlation peaks, over the middle of want.
+func lag(want, got []float32) int {
+	const reach, enough = 1300, 3000
+	from := max(0, (len(want)-enough)/2)
+	best, at := -1.0, reach+1
+	for k := -reach; k <= reach; k++ {
+		sum := 0.0
+		for i := max(from, -k); i < min(from+enough, len(want), len(got)-k); i++ {
+			sum += float64(want[i]) * float64(got[i+k])
+		}
+		if sum > best {
+			best, at = sum, k
+		}
+	}
+	return at
+}

@@ -13,23 +13,6 @@ import (
 	"evenshelf/engine/audio"
 )
 
-// lag returns by how many frames b comes later than a, by their correlation.
-func lag(a, b []float32) int {
-	const reach, enough = 1100, 12_000
-	a, b = a[:min(len(a), enough)], b[:min(len(b), enough)]
-	best, at := -1.0, 0
-	for d := -reach; d <= reach; d++ {
-		sum := 0.0
-		for i := max(0, -d); i < len(a) && i+d < len(b); i++ {
-			sum += float64(a[i]) * float64(b[i+d])
-		}
-		if sum > best {
-			best, at = sum, d
-		}
-	}
-	return at
-}
-
 var oddLengths = []int{1, 2, 1023, 1024, 1025, 2047, 2048, 2049, 4095, 4097, 44099, 44100, 44101}
 
 // What is written in M4A is read back at the same length and place, whatever the length. FFmpeg's ALAC encoder breaks
