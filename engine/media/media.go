@@ -82,4 +82,5 @@ type Spec struct {
 	Extension string // of the delivered file, with its dot: ".wav"
 	Note      string // why this is not the source's own format, or empty
 	TagsFrom  string // path of the file whose tags and chunks are carried over, or empty
+	History   string // what made the file, for the line that a bext chunk's coding history gets; empty: no line
 }

@@ -14,6 +14,18 @@ var extensions = []string{
 	".wma", ".wmv", ".wv",
 }
 
+// otherNames are the extensions under which a format is known too.
+var otherNames = map[string][]string{".wav": {".wave", ".bwf", ".rf64"}, ".aiff": {".aif", ".aifc"}}
+
+// ExtensionFor returns the extension of a delivery made from the file at source: the source's own, if that is one of
+// the format's.
+func (s Spec) ExtensionFor(source string) string {
+	if own := filepath.Ext(source); slices.Contains(otherNames[s.Extension], strings.ToLower(own)) {
+		return own
+	}
+	return s.Extension
+}
+
 // Extensions returns the file extensions worth trying in a folder scan: lower case, with dot, sorted.
 func Extensions() []string { return slices.Clone(extensions) }
 

@@ -9,7 +9,8 @@ import (
 // the result is that of flat dither behind the filter 1 + Σ w_k z^−k, which moves it to where the ear is dull.
 //
 // A rounding is off by 1½ LSB at the most, 1 of dither and ½ of rounding, and no more than that is ever fed back, even
-// where full scale clips. So the result is off by 1½·(1 + Σ|w|) LSB at the most: 7.5 at 44.1 kHz, 7.2 at 48 kHz.
+// where full scale clips. So the result is off by 1½·(1 + Σ|w|) LSB at the most: 7.5 at 44.1 kHz,
+// 10.5 at 32 kHz, more at no other rate in use.
 type shaper struct {
 	weights [shapeOrder]int64 // of the errors, in 2^−16
 	errors  [shapeOrder]int64 // of the last samples, newest first, in units

@@ -126,13 +126,22 @@ func (t *Toolbox) open(ctx context.Context, f *os.File, size int64, path string)
 	if err != nil {
 		return nil, err
 	}
-	if k.container == "wav" {
+	switch k.container {
+	case "wav":
 		h, err := parseWAV(f, size)
 		if err != nil {
 			return nil, err
 		}
 		if h.native() {
-			return newWAVReader(ctx, f, path, h)
+			return newWAVReader(ctx, f, path, h), nil
+		}
+	case "aiff":
+		h, err := parseAIFF(f, size)
+		if err != nil {
+			return nil, err
+		}
+		if h.native() {
+			return newAIFFReader(ctx, f, path, h), nil
 		}
 	}
 	switch {
