@@ -5,6 +5,7 @@ import (
 	"math"
 	"strings"
 	"testing"
+	"time"
 
 	"evenshelf/engine/audio"
 )
@@ -119,11 +120,23 @@ func TestStaleXML(t *testing.T) {
 		{"<BEXT><BWF_LOUDNESS_VALUE>-2300</BWF_LOUDNESS_VALUE><BWF_UMID>0</BWF_UMID></BEXT>", "<BEXT>" + blank("<BWF_LOUDNESS_VALUE>-2300</BWF_LOUDNESS_VALUE>") + "<BWF_UMID>0</BWF_UMID></BEXT>"},
 		{"<LOUDNESS><LOUDNESS_VALUE>-23</LOUDNESS_VALUE></LOUDNESS>x", blank("<LOUDNESS><LOUDNESS_VALUE>-23</LOUDNESS_VALUE></LOUDNESS>") + "x"},
 		{"<loudnessMetadata>never closed", "<loudnessMetadata>never closed"},
+		{"<a b=\"<\"/> loudnessMetadata</loudnessMetadata>", "<a b=\"<\"/> loudnessMetadata</loudnessMetadata>"},
+		{"loudnessMetadata", "loudnessMetadata"}, {"<loudnessMetadata", "<loudnessMetadata"}, {"<LOUDNESS>", "<LOUDNESS>"},
 		{"<loudnessMetadataX></loudnessMetadataX>", "<loudnessMetadataX></loudnessMetadataX>"},
 	} {
 		if got := string(mendXML([]byte(test.in), nil, Spec{})); got != test.out {
 			t.Errorf("%q\nbecame %q\nwant   %q", test.in, got, test.out)
 		}
+	}
+}
+
+// Elements that never end, among others that do, take no more than a moment.
+func TestStaleXMLIsQuick(t *testing.T) {
+	b := []byte(strings.Repeat("<LOUDNESS><loudnessMetadata/></", 1<<20))
+	start := time.Now()
+	mendXML(b, nil, Spec{})
+	if took := time.Since(start); took > 10*time.Second || strings.Contains(string(b), "loudnessMetadata") {
+		t.Errorf("it took %v", took)
 	}
 }
 

@@ -4,9 +4,7 @@ import (
 	"bytes"
 	"encoding/binary"
 	"io"
-	"regexp"
 	"slices"
-	"strings"
 )
 
 // Chunks are carried over byte for byte, in their order and on their side of the samples. Two kinds are not: those that
@@ -75,19 +73,57 @@ func mendCart(b []byte, src *tagSource, spec Spec) []byte {
 
 // staleXML are the elements that state a loudness: in the audio definition model, and in iXML, beside or for the
 // figures of bext (names of iXML from memory).
-var staleXML = func() *regexp.Regexp {
-	var any []string
-	for _, name := range []string{
-		"loudnessMetadata", "LOUDNESS", "BWF_LOUDNESS_VALUE", "BWF_LOUDNESS_RANGE", "BWF_MAX_TRUE_PEAK_LEVEL",
-		"BWF_MAX_MOMENTARY_LOUDNESS", "BWF_MAX_SHORT_TERM_LOUDNESS",
-	} {
-		name = `(?:[\w.-]+:)?` + name
-		any = append(any, `<`+name+`(?:\s[^>]*?)?(?:/>|>.*?</`+name+`\s*>)`)
-	}
-	return regexp.MustCompile(`(?s)` + strings.Join(any, "|"))
-}()
+var staleXML = []string{
+	"loudnessMetadata", "LOUDNESS", "BWF_LOUDNESS_VALUE", "BWF_LOUDNESS_RANGE", "BWF_MAX_TRUE_PEAK_LEVEL",
+	"BWF_MAX_MOMENTARY_LOUDNESS", "BWF_MAX_SHORT_TERM_LOUDNESS",
+}
 
 // mendXML blanks what states a loudness out: all of it is optional, and spaces keep every other byte in its place.
 func mendXML(b []byte, _ *tagSource, _ Spec) []byte {
-	return staleXML.ReplaceAllFunc(b, func(element []byte) []byte { return bytes.Repeat([]byte(" "), len(element)) })
+	for _, name := range staleXML {
+		for at := 0; ; {
+			start, inner := nextTag(b, at, "<", name)
+			if start < 0 {
+				break
+			}
+			end := inner
+			if b[inner-2] != '/' {
+				if _, end = nextTag(b, inner, "</", name); end < 0 {
+					break // nor does any later one end
+				}
+			}
+			copy(b[start:end], bytes.Repeat([]byte(" "), end-start))
+			at = end
+		}
+	}
+	return b
 }
+
+// nextTag finds the next tag of a name from a place on, whatever its prefix of a namespace: where it begins and where it
+// has ended; −1 if there is none. Every byte is looked at once or twice, however hostile they are.
+func nextTag(b []byte, at int, opening, name string) (start, end int) {
+	for {
+		i := bytes.Index(b[at:], []byte(name))
+		if i < 0 {
+			return -1, -1
+		}
+		i, at = at+i, at+i+len(name)
+		start = bytes.LastIndexByte(b[max(0, i-mostPrefix):i], '<')
+		if start < 0 || at == len(b) || !bytes.ContainsRune([]byte(" \t\r\n/>"), rune(b[at])) {
+			continue
+		}
+		start += max(0, i-mostPrefix)
+		prefix, found := bytes.CutPrefix(b[start:i], []byte(opening))
+		if !found || len(prefix) > 0 && (prefix[len(prefix)-1] != ':' || bytes.ContainsAny(prefix, " \t\r\n/>\"'=")) {
+			continue
+		}
+		bracket := bytes.IndexByte(b[at:], '>')
+		if bracket < 0 {
+			return -1, -1
+		}
+		return start, at + bracket + 1
+	}
+}
+
+// mostPrefix is how many bytes of a tag may stand in front of its name.
+const mostPrefix = 64

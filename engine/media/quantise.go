@@ -1,5 +1,10 @@
 package media
 
+import (
+	"math"
+	"math/bits"
+)
+
 // quantiser rounds one channel of float samples to integers of so many bits with triangular dither, or plainly.
 //
 // Rounding alone makes an error that depends on the signal: distortion. Adding noise before it, the sum
@@ -10,7 +15,7 @@ package media
 // A sample that already is a whole number of LSB has no error to hide and passes unchanged. So digital
 // silence stays silence, and integers that met no gain come out bit for bit.
 //
-// The noise is drawn from a generator with a fixed seed for each channel, one draw a sample whether used
+// The noise is drawn from one generator, of which each channel has a stretch of 2^40 draws, one a sample whether used
 // or not: the same sound always makes the same bytes, however it is cut into blocks.
 //
 // It counts in fixed point, units of 2^−30 LSB: exact, the same on every machine, and without a branch that
@@ -19,7 +24,7 @@ type quantiser struct {
 	scale     float64 // units in full scale, 2^(bits−1+30)
 	low, high int64   // the least and the greatest integer
 	plain     bool
-	noise     uint64  // state of the generator
+	noise     uint64  // the generator's count
 	shaper    *shaper // nil: the noise is white
 }
 
@@ -27,8 +32,6 @@ const (
 	fraction = 30 // bits of a sample, or of a half of the dither, after the point
 	oneLSB   = 1 << fraction
 	halfLSB  = oneLSB / 2
-	// outside is a value that no sound has and fixed point has no room for: ±2 of full scale at 32 bits.
-	outside = 1 << 62
 )
 
 func newQuantisers(spec Spec) []quantiser {
@@ -39,7 +42,7 @@ func newQuantisers(spec Spec) []quantiser {
 		weights = shape(spec.Format.Rate)
 	}
 	for c := range q {
-		q[c] = quantiser{scale: float64(full) * oneLSB, low: -full, high: full - 1, plain: spec.Plain, noise: scatter(uint64(c) + 1)}
+		q[c] = quantiser{scale: float64(full) * oneLSB, low: -full, high: full - 1, plain: spec.Plain, noise: uint64(c) << 40 * stride}
 		if weights != nil {
 			q[c].shaper = newShaper(weights)
 		}
@@ -66,12 +69,11 @@ func (q *quantiser) dithered(dst []int32, src []float32) {
 	state, scale, low, high := q.noise, q.scale, q.low, q.high
 	for i, x := range src {
 		state += stride
-		v := float64(x) * scale
-		if !(v > -outside && v < outside) {
-			dst[i] = q.clipped(v)
+		if outside(x) {
+			dst[i] = clipped(x, low, high)
 			continue
 		}
-		fixed := int64(v)
+		fixed := int64(float64(x) * scale)
 		noise := triangle(state) + halfLSB
 		if fixed&(oneLSB-1) == 0 {
 			noise = 0
@@ -85,41 +87,44 @@ func (q *quantiser) dithered(dst []int32, src []float32) {
 func (q *quantiser) rounded(dst []int32, src []float32) {
 	dst = dst[:len(src)]
 	for i, x := range src {
-		v := float64(x) * q.scale
-		if !(v > -outside && v < outside) {
-			dst[i] = q.clipped(v)
+		if outside(x) {
+			dst[i] = clipped(x, q.low, q.high)
 			continue
 		}
-		fixed := int64(v)
+		fixed := int64(float64(x) * q.scale)
 		whole := (fixed + halfLSB - 1 + fixed>>fraction&1) >> fraction
 		dst[i] = int32(min(max(whole, q.low), q.high))
 	}
 }
 
-// clipped is the integer for a value that fixed point has no room for.
-func (q *quantiser) clipped(v float64) int32 {
+// outside reports whether a sample is at ±2 of full scale or past it, where fixed point has no room at 32 bits, or is
+// not a number. The bits of both are greater than those of all others, but for the sign.
+func outside(x float32) bool { return math.Float32bits(x)<<1 >= math.Float32bits(2)<<1 }
+
+// clipped is the integer for a sample that is outside.
+//
+//go:noinline
+func clipped(x float32, low, high int64) int32 {
 	switch {
-	case v > 0:
-		return int32(q.high)
-	case v < 0:
-		return int32(q.low)
+	case x > 0:
+		return int32(high)
+	case x < 0:
+		return int32(low)
 	default: // not a number
 		return 0
 	}
 }
 
+// The generator counts in steps of the golden section and folds the count's product with a changed self, 128 bits, to
+// 64: two instructions on most machines, and no draw waits for the one before. The key is the fraction of π.
+const (
+	stride = 0x9E3779B97F4A7C15
+	key    = 0x243F6A8885A308D3
+)
+
 // triangle makes the dither of a draw: the sum of two uniform variables, triangular within ±1 LSB.
 func triangle(state uint64) int64 {
-	r := scatter(state)
-	return int64(r>>(64-fraction)) + int64(r&(oneLSB-1)) - oneLSB
-}
-
-// The generator counts in steps of the golden section and scatters the count over all bits (SplitMix64: Steele, Lea,
-// Flood, "Fast Splittable Pseudorandom Number Generators", OOPSLA 2014). No draw waits for the one before.
-const stride = 0x9E3779B97F4A7C15
-
-func scatter(z uint64) uint64 {
-	z = (z ^ z>>30) * 0xBF58476D1CE4E5B9
-	z = (z ^ z>>27) * 0x94D049BB133111EB
-	return z ^ z>>31
+	high, low := bits.Mul64(state, state^key)
+	draw := high ^ low
+	return int64(draw>>(64-fraction)) + int64(draw&(oneLSB-1)) - oneLSB
 }

@@ -37,13 +37,12 @@ func (q *quantiser) shaped(dst []int32, src []float32) {
 	s := q.shaper
 	for i, x := range src {
 		q.noise += stride
-		v := float64(x) * q.scale
-		if !(v > -outside && v < outside) {
-			dst[i] = q.clipped(v)
+		if outside(x) {
+			dst[i] = clipped(x, q.low, q.high)
 			s.remember(0)
 			continue
 		}
-		fixed := int64(v)
+		fixed := int64(float64(x) * q.scale)
 		if s.run++; fixed&(oneLSB-1) != 0 {
 			s.run = 0
 		}

@@ -7,6 +7,7 @@ import (
 	"errors"
 	"io"
 	"math"
+	"os/exec"
 	"slices"
 	"strings"
 	"testing"
@@ -159,10 +160,16 @@ func TestWAVLengths(t *testing.T) {
 		{"fmt behind the data, in RF64", "RF64\xFF\xFF\xFF\xFFWAVE" + lowFirst + "data\xFF\xFF\xFF\xFF" + four + format, 4, 4, false, ""},
 		{"odd data, padding forgotten", string(riffFile(format, "data"+u32(9)+four+"x", riffChunk("cue ", "wxyz"))), 4, 4, false, ""},
 		{"RF64 whose 32-bit size is 0", "RF64\xFF\xFF\xFF\xFFWAVE" + lowFirst + format + "data" + u32(0) + four + riffChunk("cue ", "wxyz"), 4, 4, false, ""},
+		{"RF64 that promises 2^63 bytes and as many tables", "RF64\xFF\xFF\xFF\xFFWAVE" + riffChunk("ds64", u64(1<<63)+u64(1<<63)+u64(0)+u32(0xFFFFFFFF)+"axml"+u64(1<<63)) + format + "data\xFF\xFF\xFF\xFF" + four, 4, -1, false, ""},
 		{"a second data chunk", string(riffFile(format, riffChunk("data", four), riffChunk("data", four))), 4, 4, false, "second data chunk"},
 		{"an empty second data chunk", string(riffFile(format, riffChunk("data", four), riffChunk("data", ""))), 4, 4, false, ""},
 		{"sound that the header does not know of", "RIFF" + u32(44) + "WAVE" + format + "data" + u32(8) + four + four, 4, 4, false, "8 bytes before the file does"},
 		{"zeros to fill a sector up", string(riffFile(format, riffChunk("data", four))) + strings.Repeat("\x00", 500), 4, 4, false, ""},
+	}
+	// Nobody else reads these at all, or finds the sound in them.
+	alone := map[string]bool{
+		"odd chunk before, padding forgotten": true, "RF64 never finished": true, "RF64 without ds64": true, "RF64 with another big chunk": true,
+		"RF64 that promises 2^63 bytes and as many tables": true,
 	}
 	for _, test := range tests {
 		t.Run(test.name, func(t *testing.T) {
@@ -183,6 +190,9 @@ func TestWAVLengths(t *testing.T) {
 			if test.torn && !strings.Contains(err.Error(), path) {
 				t.Errorf("error %q does not name the file", err)
 			}
+			if !readByAnother(t, path, got) != alone[test.name] {
+				t.Errorf("read alike by FFmpeg or sox: %v", alone[test.name])
+			}
 			if got := r.(Damaged).Damage(); (got == "") != (test.damage == "") || !strings.Contains(got, test.damage) {
 				t.Errorf("damage %q, want %q", got, test.damage)
 			}
@@ -191,6 +201,21 @@ func TestWAVLengths(t *testing.T) {
 			}
 		})
 	}
+}
+
+// readByAnother reports whether FFmpeg or sox reads the same 16-bit sound from a file. They may refuse to.
+func readByAnother(t *testing.T, path string, snd audio.Block) bool {
+	t.Helper()
+	for _, cmd := range [][]string{{"ffmpeg", "-v", "error", "-i", path, "-f", "s16le", "-"}, {"sox", "-V0", path, "-t", "s16", "-"}} {
+		tool, err := exec.LookPath(cmd[0])
+		if err != nil {
+			t.Fatalf("this test needs %s: apt install ffmpeg sox", cmd[0])
+		}
+		if out, err := exec.Command(tool, cmd[1:]...).Output(); err == nil && bytes.Equal(out, interleaved(snd, 16)) {
+			return true
+		}
+	}
+	return false
 }
 
 func TestWAVHostileHeaders(t *testing.T) {
@@ -215,6 +240,7 @@ func TestWAVHostileHeaders(t *testing.T) {
 		"extensible without a mask": string(riffFile(plainFmt(0xFFFE, 1, 8000, 16, 2), data)),
 		"LIST past the end":         "RIFF" + u32(99) + "WAVELIST" + u32(0x7FFFFFFF) + "INFO",
 		"a million chunks":          string(riffFile(strings.Repeat(riffChunk("JUNK", ""), 20_000), plainFmt(1, 1, 8000, 16, 2), data)),
+		"ds64 of 4 bytes":           "RF64\xFF\xFF\xFF\xFFWAVE" + riffChunk("ds64", "abcd") + plainFmt(1, 1, 8000, 16, 2) + data,
 		"only the first 12 bytes":   "RIFF" + u32(4) + "WAVE",
 	}
 	for name, file := range tests {
