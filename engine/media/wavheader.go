@@ -120,12 +120,18 @@ func parseWAV(r io.ReaderAt, size int64) (*wavHeader, error) {
 }
 
 // remains notes what lies from an offset to the end of the file, if it belongs to no chunk. Zeros are padding.
-func (w *wavWalk) remains(at int64) error {
-	b, err := readAt(w.r, at, 4096)
-	if n := w.size - at; n >= 8 && len(bytes.Trim(b, "\x00")) > 0 {
-		w.h.unread = fmt.Sprintf("its data chunk ends %d bytes before the file does, and no other chunk begins there", n)
+func (w *wavWalk) remains(from int64) error {
+	for at := from; w.size-from >= 8 && at < w.size; at += ahead {
+		b, err := readAt(w.r, at, ahead)
+		if err != nil {
+			return err
+		}
+		if len(bytes.Trim(b, "\x00")) > 0 {
+			w.h.unread = fmt.Sprintf("its data chunk ends %d bytes before the file does, and no other chunk begins there", w.size-from)
+			return nil
+		}
 	}
-	return err
+	return nil
 }
 
 // inPieces reports whether there is a wave list, in which data and silence take turns (RIFF, 1991).
