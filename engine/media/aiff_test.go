@@ -283,6 +283,16 @@ func TestExtensionFor(t *testing.T) {
 	}
 }
 
+// An ID3 tag in front of all, where careless taggers put it, is in FFmpeg's way no more than before.
+func TestAIFFBehindID3(t *testing.T) {
+	file := "ID3\x04\x00\x00\x00\x00\x00\x04abcd" + string(formFile("AIFF", comm(1, 2, 16, ""), ssnd("\x40\x00\x00\x01")))
+	got, info := decode(t, withFFmpeg(t), save(t, "a.aiff", []byte(file)))
+	sameSound(t, got, audio.Block{{0.5, 1.0 / 32768}})
+	if info.Container != "aiff" {
+		t.Errorf("%+v", info)
+	}
+}
+
 // A file may be cut anywhere; whatever is in front of the cut is delivered or the error is clear.
 func TestAIFFCutAnywhere(t *testing.T) {
 	whole := formFile("AIFC", iffChunk("NAME", "abc"), comm(2, 20, 24, "NONE"), ssnd(strings.Repeat("\x11\x22\x33", 40)), iffChunk("ANNO", "x"))

@@ -37,7 +37,7 @@ func openTags(path string) (*tagSource, error) {
 	case err != nil:
 	case t.kind.container == "wav":
 		t.wav, err = parseWAV(f, size)
-	case t.kind.container == "aiff":
+	case t.kind.container == "aiff" && t.kind.start == 0:
 		t.aiff, err = parseAIFF(f, size)
 	}
 	if err != nil {

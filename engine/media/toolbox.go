@@ -136,6 +136,9 @@ func (t *Toolbox) open(ctx context.Context, f *os.File, size int64, path string)
 			return newWAVReader(ctx, f, path, h), nil
 		}
 	case "aiff":
+		if k.start > 0 {
+			break // an ID3 tag in front, which has no place there; FFmpeg gets past it
+		}
 		h, err := parseAIFF(f, size)
 		if err != nil {
 			return nil, err
