@@ -53,6 +53,7 @@ func (j *turn) tell(o *Outcome, r rendering) {
 func (j *turn) deliver(ctx context.Context, scratch string, o *Outcome) (string, error) {
 	spec := j.engine.Media.SpecFor(j.before.Info, wish(j.task.Profile))
 	spec.TagsFrom = cmp.Or(j.task.TagsFrom, j.source)
+	spec.History = fmt.Sprintf("Evenshelf engine %s; %s", Version, j.task.Profile.Name)
 	if err := j.foresee(ctx); err != nil {
 		return "", err
 	}
@@ -81,7 +82,10 @@ func (j *turn) deliver(ctx context.Context, scratch string, o *Outcome) (string,
 		o.Renders++
 		j.made, o.After = work, after
 	}
-	return spec.ExtensionFor(j.source), nil
+	return spec.ExtensionFor(j.source), media.Stamp(scratch, media.Loudness{
+		Integrated: o.After.Integrated, Range: o.After.Range, TruePeak: o.After.TruePeak,
+		MaxMomentary: o.After.MaxMomentary, MaxShort: o.After.MaxShortTerm,
+	})
 }
 
 // render renders into the file scratch and measures what is there then.

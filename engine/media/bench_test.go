@@ -24,6 +24,8 @@ func BenchmarkRead(b *testing.B) {
 		{"wav 16", withoutFFmpeg(), withoutFFmpeg(), Spec{Container: "wav", BitDepth: 16}},
 		{"wav 24", withoutFFmpeg(), withoutFFmpeg(), Spec{Container: "wav", BitDepth: 24}},
 		{"wav float 32", withoutFFmpeg(), withoutFFmpeg(), Spec{Container: "wav", BitDepth: 32, Float: true}},
+		{"aiff 16", withoutFFmpeg(), withoutFFmpeg(), Spec{Container: "aiff", Codec: "pcm_s16be", BitDepth: 16}},
+		{"aiff 24", withoutFFmpeg(), withoutFFmpeg(), Spec{Container: "aiff", Codec: "pcm_s24be", BitDepth: 24}},
 		{"mp3 by FFmpeg", withFFmpeg(b), withFFmpeg(b), Spec{Container: "mp3", Codec: "mp3", BitRate: 192_000}},
 		{"mp3 by go-mp3", withFFmpeg(b), withoutFFmpeg(), Spec{Container: "mp3", Codec: "mp3", BitRate: 192_000}},
 		{"flac by FFmpeg", withFFmpeg(b), withFFmpeg(b), Spec{Container: "flac", Codec: "flac", BitDepth: 16}},
@@ -57,7 +59,9 @@ func BenchmarkWrite(b *testing.B) {
 		spec Spec
 	}{
 		{"wav 16, dithered", withoutFFmpeg(), Spec{Container: "wav", BitDepth: 16}},
+		{"wav 16, shaped", withoutFFmpeg(), Spec{Container: "wav", BitDepth: 16, Shaped: true}},
 		{"wav 24", withoutFFmpeg(), Spec{Container: "wav", BitDepth: 24}},
+		{"aiff 24", withoutFFmpeg(), Spec{Container: "aiff", Codec: "pcm_s24be", BitDepth: 24}},
 		{"flac by FFmpeg", withFFmpeg(b), Spec{Container: "flac", Codec: "flac", BitDepth: 16}},
 		{"flac by mewkiz", withoutFFmpeg(), Spec{Container: "flac", Codec: "flac", BitDepth: 16}},
 		{"mp3 192k", withFFmpeg(b), Spec{Container: "mp3", Codec: "mp3", BitRate: 192_000}},

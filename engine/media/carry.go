@@ -1,10 +1,8 @@
 package media
 
 import (
-	"bytes"
 	"context"
 	"fmt"
-	"io"
 	"maps"
 	"os"
 	"slices"
@@ -20,7 +18,8 @@ type tagSource struct {
 	f    *os.File
 	size int64
 	kind kind
-	wav  *wavHeader // nil if it is not WAV
+	wav  *wavHeader  // nil if it is not WAV
+	aiff *aiffHeader // nil if it is not AIFF
 }
 
 // openTags opens the file tags are taken from; "" gives nil.
@@ -33,8 +32,13 @@ func openTags(path string) (*tagSource, error) {
 		return nil, about(path, err)
 	}
 	t := &tagSource{f: f, size: size}
-	if t.kind, err = sniff(f); err == nil && t.kind.container == "wav" {
+	t.kind, err = sniff(f)
+	switch {
+	case err != nil:
+	case t.kind.container == "wav":
 		t.wav, err = parseWAV(f, size)
+	case t.kind.container == "aiff" && t.kind.start == 0:
+		t.aiff, err = parseAIFF(f, size)
 	}
 	if err != nil {
 		f.Close()
@@ -57,53 +61,6 @@ func (t *tagSource) is(path string) bool {
 	mine, err1 := t.f.Stat()
 	other, err2 := os.Stat(path)
 	return err1 == nil && err2 == nil && os.SameFile(mine, other)
-}
-
-// ownChunks are chunks that describe the samples or their levels: a new file has its own or none. PEAK
-// and levl hold peaks and go stale with any gain.
-var ownChunks = []string{"fmt ", "data", "fact", "ds64", "JUNK", "junk", "PEAK", "levl"}
-
-// before and after return the chunks to carry over in front of the samples and behind them.
-func (t *tagSource) before() []chunk {
-	if t == nil || t.wav == nil {
-		return nil
-	}
-	return carried(t.wav.before)
-}
-
-func (t *tagSource) after() []chunk {
-	if t == nil || t.wav == nil {
-		return nil
-	}
-	return carried(t.wav.after)
-}
-
-func carried(list []chunk) []chunk {
-	var kept []chunk
-	for _, c := range list {
-		if !slices.Contains(ownChunks, c.id) {
-			kept = append(kept, c)
-		}
-	}
-	return kept
-}
-
-// body returns a chunk's content, byte for byte but for one thing: the five loudness figures of a bext
-// chunk (EBU Tech 3285, version 2 and up) describe the sound as it was, so they are marked unused.
-func (t *tagSource) body(c chunk) io.Reader {
-	body := io.NewSectionReader(t.f, c.start, c.len)
-	const version, figures, end = 346, 412, 422
-	if c.id != "bext" || c.len < end {
-		return body
-	}
-	head, err := readAt(t.f, c.start, end)
-	if err != nil || len(head) < end || le16(head[version:]) < 2 {
-		return body
-	}
-	for at := figures; at < end; at += 2 {
-		head[at], head[at+1] = 0xFF, 0x7F
-	}
-	return io.MultiReader(bytes.NewReader(head), io.NewSectionReader(t.f, c.start+end, c.len-end))
 }
 
 // technical tags describe the file they were in, not the recording. Where people name the tags, as in FLAC,

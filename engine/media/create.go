@@ -45,6 +45,8 @@ func (t *Toolbox) Create(ctx context.Context, path string, spec Spec) (audio.Sin
 	switch {
 	case spec.Container == "wav":
 		s.w, err = newWAVWriter(f, spec, tags)
+	case spec.Container == "aiff":
+		s.w, err = newAIFFWriter(f, spec, tags)
 	case spec.Container == "flac" && t.FFmpeg() == "":
 		s.w, err = newFLACWriter(f, spec, tags)
 	default:
@@ -78,7 +80,7 @@ func (t *Toolbox) checkSpec(s Spec) error {
 	case s.Container == "mp4" && s.Codec == "alac":
 		ok = s.BitDepth == 16 || s.BitDepth == 24
 	case s.Container == "aiff":
-		ok = slices.Contains([]int{16, 24, 32}, s.BitDepth)
+		ok = writesAIFF(s)
 	case isLossy && s.Container == l.container:
 		if why := t.cannot(l.encoder, s.delivered(), l.rates, l.channels); why != "" {
 			return fmt.Errorf("%w: %s cannot be written: %s", ErrUnsupported, s.Codec, why)
@@ -88,7 +90,7 @@ func (t *Toolbox) checkSpec(s Spec) error {
 	switch {
 	case !ok:
 		return fmt.Errorf("%w: %s with %s, %d bits, %s at %d Hz cannot be written", ErrUnsupported, s.Container, s.Codec, s.BitDepth, s.Format.Layout, s.Format.Rate)
-	case s.Container != "wav" && s.Container != "flac" && t.FFmpeg() == "":
+	case !slices.Contains([]string{"wav", "aiff", "flac"}, s.Container) && t.FFmpeg() == "":
 		return fmt.Errorf("%w: writing %s needs FFmpeg, and %s", ErrUnsupported, s.Container, needFFmpeg)
 	}
 	return nil

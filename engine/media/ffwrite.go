@@ -25,8 +25,8 @@ type ffWriter struct {
 
 func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *tagSource) (*ffWriter, error) {
 	l, isLossy := lossyCodecs[spec.Codec]
-	muxer := map[string]string{"flac": "flac", "mp4": "ipod", "aiff": "aiff"}[spec.Container]
-	pcm := Spec{Format: spec.Format, BitDepth: spec.BitDepth, Plain: spec.Plain}
+	muxer := map[string]string{"flac": "flac", "mp4": "ipod"}[spec.Container]
+	pcm := Spec{Format: spec.Format, BitDepth: spec.BitDepth, Plain: spec.Plain, Shaped: spec.Shaped}
 	if isLossy {
 		muxer = l.muxer
 		pcm.BitDepth, pcm.Float = 32, true

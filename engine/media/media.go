@@ -1,7 +1,7 @@
 // Package media opens, decodes, encodes and writes recordings.
 //
 // A recording is recognised by its content, never by its name. WAV (with its 64-bit forms RF64 and BW64)
-// is read and written here; MP3 and FLAC can be, when there is nothing better; everything else goes
+// and AIFF are read and written here; MP3 and FLAC can be, when there is nothing better; everything else goes
 // through FFmpeg. FFmpeg runs as a child process, because a parser of hostile files belongs in a process
 // of its own: it is handed an open file instead of a name, it is told which demuxer to use instead of
 // being left to guess, and what it may open is an allow-list. A playlist that pretends to be a recording
@@ -87,4 +87,5 @@ type Spec struct {
 	Rate      int    // of a lossy file, Hz, where the codec has not the source's; 0: that of Format
 	Note      string // why this is not the source's own format, or empty
 	TagsFrom  string // path of the file whose tags and chunks are carried over, or empty
+	History   string // what made the file, for the line that a bext chunk's coding history gets; empty: no line
 }

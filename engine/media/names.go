@@ -28,18 +28,18 @@ func LooksLikeMedia(name string) bool {
 	return found
 }
 
-// twins are extensions of one format, whose files keep the one they have. A film's is not among them: what is made of
-// its sound must not take its place.
-var twins = [][]string{{".m4a", ".m4b"}, {".aiff", ".aif"}, {".ogg", ".oga"}, {".wav", ".wave", ".bwf"}}
+// twins are extensions of one format, whose files keep the one they have.
+var twins = [][]string{{".wav", ".wave", ".bwf", ".rf64"}, {".aiff", ".aif", ".aifc"}, {".m4a", ".m4b"}, {".ogg", ".oga"}}
 
-// ExtensionFor is the extension of a delivery made from a file of this name: the file's own where it is usual for the
-// delivery's format too, as an audiobook's is.
+// ExtensionFor is the extension of a delivery made from the file at source: the file's own where it is usual for the
+// delivery's format too, as an audiobook's is, and in the case it has.
 func (s Spec) ExtensionFor(source string) string {
 	own := filepath.Ext(source)
-	for _, list := range twins {
-		if slices.Contains(list, s.Extension) && slices.Contains(list, strings.ToLower(own)) {
-			return own
-		}
+	twin := func(list []string) bool {
+		return slices.Contains(list, s.Extension) && slices.Contains(list, strings.ToLower(own))
+	}
+	if strings.EqualFold(own, s.Extension) || slices.ContainsFunc(twins, twin) {
+		return own
 	}
 	return s.Extension
 }

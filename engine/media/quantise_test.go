@@ -20,15 +20,16 @@ func quantiseAll(bits, channel int, lsb []float64) (out []int32, errs []float64)
 
 func quantiseAs(spec Spec, channel int, lsb []float64) (out []int32, errs []float64) {
 	q := newQuantisers(spec)[channel]
+	full := math.Ldexp(1, spec.BitDepth-1)
 	in := make([]float32, len(lsb))
 	for i, v := range lsb {
-		in[i] = float32(v / q.scale)
+		in[i] = float32(v / full)
 	}
 	out = make([]int32, len(in))
 	q.quantise(out, in)
 	errs = make([]float64, len(in))
 	for i := range in {
-		errs[i] = float64(out[i]) - float64(in[i])*q.scale
+		errs[i] = float64(out[i]) - float64(in[i])*full
 	}
 	return out, errs
 }

@@ -27,7 +27,8 @@ var lossyCodecs = map[string]lossy{
 
 // SpecFor says how a recording is best delivered: as wished, or in its own format where that can be written, else as
 // FLAC, else as WAV, and then Note says why. Integer depths are kept, 8 bits and other odd depths grow to
-// the next of 16, 24 and 32; lossy bit rates are kept. Of a film only the sound is delivered.
+// the next of 16, 24 and 32: the noise of 8 bits anew, 45 dB under full scale, would be heard in any programme, and
+// whatever plays 8 bits plays 16. Lossy bit rates are kept. Of a film only the sound is delivered.
 func (t *Toolbox) SpecFor(info Info, w Wish) Spec {
 	var why []string
 	if info.Video {
@@ -54,6 +55,8 @@ func (t *Toolbox) ownFormat(info Info) (Spec, string) {
 		return wavSpec(info.BitDepth, true), ""
 	case info.Container == "wav" && strings.HasPrefix(info.Codec, "pcm_s"), info.Codec == "pcm_u8" && info.Container == "wav":
 		return wavSpec(depth, false), ""
+	case info.Container == "aiff":
+		return aiffSpec(info)
 	case info.Float:
 		return wavSpec(info.BitDepth, true), fmt.Sprintf("floating-point sound in %s is delivered as WAV", info.Container)
 	case info.Codec == "flac" && info.Container == "flac":
@@ -63,11 +66,6 @@ func (t *Toolbox) ownFormat(info Info) (Spec, string) {
 			return flacOrWAV(info, "ALAC cannot be written: "+why)
 		}
 		return Spec{Container: "mp4", Codec: "alac", BitDepth: min(depth, 24), Extension: ".m4a"}, ""
-	case info.Container == "aiff" && strings.HasPrefix(info.Codec, "pcm_s"):
-		if why := t.cannot("", info.Format, nil, 2); why != "" {
-			return wavSpec(depth, false), "AIFF cannot be written: " + why
-		}
-		return Spec{Container: "aiff", Codec: fmt.Sprintf("pcm_s%dbe", depth), BitDepth: depth, Extension: ".aiff"}, ""
 	case info.BitDepth > 0 && info.Container == "wav":
 		return wavSpec(depth, false), ""
 	case info.BitDepth > 0:

@@ -22,6 +22,8 @@ func TestSpecFor(t *testing.T) {
 	film.Video = true
 	oddLayout := audio.Format{Rate: 48000, Layout: audio.Layout{Channels: 4, Mask: 0x107}}
 	many := audio.Format{Rate: 48000, Layout: audio.Layout{Channels: 10}}
+	longAIFF := info("aiff", "pcm_s24be", 24, stereo(48000))
+	longAIFF.Frames = 1 << 30
 	tests := []struct {
 		name          string
 		info          Info
@@ -49,9 +51,13 @@ func TestSpecFor(t *testing.T) {
 		{"bare AAC", lossyInfo("aac", "aac", 128_000, stereo(44100)), "mp4 aac 0 .m4a", "flac flac 16 .flac", "in M4A", "ffmpeg"},
 		{"film", film, "mp4 aac 0 .m4a", "flac flac 16 .flac", "only the sound", "only the sound"},
 		{"ALAC", info("mp4", "alac", 16, stereo(44100)), "mp4 alac 16 .m4a", "flac flac 16 .flac", "", "ffmpeg"},
-		{"AIFF", info("aiff", "pcm_s24be", 24, stereo(44100)), "aiff pcm_s24be 24 .aiff", "wav pcm_s24le 24 .wav", "", "ffmpeg"},
-		{"AIFF float", info("aiff", "pcm_f32be", 32, stereo(44100)), "wav pcm_f32le 32 .wav", "wav pcm_f32le 32 .wav", "floating-point", "floating-point"},
-		{"AIFF 5.1", info("aiff", "pcm_s16be", 16, audio.Format{Rate: 48000, Layout: five}), "wav pcm_s16le 16 .wav", "wav pcm_s16le 16 .wav", "no room for 6 channels", "ffmpeg"},
+		{"AIFF", info("aiff", "pcm_s24be", 24, stereo(44100)), "aiff pcm_s24be 24 .aiff", "aiff pcm_s24be 24 .aiff", "", ""},
+		{"AIFF 8", info("aiff", "pcm_s8", 8, stereo(44100)), "aiff pcm_s16be 16 .aiff", "aiff pcm_s16be 16 .aiff", "", ""},
+		{"AIFC sowt", info("aiff", "pcm_s16le", 16, stereo(44100)), "aiff pcm_s16le 16 .aiff", "aiff pcm_s16le 16 .aiff", "", ""},
+		{"AIFC float", info("aiff", "pcm_f32be", 32, stereo(44100)), "aiff pcm_f32be 32 .aiff", "aiff pcm_f32be 32 .aiff", "", ""},
+		{"AIFF 5.1", info("aiff", "pcm_s16be", 16, audio.Format{Rate: 48000, Layout: five}), "aiff pcm_s16be 16 .aiff", "aiff pcm_s16be 16 .aiff", "", ""},
+		{"AIFC of µ-law", info("aiff", "pcm_mulaw", 0, stereo(44100)), "aiff pcm_s16be 16 .aiff", "aiff pcm_s16be 16 .aiff", "pcm_mulaw", "pcm_mulaw"},
+		{"AIFF too long", longAIFF, "wav pcm_s24le 24 .wav", "wav pcm_s24le 24 .wav", "4 GiB", "4 GiB"},
 		{"WavPack", info("wv", "wavpack", 24, stereo(44100)), "flac flac 24 .flac", "flac flac 24 .flac", "wavpack is not written", "wavpack is not written"},
 		{"CAF of 10 channels", info("caf", "pcm_s24be", 24, many), "wav pcm_s24le 24 .wav", "wav pcm_s24le 24 .wav", "FLAC has no room", "FLAC has no room"},
 	}
@@ -145,6 +151,7 @@ func TestExtensionFor(t *testing.T) {
 	for _, test := range [][3]string{
 		{".m4a", "a/book.m4b", ".m4b"}, {".m4a", "book.M4B", ".M4B"}, {".m4a", "film.mp4", ".m4a"}, {".m4a", "x.flac", ".m4a"},
 		{".aiff", "x.aif", ".aif"}, {".ogg", "x.oga", ".oga"}, {".wav", "x.bwf", ".bwf"}, {".wav", "x.aif", ".wav"}, {".mp3", "x", ".mp3"},
+		{".aiff", "a.AIFC", ".AIFC"}, {".flac", "B.FLAC", ".FLAC"}, {".flac", "a.aif", ".flac"},
 	} {
 		if got := (Spec{Extension: test[0]}).ExtensionFor(test[1]); got != test[2] {
 			t.Errorf("%v: %q", test, got)

@@ -126,13 +126,25 @@ func (t *Toolbox) open(ctx context.Context, f *os.File, size int64, path string)
 	if err != nil {
 		return nil, err
 	}
-	if k.container == "wav" {
+	switch k.container {
+	case "wav":
 		h, err := parseWAV(f, size)
 		if err != nil {
 			return nil, err
 		}
 		if h.native() {
-			return newWAVReader(ctx, f, path, h)
+			return newWAVReader(ctx, f, path, h), nil
+		}
+	case "aiff":
+		if k.start > 0 {
+			break // an ID3 tag in front, which has no place there; FFmpeg gets past it
+		}
+		h, err := parseAIFF(f, size)
+		if err != nil {
+			return nil, err
+		}
+		if h.native() {
+			return newAIFFReader(ctx, f, path, h), nil
 		}
 	}
 	switch {

@@ -1,10 +1,12 @@
 package media
 
 import (
+	"bytes"
 	"fmt"
 	"io"
 	"math"
 	"math/bits"
+	"slices"
 
 	"github.com/go-audio/riff"
 
@@ -12,7 +14,7 @@ import (
 )
 
 // A WAV file is a row of chunks: four letters, a 32-bit length, a body, and a byte of padding if the
-// length is odd. "fmt " tells how the samples look and comes before "data", which holds them; whatever
+// length is odd. "fmt " tells how the samples look and should come before "data", which holds them; whatever
 // else there is (bext, cue, cart, LIST, …) belongs to the recording and is carried over. Where 32 bits
 // are too few, RF64 (EBU Tech 3306) and BW64 (ITU-R BS.2088) write 0xFFFFFFFF and keep the length in a
 // chunk "ds64" at the front, low word first.
@@ -46,10 +48,13 @@ type wavHeader struct {
 	depth     int // bits that matter
 	align     int // bytes a frame
 
+	form   string  // "RIFF", "RF64" or "BW64"
 	data   int64   // where the samples begin
 	frames int64   // as promised; −1 if the header does not say
 	before []chunk // other chunks, in front of the data
 	after  []chunk // and behind it
+	// unread says in words what there is behind the data that looks like sound but is not read; "" if nothing.
+	unread string
 }
 
 // native reports whether the samples can be decoded here.
@@ -74,13 +79,13 @@ func (h *wavHeader) codec() string {
 // length further than the file reaches. A file cut off inside its data is not an error here: reading
 // will tell. For a stream whose end is not known, size is what is at hand, and the walk ends at "data".
 func parseWAV(r io.ReaderAt, size int64) (*wavHeader, error) {
-	w := wavWalk{r: r, size: size, h: wavHeader{frames: -1}}
-	riffID, riffLen, err := w.heading(0)
+	w := wavWalk{r: r, size: size, dataLen: -1}
+	form, riffLen, err := w.heading(0)
 	if err != nil {
 		return nil, err
 	}
-	w.riffLen = int64(riffLen)
-	w.wide = riffID == "RF64" || riffID == "BW64"
+	w.riffLen, w.h.form = int64(riffLen), form
+	w.wide = form == "RF64" || form == "BW64"
 	at := int64(12)
 	for n := 0; ; n++ {
 		if n == maxChunks {
@@ -90,7 +95,7 @@ func parseWAV(r io.ReaderAt, size int64) (*wavHeader, error) {
 		if err != nil {
 			return nil, err
 		}
-		if c == nil {
+		if c == nil || w.h.data > 0 && !letters([]byte(c.id)) {
 			break
 		}
 		if at, err = w.take(c); err != nil {
@@ -100,10 +105,41 @@ func parseWAV(r io.ReaderAt, size int64) (*wavHeader, error) {
 	switch {
 	case w.h.data == 0 && !w.hasFmt:
 		return nil, &FormatError{min(at, size), "the file ends before its header does"}
+	case w.h.data == 0 && w.inPieces():
+		return nil, &FormatError{min(at, size), "its sound is in pieces (a LIST of waves), which are not read here"}
 	case w.h.data == 0:
 		return nil, &FormatError{min(at, size), "it has no data chunk: the sound is missing"}
+	case !w.hasFmt:
+		return nil, &FormatError{w.h.data - 8, "its data has no format: the fmt chunk is missing"}
 	}
-	return &w.h, nil
+	w.h.frames = -1
+	if w.dataLen >= 0 {
+		w.h.frames = w.dataLen / int64(w.h.align)
+	}
+	return &w.h, w.remains(at)
+}
+
+// remains notes what lies from an offset to the end of the file, if it belongs to no chunk. Zeros are padding.
+func (w *wavWalk) remains(from int64) error {
+	for at := from; w.size-from >= 8 && at < w.size; at += ahead {
+		b, err := readAt(w.r, at, ahead)
+		if err != nil {
+			return err
+		}
+		if len(bytes.Trim(b, "\x00")) > 0 {
+			w.h.unread = fmt.Sprintf("its data chunk ends %d bytes before the file does, and no other chunk begins there", w.size-from)
+			return nil
+		}
+	}
+	return nil
+}
+
+// inPieces reports whether there is a wave list, in which data and silence take turns (RIFF, 1991).
+func (w *wavWalk) inPieces() bool {
+	return slices.ContainsFunc(w.h.before, func(c chunk) bool {
+		kind, _ := readAt(w.r, c.start, 4)
+		return c.id == "LIST" && string(kind) == "wavl"
+	})
 }
 
 // wavWalk is the state of one walk along the chunks.
@@ -114,6 +150,7 @@ type wavWalk struct {
 	wide    bool             // RF64 or BW64
 	sizes   map[string]int64 // from ds64
 	hasFmt  bool
+	dataLen int64 // bytes; −1 if nobody says
 	h       wavHeader
 }
 
@@ -136,7 +173,7 @@ func (w *wavWalk) next(at int64) (*chunk, error) {
 		return nil, err
 	}
 	c := &chunk{id, at + 8, int64(n)}
-	if big, ok := w.sizes[id]; ok && n == unknown32 && w.wide {
+	if big, ok := w.sizes[id]; ok && w.wide && (n == unknown32 || n == 0 && id == "data") {
 		c.len = big
 	}
 	return c, nil
@@ -147,14 +184,13 @@ func (w *wavWalk) take(c *chunk) (int64, error) {
 	end := c.start + c.len
 	switch {
 	case c.id == "data" && w.h.data == 0:
-		if !w.hasFmt {
-			return 0, &FormatError{c.start - 8, "its data comes before its format"}
-		}
 		w.h.data = c.start
 		if w.open(c) {
 			return w.size, nil // to the end of the file, however long that is
 		}
-		w.h.frames = c.len / int64(w.h.align)
+		w.dataLen = c.len
+	case c.id == "data" && c.len > 0:
+		w.h.unread = "it has a second data chunk, which is not read"
 	case c.id == "fmt " && !w.hasFmt:
 		if err := w.format(c); err != nil {
 			return 0, err
@@ -164,22 +200,28 @@ func (w *wavWalk) take(c *chunk) (int64, error) {
 		if err := w.ds64(c); err != nil {
 			return 0, err
 		}
-	case end > w.size:
-		if w.h.data == 0 {
-			return 0, &FormatError{c.start - 8, fmt.Sprintf("its %q chunk reaches past the end of the file", c.id)}
-		}
-		return w.size, nil // a torn chunk behind the data is left behind
+	case end > w.size && w.h.data == 0:
+		return 0, &FormatError{c.start - 8, fmt.Sprintf("its %q chunk reaches past the end of the file", c.id)}
+	case end > w.size: // torn: what there is of it
+		w.h.after = append(w.h.after, chunk{c.id, c.start, w.size - c.start})
 	case w.h.data == 0:
 		w.h.before = append(w.h.before, *c)
 	default:
 		w.h.after = append(w.h.after, *c)
 	}
-	return w.pad(c.len, end), nil
+	return padded(w.r, w.size, c.len, end), nil
 }
 
 // open reports whether a data chunk's length was never filled in, as in a stream or after a crash. A
-// length of 0 is taken at its word only if the whole file's length was filled in and agrees.
+// length of 0 is taken at its word only if the whole file's length was filled in and agrees. One that is just under
+// 2 or 4 GiB, in a file that is shorter, is what programs write that cannot go back to fill it in.
 func (w *wavWalk) open(c *chunk) bool {
+	const under = 4096
+	for _, top := range []int64{1 << 31, 1 << 32} {
+		if c.start+c.len > w.size && c.len >= top-under && c.len <= top {
+			return true
+		}
+	}
 	if c.len == unknown32 {
 		return true
 	}
@@ -193,14 +235,14 @@ func (w *wavWalk) open(c *chunk) bool {
 	return whole < w.size-1 || whole > w.size+1
 }
 
-// pad returns where the chunk after one ends. After an odd length there is a byte of padding, but some
-// programs forget it; the next letters give them away.
-func (w *wavWalk) pad(length, end int64) int64 {
-	if length%2 == 0 || end+8 > w.size {
+// padded returns where the chunk begins that comes after one of so many bytes. After an odd length there is a byte of
+// padding, but some programs forget it; the next letters give them away.
+func padded(r io.ReaderAt, size, length, end int64) int64 {
+	if length%2 == 0 || end+8 > size {
 		return end + length%2
 	}
-	padded, err := readAt(w.r, end, 5)
-	if err == nil && len(padded) == 5 && letters(padded[:4]) && !letters(padded[1:5]) {
+	next, err := readAt(r, end, 5)
+	if err == nil && len(next) == 5 && letters(next[:4]) && !letters(next[1:5]) {
 		return end
 	}
 	return end + 1

@@ -10,36 +10,51 @@ import (
 	"evenshelf/engine/audio"
 )
 
-// wavReader reads PCM and float WAV files.
-type wavReader struct {
+// pcmReader reads the PCM and float samples of WAV and AIFF files.
+type pcmReader struct {
 	f       *os.File
 	path    string
 	info    Info
 	stream  *blockStream
 	stopped func() error
-	err     error // returned from now on
+	err     error  // returned from now on
+	unread  string // see wavHeader
 }
 
-func newWAVReader(ctx context.Context, f *os.File, path string, h *wavHeader) (*wavReader, error) {
+func newWAVReader(ctx context.Context, f *os.File, path string, h *wavHeader) *pcmReader {
 	info := Info{
 		Container: "wav", Codec: h.codec(), Format: h.format, Frames: h.frames, BitDepth: h.depth,
 		Float: h.tag == tagFloat, Decoder: "evenshelf wav",
 	}
-	frames := h.frames
+	r := newPCMReader(ctx, f, path, info, h.data, unpackerFor(h.container, info.Float), h.align)
+	r.unread = h.unread
+	return r
+}
+
+// newPCMReader reads samples that begin at an offset, in frames of so many bytes.
+func newPCMReader(ctx context.Context, f *os.File, path string, info Info, data int64, unpack unpacker, align int) *pcmReader {
+	frames := info.Frames
 	if frames < 0 {
 		frames = math.MaxInt64
 	}
-	src := io.NewSectionReader(f, h.data, math.MaxInt64-h.data)
-	s := newBlockStream(src, unpackerFor(h.container, info.Float), h.align, frames)
-	return &wavReader{f: f, path: path, info: info, stream: s, stopped: stopped(ctx)}, nil
+	src := io.NewSectionReader(f, data, math.MaxInt64-data)
+	return &pcmReader{f: f, path: path, info: info, stream: newBlockStream(src, unpack, align, frames), stopped: stopped(ctx)}
 }
 
-func (r *wavReader) Format() audio.Format { return r.info.Format }
-func (r *wavReader) Info() Info           { return r.info }
-func (r *wavReader) Close() error         { return closeOnce(&r.f) }
+func (r *pcmReader) Format() audio.Format { return r.info.Format }
+func (r *pcmReader) Info() Info           { return r.info }
+func (r *pcmReader) Close() error         { return closeOnce(&r.f) }
+
+// Damage implements Damaged.
+func (r *pcmReader) Damage() string {
+	if r.err == nil {
+		return ""
+	}
+	return r.unread
+}
 
 // ReadBlock implements audio.Source.
-func (r *wavReader) ReadBlock(dst audio.Block) (int, error) {
+func (r *pcmReader) ReadBlock(dst audio.Block) (int, error) {
 	if r.err == nil {
 		r.err = ended(r.path, r.stopped)
 	}

@@ -12,7 +12,7 @@ import (
 	"evenshelf/engine/audio"
 )
 
-// wavWriter writes PCM and float WAV, and RF64 when the file passes 4 GiB. The plan is EBU Tech 3306's:
+// wavWriter writes PCM and float WAV, and RF64 or BW64 when the file passes 4 GiB. The plan is EBU Tech 3306's:
 // a JUNK chunk in front reserves the room of the ds64 chunk and turns into it when that is needed.
 //
 // go-audio/wav's encoder carries the chunks and counts the bytes. Its own header knows neither
@@ -23,6 +23,9 @@ type wavWriter struct {
 	enc    *wav.Encoder
 	pack   *packer
 	tags   *tagSource
+	spec   Spec
+	after  []chunk // of the source, to come behind the samples
+	wide   string  // the form that a file with 64-bit sizes has
 	align  int
 	frames int64
 	dataAt int64 // where the samples begin
@@ -34,12 +37,18 @@ const ds64Len = 28 // the fixed part; no table is needed for one data chunk
 
 func newWAVWriter(f *os.File, spec Spec, tags *tagSource) (*wavWriter, error) {
 	channels := spec.Format.Layout.Channels
-	// The encoder would reserve a minute of sound: with no channels it reserves nothing.
-	enc := wav.NewEncoder(f, spec.Format.Rate, spec.BitDepth, 0, tagPCM)
+	// The encoder would reserve a minute of sound: with no channels it reserves nothing. It would bring a file to the
+	// disk when it is done: what it is handed is not one, because sink does that.
+	enc := wav.NewEncoder(struct{ io.WriteSeeker }{f}, spec.Format.Rate, spec.BitDepth, 0, tagPCM)
 	enc.NumChans = channels
 	w := &wavWriter{
 		f: f, enc: enc, pack: newPacker(spec), align: channels * spec.BitDepth / 8,
-		limit: math.MaxUint32, tags: tags,
+		limit: math.MaxUint32, tags: tags, spec: spec, wide: "RF64",
+	}
+	// Audio definition models are at home in BW64 (ITU-R BS.2088), whose readers go by its name: one stays one, however
+	// short. Anything else past 4 GiB becomes RF64, which more programs read, and what is shorter a plain WAV, which all do.
+	if tags != nil && tags.wav != nil && tags.wav.form == "BW64" {
+		w.wide, w.limit = "BW64", 0
 	}
 	head := append([]byte("RIFF\xFF\xFF\xFF\xFFWAVEJUNK"), binary.LittleEndian.AppendUint32(nil, ds64Len)...)
 	head = append(head, make([]byte, ds64Len)...)
@@ -51,11 +60,12 @@ func newWAVWriter(f *os.File, spec Spec, tags *tagSource) (*wavWriter, error) {
 	if err := enc.AddLE(head); err != nil {
 		return nil, err
 	}
-	if err := w.copyChunks(w.tags.before()); err != nil {
+	before, after := tags.chunks("wav")
+	if err := w.copyChunks(before); err != nil {
 		return nil, err
 	}
-	w.dataAt = int64(enc.WrittenBytes) + 8
-	return w, nil
+	w.after, w.dataAt = after, int64(enc.WrittenBytes)+8
+	return w, enc.WriteFrame([]byte{}) // opens the data chunk
 }
 
 // fmtChunk returns the whole "fmt " chunk. EXTENSIBLE is used where the plain form does not say enough:
@@ -94,48 +104,50 @@ func fmtChunk(spec Spec) []byte {
 	return b
 }
 
+// write appends sample bytes. The encoder would copy them once more.
 func (w *wavWriter) write(src audio.Block) error {
 	w.frames += int64(src.Frames())
-	return w.add(w.pack.pack(src))
+	n, err := w.f.Write(w.pack.pack(src))
+	w.enc.WrittenBytes += n
+	return err
 }
 
-// add appends sample bytes. The encoder opens the data chunk the first time.
-func (w *wavWriter) add(samples []byte) error { return w.enc.WriteFrame(samples) }
-
-// copyChunks appends chunks of the source, bext with its stale loudness figures cleared.
+// copyChunks appends chunks of the source.
 func (w *wavWriter) copyChunks(list []chunk) error {
 	for _, c := range list {
-		if c.len >= unknown32 {
-			return fmt.Errorf("%w: the source's %q chunk is larger than 4 GiB and cannot be carried over", ErrUnsupported, c.id)
-		}
-		if err := w.enc.AddLE(append([]byte(c.id), binary.LittleEndian.AppendUint32(nil, uint32(c.len))...)); err != nil {
+		body, length, err := w.tags.body(c, w.spec)
+		if err != nil {
 			return err
 		}
-		n, err := io.Copy(w.f, w.tags.body(c))
+		if length >= unknown32 {
+			return fmt.Errorf("%w: the source's %q chunk is larger than 4 GiB and cannot be carried over", ErrUnsupported, c.id)
+		}
+		if err := w.enc.AddLE(append([]byte(c.id), binary.LittleEndian.AppendUint32(nil, uint32(length))...)); err != nil {
+			return err
+		}
+		n, err := io.CopyN(w.f, body, length)
 		w.enc.WrittenBytes += int(n)
 		if err != nil {
 			return err
 		}
-		if c.len%2 == 1 {
-			if err := w.enc.AddLE(uint8(0)); err != nil {
-				return err
-			}
+		if err := w.padded(length); err != nil {
+			return err
 		}
 	}
 	return nil
 }
 
+// padded appends the byte that follows an odd length.
+func (w *wavWriter) padded(length int64) error {
+	return w.enc.AddLE(make([]byte, length%2))
+}
+
 func (w *wavWriter) finish() error {
-	if err := w.add(nil); err != nil { // a recording of no frames has a data chunk too
+	dataLen := w.frames * int64(w.align)
+	if err := w.padded(dataLen); err != nil {
 		return err
 	}
-	dataLen := w.frames * int64(w.align)
-	if dataLen%2 == 1 {
-		if err := w.enc.AddLE(uint8(0)); err != nil {
-			return err
-		}
-	}
-	if err := w.copyChunks(w.tags.after()); err != nil {
+	if err := w.copyChunks(w.after); err != nil {
 		return err
 	}
 	total := int64(w.enc.WrittenBytes) - 8
@@ -146,7 +158,7 @@ func (w *wavWriter) finish() error {
 	riffLen, data32, fact := uint32(total), uint32(dataLen), uint32(min(w.frames, math.MaxUint32))
 	if total > w.limit {
 		riffLen, data32, fact = unknown32, unknown32, unknown32
-		b := le.AppendUint32([]byte("RF64"), unknown32)
+		b := le.AppendUint32([]byte(w.wide), unknown32)
 		b = le.AppendUint32(append(b, "WAVEds64"...), ds64Len)
 		b = le.AppendUint64(b, uint64(total))
 		b = le.AppendUint64(b, uint64(dataLen))
