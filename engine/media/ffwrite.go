@@ -72,7 +72,10 @@ func (t *Toolbox) encoderArgs(spec Spec) []string {
 	channels := spec.Format.Layout.Channels
 	switch spec.Codec {
 	case "mp3":
-		args := []string{"-c:a", "libmp3lame", "-id3v2_version", "3"} // the version old players read too
+		args := []string{"-c:a", "libmp3lame"}
+		if spec.Container == "mp3" {
+			args = append(args, "-id3v2_version", "3") // the version old players read too
+		}
 		if spec.BitRate == 0 {
 			return append(args, "-q:a", "0")
 		}
@@ -93,6 +96,12 @@ func (t *Toolbox) encoderArgs(spec Spec) []string {
 		}
 		args := []string{"-c:a", "aac", "-b:a", rate(min(bits, 256_000*channels))}
 		return append(args, t.exactLength(spec)...)
+	case "ac3", "eac3":
+		bits := max(spec.BitRate, 96_000*channels)
+		if channels > 2 {
+			bits = max(spec.BitRate, 64_000*channels)
+		}
+		return []string{"-c:a", spec.Codec, "-b:a", rate(min(bits, 640_000)), "-dialnorm", "-31"} // played as it is
 	case "alac":
 		return append([]string{"-c:a", "alac"}, t.exactLength(spec)...)
 	default:
@@ -105,7 +114,7 @@ func (t *Toolbox) encoderArgs(spec Spec) []string {
 func (t *Toolbox) exactLength(spec Spec) []string {
 	var major, minor int
 	fmt.Sscanf(t.version(), "%d.%d", &major, &minor)
-	if major < 5 || major == 5 && minor < 1 {
+	if major < 5 || major == 5 && minor < 1 || spec.Container != "mp4" && spec.Container != "mov" {
 		return nil
 	}
 	return []string{"-movie_timescale", strconv.Itoa(spec.Format.Rate)}

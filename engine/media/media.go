@@ -31,6 +31,9 @@ type Info struct {
 	BitDepth  int    // bits a sample of integer or float PCM and FLAC; 0 for lossy codecs
 	Float     bool   // floating-point PCM
 	BitRate   int    // bit/s of a lossy stream; 0 if not known
+	Track     int    // which of the sound tracks it is, from 1; 0 where there can be but one
+	Titles    string // of all sound tracks, a line each, empty without one; "" where there can be but one
+	Mixed     bool   // Format is that of a mix of more channels to two (see Downmix)
 	Video     bool   // there are moving pictures beside the sound (cover art does not count)
 	Decoder   string // who decodes it, with version, e.g. "ffmpeg 5.1.6 mp3float"
 }
@@ -81,5 +84,6 @@ type Spec struct {
 	BitRate   int    // bit/s for lossy codecs, 0 for the codec's best quality
 	Extension string // of the delivered file, with its dot: ".wav"
 	Note      string // why this is not the source's own format, or empty
+	Film      *Film  // where in a film it goes; nil: it is delivered by itself
 	TagsFrom  string // path of the file whose tags and chunks are carried over, or empty
 }
