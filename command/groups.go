@@ -33,7 +33,7 @@ func newGroups(e *level.Engine, p profile.Profile, files []input) *groups {
 		}
 	}
 	return &groups{profile: p, known: map[string]*group{}, measure: func(ctx context.Context, folder string) (level.Shared, error) {
-		return e.Group(ctx, members[folder], p.Mono)
+		return e.Group(ctx, members[folder], level.OptionsFor(p))
 	}}
 }
 

@@ -73,7 +73,7 @@ func (s *Service) measureTogether(ctx context.Context, w store.Work, f folder) (
 		}
 		sources, first = append(sources, source), append(first, info)
 	}
-	measured, err := s.engine.Group(ctx, sources, w.Profile.Mono)
+	measured, err := s.engine.Group(ctx, sources, level.OptionsFor(w.Profile))
 	if err != nil {
 		return shared, fmt.Errorf("measure the folder %q as one programme: %w", f.path, err)
 	}

@@ -26,7 +26,6 @@ import (
 	"github.com/riverqueue/river"
 	"github.com/riverqueue/river/riverdriver/riversqlite"
 
-	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
 	"evenshelf/store"
 	"evenshelf/worker/delivery"
@@ -41,7 +40,7 @@ type Engine interface {
 	// scratch file. A damaged source is an outcome with the verdict failed; an error may heal.
 	Level(ctx context.Context, source string, t level.Task, scratch string) (level.Outcome, error)
 	// Group measures recordings as one programme and leaves out those it cannot read. An error may heal.
-	Group(ctx context.Context, paths []string, mono audio.MonoRule) (level.Shared, error)
+	Group(ctx context.Context, paths []string, how level.Options) (level.Shared, error)
 }
 
 // Options are what a Service needs. Store and Engine are required.

@@ -179,4 +179,3 @@ func TestFilmIsCopiedAroundItsSound(t *testing.T) {
 func chaptersOf(t testing.TB, path string) []byte {
 	return run(t, "ffprobe", "-v", "error", "-show_chapters", "-show_entries", "chapter=start_time,end_time:chapter_tags", "-of", "csv", path)
 }
-

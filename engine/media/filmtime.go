@@ -39,9 +39,10 @@ func (t *Toolbox) firstSound(ctx context.Context, f *os.File, k kind, track int,
 	return instant{}, &FormatError{-1, "it cannot be found out when its sound begins"}
 }
 
-// runIn is what an encoder puts in front of the sound: so many frames, in packets of so many. MP4 says so and has it
-// skipped. Matroska could, but FFmpeg does so for Opus alone: there silence is put in front until the run-in fills whole
-// packets, and these are left out, so that the first packet kept begins with the first frame of the sound.
+// runIn is what an encoder puts in front of the sound: so many frames, in packets of so many. MP4 says so, by an edit
+// list, and has it skipped, but FFmpeg writes that only where the sound begins with the film. Matroska could say it too,
+// but FFmpeg does so for Opus alone. There silence is put in front until the run-in fills whole packets, and these are
+// left out, so that the first packet kept begins with the first frame of the sound.
 type runIn struct{ frames, packet int }
 
 var runIns = map[string]runIn{"aac": {1024, 1024}, "ac3": {256, 1536}, "eac3": {256, 1536}, "mp3": {1105, 1152}}
@@ -59,7 +60,7 @@ type entry struct {
 // entryAt returns how a track of a codec begins at a time, s, in a container, as output sound track n (from 0).
 func entryAt(at float64, spec Spec, n int) entry {
 	e := entry{offset: at}
-	if spec.Container == "mp4" || spec.Container == "mov" {
+	if iso := spec.Container == "mp4" || spec.Container == "mov"; iso && (at <= 0 || runIns[spec.Codec] == runIn{}) {
 		return e
 	}
 	filter := fmt.Sprintf("-bsf:a:%d", n)

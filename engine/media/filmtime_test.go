@@ -1,9 +1,6 @@
 package media
 
 import (
-	"fmt"
-	"os"
-	"path/filepath"
 	"strconv"
 	"strings"
 	"testing"
@@ -84,7 +81,3 @@ func TestLevelledSoundIsInSync(t *testing.T) {
 		}
 	}
 }
-
-var _ = fmt.Sprint
-var _ = os.Open
-var _ = filepath.Join
