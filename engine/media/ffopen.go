@@ -7,6 +7,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"strconv"
 )
 
 // decoders names FFmpeg's decoder for a codec where it is not the codec's own name. Naming it makes
@@ -36,6 +37,7 @@ const onTime = "aresample=async=1:min_hard_comp=0.015"
 type finding struct {
 	info    Info // but for Decoder
 	gapless gapless
+	most    int64  // frames that there can be; 0: nobody knows
 	wire    string // FFmpeg's name of the encoding in which the samples come to us
 }
 
@@ -70,6 +72,9 @@ func (t *Toolbox) look(ctx context.Context, f *os.File, k kind, track int) (find
 		return finding{}, err
 	}
 	l := finding{info: info, wire: s.wire()}
+	if d, err := strconv.ParseFloat(p.Format.Duration, 64); err == nil && d < 1e9 && info.isFilm() {
+		l.most = int64((2*d + 3600) * float64(info.Format.Rate))
+	}
 	if l.info.Codec == "opus" && l.info.Container == "ogg" && l.info.Frames > 0 {
 		skip, err := opusPreSkip(f)
 		if err != nil {
@@ -103,7 +108,7 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if err != nil {
 		return nil, err
 	}
-	r := &ffReader{f: f, path: path, info: l.info, child: c, stopped: stopped(ctx)}
+	r := &ffReader{f: f, path: path, info: l.info, child: c, stopped: stopped(ctx), most: l.most}
 	if err := r.begin(l.gapless); err != nil {
 		c.kill()
 		return nil, err

@@ -97,11 +97,11 @@ func (t *Toolbox) encoderArgs(spec Spec) []string {
 		args := []string{"-c:a", "aac", "-b:a", rate(min(bits, 256_000*channels))}
 		return append(args, t.exactLength(spec)...)
 	case "ac3", "eac3":
-		bits := max(spec.BitRate, 96_000*channels)
-		if channels > 2 {
-			bits = max(spec.BitRate, 64_000*channels)
+		bits, most := max(spec.BitRate, 64_000*channels, 192_000), 640_000
+		if spec.Codec == "eac3" { // a frame of 1536 samples has room for 4096 bytes
+			most = 4000 * 8 * spec.Format.Rate / 1536
 		}
-		return []string{"-c:a", spec.Codec, "-b:a", rate(min(bits, 640_000)), "-dialnorm", "-31"} // played as it is
+		return []string{"-c:a", spec.Codec, "-b:a", rate(min(bits, most)), "-dialnorm", "-31"} // played as loud as it is
 	case "alac":
 		return append([]string{"-c:a", "alac"}, t.exactLength(spec)...)
 	default:

@@ -2,7 +2,10 @@ package media
 
 import (
 	"cmp"
+	"encoding/binary"
 	"fmt"
+	"io"
+	"math"
 	"path/filepath"
 	"slices"
 	"strings"
@@ -166,7 +169,7 @@ func (t *Toolbox) cannotInFilm(codec string, f audio.Format) string {
 		return t.cannot(codec, audio.Format{Rate: f.Rate, Layout: audio.Mono}, nil, 1)
 	case !isLossy:
 		return t.cannot(codec, f, nil, flacMaxChannels)
-	case codec == l.encoder && slices.Contains(dolbyMasks, f.Layout.Mask&^audio.LowFrequency):
+	case (codec == "ac3" || codec == "eac3") && slices.Contains(dolbyMasks, f.Layout.Mask&^audio.LowFrequency):
 		f.Layout = audio.UsualLayout(f.Layout.Channels)
 	}
 	return t.cannot(l.encoder, f, l.rates, l.channels)
@@ -226,4 +229,27 @@ func (s *probeStream) title() string { return cmp.Or(s.Tags["title"], s.Tags["ha
 // timed reports whether a track has a place in the course of a film: covers and attachments have none.
 func (s *probeStream) timed() bool {
 	return (s.Type == "video" || s.Type == "audio" || s.Type == "subtitle") && s.Disposition["attached_pic"] == 0
+}
+
+// moovFirst reports whether an MP4 has its index in front of the sound and pictures, so that it plays while it arrives.
+func moovFirst(r io.ReaderAt) bool {
+	at := int64(0)
+	for range 64 {
+		head, err := readAt(r, at, 16)
+		if err != nil || len(head) < 16 {
+			return false
+		}
+		size := int64(binary.BigEndian.Uint32(head))
+		if size == 1 {
+			size = int64(min(binary.BigEndian.Uint64(head[8:]), math.MaxInt64/2))
+		}
+		switch kind := string(head[4:8]); {
+		case kind == "moov":
+			return true
+		case kind == "mdat", size < 8, at > math.MaxInt64/4:
+			return false
+		}
+		at += size
+	}
+	return false
 }

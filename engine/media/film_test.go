@@ -165,6 +165,13 @@ func TestFilmIsCopiedAroundItsSound(t *testing.T) {
 				if ours.Codec != main.Codec || ours.Layout != main.Layout {
 					t.Errorf("%s %s became %s %s", main.Codec, main.Layout, ours.Codec, ours.Layout)
 				}
+				if filepath.Ext(name) == ".mkv" {
+					font := filepath.Join(t.TempDir(), "font")
+					run(t, "ffmpeg", "-v", "error", "-dump_attachment:t:0", font, "-i", path, "-t", "0", "-f", "null", "-")
+					if string(load(t, font)) != "not really a font" {
+						t.Errorf("the font came out as %q", load(t, font))
+					}
+				}
 				if got, want := chaptersOf(t, path), chaptersOf(t, source); !bytes.Equal(got, want) {
 					t.Errorf("chapters %s were %s", got, want)
 				}
@@ -178,4 +185,89 @@ func TestFilmIsCopiedAroundItsSound(t *testing.T) {
 
 func chaptersOf(t testing.TB, path string) []byte {
 	return run(t, "ffprobe", "-v", "error", "-show_chapters", "-show_entries", "chapter=start_time,end_time:chapter_tags", "-of", "csv", path)
+}
+
+// Containers that films are not written in become Matroska: the same pictures and sound, as far apart as they were.
+func TestOtherFilmsBecomeMatroska(t *testing.T) {
+	dir := t.TempDir()
+	for name, args := range map[string][]string{
+		"a.avi": {"-c:v", "mpeg4", "-bf", "0", "-c:a", "libmp3lame"},
+		"b.avi": {"-c:v", "mpeg4", "-bf", "2", "-c:a", "ac3"},
+		"a.ts":  {"-c:v", "libx264", "-preset", "ultrafast", "-bf", "2", "-c:a", "mp2"},
+		"a.mpg": {"-c:v", "mpeg2video", "-bf", "2", "-c:a", "mp2"},
+		"a.flv": {"-c:v", "flv1", "-c:a", "libmp3lame"},
+		"a.wmv": {"-c:v", "wmv2", "-c:a", "wmav2"},
+	} {
+		t.Run(name, func(t *testing.T) {
+			source := filepath.Join(dir, name)
+			run(t, "ffmpeg", append(append([]string{"-v", "error", "-f", "lavfi", "-i", "testsrc2=s=160x120:r=25:d=6", "-f", "lavfi", "-i", "anoisesrc=d=6:r=44100:a=0.2:c=pink:seed=1", "-ac", "2"}, args...), source)...)
+			path, spec, _ := deliver(t, source, Wish{Title: LevelledTitle("film")})
+			if spec.Container != "matroska" || filepath.Ext(path) != ".mkv" {
+				t.Errorf("%+v", spec)
+			}
+			before, _ := streams(t, source)
+			after, _ := streams(t, path)
+			if len(after) != len(before)+1 {
+				t.Fatalf("%d tracks became %d", len(before), len(after))
+			}
+			for n, kind := range []string{"v", "a"} {
+				pictures := func(path string) string {
+					return string(run(t, "ffmpeg", "-v", "error", "-i", path, "-map", "0:"+kind+":0", "-f", "streamhash", "-"))
+				}
+				if a, b := pictures(source), pictures(path); a != b {
+					t.Errorf("decoded stream %d: %s was %s", n, b, a)
+				}
+			}
+			if got := lags(t, path, 0, path, 1); got[2] != 0 || got[3] != 0 || got[4] != 0 || got[0] < -48 || got[0] > 48 {
+				t.Errorf("begins %d frames late, lags %v", got[0], got[2:])
+			}
+		})
+	}
+}
+
+// What a levelled track takes over from the one in whose place it is says nothing about the level or the packets that
+// are gone; that of other tracks stays. An index in front stays in front.
+func TestStaleTagsOfAFilm(t *testing.T) {
+	stale := []string{}
+	for _, tag := range []string{"REPLAYGAIN_TRACK_GAIN=-3.00 dB", "BPS=384000", "BPS-eng=384000", "NUMBER_OF_FRAMES=7", "NUMBER_OF_BYTES-eng=9", "_STATISTICS_TAGS=BPS", "COMPOSER=Nobody"} {
+		stale = append(stale, "-metadata:s:a:0", tag, "-metadata:s:a:1", tag)
+	}
+	path, _, _ := deliver(t, makeFilm(t, "a.mkv", append([]string{"-c:a", "aac"}, stale...)...), Wish{InPlace: true})
+	list, _ := streams(t, path)
+	for name, value := range list[1].Tags {
+		upper := strings.ToUpper(name)
+		if strings.HasPrefix(upper, "REPLAYGAIN") || strings.HasPrefix(upper, "BPS") || strings.HasPrefix(upper, "NUMBER") || strings.HasPrefix(upper, "_STAT") {
+			t.Errorf("%s=%s was kept", name, value)
+		}
+	}
+	if list[1].Tags["COMPOSER"] != "Nobody" || list[2].Tags["REPLAYGAIN_TRACK_GAIN"] != "-3.00 dB" || list[2].Tags["BPS-eng"] != "384000" {
+		t.Errorf("tags of the sound tracks: %v, %v", list[1].Tags, list[2].Tags)
+	}
+	for _, flags := range []string{"+faststart", "+empty_moov+frag_keyframe", "+use_metadata_tags"} {
+		source := makeFilm(t, "a.mp4", "-map", "-5", "-c:a", "aac", "-movflags", flags) // no cover: FFmpeg breaks it in fragments
+		path, _, _ := deliver(t, source, Wish{})
+		in, out := load(t, source), load(t, path)
+		if first := bytes.Index(in, []byte("moov")) < bytes.Index(in, []byte("mdat")); first != (bytes.Index(out, []byte("moov")) < bytes.Index(out, []byte("mdat"))) {
+			t.Errorf("%s: the index is in front: it was %v", flags, first)
+		}
+	}
+}
+
+// Levelling a copy again, in which our track is, makes another in its place, and is not misled by it.
+func TestFilmIsLevelledAgain(t *testing.T) {
+	for _, name := range []string{"a.mkv", "a.mp4", "a.mov"} {
+		w := Wish{Title: LevelledTitle("film")}
+		first, _, _ := deliver(t, makeFilm(t, name, "-c:a", "aac"), w)
+		second, spec, _ := deliver(t, first, w)
+		a, before := streams(t, first)
+		b, after := streams(t, second)
+		if len(a) != len(b) || spec.Film.Track != 1 || len(spec.Film.Without) != 1 {
+			t.Fatalf("%s: %d tracks became %d: %+v", name, len(a), len(b), spec.Film)
+		}
+		for i := range a {
+			if a[i].Type != "data" && before[i] != after[i] { // the levelled track too: equal sound makes equal packets
+				t.Errorf("%s: track %d came out otherwise:\n%.300s\n%.300s", name, i, before[i], after[i])
+			}
+		}
+	}
 }

@@ -12,7 +12,9 @@ import (
 )
 
 const (
-	maxFilmInputs = 32     // times that a film is opened; files with more tracks than that are made to hurt
+	maxFilmInputs = 32   // times that a film is opened; what is over that shares the last
+	maxFilmTracks = 1000 // with fonts; files with more are made to hurt
+	maxCovers     = 20
 	startSlack    = 0.0015 // s: Matroska counts in milliseconds
 	leadSlack     = 0.008  // s by which the stamps of Opus and Vorbis come before the sound
 )
@@ -44,6 +46,9 @@ type filmOptions struct {
 // then, would have all the film read past it, and what is read then is written long before the sound that belongs beside
 // it. So each track reads the film for itself, and all that is sparse together once more: it is read ahead, but small.
 func (o *filmOptions) build(p *probe) ([]string, error) {
+	if len(p.Streams) > maxFilmTracks || len(p.pictures()) > maxCovers {
+		return nil, fmt.Errorf("%w: no film has so many tracks or cover pictures", ErrUnsupported)
+	}
 	o.counts = map[string]int{}
 	sound := 0
 	for i := range p.Streams {
@@ -235,7 +240,11 @@ var counted = []string{"encoder", "vendor_id", "duration", "number_of_frames", "
 
 // tagArgs are the options of the container, and those that take off what no longer is true of the whole file.
 func (o *filmOptions) tagArgs(p *probe) (args []string) {
-	apple := false
+	var flags []string
+	if moovFirst(o.src.f) {
+		flags = append(flags, "faststart")
+	}
+	apple := false // the keys of cameras, which the other kind of tags has no room for
 	for name := range p.Format.Tags {
 		apple = apple || strings.HasPrefix(name, "com.")
 		if o.spec.Film.InPlace && tags.Stale(name) && !strings.Contains(name, "=") {
@@ -243,11 +252,14 @@ func (o *filmOptions) tagArgs(p *probe) (args []string) {
 		}
 	}
 	slices.Sort(args)
+	if apple {
+		flags = append(flags, "use_metadata_tags")
+	}
 	switch {
 	case o.matroska():
 		args = append(args, "-default_mode", "passthrough", "-avoid_negative_ts", "disabled")
-	case apple: // the keys of cameras, which the other kind of tags has no room for
-		args = append(args, "-movflags", "use_metadata_tags")
+	case len(flags) > 0:
+		args = append(args, "-movflags", "+"+strings.Join(flags, "+"))
 	}
 	return args
 }

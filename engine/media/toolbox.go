@@ -120,6 +120,10 @@ func (t *Toolbox) OpenTrack(ctx context.Context, path string, track int) (Reader
 		return nil, about(path, err)
 	}
 	r, err := t.open(ctx, f, size, path, track)
+	if err == nil && track > 1 && r.Info().Track != track {
+		r.Close()
+		err = fmt.Errorf("%w: there is but one sound track in it", ErrUnsupported)
+	}
 	if err != nil {
 		f.Close()
 		return nil, about(path, err)
