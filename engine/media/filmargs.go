@@ -46,8 +46,8 @@ type filmOptions struct {
 // then, would have all the film read past it, and what is read then is written long before the sound that belongs beside
 // it. So each track reads the film for itself, and all that is sparse together once more: it is read ahead, but small.
 func (o *filmOptions) build(p *probe) ([]string, error) {
-	if len(p.Streams) > maxFilmTracks || len(p.pictures()) > maxCovers {
-		return nil, fmt.Errorf("%w: no film has so many tracks or cover pictures", ErrUnsupported)
+	if len(p.Streams) > maxFilmTracks {
+		return nil, fmt.Errorf("%w: no film has %d tracks", ErrUnsupported, len(p.Streams))
 	}
 	o.counts = map[string]int{}
 	sound := 0
@@ -94,6 +94,9 @@ func (o *filmOptions) open(offset float64) int {
 		return maxFilmInputs
 	}
 	if offset != 0 {
+		if o.opened == 0 { // the first one's chapters would be moved too
+			o.open(0)
+		}
 		o.inputs = append(o.inputs, "-itsoffset", fmt.Sprintf("%.6f", offset))
 	}
 	if !o.same {
@@ -127,6 +130,8 @@ func (o *filmOptions) copy(s *probeStream, sound int) error {
 	input := 0
 	picture := s.Type == "video" && s.Disposition["attached_pic"] == 1
 	switch {
+	case picture && o.spec.Container == "matroska" && len(o.covers) == maxCovers:
+		return fmt.Errorf("%w: no film has more than %d cover pictures", ErrUnsupported, maxCovers)
 	case picture && o.spec.Container == "matroska":
 		c, err := o.t.cover(o.ctx, o.src, s) // FFmpeg would make it a film of one picture
 		if err == nil {

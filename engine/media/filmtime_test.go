@@ -1,6 +1,8 @@
 package media
 
 import (
+	"fmt"
+	"path/filepath"
 	"strconv"
 	"strings"
 	"testing"
@@ -82,5 +84,31 @@ func TestLevelledSoundIsInSync(t *testing.T) {
 				}
 			})
 		}
+	}
+}
+
+// Pictures and sound that belong together lie together in the file, although one sound track ends early and the only
+// subtitle is at the end: else a player would have to jump, or to hold the film in memory. Positions are ffprobe's.
+func TestFilmStaysInterleaved(t *testing.T) {
+	dir := t.TempDir()
+	srt, source := save(t, "a.srt", []byte("1\n00:00:58,000 --> 00:00:59,000\nLate\n")), filepath.Join(dir, "a.mkv")
+	run(t, "ffmpeg", "-v", "error", "-f", "lavfi", "-i", "testsrc2=s=160x120:r=25:d=60", "-f", "lavfi", "-i", "anoisesrc=d=60:r=48000:a=0.2",
+		"-f", "lavfi", "-i", "anoisesrc=d=5:r=48000:a=0.2", "-i", srt, "-map", "0", "-map", "1", "-map", "2", "-map", "3",
+		"-c:v", "libx264", "-preset", "ultrafast", "-c:a", "ac3", "-c:s", "srt", source)
+	path, _, _ := deliver(t, source, Wish{Title: LevelledTitle("film")})
+	last := map[int]float64{}
+	for line := range strings.Lines(string(run(t, "ffprobe", "-v", "error", "-show_packets", "-show_entries", "packet=stream_index,pts_time", "-of", "csv=p=0", path))) {
+		var index int
+		var at float64
+		if _, err := fmt.Sscanf(line, "%d,%f", &index, &at); err != nil {
+			t.Fatal(err)
+		}
+		last[index] = at
+		if max(last[0], last[1], last[2])-min(last[0], last[1], last[2]) > 1 { // pictures, sound, levelled sound
+			t.Fatalf("at %s pictures and sound are at %v s", strings.TrimSpace(line), last)
+		}
+	}
+	if last[0] < 59 || last[2] < 59 {
+		t.Errorf("the film ends at %v", last)
 	}
 }
