@@ -78,6 +78,6 @@ func (g *groups) of(ctx context.Context, in input) (*level.Shared, error) {
 		g.known[name] = one
 	}
 	g.mu.Unlock()
-	one.once.Do(func() { one.shared, one.err = g.engine.Group(ctx, g.members[name], g.profile.Mono) })
+	one.once.Do(func() { one.shared, one.err = g.engine.Group(ctx, g.members[name], level.OptionsFor(g.profile)) })
 	return &one.shared, one.err
 }

@@ -122,7 +122,7 @@ func (e *engine) Album(_ context.Context, path string) (media.Album, error) {
 }
 
 // Group says that a folder's loudness is minus the number of its recordings.
-func (e *engine) Group(ctx context.Context, paths []string, _ audio.MonoRule) (level.Shared, error) {
+func (e *engine) Group(ctx context.Context, paths []string, _ level.Options) (level.Shared, error) {
 	e.mu.Lock()
 	e.sets = append(e.sets, paths)
 	e.mu.Unlock()

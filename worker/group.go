@@ -161,7 +161,7 @@ func (s *Service) measureTogether(ctx context.Context, w store.Work, g group) (s
 		}
 		sources, first = append(sources, source), append(first, info)
 	}
-	measured, err := s.engine.Group(ctx, sources, w.Profile.Mono)
+	measured, err := s.engine.Group(ctx, sources, level.OptionsFor(w.Profile))
 	if err != nil {
 		return shared, fmt.Errorf("measure the %s %q as one programme: %w", w.Profile.Group, g.name, err)
 	}

@@ -26,7 +26,6 @@ import (
 	"github.com/riverqueue/river"
 	"github.com/riverqueue/river/riverdriver/riversqlite"
 
-	"evenshelf/engine/audio"
 	"evenshelf/engine/level"
 	"evenshelf/engine/media"
 	"evenshelf/store"
@@ -47,7 +46,7 @@ type Engine interface {
 	// Album reads which album a file is from; its title is "" if it names none.
 	Album(ctx context.Context, path string) (media.Album, error)
 	// Group measures recordings as one programme and leaves out those it cannot read. An error may heal.
-	Group(ctx context.Context, paths []string, mono audio.MonoRule) (level.Shared, error)
+	Group(ctx context.Context, paths []string, how level.Options) (level.Shared, error)
 }
 
 // Options are what a Service needs. Store and Engine are required.

@@ -22,7 +22,7 @@ type Engine struct {
 // the decoder complains about is measured as far as it goes and has a serious fault that says so; one
 // that cannot be read at all is an error that names the file and the reason.
 func (e *Engine) Analyse(ctx context.Context, path string, o Options) (*Analysis, error) {
-	src, err := e.Media.Open(ctx, path)
+	src, err := e.open(ctx, path, o)
 	if err != nil {
 		return nil, err
 	}
@@ -35,6 +35,20 @@ func (e *Engine) Analyse(ctx context.Context, path string, o Options) (*Analysis
 		err = fmt.Errorf("%s: %w", path, err)
 	}
 	return a, err
+}
+
+// open opens the sound that is to be measured or levelled.
+func (e *Engine) open(ctx context.Context, path string, o Options) (media.Reader, error) {
+	src, err := e.Media.OpenTrack(ctx, path, o.Track)
+	if err != nil || !o.Stereo {
+		return src, err
+	}
+	mix, err := media.Downmix(src)
+	if err != nil {
+		src.Close()
+		return nil, fmt.Errorf("%s: %w", path, err)
+	}
+	return mix, nil
 }
 
 // analyse measures what is left of src. Decoding and the meter share one goroutine, everything else has another.

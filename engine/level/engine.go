@@ -70,7 +70,7 @@ func (e *Engine) begin(ctx context.Context, source string, t Task) (*turn, Outco
 
 // measured takes the before reading of a task's recording; nil if that cannot be read, the outcome says why.
 func (e *Engine) measured(ctx context.Context, source string, t Task) (*Analysis, Outcome, error) {
-	before, err := e.Analyse(ctx, source, Options{Mono: t.Profile.Mono})
+	before, err := e.Analyse(ctx, source, OptionsFor(t.Profile))
 	if cause := context.Cause(ctx); cause != nil {
 		return nil, Outcome{}, cause
 	}

@@ -32,11 +32,12 @@ type Shared struct {
 
 // Group measures recordings as one programme, one after another. One that cannot be read, or not to its end, is left
 // out: its own turn says why.
-func (e *Engine) Group(ctx context.Context, paths []string, mono audio.MonoRule) (Shared, error) {
+func (e *Engine) Group(ctx context.Context, paths []string, how Options) (Shared, error) {
+	how.LoudnessOnly = true
 	shared := Shared{TruePeak: audio.DBTP(audio.Undefined)}
 	var all []meter.Timeline
 	for _, path := range paths {
-		a, err := e.Analyse(ctx, path, Options{Mono: mono, LoudnessOnly: true})
+		a, err := e.Analyse(ctx, path, how)
 		if cause := context.Cause(ctx); cause != nil {
 			return Shared{}, cause
 		}

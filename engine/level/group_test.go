@@ -25,7 +25,7 @@ func TestGroupSharesOneGain(t *testing.T) {
 	if err := os.WriteFile(cut, whole[:len(whole)/2], 0o644); err != nil {
 		t.Fatal(err)
 	}
-	shared, err := e.Group(ctx, append(paths, filepath.Join(dir, "missing.wav"), cut), p.Mono)
+	shared, err := e.Group(ctx, append(paths, filepath.Join(dir, "missing.wav"), cut), OptionsFor(p))
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -47,7 +47,7 @@ func TestGroupSharesOneGain(t *testing.T) {
 	if together, _ := secondOpinion(t, all); math.Abs(float64(together+23)) > 0.15 { // it gives tenths
 		t.Errorf("the album is at %.1f LUFS", together)
 	}
-	again, err := e.Group(ctx, copies, p.Mono)
+	again, err := e.Group(ctx, copies, OptionsFor(p))
 	if err != nil {
 		t.Fatal(err)
 	}

@@ -24,6 +24,13 @@ const Version = "3"
 type Options struct {
 	Mono         audio.MonoRule // "" is audio.OneChannel
 	LoudnessOnly bool           // loudness and peaks alone: no faults, no condition, no speech
+	Stereo       bool           // more than two channels are measured as their mix to stereo (see media.Downmix)
+	Track        int            // of several sound tracks, from 1; 0 is the one a film plays by itself
+}
+
+// OptionsFor says how a recording is measured that a profile is to level.
+func OptionsFor(p profile.Profile) Options {
+	return Options{Mono: p.Mono, Stereo: p.Delivered.Downmix == profile.StereoMix}
 }
 
 // Analysis is everything known about one file's sound. Its JSON is a reading in the API and the CLI.
@@ -100,6 +107,8 @@ type Plan struct {
 	Ceiling    audio.DBTP            `json:"ceiling_dbtp"` // used while rendering; lossy targets may need it lower than the profile's
 	Limiter    profile.Limiter       `json:"limiter"`
 	Delivered  profile.Delivered     `json:"delivered"`
+
+	mixed bool // what is levelled is a mix to stereo
 }
 
 // Ride is the part of a plan that moves.

@@ -31,7 +31,7 @@ func MakePlan(t Task, a *Analysis) (Plan, error) {
 		return Plan{}, err
 	}
 	p := t.Profile
-	plan := Plan{Ceiling: p.Ceiling, Limiter: p.Limiter, Delivered: p.Delivered}
+	plan := Plan{Ceiling: p.Ceiling, Limiter: p.Limiter, Delivered: p.Delivered, mixed: a.Info.Mixed}
 	plan.Anchor, plan.Anchored = anchorOf(p, a)
 	plan.Aim = p.Target
 	foreseen := plan.Anchored
@@ -77,7 +77,7 @@ func wish(p profile.Profile) media.Wish {
 	d := p.Delivered
 	w := media.Wish{
 		BitRate: 1000 * d.BitRate, Bits: d.Bits, Plain: d.Dither == profile.NoDither, Shaped: d.Dither == profile.Shaped,
-		InPlace: d.Film == profile.ReplaceTrack, Stereo: d.Downmix == profile.StereoMix, Title: fmt.Sprintf("Levelled (%s)", p.Name),
+		InPlace: d.Film == profile.ReplaceTrack, Stereo: d.Downmix == profile.StereoMix, Title: media.LevelledTitle(p.Name),
 	}
 	if d.Format != profile.OwnFormat {
 		w.Format = string(d.Format)

@@ -61,7 +61,7 @@ func (e *Engine) tag(ctx context.Context, source string, t Task, scratch string,
 	case err != nil:
 		return failed(before, Reason(err, source)), nil
 	}
-	after, err := e.Analyse(ctx, scratch, Options{Mono: t.Profile.Mono})
+	after, err := e.Analyse(ctx, scratch, OptionsFor(t.Profile))
 	if cause := context.Cause(ctx); cause != nil {
 		return Outcome{}, cause
 	}

@@ -35,7 +35,14 @@ type turn struct {
 	made     Work      // by the rendering that was delivered
 }
 
-func (j *turn) how() Options { return Options{Mono: j.task.Profile.Mono} }
+// how says how the source is opened and measured; once that was done, by the track that it was done for.
+func (j *turn) how() Options {
+	o := OptionsFor(j.task.Profile)
+	if j.before != nil {
+		o.Track = j.before.Info.Track
+	}
+	return o
+}
 
 // tell puts what was planned, foreseen and done into the outcome, and the verdict on how it came out.
 func (j *turn) tell(o *Outcome, r rendering) {
@@ -90,7 +97,7 @@ func (j *turn) deliver(ctx context.Context, scratch string, o *Outcome) (string,
 
 // render renders into the file scratch and measures what is there then.
 func (j *turn) render(ctx context.Context, plan Plan, spec media.Spec, scratch string) (*Analysis, Work, error) {
-	src, err := j.engine.Media.Open(ctx, j.source)
+	src, err := j.engine.open(ctx, j.source, j.how())
 	if err != nil {
 		return nil, Work{}, err
 	}
@@ -106,7 +113,9 @@ func (j *turn) render(ctx context.Context, plan Plan, spec media.Spec, scratch s
 	if err != nil {
 		return nil, Work{}, err
 	}
-	after, err := j.engine.Analyse(ctx, scratch, j.how())
+	how := j.how()
+	how.Track = spec.Film.Delivered()
+	after, err := j.engine.Analyse(ctx, scratch, how)
 	if err != nil {
 		return nil, Work{}, fmt.Errorf("reading the copy back: %w", err)
 	}
@@ -154,7 +163,7 @@ func (j *turn) closer(a, b *Analysis) bool {
 
 // predict returns how a plan's rendering will come out before it is encoded. It costs a decoding.
 func (j *turn) predict(ctx context.Context, plan Plan) (rendering, error) {
-	src, err := j.engine.Media.Open(ctx, j.source)
+	src, err := j.engine.open(ctx, j.source, j.how())
 	if err != nil {
 		return rendering{}, err
 	}

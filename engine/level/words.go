@@ -12,6 +12,9 @@ import (
 func (plan Plan) words(p profile.Profile) string {
 	var parts []string
 	add := func(format string, args ...any) { parts = append(parts, fmt.Sprintf(format, args...)) }
+	if plan.mixed {
+		add("mix it down to stereo (the figures are of the mix)")
+	}
 	if p.Anchor == profile.Speech && plan.Anchor != profile.Speech {
 		add("nobody speaks, so all of it is brought to the target")
 	}

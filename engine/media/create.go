@@ -43,6 +43,8 @@ func (t *Toolbox) Create(ctx context.Context, path string, spec Spec) (audio.Sin
 	}
 	s := &sink{path: path, f: f, tags: tags, format: spec.Format, stopped: stopped(ctx)}
 	switch {
+	case spec.Film != nil:
+		s.w, err = t.newFilmWriter(ctx, f, spec, tags)
 	case spec.Container == "wav":
 		s.w, err = newWAVWriter(f, spec, tags)
 	case spec.Container == "aiff":
@@ -67,6 +69,9 @@ func (t *Toolbox) Create(ctx context.Context, path string, spec Spec) (audio.Sin
 func (t *Toolbox) checkSpec(s Spec) error {
 	if err := checkFormat(s.Format, -1); err != nil {
 		return err
+	}
+	if s.Film != nil {
+		return t.checkFilm(s)
 	}
 	l, isLossy := lossyCodecs[s.Codec]
 	var ok bool

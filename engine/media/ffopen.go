@@ -7,6 +7,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"strconv"
 
 	"evenshelf/engine/tags/mp4"
 )
@@ -15,11 +16,31 @@ import (
 // readings repeatable on a machine whose FFmpeg has several.
 var decoders = map[string]string{"mp3": "mp3float", "mp2": "mp2float", "mp1": "mp1float"}
 
+func decoderOf(codec string) string { return cmp.Or(decoders[codec], codec) }
+
+// decoderArgs choose the decoder of a codec. Of AC-3 and E-AC-3 the sound is what was coded: not as a player set to a
+// narrow range would have it (dynrng, compr), nor turned down by the loudness of its dialogue that it claims, which
+// FFmpeg does not do unless told to. What is measured is then what levelling works on, and the figures before and after
+// are of one kind: our tracks carry neither. Claimed loudness is not to be trusted anyway (EBU Tech 3343, 6).
+func decoderArgs(codec string) []string {
+	args := []string{"-c:a", decoderOf(codec)}
+	if codec == "ac3" || codec == "eac3" {
+		args = append(args, "-drc_scale", "0")
+	}
+	return args
+}
+
+// onTime keeps the sound of a film beside its pictures: a gap in the time stamps becomes silence, and what lies twice in
+// the same place is left out. Nothing is stretched, and no sample is changed. Stamps that are off by less are rounded
+// ones, as in Matroska, which counts milliseconds; a packet that is missing is longer.
+const onTime = "aresample=async=1:min_hard_comp=0.015"
+
 // finding is what was learnt about a recording before it is decoded.
 type finding struct {
 	info    Info // but for Decoder
 	gapless gapless
 	extent  *mp4.Extent // where the sound of an MP4 is; nil: FFmpeg is to find out
+	most    int64       // frames that there can be; 0: nobody knows
 	wire    string      // FFmpeg's name of the encoding in which the samples come to us
 }
 
@@ -34,7 +55,7 @@ const (
 
 // look finds out what FFmpeg has to be told. FLAC and MPEG audio say it in their first bytes; for the
 // rest ffprobe is asked, which takes as long as starting FFmpeg does.
-func (t *Toolbox) look(ctx context.Context, f *os.File, k kind) (finding, error) {
+func (t *Toolbox) look(ctx context.Context, f *os.File, k kind, track int) (finding, error) {
 	switch k.container {
 	case "flac":
 		m, err := readFLACMeta(f, k.start)
@@ -54,12 +75,16 @@ func (t *Toolbox) look(ctx context.Context, f *os.File, k kind) (finding, error)
 	if err != nil {
 		return finding{}, err
 	}
-	l := finding{}
-	if l.info, err = p.info(k); err != nil {
+	info, s, err := p.info(k, track)
+	if err != nil {
 		return finding{}, err
 	}
-	l.wire = p.sound().wire()
-	l.takeExtent(f, k)
+	l := finding{info: info, wire: s.wire()}
+	if !info.isFilm() {
+		l.takeExtent(f, k)
+	} else if d, err := strconv.ParseFloat(p.Format.Duration, 64); err == nil && d < 1e9 {
+		l.most = int64((2*d + 3600) * float64(info.Format.Rate))
+	}
 	if l.info.Codec == "opus" && l.info.Container == "ogg" && l.info.Frames > 0 {
 		skip, err := opusPreSkip(f)
 		if err != nil {
@@ -70,13 +95,12 @@ func (t *Toolbox) look(ctx context.Context, f *os.File, k kind) (finding, error)
 	return l, nil
 }
 
-func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kind) (*ffReader, error) {
-	l, err := t.look(ctx, f, k)
+func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kind, track int) (*ffReader, error) {
+	l, err := t.look(ctx, f, k, track)
 	if err != nil {
 		return nil, err
 	}
-	decoder := cmp.Or(decoders[l.info.Codec], l.info.Codec)
-	l.info.Decoder = fmt.Sprintf("ffmpeg %s %s", t.Version(), decoder)
+	l.info.Decoder = fmt.Sprintf("ffmpeg %s %s", t.Version(), decoderOf(l.info.Codec))
 
 	// One thread of each kind: many recordings are read side by side. Without flush_packets every packet
 	// would be a write of its own.
@@ -87,21 +111,24 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if k.container == "ogg" { // or it looks for the length, which is known, and takes the last link of a chain for damage
 		args = append(args, "-seekable", "0")
 	}
-	args = append(args, "-c:a", decoder)
+	args = append(args, decoderArgs(l.info.Codec)...)
 	if l.extent != nil {
 		args = append(args, "-ignore_editlist", "1", "-flags2", "+skip_manual")
 	}
 	args = append(args, guarded(k)...)
-	if l.extent != nil && l.extent.Start > 0 {
+	args = append(args, "-vn", "-sn", "-dn", "-map", fmt.Sprintf("0:a:%d", max(0, l.info.Track-1)), "-map_metadata", "-1", "-fflags", "+bitexact", "-flush_packets", "0")
+	switch {
+	case l.info.isFilm():
+		args = append(args, "-af", onTime)
+	case l.extent != nil && l.extent.Start > 0:
 		args = append(args, "-af", fmt.Sprintf("atrim=start_sample=%d", l.extent.Start))
 	}
-	args = append(args, "-vn", "-sn", "-dn", "-map", "0:a:0", "-map_metadata", "-1", "-fflags", "+bitexact", "-flush_packets", "0")
 	args = append(args, "-c:a", l.wire, "-f", "wav", "pipe:1")
 	c, err := startChild(ctx, true, []*os.File{f}, t.ffmpeg, args...)
 	if err != nil {
 		return nil, err
 	}
-	r := &ffReader{f: f, path: path, info: l.info, child: c, stopped: stopped(ctx)}
+	r := &ffReader{f: f, path: path, info: l.info, child: c, stopped: stopped(ctx), most: l.most}
 	if err := r.begin(l.gapless); err != nil {
 		c.kill()
 		return nil, err

@@ -2,6 +2,7 @@ package media
 
 import (
 	"bytes"
+	"cmp"
 	"context"
 	"encoding/json"
 	"errors"
@@ -36,6 +37,7 @@ func guarded(k kind) []string {
 type probe struct {
 	Streams []probeStream `json:"streams"`
 	Format  struct {
+		Start    string            `json:"start_time"`
 		Duration string            `json:"duration"`
 		BitRate  string            `json:"bit_rate"`
 		Tags     map[string]string `json:"tags"`
@@ -46,10 +48,12 @@ type probeStream struct {
 	Index       int               `json:"index"`
 	Type        string            `json:"codec_type"`
 	Codec       string            `json:"codec_name"`
+	CodecTag    string            `json:"codec_tag_string"`
 	SampleFmt   string            `json:"sample_fmt"`
 	SampleRate  string            `json:"sample_rate"`
 	Channels    int               `json:"channels"`
 	TimeBase    string            `json:"time_base"`
+	Start       string            `json:"start_time"`
 	DurationTS  int64             `json:"duration_ts"`
 	BitRate     string            `json:"bit_rate"`
 	RawBits     string            `json:"bits_per_raw_sample"`
@@ -62,10 +66,22 @@ type probeStream struct {
 
 // runProbe asks ffprobe about an open file.
 func (t *Toolbox) runProbe(ctx context.Context, f *os.File, k kind) (*probe, error) {
+	out, err := t.answer(ctx, f, t.ffprobe, append([]string{"-v", "error", "-of", "json", "-show_streams", "-show_format"}, guarded(k)...))
+	if err != nil {
+		return nil, err
+	}
+	var p probe
+	if err := json.Unmarshal(out, &p); err != nil {
+		return nil, fmt.Errorf("FFmpeg's answer is not understood: %w", err)
+	}
+	return &p, nil
+}
+
+// answer runs a tool on an open file and returns what it says, which may be no more than 8 MiB.
+func (t *Toolbox) answer(ctx context.Context, f *os.File, tool string, args []string) ([]byte, error) {
 	ctx, cancel := context.WithTimeoutCause(ctx, stallLimit, fmt.Errorf("FFmpeg took more than %v to look at it", stallLimit))
 	defer cancel()
-	args := append([]string{"-v", "error", "-of", "json", "-show_streams", "-show_format"}, guarded(k)...)
-	c, err := startChild(ctx, true, []*os.File{f}, t.ffprobe, args...)
+	c, err := startChild(ctx, true, []*os.File{f}, tool, args...)
 	if err != nil {
 		return nil, err
 	}
@@ -92,19 +108,24 @@ func (t *Toolbox) runProbe(ctx context.Context, f *os.File, k kind) (*probe, err
 		}
 		return nil, &FormatError{-1, "the file cannot be read: " + err.Error()}
 	}
-	var p probe
-	if err := json.Unmarshal(out.Bytes(), &p); err != nil {
-		return nil, fmt.Errorf("FFmpeg's answer is not understood: %w", err)
+	return out.Bytes(), nil
+}
+
+// sounds returns the sound streams.
+func (p *probe) sounds() []*probeStream {
+	var list []*probeStream
+	for i := range p.Streams {
+		if p.Streams[i].Type == "audio" {
+			list = append(list, &p.Streams[i])
+		}
 	}
-	return &p, nil
+	return list
 }
 
 // sound returns the first sound stream, or nil.
 func (p *probe) sound() *probeStream {
-	for i := range p.Streams {
-		if p.Streams[i].Type == "audio" {
-			return &p.Streams[i]
-		}
+	if all := p.sounds(); len(all) > 0 {
+		return all[0]
 	}
 	return nil
 }
@@ -130,16 +151,22 @@ func (p *probe) video() bool {
 	return false
 }
 
-// info turns the answer into an Info, but for Decoder.
-func (p *probe) info(k kind) (Info, error) {
-	s := p.sound()
-	if s == nil {
-		return Info{}, fmt.Errorf("%w: there is no sound in it", ErrUnsupported)
+// info turns the answer into an Info of one sound track (see choose), but for Decoder.
+func (p *probe) info(k kind, number int) (Info, *probeStream, error) {
+	s, number, err := p.choose(number)
+	if err != nil {
+		return Info{}, nil, err
 	}
-	info := Info{Container: k.container, Codec: s.Codec, Frames: -1, Video: p.video()}
+	info := Info{Container: k.container, Codec: s.Codec, Frames: -1, Video: p.video(), Track: number}
+	sounds := p.sounds()
+	titles := make([]string, len(sounds))
+	for i, s := range sounds {
+		titles[i] = strings.ReplaceAll(s.title(), "\n", " ")
+	}
+	info.Titles = strings.Join(titles, "\n")
 	info.Format = audio.Format{Rate: atoi(s.SampleRate), Layout: audio.UsualLayout(s.Channels)}
 	if err := checkFormat(info.Format, -1); err != nil {
-		return Info{}, err
+		return Info{}, nil, err
 	}
 	switch {
 	case strings.HasPrefix(s.Codec, "pcm_f"):
@@ -154,14 +181,14 @@ func (p *probe) info(k kind) (Info, error) {
 			info.BitDepth = 24
 		}
 	default:
-		if info.BitRate = atoi(s.BitRate); info.BitRate == 0 && !info.Video {
+		if info.BitRate = cmp.Or(atoi(s.BitRate), atoi(s.Tags["BPS"])); info.BitRate == 0 && !info.Video && len(sounds) == 1 {
 			info.BitRate = atoi(p.Format.BitRate)
 		}
 	}
 	if counts[k.container] && s.DurationTS > 0 && s.TimeBase == "1/"+s.SampleRate {
 		info.Frames = s.DurationTS
 	}
-	return info, nil
+	return info, s, nil
 }
 
 // wire says how the decoder's samples are best handed on (see wire16).

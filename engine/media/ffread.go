@@ -22,6 +22,7 @@ type ffReader struct {
 	stream  *blockStream
 	stopped func() error
 	got     int64
+	most    int64 // frames that there can be; 0: nobody knows
 	promise promise
 	err     error
 	damage  string
@@ -119,6 +120,8 @@ func (r *ffReader) ReadBlock(dst audio.Block) (int, error) {
 		r.stream.left, err = math.MaxInt64, nil
 	}
 	switch {
+	case r.most > 0 && r.got > r.most: // gaps in time stamps are filled up
+		err = about(r.path, &FormatError{-1, "its time stamps lead far past its end"})
 	case err == io.EOF || err == io.ErrUnexpectedEOF:
 		err = r.finish()
 	case err != nil:

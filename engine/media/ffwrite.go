@@ -96,6 +96,12 @@ func (t *Toolbox) encoderArgs(spec Spec) []string {
 		}
 		args := []string{"-c:a", "aac", "-b:a", rate(min(bits, 256_000*channels))}
 		return append(args, t.exactLength(spec)...)
+	case "ac3", "eac3":
+		bits, most := max(spec.BitRate, 64_000*channels, 192_000), 640_000
+		if spec.Codec == "eac3" { // a frame of 1536 samples has room for 4096 bytes
+			most = 4000 * 8 * spec.Format.Rate / 1536
+		}
+		return []string{"-c:a", spec.Codec, "-b:a", rate(min(bits, most)), "-dialnorm", "-31"} // played as loud as it is
 	case "alac":
 		return append([]string{"-c:a", "alac"}, t.exactLength(spec)...)
 	default:
@@ -125,7 +131,7 @@ func mp3Rate(spec Spec) []string {
 func (t *Toolbox) exactLength(spec Spec) []string {
 	var major, minor int
 	fmt.Sscanf(t.version(), "%d.%d", &major, &minor)
-	if major < 5 || major == 5 && minor < 1 {
+	if major < 5 || major == 5 && minor < 1 || spec.Container != "mp4" && spec.Container != "mov" {
 		return nil
 	}
 	return []string{"-movie_timescale", strconv.Itoa(spec.Format.Rate)}

@@ -28,7 +28,7 @@ func (t *Toolbox) openFLAC(ctx context.Context, f *os.File, path string, k kind)
 	samples := m.info.NSamples * uint64(m.info.NChannels)
 	short := samples > 0 && samples <= shortFLAC && m.info.BitsPerSample <= 24
 	if !short && t.FFmpeg() != "" {
-		return t.openFFmpeg(ctx, f, path, k)
+		return t.openFFmpeg(ctx, f, path, k, 0)
 	}
 	r, err := newFLACReader(ctx, f, path, k, m)
 	if err != nil {
@@ -38,7 +38,7 @@ func (t *Toolbox) openFLAC(ctx context.Context, f *os.File, path string, k kind)
 		if t.FFmpeg() == "" {
 			return nil, fmt.Errorf("%w: %s", ErrUnsupported, needFFmpeg)
 		}
-		return t.openFFmpeg(ctx, f, path, k)
+		return t.openFFmpeg(ctx, f, path, k, 0)
 	}
 	return r, nil
 }

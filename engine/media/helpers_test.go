@@ -126,7 +126,7 @@ func byFFmpeg(t testing.TB, path string) Reader {
 	if err != nil {
 		t.Fatal(err)
 	}
-	r, err := withFFmpeg(t).openFFmpeg(context.Background(), f, path, k)
+	r, err := withFFmpeg(t).openFFmpeg(context.Background(), f, path, k, 0)
 	if err != nil {
 		t.Fatal(err)
 	}

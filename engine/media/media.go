@@ -33,6 +33,9 @@ type Info struct {
 	BitRate   int    // bit/s of a lossy stream, on average; 0 if not known
 	Variable  bool   // the bit rate of an MP3 varies
 	Quality   int    // LAME's quality of such, 0 (best) to 9; −1 if not stated
+	Track     int    // which of the sound tracks it is, from 1; 0 where there can be but one
+	Titles    string // of all sound tracks, a line each, empty without one; "" where there can be but one
+	Mixed     bool   // Format is that of a mix of more channels to two (see Downmix)
 	Video     bool   // there are moving pictures beside the sound (cover art does not count)
 	Decoder   string // who decodes it, with version, e.g. "ffmpeg 5.1.6 mp3float"
 }
@@ -86,6 +89,7 @@ type Spec struct {
 	Extension string // of the delivered file, with its dot: ".wav"
 	Rate      int    // of a lossy file, Hz, where the codec has not the source's; 0: that of Format
 	Note      string // why this is not the source's own format, or empty
+	Film      *Film  // where in a film it goes; nil: it is delivered by itself
 	TagsFrom  string // path of the file whose tags and chunks are carried over, or empty
 	History   string // what made the file, for the line that a bext chunk's coding history gets; empty: no line
 }

@@ -28,7 +28,7 @@ func LooksLikeMedia(name string) bool {
 	return found
 }
 
-// twins are extensions of one format, whose files keep the one they have.
+// twins are extensions of one format of sound, whose files keep the one they have.
 var twins = [][]string{{".wav", ".wave", ".bwf", ".rf64"}, {".aiff", ".aif", ".aifc"}, {".m4a", ".m4b"}, {".ogg", ".oga"}}
 
 // ExtensionFor is the extension of a delivery made from the file at source: the file's own where it is usual for the
@@ -38,7 +38,8 @@ func (s Spec) ExtensionFor(source string) string {
 	twin := func(list []string) bool {
 		return slices.Contains(list, s.Extension) && slices.Contains(list, strings.ToLower(own))
 	}
-	if strings.EqualFold(own, s.Extension) || slices.ContainsFunc(twins, twin) {
+	film := s.Film != nil && slices.Contains(filmKinds[s.Container].extensions, strings.ToLower(own))
+	if strings.EqualFold(own, s.Extension) || film || slices.ContainsFunc(twins, twin) {
 		return own
 	}
 	return s.Extension

@@ -28,20 +28,16 @@ var lossyCodecs = map[string]lossy{
 // SpecFor says how a recording is best delivered: as wished, or in its own format where that can be written, else as
 // FLAC, else as WAV, and then Note says why. Integer depths are kept, 8 bits and other odd depths grow to
 // the next of 16, 24 and 32: the noise of 8 bits anew, 45 dB under full scale, would be heard in any programme, and
-// whatever plays 8 bits plays 16. Lossy bit rates are kept. Of a film only the sound is delivered.
+// whatever plays 8 bits plays 16. Lossy bit rates are kept. A film is delivered as a whole, with one sound track levelled.
 func (t *Toolbox) SpecFor(info Info, w Wish) Spec {
-	var why []string
-	if info.Video {
-		why = append(why, "only the sound is delivered: films are not written yet")
+	if info.isFilm() && (info.Video || w.Format == "") {
+		return t.filmSpec(info, w)
 	}
 	s, note := t.ownFormat(info)
 	if w.Format != "" && w.Format != formatOf(info) {
 		s, note = t.inFormat(w.Format, info)
 	}
-	if note != "" {
-		why = append(why, note)
-	}
-	s.Format, s.Note, s.Plain, s.Shaped = info.Format, strings.Join(why, "; "), w.Plain, w.Shaped
+	s.Format, s.Note, s.Plain, s.Shaped = info.Format, note, w.Plain, w.Shaped
 	if w.BitRate != 0 {
 		s.BitRate, s.Variable = w.BitRate, false
 	}
@@ -61,7 +57,7 @@ func (t *Toolbox) ownFormat(info Info) (Spec, string) {
 		return wavSpec(info.BitDepth, true), fmt.Sprintf("floating-point sound in %s is delivered as WAV", info.Container)
 	case info.Codec == "flac" && info.Container == "flac":
 		return flacOrWAV(info, "")
-	case info.Codec == "alac" && info.Container == "mp4" && !info.Video:
+	case info.Codec == "alac" && info.Container == "mp4":
 		if why := t.cannot("alac", info.Format, nil, 8); why != "" {
 			return flacOrWAV(info, "ALAC cannot be written: "+why)
 		}
@@ -79,11 +75,9 @@ func (t *Toolbox) ownFormat(info Info) (Spec, string) {
 func (t *Toolbox) lossySpec(info Info) (Spec, string) {
 	codec, note := info.Codec, ""
 	own := lossyCodecs[codec]
-	if info.Video || own.container != info.Container && !(codec == "aac" && info.Container == "aac") {
-		codec = "aac" // a film's sound, or a codec or container of which we write no more than the sound
-		if !info.Video {
-			note = fmt.Sprintf("%s is not written here", info.FormatName())
-		}
+	if own.container != info.Container && !(codec == "aac" && info.Container == "aac") {
+		codec = "aac"
+		note = fmt.Sprintf("%s is not written here", info.FormatName())
 	}
 	l := lossyCodecs[codec]
 	if why := t.cannot(l.encoder, info.Format, l.rates, l.channels); why != "" {

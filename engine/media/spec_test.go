@@ -1,6 +1,7 @@
 package media
 
 import (
+	"errors"
 	"fmt"
 	"path/filepath"
 	"slices"
@@ -18,8 +19,6 @@ func TestSpecFor(t *testing.T) {
 	lossyInfo := func(container, codec string, rate int, f audio.Format) Info {
 		return Info{Container: container, Codec: codec, BitRate: rate, Format: f}
 	}
-	film := lossyInfo("mp4", "aac", 128_000, stereo(48000))
-	film.Video = true
 	oddLayout := audio.Format{Rate: 48000, Layout: audio.Layout{Channels: 4, Mask: 0x107}}
 	many := audio.Format{Rate: 48000, Layout: audio.Layout{Channels: 10}}
 	longAIFF := info("aiff", "pcm_s24be", 24, stereo(48000))
@@ -44,12 +43,10 @@ func TestSpecFor(t *testing.T) {
 		{"MP2", lossyInfo("mp3", "mp2", 192_000, stereo(48000)), "mp4 aac 0 .m4a", "flac flac 16 .flac", "mp2 is not written", "ffmpeg"},
 		{"Vorbis", lossyInfo("ogg", "vorbis", 160_000, stereo(44100)), "ogg vorbis 0 .ogg", "flac flac 16 .flac", "", "ffmpeg"},
 		{"Opus", lossyInfo("ogg", "opus", 96_000, stereo(48000)), "ogg opus 0 .opus", "flac flac 16 .flac", "", "ffmpeg"},
-		{"Opus in WebM", lossyInfo("webm", "opus", 96_000, stereo(48000)), "mp4 aac 0 .m4a", "flac flac 16 .flac", "webm opus is not written", "ffmpeg"},
 		{"AAC", lossyInfo("mp4", "aac", 128_000, stereo(44100)), "mp4 aac 0 .m4a", "flac flac 16 .flac", "", "ffmpeg"},
 		{"AAC 5.1", lossyInfo("mp4", "aac", 384_000, audio.Format{Rate: 48000, Layout: five}), "mp4 aac 0 .m4a", "flac flac 16 .flac", "", "ffmpeg"},
 		{"AAC 4.0", lossyInfo("mp4", "aac", 256_000, oddLayout), "flac flac 16 .flac", "flac flac 16 .flac", "loudspeaker positions", "ffmpeg"},
 		{"bare AAC", lossyInfo("aac", "aac", 128_000, stereo(44100)), "mp4 aac 0 .m4a", "flac flac 16 .flac", "in M4A", "ffmpeg"},
-		{"film", film, "mp4 aac 0 .m4a", "flac flac 16 .flac", "only the sound", "only the sound"},
 		{"ALAC", info("mp4", "alac", 16, stereo(44100)), "mp4 alac 16 .m4a", "flac flac 16 .flac", "", "ffmpeg"},
 		{"AIFF", info("aiff", "pcm_s24be", 24, stereo(44100)), "aiff pcm_s24be 24 .aiff", "aiff pcm_s24be 24 .aiff", "", ""},
 		{"AIFF 8", info("aiff", "pcm_s8", 8, stereo(44100)), "aiff pcm_s16be 16 .aiff", "aiff pcm_s16be 16 .aiff", "", ""},
@@ -81,6 +78,108 @@ func TestSpecFor(t *testing.T) {
 				t.Errorf("%s: what SpecFor says cannot be written: %v", test.name, err)
 			}
 		}
+	}
+}
+
+// A film is delivered in its own container where that can be written, else as Matroska, its levelled track in the source's
+// codec where there is an encoder that takes its rate and channels.
+func TestSpecForFilms(t *testing.T) {
+	surround := audio.Format{Rate: 48000, Layout: audio.Layout{Channels: 6, Mask: 0x60F}}
+	odd := audio.Format{Rate: 48000, Layout: audio.Layout{Channels: 4, Mask: 0x107}}
+	seven := audio.Format{Rate: 48000, Layout: audio.UsualLayout(8)}
+	for _, c := range []struct {
+		container, codec string
+		depth            int
+		format           audio.Format
+		want, note       string
+	}{
+		{"mp4", "aac", 0, stereo(48000), "mp4 aac 0 .mp4", ""},
+		{"mp4", "ac3", 0, surround, "mp4 ac3 0 .mp4", ""},
+		{"mp4", "dts", 0, surround, "mp4 aac 0 .mp4", "dts is not written"},
+		{"mp4", "aac", 0, odd, "mp4 flac 16 .mp4", "loudspeaker positions"},
+		{"mov", "pcm_s16le", 16, stereo(48000), "mov pcm_s16le 16 .mov", ""},
+		{"mov", "pcm_s24be", 24, surround, "mov pcm_s24be 24 .mov", ""},
+		{"mov", "pcm_f32le", 32, stereo(48000), "mov pcm_f32le 32 .mov", ""},
+		{"matroska", "ac3", 0, surround, "matroska ac3 0 .mkv", ""},
+		{"matroska", "ac3", 0, odd, "matroska ac3 0 .mkv", ""},
+		{"matroska", "eac3", 0, seven, "matroska aac 0 .mkv", "no room for 8 channels"},
+		{"matroska", "truehd", 24, surround, "matroska flac 24 .mkv", "truehd is not written"},
+		{"matroska", "dts", 0, surround, "matroska aac 0 .mkv", "dts is not written"},
+		{"webm", "opus", 0, stereo(48000), "webm opus 0 .webm", ""},
+		{"avi", "mp3", 0, stereo(44100), "matroska mp3 0 .mkv", "as Matroska"},
+		{"mpegts", "mp2", 0, stereo(48000), "matroska aac 0 .mkv", "as Matroska"},
+	} {
+		box := withFFmpeg(t)
+		info := Info{Container: c.container, Codec: c.codec, BitDepth: c.depth, Format: c.format, Video: true, Float: strings.HasPrefix(c.codec, "pcm_f")}
+		s := box.SpecFor(info, Wish{Format: "", Title: "x"})
+		s.TagsFrom = "a.film"
+		if got := fmt.Sprint(s.Container, " ", s.Codec, " ", s.BitDepth, " ", s.Extension); got != c.want {
+			t.Errorf("%s %s: %s, want %s", c.container, c.codec, got, c.want)
+		}
+		if c.note == "" && s.Note != "" || !strings.Contains(s.Note, c.note) {
+			t.Errorf("%s %s: note %q, want %q in it", c.container, c.codec, s.Note, c.note)
+		}
+		if err := box.checkSpec(s); err != nil {
+			t.Errorf("%s %s: what SpecFor says cannot be written: %v", c.container, c.codec, err)
+		}
+		if s := withoutFFmpeg().SpecFor(info, Wish{}); withoutFFmpeg().checkSpec(s) == nil {
+			t.Errorf("%s %s: without FFmpeg it can be written as %+v", c.container, c.codec, s)
+		}
+	}
+	for ext, want := range map[string]string{".m4v": ".m4v", ".MP4": ".MP4", ".mkv": ".mp4", "": ".mp4"} {
+		film := Info{Container: "mp4", Codec: "aac", Format: stereo(48000), Video: true}
+		if got := withFFmpeg(t).SpecFor(film, Wish{}).ExtensionFor("a" + ext); got != want {
+			t.Errorf("an MP4 called %q is delivered as %q, want %q", ext, got, want)
+		}
+	}
+	// Matroska without pictures is no film: its sound takes the place of what it was made from, or another format's.
+	sound := Info{Container: "matroska", Codec: "vorbis", Format: stereo(44100), Track: 1}
+	if s := withFFmpeg(t).SpecFor(sound, Wish{}); !s.Film.InPlace || s.ExtensionFor("a.mka") != ".mka" || s.Codec != "vorbis" {
+		t.Errorf("%+v", s)
+	}
+	if s := withFFmpeg(t).SpecFor(sound, Wish{Format: "mp3"}); s.Film != nil || s.Extension != ".mp3" {
+		t.Errorf("%+v", s)
+	}
+	if s := withFFmpeg(t).SpecFor(Info{Container: "mp4", Codec: "aac", Format: stereo(48000), Video: true}, Wish{Format: "mp3"}); s.Film == nil || !strings.Contains(s.Note, "stays a film") {
+		t.Errorf("%+v", s)
+	}
+}
+
+// A film plays the track that is marked, and what was added to it before is neither levelled nor kept beside another.
+func TestWhichTrackIsLevelled(t *testing.T) {
+	track := func(title string, preferred int) probeStream {
+		return probeStream{Type: "audio", Codec: "aac", SampleRate: "48000", Channels: 2, Tags: map[string]string{"title": title}, Disposition: map[string]int{"default": preferred}}
+	}
+	ours := LevelledTitle("film")
+	for _, c := range []struct {
+		streams              []probeStream
+		number               int
+		want, without, after int
+	}{
+		{[]probeStream{track("a", 0), track("b", 1)}, 0, 2, 0, 3},
+		{[]probeStream{track("a", 0), track("b", 0)}, 0, 1, 0, 2},
+		{[]probeStream{track("a", 1), track("b", 1)}, 2, 2, 0, 3},
+		{[]probeStream{track("a", 1), track(ours, 0), track("b", 0)}, 0, 1, 2, 2},
+		{[]probeStream{track(ours, 1), track("a", 0)}, 0, 2, 1, 2},
+		{[]probeStream{track(LevelledTitle("talk"), 1), track("a", 0)}, 0, 2, 0, 3},
+		{[]probeStream{track(ours, 1)}, 0, 1, 0, 2},
+	} {
+		p := &probe{Streams: append(c.streams, probeStream{Type: "video", Codec: "h264"})}
+		info, _, err := p.info(kind{container: "matroska"}, c.number)
+		if err != nil {
+			t.Fatal(err)
+		}
+		film := withFFmpeg(t).SpecFor(info, Wish{Title: ours}).Film
+		without := 0
+		for _, n := range film.Without {
+			without += n
+		}
+		if info.Track != c.want || without != c.without || film.Delivered() != c.after {
+			t.Errorf("%+v: track %d, without %v, delivered as %d", c, info.Track, film.Without, film.Delivered())
+		}
+	}
+	if _, _, err := (&probe{Streams: []probeStream{track("a", 0)}}).info(kind{container: "matroska"}, 2); !errors.Is(err, ErrUnsupported) {
+		t.Errorf("track 2 of one: %v", err)
 	}
 }
 

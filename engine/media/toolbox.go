@@ -106,6 +106,12 @@ func versionIn(s string) string {
 // ErrEmpty, a *FormatError, or what the system said. ctx ends the reading at any time, not only the
 // opening: ReadBlock then returns its cause.
 func (t *Toolbox) Open(ctx context.Context, path string) (Reader, error) {
+	return t.OpenTrack(ctx, path, 0)
+}
+
+// OpenTrack opens one sound track of a file that has several, counted from 1. 0 is the one a film plays by itself:
+// the first that is marked so, else the first.
+func (t *Toolbox) OpenTrack(ctx context.Context, path string, track int) (Reader, error) {
 	if err := stopped(ctx)(); err != nil {
 		return nil, about(path, err)
 	}
@@ -113,7 +119,11 @@ func (t *Toolbox) Open(ctx context.Context, path string) (Reader, error) {
 	if err != nil {
 		return nil, about(path, err)
 	}
-	r, err := t.open(ctx, f, size, path)
+	r, err := t.open(ctx, f, size, path, track)
+	if err == nil && track > 1 && r.Info().Track != track {
+		r.Close()
+		err = fmt.Errorf("%w: there is but one sound track in it", ErrUnsupported)
+	}
 	if err != nil {
 		f.Close()
 		return nil, about(path, err)
@@ -121,7 +131,7 @@ func (t *Toolbox) Open(ctx context.Context, path string) (Reader, error) {
 	return r, nil
 }
 
-func (t *Toolbox) open(ctx context.Context, f *os.File, size int64, path string) (Reader, error) {
+func (t *Toolbox) open(ctx context.Context, f *os.File, size int64, path string, track int) (Reader, error) {
 	k, err := recognise(f, size)
 	if err != nil {
 		return nil, err
@@ -151,7 +161,7 @@ func (t *Toolbox) open(ctx context.Context, f *os.File, size int64, path string)
 	case k.container == "flac":
 		return t.openFLAC(ctx, f, path, k)
 	case t.FFmpeg() != "":
-		return t.openFFmpeg(ctx, f, path, k)
+		return t.openFFmpeg(ctx, f, path, k, track)
 	case k.container == "mp3":
 		return newMP3Reader(ctx, f, path, k)
 	default:

@@ -23,9 +23,9 @@ type Wish struct {
 
 // MetBy reports whether a recording is as wished already, so that it need not be written for that.
 func (w Wish) MetBy(i Info) bool {
-	own := w.Format == "" || w.Format == formatOf(i)
+	own := w.Format == "" || w.Format == formatOf(i) || i.Video // a film stays one
 	word := w.Bits == 0 || i.BitDepth == 0 || !i.Float && i.BitDepth == wordOf(i.Container, w.Bits)
-	return own && word && !(w.Stereo && i.Format.Layout.Channels > 2)
+	return own && word && !i.Mixed && !(w.Stereo && i.Format.Layout.Channels > 2)
 }
 
 // formatOf is the name that a Wish has for the format of a recording, or "".
