@@ -22,6 +22,7 @@ type ffReader struct {
 	stream  *blockStream
 	stopped func() error
 	got     int64
+	longest int64 // seconds
 	promise promise
 	err     error
 	damage  string
@@ -116,6 +117,11 @@ func (r *ffReader) ReadBlock(dst audio.Block) (int, error) {
 	r.got += int64(n)
 	if err == io.EOF && r.more() {
 		r.stream.left, err = math.MaxInt64, nil
+	}
+	if long := tooLong(r.path, r.info.Format, r.got, r.longest); long != nil {
+		r.child.kill()
+		r.err = long
+		return 0, r.err
 	}
 	switch {
 	case err == io.EOF || err == io.ErrUnexpectedEOF:
