@@ -3,7 +3,6 @@ package level
 import (
 	"context"
 	"errors"
-	"io"
 	"os"
 	"path/filepath"
 	"strings"
@@ -25,9 +24,10 @@ func (e *Engine) Level(ctx context.Context, source string, t Task, scratch strin
 	if j == nil || err != nil {
 		return o, err
 	}
+	defer j.sound.close()
 	if j.plan.Untouched {
 		o.Extension = filepath.Ext(source)
-		o.After, err = e.copyUntouched(ctx, source, scratch, j.how())
+		o.After, err = e.copyUntouched(ctx, source, scratch, j.copied())
 	} else {
 		o.Extension, err = j.deliver(ctx, scratch, &o)
 	}
@@ -37,7 +37,9 @@ func (e *Engine) Level(ctx context.Context, source string, t Task, scratch strin
 	if err != nil {
 		return Outcome{}, err
 	}
-	j.tell(&o, j.readBack(o.After))
+	r := j.readBack(o.After)
+	r.copies = o.Renders
+	j.tell(&o, r)
 	return o, nil
 }
 
@@ -48,6 +50,7 @@ func (e *Engine) Foresee(ctx context.Context, source string, t Task) (Outcome, e
 	if j == nil || err != nil {
 		return o, err
 	}
+	defer j.sound.close()
 	if err := j.foresee(ctx); err != nil {
 		return Outcome{}, err
 	}
@@ -56,9 +59,15 @@ func (e *Engine) Foresee(ctx context.Context, source string, t Task) (Outcome, e
 }
 
 // begin measures and plans. There is no turn if the recording cannot be levelled; the outcome says why.
-func (e *Engine) begin(ctx context.Context, source string, t Task) (*turn, Outcome, error) {
+func (e *Engine) begin(ctx context.Context, source string, t Task) (_ *turn, o Outcome, err error) {
 	j := &turn{engine: e, source: source, task: t}
-	before, err := e.Analyse(ctx, source, j.how())
+	defer func() {
+		if err != nil || o.Verdict.State == Failed {
+			j.sound.close()
+		}
+	}()
+	before, sound, err := e.analyse(ctx, source, j.how(), true)
+	j.sound = sound
 	if cause := context.Cause(ctx); cause != nil {
 		return nil, Outcome{}, cause
 	}
@@ -69,8 +78,14 @@ func (e *Engine) begin(ctx context.Context, source string, t Task) (*turn, Outco
 		return nil, failed(nil, Reason(err, source)), nil
 	}
 	j.before = before
-	if j.plan, err = MakePlan(t, before); err != nil {
+	j.spec = e.Media.SpecFor(before.Info, wish(t.Profile))
+	j.spec.TagsFrom = source
+	j.encoder = encoderOf(j.spec)
+	if j.plan, err = MakePlan(t, before, j.encoder); err != nil {
 		return nil, failed(before, err.Error()), nil
+	}
+	if j.plan.Untouched {
+		j.sound.close()
 	}
 	return j, Outcome{Before: before}, nil
 }
@@ -93,12 +108,7 @@ func (e *Engine) copyUntouched(ctx context.Context, source, scratch string, how 
 		return nil, err
 	}
 	defer in.Close()
-	out, err := os.Create(scratch)
-	if err != nil {
-		return nil, err
-	}
-	_, err = io.Copy(out, in)
-	if err = errors.Join(err, out.Sync(), out.Close()); err != nil {
+	if err := copyInto(scratch, in); err != nil {
 		return nil, err
 	}
 	return e.Analyse(ctx, scratch, how)

@@ -24,6 +24,9 @@ const Version = "3"
 type Options struct {
 	Mono         audio.MonoRule // "" is audio.OneChannel
 	LoudnessOnly bool           // loudness and peaks alone: no faults, no condition, no speech
+	// Course is where something is heard and spoken, if that is known: a copy is the source's sound, moment for moment, and
+	// a detector that changes its mind about it would only confuse. nil: it is looked for.
+	Course *speech.Course
 }
 
 // Analysis is everything known about one file's sound. Its JSON is a reading in the API and the CLI.

@@ -44,7 +44,7 @@ func TestMakePlan(t *testing.T) {
 		{"no dynamics: peaks at the ceiling already", "untouched", reading(-24, -1.02), 0, false, true},
 		{"no dynamics: over the ceiling", "untouched", reading(-24, 1), -2, false, false},
 	} {
-		plan, err := MakePlan(Task{Profile: named(t, c.profile)}, c.before)
+		plan, err := MakePlan(Task{Profile: named(t, c.profile)}, c.before, Encoder{})
 		if err != nil {
 			t.Errorf("%s: %v", c.name, err)
 			continue
@@ -64,7 +64,7 @@ func TestNothingToLevelIsSaid(t *testing.T) {
 	silent.SamplePeak = audio.DBFS(math.Inf(-1))
 	short.Duration = 0.3
 	for want, a := range map[string]*Analysis{"silent": silent, "too short": short, "louder than −70": faint} {
-		if _, err := MakePlan(Task{Profile: named(t, "rotation")}, a); err == nil || !strings.Contains(err.Error(), want) {
+		if _, err := MakePlan(Task{Profile: named(t, "rotation")}, a, Encoder{}); err == nil || !strings.Contains(err.Error(), want) {
 			t.Errorf("got %v, want a reason with %q", err, want)
 		}
 	}
