@@ -28,6 +28,7 @@ type decoded struct {
 	room   int64 // bytes that may be written
 	size   int64 // bytes written
 	buf    []byte
+	ints   []int16
 }
 
 // newDecoded returns room for what src is going to deliver; nil where there is none, or decoding costs nothing.
@@ -49,7 +50,7 @@ func newDecoded(src media.Reader) *decoded {
 		d.close()
 		return nil
 	}
-	d.buf = make([]byte, 0, headBytes+audio.BlockFrames*d.frameBytes())
+	d.buf, d.ints = make([]byte, 0, headBytes+audio.BlockFrames*d.frameBytes()), make([]int16, audio.BlockFrames)
 	return d
 }
 
@@ -79,9 +80,11 @@ func (d *decoded) write(b audio.Block) {
 			d.buf = append(d.buf, bytesOf(x)...)
 			continue
 		}
-		for _, v := range x {
-			d.buf = binary.NativeEndian.AppendUint16(d.buf, uint16(int16(v*(1<<15))))
+		whole := d.ints[:len(x)]
+		for i, v := range x {
+			whole[i] = int16(v * (1 << 15))
 		}
+		d.buf = append(d.buf, bytesOf(whole)...)
 	}
 	d.size += int64(len(d.buf))
 	if _, err := d.f.Write(d.buf); err != nil || d.size > d.room {
@@ -98,7 +101,7 @@ func (d *decoded) close() {
 
 // source returns a reader from the start.
 func (d *decoded) source() audio.Source {
-	return &replay{decoded: d, buf: make([]byte, 2*audio.BlockFrames)}
+	return &replay{decoded: d}
 }
 
 // replay reads what has been kept.
@@ -107,7 +110,6 @@ type replay struct {
 	at     int64 // in the file, where the block under way begins
 	frames int   // of that block
 	done   int   // of those, read
-	buf    []byte
 }
 
 func (r *replay) Format() audio.Format { return r.format }
@@ -130,16 +132,17 @@ func (r *replay) ReadBlock(dst audio.Block) (int, error) {
 	n := min(dst.Frames(), r.frames-r.done)
 	for c, x := range dst {
 		at := r.at + headBytes + (int64(c)*int64(r.frames)+int64(r.done))*r.sampleBytes()
-		into := bytesOf(x[:n])
+		x, whole := x[:n], r.ints[:n]
+		into := bytesOf(x)
 		if r.short {
-			into = r.buf[:2*n]
+			into = bytesOf(whole)
 		}
 		if _, err := r.f.ReadAt(into, at); err != nil {
 			return 0, err
 		}
 		if r.short {
-			for i := range n {
-				x[i] = float32(int16(binary.NativeEndian.Uint16(into[2*i:]))) / (1 << 15)
+			for i, v := range whole {
+				x[i] = float32(v) / (1 << 15)
 			}
 		}
 	}
@@ -148,6 +151,6 @@ func (r *replay) ReadBlock(dst audio.Block) (int, error) {
 }
 
 // bytesOf is a view of samples as they lie in memory.
-func bytesOf(x []float32) []byte {
-	return unsafe.Slice((*byte)(unsafe.Pointer(unsafe.SliceData(x))), 4*len(x))
+func bytesOf[T float32 | int16](x []T) []byte {
+	return unsafe.Slice((*byte)(unsafe.Pointer(unsafe.SliceData(x))), len(x)*int(unsafe.Sizeof(*new(T))))
 }
