@@ -18,7 +18,7 @@ import (
 )
 
 // Version of the engine; it changes whenever a reading or a rendering could come out differently.
-const Version = "3"
+const Version = "4"
 
 // Options say how a recording is measured. The zero value measures everything, as the standards have it.
 type Options struct {

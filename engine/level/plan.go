@@ -58,7 +58,7 @@ func MakePlan(t Task, a *Analysis, e Encoder) (Plan, error) {
 		plan.Gain = stored(min(wanted, room+p.Limiter.Most))
 	}
 	if t.Shared != nil {
-		plan.Aim = a.Integrated + audio.LUFS(plan.Gain)
+		plan.Aim = a.Integrated + audio.LUFS(plan.Gain+e.Gain)
 	}
 	fits := a.TruePeak <= p.Ceiling+peakTolerance && plan.Ride == nil && wish(p).MetBy(a.Info)
 	switch {

@@ -143,8 +143,8 @@ func (j *turn) near() audio.LU {
 	return anotherRender
 }
 
-// again returns the plan for another rendering, given how the last one, the so-manieth, came out; ok is false if another
-// would not come closer. Encoders move loudness and peaks, and even a plain gain can miss: it lifts quiet
+// again returns the plan for another rendering, given how the last one came out, after so many; ok is false if another would
+// not come closer. Encoders move loudness and peaks, and even a plain gain can miss: it lifts quiet
 // passages over the −70 LUFS gate.
 func (j *turn) again(plan Plan, after *Analysis, renders int) (next Plan, ok bool) {
 	next = plan
