@@ -34,9 +34,10 @@ evaluation: ## level composed programmes, measure what comes out, refresh engine
 	@scripts/need test
 	$(GO) test ./engine/level -run Evaluation -count 1 -v -args -update
 
-ratios: build ## print what measuring costs, as ratios to FFmpeg's decoding and metering from one run
+ratios: build ## print what measuring and levelling cost, as ratios to FFmpeg from one run
 	@scripts/need test
 	scripts/ratios
+	scripts/level-ratios
 
 fuzz: ## run each fuzz target for a minute (PACKAGES=./engine/media for some of them)
 	@GO=$(GO) scripts/fuzz 60s $(PACKAGES)

@@ -22,19 +22,30 @@ type Engine struct {
 // the decoder complains about is measured as far as it goes and has a serious fault that says so; one
 // that cannot be read at all is an error that names the file and the reason.
 func (e *Engine) Analyse(ctx context.Context, path string, o Options) (*Analysis, error) {
+	a, _, err := e.analyse(ctx, path, o, false)
+	return a, err
+}
+
+// analyse does Analyse's work and, if it is asked to and there is room, keeps the sound it decodes; closing that is the
+// caller's, also after an error.
+func (e *Engine) analyse(ctx context.Context, path string, o Options, keep bool) (*Analysis, *decoded, error) {
 	src, err := e.open(ctx, path, o)
 	if err != nil {
-		return nil, err
+		return nil, nil, err
 	}
 	defer src.Close()
-	a, err := analyse(ctx, src, o)
+	var sound *decoded
+	if keep {
+		sound = newDecoded(src)
+	}
+	a, err := analyse(ctx, src, o, sound)
 	if cause := context.Cause(ctx); cause != nil {
-		return nil, cause
+		return nil, sound, cause
 	}
 	if err != nil && !strings.HasPrefix(err.Error(), path+": ") { // what reading met names it already
 		err = fmt.Errorf("%s: %w", path, err)
 	}
-	return a, err
+	return a, sound, err
 }
 
 // open opens the sound that is to be measured or levelled.
@@ -51,8 +62,9 @@ func (e *Engine) open(ctx context.Context, path string, o Options) (media.Reader
 	return mix, nil
 }
 
-// analyse measures what is left of src. Decoding and the meter share one goroutine, everything else has another.
-func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error) {
+// analyse measures what is left of src, and keeps it in sound. Decoding and the meter share one goroutine, everything
+// else has another.
+func analyse(ctx context.Context, src media.Reader, o Options, sound *decoded) (*Analysis, error) {
 	m, err := meter.New(src.Format(), o.Mono)
 	if err != nil {
 		return nil, err
@@ -61,11 +73,15 @@ func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error
 	var talk *voices
 	var others []func(audio.Block)
 	if !o.LoudnessOnly {
-		fault, talk = faults.New(src.Format()), newVoices(src.Format())
-		others = append(others, func(b audio.Block) { fault.Write(b); talk.write(b) })
+		fault = faults.New(src.Format())
+		others = append(others, fault.Write)
+		if o.Course == nil {
+			talk = newVoices(src.Format())
+			others[0] = func(b audio.Block) { fault.Write(b); talk.write(b) }
+		}
 	}
 	identity := newFingerprint(src.Format())
-	frames, err := audio.Spread(src, func(b audio.Block) { m.Write(b); identity.write(b) }, others...)
+	frames, err := audio.Spread(src, func(b audio.Block) { m.Write(b); identity.write(b); sound.write(b) }, others...)
 	damage, err := damageOf(src, frames, err)
 	if err != nil {
 		return nil, err
@@ -84,7 +100,11 @@ func analyse(ctx context.Context, src media.Reader, o Options) (*Analysis, error
 	var found []faults.Fault
 	found, a.Condition = fault.Finish()
 	a.Faults = append(a.Faults, found...)
-	a.Timeline.Course = talk.finish()
+	if talk != nil {
+		a.Timeline.Course = talk.finish()
+	} else {
+		a.Timeline.Course = fitted(*o.Course, len(a.Timeline.Level))
+	}
 	a.Dialogue = dialogue(a.Timeline, a.Duration)
 	return a, nil
 }

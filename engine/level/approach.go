@@ -16,18 +16,21 @@ const (
 	movedApart = 0.3
 	// mostRides is how often it does.
 	mostRides = 2
+	// unmet is how far under the ceiling true peaks have to be read, dB, to be sure that it has nothing to do.
+	unmet = 0.2
 )
 
 // foresee finds the gain with which the compressor's and the ceiling's work still leave the aim, by rendering
-// into a meter: each try costs a decoding, but no encoding. The secant's slope is bounded, since the loudness
-// of limited sound rises by less than its gain, but never falls.
+// into a meter: each try costs a pass over the sound, but no encoding. While the ceiling has nothing to do a change of
+// gain needs none: what comes out follows it. The secant's slope is bounded, since the loudness of limited sound rises by
+// less than its gain, but never falls.
 func (j *turn) foresee(ctx context.Context) error {
 	if j.plan.Untouched || j.plan.still() && !j.plan.Limit {
 		j.shift()
 		return nil
 	}
 	plan, rides := j.plan, 0
-	slope, lastGain, last := 1.0, plan.Gain, audio.LUFS(audio.Undefined)
+	lastGain, last := plan.Gain, audio.LUFS(audio.Undefined)
 	best := audio.LU(math.Inf(1))
 	for range mostTries {
 		r, err := j.predict(ctx, plan)
@@ -39,7 +42,9 @@ func (j *turn) foresee(ctx context.Context) error {
 			plan.Ride, plan.Wider, last = ride, wider, audio.LUFS(audio.Undefined)
 			continue
 		}
-		off, most := plan.Aim.Sub(r.anchored), j.mostGain(plan, r)
+		most := j.mostGain(plan, r)
+		plan.Gain, r = j.follow(plan, r, most)
+		off := plan.Aim.Sub(r.anchored)
 		tooMuch := plan.Gain > most+closeEnough
 		if !tooMuch && abs(off) < best {
 			best, j.plan, j.foreseen = abs(off), plan, r
@@ -47,11 +52,12 @@ func (j *turn) foresee(ctx context.Context) error {
 		if !tooMuch && (!(abs(off) > closeEnough) || off > 0 && plan.Gain >= most-closeEnough) {
 			break
 		}
+		slope := r.slope()
 		if audio.Defined(last) && plan.Gain != lastGain {
-			slope = min(max(float64(r.anchored-last)/float64(plan.Gain-lastGain), 0.25), 1.5)
+			slope = float64(r.anchored-last) / float64(plan.Gain-lastGain)
 		}
 		lastGain, last = plan.Gain, r.anchored
-		plan.Gain = stored(min(plan.Gain+audio.DB(float64(off)/slope), most))
+		plan.Gain = stored(min(plan.Gain+audio.DB(float64(off)/min(max(slope, 0.25), 1.5)), most))
 	}
 	if math.IsInf(float64(best), 1) {
 		var err error
@@ -64,6 +70,26 @@ func (j *turn) foresee(ctx context.Context) error {
 	j.plan.dropIdle(j.foreseen.work)
 	j.plan.Reason = j.plan.words(j.task.Profile)
 	return nil
+}
+
+// follow moves the gain of a plan towards its aim, as far as the ceiling has nothing to do with it, and returns it with
+// what then comes out.
+func (j *turn) follow(plan Plan, r rendering, most audio.DB) (audio.DB, rendering) {
+	if depth, _ := deepest(r.work.Limited); depth > 0 {
+		return plan.Gain, r
+	}
+	free := min(most, plan.Gain+j.room(plan, r)-unmet)
+	start, gain := r, plan.Gain
+	for range mostTries {
+		off := audio.DB(plan.Aim.Sub(r.anchored))
+		next := stored(min(plan.Gain+off, free))
+		if !(abs(off) > closeEnough) || next == plan.Gain {
+			break
+		}
+		plan.Gain = next
+		r = j.louder(start, plan.Gain-gain)
+	}
+	return plan.Gain, r
 }
 
 // dropIdle takes out of the plan what had nothing to do: without it the same bytes are made sooner.
@@ -80,6 +106,9 @@ func (plan *Plan) dropIdle(w Work) {
 func (j *turn) shift() {
 	most := audio.DB(j.plan.Ceiling - j.before.TruePeak)
 	j.most = most + j.task.Profile.Limiter.Most
+	if j.mayLimit() {
+		j.most += audio.DB(j.task.Profile.Ceiling - j.plan.Ceiling)
+	}
 	for range mostTries {
 		j.foreseen = j.shifted(j.plan.Gain)
 		off := audio.DB(j.plan.Aim.Sub(j.foreseen.anchored))
@@ -93,11 +122,20 @@ func (j *turn) shift() {
 
 // mostGain is the gain with which the ceiling takes off as much as it may, by what it did in a rendering of the plan.
 func (j *turn) mostGain(plan Plan, r rendering) audio.DB {
-	room := audio.DB(plan.Ceiling - r.TruePeak)
+	room := j.room(plan, r)
 	if deepest, _ := deepest(r.work.Limited); deepest > 0 {
 		room = -deepest
 	}
-	return plan.Gain + room + j.task.Profile.Limiter.Most
+	most := plan.Gain + room + j.task.Profile.Limiter.Most
+	if j.mayLimit() { // how much goes by the profile's ceiling: what an encoder needs lower is not held against it
+		most += audio.DB(j.task.Profile.Ceiling - plan.Ceiling)
+	}
+	return most
+}
+
+// room is how far true peaks are under the ceiling in a rendering of the plan, before they are encoded.
+func (j *turn) room(plan Plan, r rendering) audio.DB {
+	return audio.DB(plan.Ceiling-r.TruePeak) + j.encoder.Gain
 }
 
 // rideAgain returns a ride that makes up for what compressor and ceiling did in a rendering, so that they do not

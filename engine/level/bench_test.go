@@ -66,7 +66,7 @@ func BenchmarkStages(b *testing.B) {
 			})
 		}
 		analyse := func() error { _, err := e.Analyse(ctx, source, Options{}); return err }
-		plan := func() error { _, err := MakePlan(task, j.before); return err }
+		plan := func() error { _, err := MakePlan(task, j.before, Encoder{}); return err }
 		render := func() error { _, err := j.predict(ctx, first); return err }
 		stage("analyse", analyse)
 		stage("plan", plan)
@@ -94,7 +94,7 @@ func TestSteadyStateDoesNotAllocate(t *testing.T) {
 	p := named(t, "talk")
 	a := reading(-30, -3)
 	a.Channels, a.Info.Format = 2, audio.Format{Rate: 44100, Layout: audio.Stereo}
-	plan, err := MakePlan(Task{Profile: p}, a)
+	plan, err := MakePlan(Task{Profile: p}, a, Encoder{})
 	if err != nil {
 		t.Fatal(err)
 	}

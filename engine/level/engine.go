@@ -1,9 +1,10 @@
 package level
 
 import (
+	"cmp"
 	"context"
 	"errors"
-	"io"
+	"fmt"
 	"os"
 	"path/filepath"
 	"strings"
@@ -25,9 +26,10 @@ func (e *Engine) Level(ctx context.Context, source string, t Task, scratch strin
 	if j == nil || err != nil {
 		return o, err
 	}
+	defer j.sound.close()
 	if j.plan.Untouched {
 		o.Extension = filepath.Ext(source)
-		o.After, err = e.copyUntouched(ctx, source, scratch, j.how())
+		o.After, err = e.copyUntouched(ctx, source, scratch, j.copied(j.before.Info.Track))
 	} else {
 		o.Extension, err = j.deliver(ctx, scratch, &o)
 	}
@@ -37,7 +39,9 @@ func (e *Engine) Level(ctx context.Context, source string, t Task, scratch strin
 	if err != nil {
 		return Outcome{}, err
 	}
-	j.tell(&o, j.readBack(o.After))
+	r := j.readBack(o.After)
+	r.copies = o.Renders
+	j.tell(&o, r)
 	return o, nil
 }
 
@@ -48,6 +52,7 @@ func (e *Engine) Foresee(ctx context.Context, source string, t Task) (Outcome, e
 	if j == nil || err != nil {
 		return o, err
 	}
+	defer j.sound.close()
 	if err := j.foresee(ctx); err != nil {
 		return Outcome{}, err
 	}
@@ -57,35 +62,49 @@ func (e *Engine) Foresee(ctx context.Context, source string, t Task) (Outcome, e
 
 // begin measures and plans. There is no turn if the recording cannot be levelled; the outcome says why.
 func (e *Engine) begin(ctx context.Context, source string, t Task) (*turn, Outcome, error) {
-	before, o, err := e.measured(ctx, source, t)
+	before, sound, o, err := e.measured(ctx, source, t, true)
 	if before == nil || err != nil {
 		return nil, o, err
 	}
-	j := &turn{engine: e, source: source, task: t, before: before}
-	if j.plan, err = MakePlan(t, before); err != nil {
+	j := &turn{engine: e, source: source, task: t, before: before, sound: sound}
+	j.spec = e.Media.SpecFor(before.Info, wish(t.Profile))
+	j.spec.TagsFrom = cmp.Or(t.TagsFrom, source)
+	j.spec.History = fmt.Sprintf("Evenshelf engine %s; %s", Version, t.Profile.Name)
+	j.encoder = encoderOf(j.spec)
+	if j.plan, err = MakePlan(t, before, j.encoder); err != nil {
+		sound.close()
 		return nil, failed(before, err.Error()), nil
+	}
+	if j.plan.Untouched {
+		sound.close()
 	}
 	return j, o, nil
 }
 
-// measured takes the before reading of a task's recording; nil if that cannot be read, the outcome says why.
-func (e *Engine) measured(ctx context.Context, source string, t Task) (*Analysis, Outcome, error) {
-	before, err := e.Analyse(ctx, source, OptionsFor(t.Profile))
+// measured takes the before reading of a task's recording, and keeps its sound if asked to; no reading if it cannot be
+// read: the outcome says why.
+func (e *Engine) measured(ctx context.Context, source string, t Task, keep bool) (_ *Analysis, sound *decoded, o Outcome, err error) {
+	defer func() {
+		if err != nil || o.Before == nil {
+			sound.close()
+		}
+	}()
+	before, sound, err := e.analyse(ctx, source, OptionsFor(t.Profile), keep)
 	if cause := context.Cause(ctx); cause != nil {
-		return nil, Outcome{}, cause
+		return nil, sound, Outcome{}, cause
 	}
 	if errors.Is(err, media.ErrKilled) {
-		return nil, Outcome{}, err
+		return nil, sound, Outcome{}, err
 	}
 	if err != nil {
-		return nil, failed(nil, Reason(err, source)), nil
+		return nil, sound, failed(nil, Reason(err, source)), nil
 	}
 	if t.Known != nil {
 		if err := t.Known(before); err != nil {
-			return nil, Outcome{}, err
+			return nil, sound, Outcome{}, err
 		}
 	}
-	return before, Outcome{Before: before}, nil
+	return before, sound, Outcome{Before: before}, nil
 }
 
 func failed(before *Analysis, reason string) Outcome {
@@ -106,12 +125,7 @@ func (e *Engine) copyUntouched(ctx context.Context, source, scratch string, how 
 		return nil, err
 	}
 	defer in.Close()
-	out, err := os.Create(scratch)
-	if err != nil {
-		return nil, err
-	}
-	_, err = io.Copy(out, in)
-	if err = errors.Join(err, out.Sync(), out.Close()); err != nil {
+	if err := copyInto(scratch, in); err != nil {
 		return nil, err
 	}
 	return e.Analyse(ctx, scratch, how)

@@ -3,7 +3,6 @@ package level
 import (
 	"encoding/binary"
 	"encoding/hex"
-	"unsafe"
 
 	"github.com/zeebo/xxh3"
 
@@ -38,7 +37,7 @@ func (p *fingerprint) write(b audio.Block) {
 
 // bytes is a view of samples as they are hashed.
 func (p *fingerprint) bytes(x []float32) []byte {
-	view := unsafe.Slice((*byte)(unsafe.Pointer(unsafe.SliceData(x))), 4*len(x))
+	view := bytesOf(x)
 	if littleEndian {
 		return view
 	}

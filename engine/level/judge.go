@@ -113,7 +113,7 @@ func (d *doubts) outcome() {
 		d.add("length", nil, "the copy is %.2f s shorter or longer than the original", drift)
 	}
 	if over := audio.DB(r.TruePeak - p.Ceiling); over > peakTolerance {
-		d.add("ceiling", momentOf(r.timeline.Peak, 1, nil), "its true peak is %.2f dB over the ceiling of %s dBTP", over, audio.Number(float64(p.Ceiling), 1))
+		d.add("ceiling", momentOf(r.timeline.Peak, 1, nil), "its true peak is %.2f dB over the ceiling of %s dBTP%s", over, audio.Number(float64(p.Ceiling), 1), r.encoders())
 	}
 	short := d.plan.Aim.Sub(r.anchored)
 	// Without dynamics the peaks decide how far the gain goes; that is what such a profile asks for.
@@ -125,8 +125,19 @@ func (d *doubts) outcome() {
 	if depth, step := deepest(r.work.Limited); depth > 0 {
 		at, why = new(seconds(step)), fmt.Sprintf("its peaks stand out too far, and may be held by no more than %s dB", audio.Number(float64(p.Limiter.Most), 1))
 	}
+	if r.copies == mostRenders {
+		at, why = nil, "the encoder moves it"
+	}
 	d.add("target", at, "%s LUFS could not be reached, it came out at %s LUFS: %s", audio.Number(float64(d.plan.Aim), 1),
 		audio.Number(float64(r.anchored), 1), why)
+}
+
+// encoders says that a peak is the encoder's doing, where that has been tried often enough; else "".
+func (r rendering) encoders() string {
+	if r.copies < mostRenders {
+		return ""
+	}
+	return fmt.Sprintf(": the encoder raised it in each of %d copies, however much was taken off before", r.copies)
 }
 
 // lifting is about noise that is lifted with the sound, or in the pauses.

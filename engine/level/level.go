@@ -18,7 +18,7 @@ import (
 )
 
 // Version of the engine; it changes whenever a reading or a rendering could come out differently.
-const Version = "3"
+const Version = "4"
 
 // Options say how a recording is measured. The zero value measures everything, as the standards have it.
 type Options struct {
@@ -26,6 +26,9 @@ type Options struct {
 	LoudnessOnly bool           // loudness and peaks alone: no faults, no condition, no speech
 	Stereo       bool           // more than two channels are measured as their mix to stereo (see media.Downmix)
 	Track        int            // of several sound tracks, from 1; 0 is the one a film plays by itself
+	// Course is where something is heard and spoken, if that is known: a copy is the source's sound, moment for moment, and
+	// a detector that changes its mind about it would only confuse. nil: it is looked for.
+	Course *speech.Course
 }
 
 // OptionsFor says how a recording is measured that a profile is to level.

@@ -24,14 +24,14 @@ const (
 	leastGain = 0.05
 )
 
-// MakePlan decides what to do to a recording so that it comes out as its task asks. It is an error,
-// in words for a person, if the recording has no loudness to go by.
-func MakePlan(t Task, a *Analysis) (Plan, error) {
+// MakePlan decides what to do to a recording so that it comes out as its task asks, when it has been encoded. It is an
+// error, in words for a person, if the recording has no loudness to go by.
+func MakePlan(t Task, a *Analysis, e Encoder) (Plan, error) {
 	if err := hasLoudness(a); err != nil {
 		return Plan{}, err
 	}
 	p := t.Profile
-	plan := Plan{Ceiling: p.Ceiling, Limiter: p.Limiter, Delivered: p.Delivered, mixed: a.Info.Mixed}
+	plan := Plan{Ceiling: audio.DBTP(stored(audio.DB(p.Ceiling) - e.Over)), Limiter: p.Limiter, Delivered: p.Delivered, mixed: a.Info.Mixed}
 	plan.Anchor, plan.Anchored = anchorOf(p, a)
 	plan.Aim = p.Target
 	foreseen := plan.Anchored
@@ -50,23 +50,24 @@ func MakePlan(t Task, a *Analysis) (Plan, error) {
 		plan.Aim += audio.LUFS(a.Integrated.Sub(t.Shared.Integrated))
 		peak = t.Shared.TruePeak
 	}
-	room := audio.DB(p.Ceiling - peak)
-	wanted := audio.DB(plan.Aim - foreseen)
+	room := audio.DB(plan.Ceiling - peak)
+	off := audio.LU(plan.Aim - foreseen)
+	wanted := audio.DB(off) - e.Gain
 	plan.Gain = stored(wanted)
 	if plan.still() {
 		plan.Gain = stored(min(wanted, room+p.Limiter.Most))
 	}
 	if t.Shared != nil {
-		plan.Aim = a.Integrated + audio.LUFS(plan.Gain)
+		plan.Aim = a.Integrated + audio.LUFS(plan.Gain+e.Gain)
 	}
 	fits := a.TruePeak <= p.Ceiling+peakTolerance && plan.Ride == nil && wish(p).MetBy(a.Info)
 	switch {
-	case p.Within == profile.Leave && fits && abs(audio.LU(wanted)) <= p.Tolerance:
+	case p.Within == profile.Leave && fits && abs(off) <= p.Tolerance:
 		plan.leave("already within the profile")
-	case p.Within == profile.Leave && fits && plan.still() && abs(plan.Gain) < leastGain:
+	case p.Within == profile.Leave && fits && plan.still() && off > 0 && plan.Gain < leastGain:
 		plan.leave("already as loud as its peaks allow")
 	default:
-		plan.Limit = p.Limiter.Most > 0 && (!plan.still() || plan.Gain > audio.DB(p.Ceiling-a.TruePeak))
+		plan.Limit = p.Limiter.Most > 0 && (!plan.still() || plan.Gain > audio.DB(plan.Ceiling-a.TruePeak))
 		plan.Reason = plan.words(p)
 	}
 	return plan, nil

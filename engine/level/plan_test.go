@@ -44,7 +44,7 @@ func TestMakePlan(t *testing.T) {
 		{"no dynamics: peaks at the ceiling already", "untouched", reading(-24, -1.02), 0, false, true},
 		{"no dynamics: over the ceiling", "untouched", reading(-24, 1), -2, false, false},
 	} {
-		plan, err := MakePlan(Task{Profile: named(t, c.profile)}, c.before)
+		plan, err := MakePlan(Task{Profile: named(t, c.profile)}, c.before, Encoder{})
 		if err != nil {
 			t.Errorf("%s: %v", c.name, err)
 			continue
@@ -59,12 +59,38 @@ func TestMakePlan(t *testing.T) {
 	}
 }
 
+// An encoder's gain is made up for and its overshoot kept clear of, worked by hand; what is within the profile is left
+// alone all the same.
+func TestMakePlanForAnEncoder(t *testing.T) {
+	mp3 := Encoder{Gain: -0.44, Over: 0.5}
+	for _, c := range []struct {
+		name, profile  string
+		before         *Analysis
+		shared         *Shared
+		gain           audio.DB
+		aim            audio.LUFS
+		limit, leaveIt bool
+	}{
+		{"room enough", "rotation", reading(-30, -20), nil, 12.44, -18, false, false},
+		{"peaks come near the ceiling", "rotation", reading(-30, -13.8), nil, 12.44, -18, true, false},
+		{"within", "rotation", reading(-18.2, -1.1), nil, 0, -18, false, true},
+		{"no dynamics: stops short of the ceiling", "untouched", reading(-30, -8), nil, 6.5, -18, false, false},
+		{"no dynamics: near enough to the ceiling already", "untouched", reading(-24, -1.3), nil, 0, -18, false, true},
+		{"a gain shared with others", "untouched", reading(-30, -20), &Shared{Integrated: -28, TruePeak: -15}, 10.44, -20, false, false},
+	} {
+		plan, err := MakePlan(Task{Profile: named(t, c.profile), Shared: c.shared}, c.before, mp3)
+		if err != nil || math.Abs(float64(plan.Gain-c.gain)) > 1e-9 || math.Abs(float64(plan.Aim-c.aim)) > 1e-9 || plan.Limit != c.limit || plan.Untouched != c.leaveIt {
+			t.Errorf("%s: gain %.2f, aim %.2f, limit %v, untouched %v, %v", c.name, plan.Gain, plan.Aim, plan.Limit, plan.Untouched, err)
+		}
+	}
+}
+
 func TestNothingToLevelIsSaid(t *testing.T) {
 	silent, short, faint := reading(audio.LUFS(audio.Undefined), 0), reading(audio.LUFS(audio.Undefined), -3), reading(audio.LUFS(audio.Undefined), -80)
 	silent.SamplePeak = audio.DBFS(math.Inf(-1))
 	short.Duration = 0.3
 	for want, a := range map[string]*Analysis{"silent": silent, "too short": short, "louder than −70": faint} {
-		if _, err := MakePlan(Task{Profile: named(t, "rotation")}, a); err == nil || !strings.Contains(err.Error(), want) {
+		if _, err := MakePlan(Task{Profile: named(t, "rotation")}, a, Encoder{}); err == nil || !strings.Contains(err.Error(), want) {
 			t.Errorf("got %v, want a reason with %q", err, want)
 		}
 	}

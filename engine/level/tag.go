@@ -35,7 +35,7 @@ func (e *Engine) tag(ctx context.Context, source string, t Task, scratch string,
 			os.Remove(scratch)
 		}
 	}()
-	before, o, err := e.measured(ctx, source, t)
+	before, _, o, err := e.measured(ctx, source, t, false)
 	if before == nil || err != nil {
 		return o, err
 	}

@@ -1,7 +1,6 @@
 package level
 
 import (
-	"cmp"
 	"context"
 	"fmt"
 
@@ -11,16 +10,17 @@ import (
 )
 
 const (
-	// mostRenders bounds how often a file is made, with an encoder that changes the level. Going back to the
-	// best of them is one rendering more.
-	mostRenders = 5
-	// anotherRender is the miss, LU, from which on another file is worth while. What a lossy encoder
-	// answers to a smaller change is as likely to be a jump away as a step closer.
-	anotherRender      = 0.03
-	anotherLossyRender = 0.1
+	// mostRenders bounds how often a file is made, with an encoder that changes the level.
+	mostRenders = 3
+	// anotherRender is the miss, LU, from which on another file is worth while. What a lossy encoder answers to a small
+	// change is as likely to be a jump away as a step closer, and costs as much as all the rest: there it is the share
+	// lossyShare of the profile's tolerance.
+	anotherRender = 0.03
+	lossyShare    = 0.5
 	// lowerStill is how much further than a lossy copy's peak is over its ceiling the next one is made, dB: the encoder
-	// will not do the same again.
-	lowerStill = 0.1
+	// will not do the same again. After that it is lowestStill.
+	lowerStill  = 0.1
+	lowestStill = 0.3
 )
 
 // turn is one recording's way through the pipeline, after it has been measured.
@@ -29,6 +29,9 @@ type turn struct {
 	source   string
 	task     Task
 	before   *Analysis
+	sound    *decoded // of the source; nil if it has to be decoded again
+	spec     media.Spec
+	encoder  Encoder
 	plan     Plan
 	foreseen rendering // of the plan
 	most     audio.DB  // the gain with which the ceiling takes off as much as it may
@@ -44,6 +47,13 @@ func (j *turn) how() Options {
 	return o
 }
 
+// copied says how a copy is measured whose levelled sound is in a track.
+func (j *turn) copied(track int) Options {
+	o := j.how()
+	o.Track, o.Course = track, &j.before.Timeline.Course
+	return o
+}
+
 // tell puts what was planned, foreseen and done into the outcome, and the verdict on how it came out.
 func (j *turn) tell(o *Outcome, r rendering) {
 	o.Plan, o.Foreseen = &j.plan, &j.foreseen.Reading
@@ -55,54 +65,63 @@ func (j *turn) tell(o *Outcome, r rendering) {
 	o.Verdict = judge(j.task.Profile, j.before, j.plan, r, o.Treatment)
 }
 
-// deliver renders until no rendering comes closer to the aim, and leaves the one that came closest in
-// scratch: a lossy encoder may answer the smallest change of gain with a jump. It returns the extension.
+// deliver renders until a copy is near enough, and leaves the one that came closest in scratch: a lossy encoder may
+// answer the smallest change of gain with a jump. It returns the extension.
 func (j *turn) deliver(ctx context.Context, scratch string, o *Outcome) (string, error) {
-	spec := j.engine.Media.SpecFor(j.before.Info, wish(j.task.Profile))
-	spec.TagsFrom = cmp.Or(j.task.TagsFrom, j.source)
-	spec.History = fmt.Sprintf("Evenshelf engine %s; %s", Version, j.task.Profile.Name)
 	if err := j.foresee(ctx); err != nil {
 		return "", err
 	}
-	near := audio.LU(anotherRender)
-	if spec.BitDepth == 0 {
-		near = anotherLossyRender
-	}
-	plan, rendered := j.plan, Plan{}
-	for more := true; more && o.Renders < mostRenders; {
-		after, work, err := j.render(ctx, plan, spec, scratch)
+	var best aside
+	defer best.close()
+	plan := j.plan
+	for more := true; more; {
+		after, work, err := j.render(ctx, plan, scratch)
 		if err != nil {
 			return "", err
 		}
 		o.Renders++
-		rendered = plan
-		if o.After == nil || j.closer(after, o.After) {
+		closest := o.After == nil || j.closer(after, o.After)
+		if closest {
 			j.plan, j.made, o.After = plan, work, after
 		}
-		plan, more = j.again(plan, after, near)
-	}
-	if rendered != j.plan {
-		after, work, err := j.render(ctx, j.plan, spec, scratch)
+		plan, more = j.again(plan, after, o.Renders)
+		more = more && o.Renders < mostRenders
+		switch {
+		case closest && more:
+			err = best.put(scratch)
+		case !closest && !more:
+			err = best.restore(scratch)
+		}
 		if err != nil {
 			return "", err
 		}
-		o.Renders++
-		j.made, o.After = work, after
 	}
-	return spec.ExtensionFor(j.source), media.Stamp(scratch, media.Loudness{
+	return j.spec.ExtensionFor(j.source), media.Stamp(scratch, media.Loudness{
 		Integrated: o.After.Integrated, Range: o.After.Range, TruePeak: o.After.TruePeak,
 		MaxMomentary: o.After.MaxMomentary, MaxShort: o.After.MaxShortTerm,
 	})
 }
 
-// render renders into the file scratch and measures what is there then.
-func (j *turn) render(ctx context.Context, plan Plan, spec media.Spec, scratch string) (*Analysis, Work, error) {
+// open returns the source's sound from its start, and what closes it.
+func (j *turn) open(ctx context.Context) (audio.Source, func() error, error) {
+	if j.sound.whole() {
+		return j.sound.source(), func() error { return nil }, nil
+	}
 	src, err := j.engine.open(ctx, j.source, j.how())
+	if err != nil {
+		return nil, nil, err
+	}
+	return src, src.Close, nil
+}
+
+// render renders into the file scratch and measures what is there then.
+func (j *turn) render(ctx context.Context, plan Plan, scratch string) (*Analysis, Work, error) {
+	src, done, err := j.open(ctx)
 	if err != nil {
 		return nil, Work{}, err
 	}
-	defer src.Close()
-	sink, err := j.engine.Media.Create(ctx, scratch, spec)
+	defer done()
+	sink, err := j.engine.Media.Create(ctx, scratch, j.spec)
 	if err != nil {
 		return nil, Work{}, err
 	}
@@ -113,9 +132,7 @@ func (j *turn) render(ctx context.Context, plan Plan, spec media.Spec, scratch s
 	if err != nil {
 		return nil, Work{}, err
 	}
-	how := j.how()
-	how.Track = spec.Film.Delivered()
-	after, err := j.engine.Analyse(ctx, scratch, how)
+	after, err := j.engine.Analyse(ctx, scratch, j.copied(j.spec.Film.Delivered()))
 	if err != nil {
 		return nil, Work{}, fmt.Errorf("reading the copy back: %w", err)
 	}
@@ -127,27 +144,40 @@ func (j *turn) readBack(after *Analysis) rendering {
 	return j.rendering(after.Reading, after.Timeline.Timeline, j.made)
 }
 
-// again returns the plan for another rendering, given how the last one came out; ok is false if another
-// would not come closer. Encoders move loudness and peaks, and even a plain gain can miss: it lifts quiet
-// passages over the −70 LUFS gate.
-func (j *turn) again(plan Plan, after *Analysis, near audio.LU) (next Plan, ok bool) {
-	next = plan
-	mayLimit := j.task.Profile.Limiter.Most > 0
-	if over := audio.DB(after.TruePeak - j.task.Profile.Ceiling); over > peakAim {
-		next.Ceiling = audio.DBTP(stored(audio.DB(plan.Ceiling) - over - lowerStill))
-		next.Limit = mayLimit
+// mayLimit reports whether the profile lets the ceiling take anything off.
+func (j *turn) mayLimit() bool { return j.task.Profile.Limiter.Most > 0 }
+
+// near is how far off the aim a copy may be without being made again.
+func (j *turn) near() audio.LU {
+	if j.spec.BitDepth == 0 {
+		return lossyShare * j.task.Profile.Tolerance
 	}
-	// How much limiting there may be goes by the profile's ceiling: what an encoder needs lower is not held against it.
+	return anotherRender
+}
+
+// again returns the plan for another rendering, given how the last one came out, after so many; ok is false if another would
+// not come closer. Encoders move loudness and peaks, and even a plain gain can miss: it lifts quiet
+// passages over the −70 LUFS gate.
+func (j *turn) again(plan Plan, after *Analysis, renders int) (next Plan, ok bool) {
+	next = plan
+	if over := audio.DB(after.TruePeak - j.task.Profile.Ceiling); over > peakAim {
+		still := audio.DB(lowerStill)
+		if renders > 1 {
+			still = lowestStill
+		}
+		next.Ceiling = audio.DBTP(stored(audio.DB(plan.Ceiling) - over - still))
+		next.Limit = j.mayLimit()
+	}
 	most := j.most
-	if !mayLimit {
-		most += audio.DB(next.Ceiling - j.task.Profile.Ceiling)
+	if !j.mayLimit() {
+		most += audio.DB(next.Ceiling-j.task.Profile.Ceiling) + j.encoder.Over
 	}
 	next.Gain = stored(min(plan.Gain+audio.DB(plan.Aim-j.readBack(after).anchored), most))
 	if plan.still() {
-		next.Limit = mayLimit && next.Gain > audio.DB(next.Ceiling-j.before.TruePeak)
+		next.Limit = j.mayLimit() && next.Gain > audio.DB(next.Ceiling-j.before.TruePeak)
 	}
 	next.Reason = next.words(j.task.Profile)
-	return next, abs(audio.LU(next.Gain-plan.Gain)) > near || next.Ceiling != plan.Ceiling
+	return next, abs(audio.LU(next.Gain-plan.Gain)) > j.near() || next.Ceiling != plan.Ceiling
 }
 
 // closer reports whether one rendering came out closer to the profile than another: first by how far its
@@ -161,13 +191,13 @@ func (j *turn) closer(a, b *Analysis) bool {
 	return off(a) < off(b)
 }
 
-// predict returns how a plan's rendering will come out before it is encoded. It costs a decoding.
+// predict returns how a plan's rendering will come out, by what is known of the encoder. It costs a pass over the sound.
 func (j *turn) predict(ctx context.Context, plan Plan) (rendering, error) {
-	src, err := j.engine.open(ctx, j.source, j.how())
+	src, done, err := j.open(ctx)
 	if err != nil {
 		return rendering{}, err
 	}
-	defer src.Close()
+	defer done()
 	m, err := meter.New(src.Format(), j.task.Profile.Mono)
 	if err != nil {
 		return rendering{}, err
@@ -177,6 +207,7 @@ func (j *turn) predict(ctx context.Context, plan Plan) (rendering, error) {
 		return rendering{}, err
 	}
 	reading, timeline := m.Finish()
+	reading, timeline = louder(reading, timeline, j.encoder.Gain)
 	return j.rendering(reading, timeline, work), nil
 }
 

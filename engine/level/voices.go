@@ -56,3 +56,11 @@ func (v *voices) finish() speech.Course {
 	course.Speech = centre.Speech
 	return course
 }
+
+// fitted is a course with so many steps: the copy an encoder makes may be some frames longer or shorter.
+func fitted(c speech.Course, steps int) speech.Course {
+	f := speech.Course{Active: make([]bool, steps), Speech: make([]float32, steps)}
+	copy(f.Active, c.Active)
+	copy(f.Speech, c.Speech)
+	return f
+}

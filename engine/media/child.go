@@ -18,12 +18,13 @@ const (
 )
 
 // child is a running FFmpeg with one pipe to us: its output when it decodes, its input when it encodes.
-// It dies with the context, on kill, or by itself; wait reaps it in every case.
+// It dies with the context, on kill, at its limits, or by itself; wait reaps it in every case.
 type child struct {
 	cmd     *exec.Cmd
 	pipe    *os.File // our end
 	stderr  headBuffer
 	stall   time.Duration
+	limits  limits
 	stopped func() error
 	hung    error // why it was ended from here
 	waited  sync.Once
@@ -34,6 +35,7 @@ type child struct {
 // pipe is its standard output, else its standard input.
 func startChild(ctx context.Context, decode bool, files []*os.File, tool string, args ...string) (*child, error) {
 	c := &child{cmd: exec.CommandContext(ctx, tool, args...), stall: stallLimit, stopped: stopped(ctx)}
+	c.limits = limits{work: mostWork, writes: !decode}
 	r, w, err := os.Pipe()
 	if err != nil {
 		return nil, err
@@ -58,6 +60,7 @@ func startChild(ctx context.Context, decode bool, files []*os.File, tool string,
 		c.pipe.Close()
 		return nil, fmt.Errorf("FFmpeg cannot be started: %w", err)
 	}
+	c.limits.restrain(c.cmd.Process.Pid)
 	return c, nil
 }
 
@@ -124,15 +127,26 @@ func (c *child) wait() error {
 			c.err = cause
 		case c.hung != nil:
 			c.err = c.hung
+		case overworked(c.cmd.ProcessState, c.limits.work): // which is no reason to try again
+			c.err = fmt.Errorf("FFmpeg was stopped: it took more than %v of a processor", c.limits.work)
 		case killed(c.cmd.ProcessState):
 			c.err = ErrKilled
 		case c.stderr.Len() > 0:
 			c.err = fmt.Errorf("FFmpeg says: %s", c.stderr.text())
+			if strings.Contains(c.stderr.text(), "Cannot allocate memory") {
+				c.err = fmt.Errorf("%w (it may take %d GiB)", c.err, mostMemory>>30)
+			}
 		default:
 			c.err = fmt.Errorf("FFmpeg ended early: %w", err)
 		}
 	})
 	return c.err
+}
+
+// overworked tells whether a child ended at its limit of processor time. FFmpeg catches the signal; the kernel's two
+// clocks, one of which counts ticks, differ by a tenth or so.
+func overworked(state *os.ProcessState, limit time.Duration) bool {
+	return state.UserTime()+state.SystemTime() >= limit-limit/4
 }
 
 // killed tells the signals that come from a person or the system from those of a crash, which the file

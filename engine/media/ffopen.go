@@ -128,7 +128,7 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if err != nil {
 		return nil, err
 	}
-	r := &ffReader{f: f, path: path, info: l.info, child: c, stopped: stopped(ctx), most: l.most}
+	r := &ffReader{f: f, path: path, info: l.info, child: c, longest: longest, stopped: stopped(ctx), most: l.most}
 	if err := r.begin(l.gapless); err != nil {
 		c.kill()
 		return nil, err

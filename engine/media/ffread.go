@@ -23,6 +23,7 @@ type ffReader struct {
 	stopped func() error
 	got     int64
 	most    int64 // frames that there can be; 0: nobody knows
+	longest int64 // seconds
 	promise promise
 	err     error
 	damage  string
@@ -118,6 +119,11 @@ func (r *ffReader) ReadBlock(dst audio.Block) (int, error) {
 	r.got += int64(n)
 	if err == io.EOF && r.more() {
 		r.stream.left, err = math.MaxInt64, nil
+	}
+	if long := tooLong(r.path, r.info.Format, r.got, r.longest); long != nil {
+		r.child.kill()
+		r.err = long
+		return 0, r.err
 	}
 	switch {
 	case r.most > 0 && r.got > r.most: // gaps in time stamps are filled up

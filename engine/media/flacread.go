@@ -139,6 +139,9 @@ func scale(dst []float32, src []int32, by float32) {
 
 // next decodes the next FLAC frame, or hands the recording over.
 func (r *flacReader) next() error {
+	if err := tooLong(r.path, r.info.Format, r.got, longest); err != nil {
+		return err
+	}
 	f, err := guard(r.stream.ParseNext)
 	switch {
 	case err == nil:
