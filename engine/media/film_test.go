@@ -190,6 +190,7 @@ func chaptersOf(t testing.TB, path string) []byte {
 
 // Containers that films are not written in become Matroska: the same pictures and sound, as far apart as they were.
 func TestOtherFilmsBecomeMatroska(t *testing.T) {
+	t.Parallel()
 	dir := t.TempDir()
 	for name, args := range map[string][]string{
 		"a.avi": {"-c:v", "mpeg4", "-bf", "0", "-c:a", "libmp3lame"},
@@ -229,6 +230,7 @@ func TestOtherFilmsBecomeMatroska(t *testing.T) {
 // What a levelled track takes over from the one in whose place it is says nothing about the level or the packets that
 // are gone; that of other tracks stays. An index in front stays in front.
 func TestStaleTagsOfAFilm(t *testing.T) {
+	t.Parallel()
 	stale := []string{}
 	for _, tag := range []string{"REPLAYGAIN_TRACK_GAIN=-3.00 dB", "BPS=384000", "BPS-eng=384000", "NUMBER_OF_FRAMES=7", "NUMBER_OF_BYTES-eng=9", "_STATISTICS_TAGS=BPS", "COMPOSER=Nobody"} {
 		stale = append(stale, "-metadata:s:a:0", tag, "-metadata:s:a:1", tag)
@@ -256,6 +258,7 @@ func TestStaleTagsOfAFilm(t *testing.T) {
 
 // Levelling a copy again, in which our track is, makes another in its place, and is not misled by it.
 func TestFilmIsLevelledAgain(t *testing.T) {
+	t.Parallel()
 	for _, name := range []string{"a.mkv", "a.mp4", "a.mov"} {
 		w := Wish{Title: LevelledTitle("film")}
 		first, _, _ := deliver(t, makeFilm(t, name, "-c:a", "aac"), w)

@@ -3,6 +3,7 @@ package media
 import (
 	"fmt"
 	"path/filepath"
+	"slices"
 	"strconv"
 	"strings"
 	"testing"
@@ -64,6 +65,9 @@ func TestLevelledSoundIsInSync(t *testing.T) {
 		for what, change := range map[string][]string{
 			"as it is": nil, "late, with a gap": {"-af:a:0", "asetpts=PTS+0.7537/TB", "-bsf:a:0", missing},
 		} {
+			if change == nil && !slices.Contains([]string{"aac.mp4", "aac.mkv", "flac.mkv", "opus.webm"}, name) {
+				continue // the harder case is enough
+			}
 			t.Run(name+" "+what, func(t *testing.T) {
 				t.Parallel()
 				source := makeFilm(t, name, append(more, change...)...)
@@ -90,6 +94,7 @@ func TestLevelledSoundIsInSync(t *testing.T) {
 // Pictures and sound that belong together lie together in the file, although one sound track ends early and the only
 // subtitle is at the end: else a player would have to jump, or to hold the film in memory. Positions are ffprobe's.
 func TestFilmStaysInterleaved(t *testing.T) {
+	t.Parallel()
 	dir := t.TempDir()
 	srt, source := save(t, "a.srt", []byte("1\n00:00:58,000 --> 00:00:59,000\nLate\n")), filepath.Join(dir, "a.mkv")
 	run(t, "ffmpeg", "-v", "error", "-f", "lavfi", "-i", "testsrc2=s=160x120:r=25:d=60", "-f", "lavfi", "-i", "anoisesrc=d=60:r=48000:a=0.2",

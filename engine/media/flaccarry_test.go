@@ -150,6 +150,7 @@ var seekPoint = regexp.MustCompile(`point \d+: sample_number=(\d+), stream_offse
 // The seek table points at frames of the new file, about every ten seconds, also where its bit rate jumps. The reference
 // tool lists it; it and FFmpeg seek by it to the right sample.
 func TestFLACSeekTable(t *testing.T) {
+	t.Parallel()
 	const rate, seconds = 8000, 307
 	snd := programme(2, rate*seconds+123, 16, 0.7)
 	for c := range snd {

@@ -68,6 +68,7 @@ func TestMemoryIsLimited(t *testing.T) {
 
 // Silence packs so small that a few megabytes would decode for ever: reading stops where no recording goes on.
 func TestTooLongIsRefused(t *testing.T) {
+	t.Parallel()
 	box, path := withFFmpeg(t), filepath.Join(t.TempDir(), "silence.ogg")
 	run(t, "ffmpeg", "-v", "error", "-f", "lavfi", "-i", "anullsrc=r=8000:cl=mono", "-t", "4000", "-c:a", "libvorbis", path)
 	r := open(t, box, path).(*ffReader)

@@ -196,6 +196,7 @@ func TestMP3WithoutTags(t *testing.T) {
 
 // Tags far larger than usual, several in a row, and both with junk behind them, are carried to the last byte.
 func TestMP3HugeTags(t *testing.T) {
+	t.Parallel()
 	box := withFFmpeg(t)
 	bare := mp3Source(t, 0)
 	snd, info := decode(t, box, bare)
@@ -225,6 +226,7 @@ func soundMD5(t testing.TB, path string) string {
 
 // Gain tags are written anew, whatever there was; every other field and every packet of the sound stays.
 func TestRetagMP3(t *testing.T) {
+	t.Parallel()
 	box := withFFmpeg(t)
 	g := tags.Gains{Track: tags.Loudness{Integrated: -10.11, Peak: -1}, Album: &tags.Loudness{Integrated: -12, Peak: 0.5}}
 	for _, version := range []int{0, 2, 3, 4} {

@@ -23,8 +23,11 @@ var mp3Rates = []int{8000, 11025, 12000, 16000, 22050, 24000, 32000, 44100, 4800
 // Whoever encoded it, an MP3 that says how much of it is sound is read to the frame, and so is one written here: it has
 // the length of what it was made from, and every sound is where it was.
 func TestMP3IsExact(t *testing.T) {
-	for _, rate := range mp3Rates {
+	for i, rate := range mp3Rates {
 		for channels := 1; channels <= 2; channels++ {
+			if channels != 1+i%2 && rate != 44100 {
+				continue
+			}
 			t.Run(fmt.Sprintf("%d Hz, %d", rate, channels), func(t *testing.T) {
 				t.Parallel()
 				const frames = 20_011
@@ -225,6 +228,7 @@ func TestMP3WithoutGaplessFigures(t *testing.T) {
 
 // A copy has the kind of bit rate its source had: constant of the same, or variable of about the same mean.
 func TestMP3KeepsItsKindOfBitRate(t *testing.T) {
+	t.Parallel()
 	box, dir := withFFmpeg(t), t.TempDir()
 	wav := filepath.Join(dir, "a.wav")
 	run(t, "sox", "-n", "-r", "44100", "-c", "2", wav, "synth", "20", "pinknoise", "tremolo", "0.3", "90", "gain", "-12")

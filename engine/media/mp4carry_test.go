@@ -228,6 +228,7 @@ func TestM4BStaysOne(t *testing.T) {
 
 // Boxes that are damaged cost nothing of the sound.
 func TestM4ADamagedTags(t *testing.T) {
+	t.Parallel()
 	snd := programme(1, 20_000, 16, 0.5)
 	for _, kind := range []string{"ilst", "meta", "covr", "chpl", "hdlr", "stsz", "tref"} {
 		source := mp4Source(t, snd, false, "-c:a", "aac")

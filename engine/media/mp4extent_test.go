@@ -54,7 +54,7 @@ func TestM4AEditListInMilliseconds(t *testing.T) {
 	box, dir := withFFmpeg(t), t.TempDir()
 	for _, codec := range []string{"aac", "alac"} {
 		for _, scale := range []string{"1000", "600", "90000"} {
-			for _, n := range []int{1, 2, 1025, 2047, 2049, 3102, 8193, 44_101} {
+			for _, n := range []int{1, 1025, 2047, 44_101} {
 				snd := programme(1, n, 16, 0.5)
 				path := filepath.Join(dir, "a.m4a")
 				run(t, "ffmpeg", "-v", "error", "-y", "-i", writeWAV(t, snd, 44100), "-c:a", codec, "-movie_timescale", scale, path)

@@ -185,6 +185,7 @@ func TestWhichTrackIsLevelled(t *testing.T) {
 
 // A delivery is of the same kind as its source: read, SpecFor, Create, read again.
 func TestSourceToDelivery(t *testing.T) {
+	t.Parallel()
 	box := withFFmpeg(t)
 	for name, file := range formats(t) {
 		source := save(t, "a."+name, file)

@@ -34,6 +34,7 @@ func TestFLACTagsKeepTheirForm(t *testing.T) {
 
 // What people say about a recording is kept where the format's own technical notes have the same name.
 func TestTagsThatSoundTechnical(t *testing.T) {
+	t.Parallel()
 	box, dir := withFFmpeg(t), t.TempDir()
 	snd := programme(2, 30_000, 16, 0.5)
 	wav := writeWAV(t, snd, 48000)
