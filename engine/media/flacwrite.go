@@ -63,7 +63,7 @@ func (w *flacWriter) write(src audio.Block) error {
 	for from, frames := 0, src.Frames(); from < frames; {
 		n := min(frames-from, flacBlock-w.fill)
 		for c := range src {
-			w.quantisers[c].quantise(w.samples[c][w.fill:w.fill+n], src[c][from:from+n])
+			w.quantisers[c].quantise(w.samples[c][w.fill:w.fill+n], src[c][from:from+n], src[0][from:from+n])
 		}
 		from += n
 		if w.fill += n; w.fill == flacBlock {

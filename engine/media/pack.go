@@ -44,7 +44,7 @@ func (p *packer) pack(src [][]float32) []byte {
 			p.ints[c] = make([]int32, frames)
 		}
 		p.ints[c] = p.ints[c][:frames]
-		p.quantisers[c].quantise(p.ints[c], s)
+		p.quantisers[c].quantise(p.ints[c], s, src[0])
 	}
 	packInts(p.out, p.ints, p.bits)
 	return p.out

@@ -16,7 +16,9 @@ import (
 // silence stays silence, and integers that met no gain come out bit for bit.
 //
 // The noise is drawn from one generator, of which each channel has a stretch of 2^40 draws, one a sample whether used
-// or not: the same sound always makes the same bytes, however it is cut into blocks.
+// or not: the same sound always makes the same bytes, however it is cut into blocks. A sample that is the first
+// channel's gets the first channel's noise: one voice in two channels stays one, also to a codec, which would else
+// have to code the difference of two noises.
 //
 // It counts in fixed point, units of 2^−30 LSB: exact, the same on every machine, and without a branch that
 // depends on the sample.
@@ -25,6 +27,7 @@ type quantiser struct {
 	low, high int64   // the least and the greatest integer
 	plain     bool
 	noise     uint64  // the generator's count
+	apart     uint64  // how far that is ahead of the first channel's
 	shaper    *shaper // nil: the noise is white
 }
 
@@ -42,7 +45,7 @@ func newQuantisers(spec Spec) []quantiser {
 		weights = shape(spec.Format.Rate)
 	}
 	for c := range q {
-		q[c] = quantiser{scale: float64(full) * oneLSB, low: -full, high: full - 1, plain: spec.Plain, noise: uint64(c) << 40 * stride}
+		q[c] = quantiser{scale: float64(full) * oneLSB, low: -full, high: full - 1, plain: spec.Plain, noise: uint64(c) << 40 * stride, apart: uint64(c) << 40 * stride}
 		if weights != nil {
 			q[c].shaper = newShaper(weights)
 		}
@@ -50,23 +53,23 @@ func newQuantisers(spec Spec) []quantiser {
 	return q
 }
 
-// quantise writes the integers for src to dst, which must be as long. Values past full scale, after
-// dither, are clipped to it. NaN becomes 0.
-func (q *quantiser) quantise(dst []int32, src []float32) {
+// quantise writes the integers for src to dst, which must be as long, as must first, the first channel at the same
+// time. Values past full scale, after dither, are clipped to it. NaN becomes 0.
+func (q *quantiser) quantise(dst []int32, src, first []float32) {
 	switch {
 	case q.shaper != nil:
-		q.shaped(dst, src)
+		q.shaped(dst, src, first)
 	case q.plain:
 		q.rounded(dst, src)
 	default:
-		q.dithered(dst, src)
+		q.dithered(dst, src, first)
 	}
 }
 
 //go:norace
-func (q *quantiser) dithered(dst []int32, src []float32) {
-	dst = dst[:len(src)]
-	state, scale, low, high := q.noise, q.scale, q.low, q.high
+func (q *quantiser) dithered(dst []int32, src, first []float32) {
+	dst, first = dst[:len(src)], first[:len(src)]
+	state, apart, scale, low, high := q.noise, q.apart, q.scale, q.low, q.high
 	for i, x := range src {
 		state += stride
 		if outside(x) {
@@ -74,7 +77,11 @@ func (q *quantiser) dithered(dst []int32, src []float32) {
 			continue
 		}
 		fixed := int64(float64(x) * scale)
-		noise := triangle(state) + halfLSB
+		draw := state
+		if x == first[i] {
+			draw -= apart
+		}
+		noise := triangle(draw) + halfLSB
 		if fixed&(oneLSB-1) == 0 {
 			noise = 0
 		}

@@ -18,6 +18,7 @@ func quantiseAll(bits, channel int, lsb []float64) (out []int32, errs []float64)
 	return quantiseAs(words(channel+1, bits), channel, lsb)
 }
 
+// quantiseAs does it for a spec. The first channel has another sound, unless it is the one.
 func quantiseAs(spec Spec, channel int, lsb []float64) (out []int32, errs []float64) {
 	q := newQuantisers(spec)[channel]
 	full := math.Ldexp(1, spec.BitDepth-1)
@@ -26,7 +27,11 @@ func quantiseAs(spec Spec, channel int, lsb []float64) (out []int32, errs []floa
 		in[i] = float32(v / full)
 	}
 	out = make([]int32, len(in))
-	q.quantise(out, in)
+	first := in
+	if channel > 0 {
+		first = make([]float32, len(in))
+	}
+	q.quantise(out, in, first)
 	errs = make([]float64, len(in))
 	for i := range in {
 		errs[i] = float64(out[i]) - float64(in[i])*full
@@ -130,11 +135,11 @@ func TestDitherRepeatsHoweverItIsCut(t *testing.T) {
 	in := programme(1, 10_000, 24, 0.8)[0]
 	whole, parts := make([]int32, len(in)), make([]int32, len(in))
 	q := newQuantisers(words(1, 16))[0]
-	q.quantise(whole, in)
+	q.quantise(whole, in, in)
 	q = newQuantisers(words(1, 16))[0]
 	for i := 0; i < len(in); {
 		n := min(1+i%701, len(in)-i)
-		q.quantise(parts[i:i+n], in[i:i+n])
+		q.quantise(parts[i:i+n], in[i:i+n], in[i:i+n])
 		i += n
 	}
 	if !slices.Equal(whole, parts) {
@@ -147,7 +152,33 @@ func BenchmarkQuantise(b *testing.B) {
 	q := newQuantisers(words(1, 16))[0]
 	b.ReportAllocs()
 	for b.Loop() {
-		q.quantise(out, in)
+		q.quantise(out, in, in)
 	}
 	b.ReportMetric(float64(b.N)/b.Elapsed().Seconds(), "x-realtime")
+}
+
+// One voice in two channels stays one: the same in both to the last bit, with flat and with shaped noise. Where the channels
+// differ their noises have nothing to do with each other.
+func TestEqualChannelsStayEqual(t *testing.T) {
+	one := programme(1, 20_000, 24, 0.3)[0]
+	other := programme(2, 20_000, 24, 0.2)[1]
+	for _, shaped := range []bool{false, true} {
+		q := newQuantisers(Spec{BitDepth: 16, Shaped: shaped, Format: stereo(44100)})
+		var out [3][]int32
+		for c, src := range [][]float32{one, one, other} {
+			out[c] = make([]int32, len(one))
+			q[min(c, 1)].quantise(out[c], src, one)
+		}
+		if !slices.Equal(out[0], out[1]) {
+			t.Errorf("shaped %v: equal channels came out different", shaped)
+		}
+		var product, left, right float64
+		for i := range one {
+			a, b := float64(out[0][i])-float64(one[i])*32768, float64(out[2][i])-float64(other[i])*32768
+			product, left, right = product+a*b, left+a*a, right+b*b
+		}
+		if r := product / math.Sqrt(left*right); math.Abs(r) > 0.03 {
+			t.Errorf("shaped %v: the errors of different channels are correlated by %.3f", shaped, r)
+		}
+	}
 }

@@ -32,7 +32,7 @@ func newShaper(weights []int64) *shaper {
 // shaped rounds with shaped noise. Digital silence stays silent at once. Other whole numbers pass unchanged when there
 // is no error left to make good, at the latest after as many as are remembered: a single one among others is a
 // coincidence, and leaving the noise out there would spoil its shape.
-func (q *quantiser) shaped(dst []int32, src []float32) {
+func (q *quantiser) shaped(dst []int32, src, first []float32) {
 	dst = dst[:len(src)]
 	s := q.shaper
 	for i, x := range src {
@@ -53,7 +53,11 @@ func (q *quantiser) shaped(dst []int32, src []float32) {
 		wanted := fixed + s.owed()
 		whole := fixed >> fraction
 		if !exact && fixed != 0 {
-			whole = (wanted + triangle(q.noise) + halfLSB) >> fraction
+			draw := q.noise
+			if x == first[i] {
+				draw -= q.apart
+			}
+			whole = (wanted + triangle(draw) + halfLSB) >> fraction
 		}
 		whole = min(max(whole, q.low), q.high)
 		s.remember(whole<<fraction - wanted)

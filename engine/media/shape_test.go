@@ -204,11 +204,11 @@ func TestShapedRepeatsHoweverItIsCut(t *testing.T) {
 	clear(in[4000:4100])
 	whole, parts := make([]int32, len(in)), make([]int32, len(in))
 	first := newQuantisers(shapedWords(48000, 16))[0]
-	first.quantise(whole, in)
+	first.quantise(whole, in, in)
 	q := newQuantisers(shapedWords(48000, 16))[0]
 	for i := 0; i < len(in); {
 		n := min(1+i%701, len(in)-i)
-		q.quantise(parts[i:i+n], in[i:i+n])
+		q.quantise(parts[i:i+n], in[i:i+n], in[i:i+n])
 		i += n
 	}
 	if !slices.Equal(whole, parts) {
@@ -251,7 +251,7 @@ func BenchmarkQuantiseShaped(b *testing.B) {
 	q := newQuantisers(shapedWords(48000, 16))[0]
 	b.ReportAllocs()
 	for b.Loop() {
-		q.quantise(out, in)
+		q.quantise(out, in, in)
 	}
 	b.ReportMetric(float64(b.N)/b.Elapsed().Seconds(), "x-realtime")
 }
