@@ -108,7 +108,7 @@ func saysExactly(carried map[string]string, g tags.Gains, info media.Info) bool 
 	}
 	gain := 0
 	for name := range carried {
-		if tags.IsGain(name) || strings.HasPrefix(name, "replaygain_") { // the second also has the peaks
+		if tags.IsGain(name) {
 			gain++
 		}
 	}

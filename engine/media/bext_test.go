@@ -4,6 +4,7 @@ import (
 	"encoding/json"
 	"math"
 	"os"
+	"path/filepath"
 	"strings"
 	"testing"
 
@@ -140,5 +141,30 @@ func TestStampLeavesOthersAlone(t *testing.T) {
 	}
 	if _, err := os.Stat(t.TempDir() + "/none.wav"); err == nil {
 		t.Error("a file was made")
+	}
+}
+
+// The gains in the ID3 tag of a WAV and of an AIFF go, what else it says stays: mutagen reads both before and after.
+func TestID3InChunksLosesItsGains(t *testing.T) {
+	box, dir := withFFmpeg(t), t.TempDir()
+	wav := writeWAV(t, programme(2, 4000, 16, 0.5), 44100)
+	for name, kind := range map[string]string{"a.wav": "wave.WAVE", "a.aiff": "aiff.AIFF"} {
+		source, path := filepath.Join(dir, name), filepath.Join(dir, "copy-"+name)
+		run(t, "ffmpeg", "-v", "error", "-i", wav, source)
+		run(t, "/usr/bin/python3", "-c", `
+import sys, mutagen.wave, mutagen.aiff, mutagen.id3 as i
+a = mutagen.`+kind+`(sys.argv[1]); a.add_tags()
+for f in [i.TIT2(3, ['T']), i.TXXX(3, 'replaygain_track_gain', ['-3.00 dB']), i.RVA2('x', 1, -3, 1), i.TXXX(3, 'mood', ['calm'])]: a.tags.add(f)
+a.save()`, source)
+		level(t, box, source, path)
+		said := func(path string) string {
+			return string(run(t, "/usr/bin/python3", "-c", "import sys, mutagen.wave, mutagen.aiff; print(sorted(mutagen."+kind+"(sys.argv[1]).tags.keys()))", path))
+		}
+		if got := said(source); !strings.Contains(got, "RVA2") || !strings.Contains(got, "replaygain") {
+			t.Fatalf("%s before: %s", name, got)
+		}
+		if got := said(path); got != "['TIT2', 'TXXX:mood']\n" {
+			t.Errorf("%s after: %s", name, got)
+		}
 	}
 }

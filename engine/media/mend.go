@@ -5,6 +5,8 @@ import (
 	"encoding/binary"
 	"io"
 	"slices"
+
+	"evenshelf/engine/tags/id3"
 )
 
 // Chunks are carried over byte for byte, in their order and on their side of the samples. Two kinds are not: those that
@@ -22,7 +24,8 @@ var mends = map[string]mend{
 	"cart": mendCart,
 	"axml": mendXML, // an audio definition model (ITU-R BS.2076)
 	"iXML": mendXML,
-	// "id3 " (WAV) and "ID3 " (AIFF) get the mend of package tags/id3 here: their gain frames go stale.
+	"id3 ": mendID3, // in WAV, also in capitals
+	"ID3 ": mendID3, // in AIFF
 }
 
 // mostMended is the largest chunk that is read whole to be mended; a larger one is carried as it is.
@@ -55,6 +58,14 @@ func (t *tagSource) body(c chunk, spec Spec) (io.Reader, int64, error) {
 	}
 	b = repair(b, t, spec)
 	return bytes.NewReader(b), int64(len(b)), nil
+}
+
+// mendID3 takes the gains out of an ID3v2 tag.
+func mendID3(b []byte, _ *tagSource, _ Spec) []byte {
+	if front, _ := id3.Levelled(b, nil); len(front) > 0 {
+		return front
+	}
+	return b
 }
 
 // mendCart keeps the level reference of a cart chunk (AES46) true: it is the sample value of 0 dB. The one in use is

@@ -9,6 +9,7 @@ package tags
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 
 	"evenshelf/engine/audio"
@@ -65,15 +66,25 @@ func q78(l Loudness) string {
 	return fmt.Sprint(int(min(max(q, math.MinInt16), math.MaxInt16)))
 }
 
-// Stale reports whether a tag of this name states a level or a length that a levelled copy no longer has: anything that
-// speaks of a gain, Opus's R128_ tags, and the "…NORM" and "…SMPB" notes of MP4 players.
+// Stale reports whether a tag of this name states a level or a length that a levelled copy no longer has: a gain of any
+// kind ("FILE_GAIN_UNDO", but not "AGAIN"), or what players note of either.
 func Stale(name string) bool {
-	name = strings.ToUpper(name)
-	return IsGain(name) || strings.HasSuffix(name, "NORM") || strings.HasSuffix(name, "SMPB")
+	return IsGain(name) || PlayersNote(name) || slices.Contains(words(name), "GAIN")
 }
 
 // IsGain reports whether a tag of this name is one of the open gain tags, which writing new ones replaces.
 func IsGain(name string) bool {
+	w := words(name)
+	return slices.Contains(w, "REPLAYGAIN") || strings.HasPrefix(strings.ToUpper(name), "R128_")
+}
+
+// PlayersNote reports whether a tag of this name is a player's note of a level ("…NORM") or of a length ("…SMPB").
+func PlayersNote(name string) bool {
 	name = strings.ToUpper(name)
-	return strings.Contains(name, "GAIN") || strings.HasPrefix(name, "R128_")
+	return strings.HasSuffix(name, "NORM") || strings.HasSuffix(name, "SMPB")
+}
+
+// words are the runs of letters in a name, in capitals.
+func words(name string) []string {
+	return strings.FieldsFunc(strings.ToUpper(name), func(r rune) bool { return r < 'A' || r > 'Z' })
 }

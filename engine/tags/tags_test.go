@@ -28,7 +28,8 @@ func TestGainTags(t *testing.T) {
 
 func TestStale(t *testing.T) {
 	for name, want := range map[string][2]bool{
-		"replaygain_track_gain": {true, true}, "R128_ALBUM_GAIN": {true, true}, "file_gain_undo": {true, true},
+		"replaygain_track_gain": {true, true}, "R128_ALBUM_GAIN": {true, true}, "file_gain_undo": {true, false}, "REPLAYGAIN_REFERENCE_LOUDNESS": {true, true},
+		"AGAIN": {false, false}, "Bargains": {false, false}, "X3Gain": {true, false},
 		"abcdNORM": {true, false}, "abcdSMPB": {true, false}, "TITLE": {false, false}, "normal": {false, false},
 	} {
 		if got := [2]bool{Stale(name), IsGain(name)}; got != want {

@@ -17,7 +17,7 @@ func block(head string, body string) string {
 	return head + string([]byte{0, byte(len(body) >> 8), byte(len(body))}) + body
 }
 
-const comments = "\x01\x00\x00\x00v\x02\x00\x00\x00\x08\x00\x00\x00GAIN=1dB\x03\x00\x00\x00a=b"
+const comments = "\x01\x00\x00\x00v\x02\x00\x00\x00\x0f\x00\x00\x00REPLAYGAIN_X=1B\x03\x00\x00\x00a=b"
 
 var gains = tags.Gains{Track: tags.Loudness{Integrated: -20, Peak: 0}}
 

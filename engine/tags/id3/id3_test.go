@@ -89,8 +89,8 @@ func TestLevelledFrames(t *testing.T) {
 		{2, "TXX", "\x00replaygain_track_gain\x00-7 dB", 0, false},
 		{3, "TXXX", "\x00Catalogue\x00a gain", 0, true},
 		{3, "TXXX", "", 0, true},
-		{3, "COMM", "\x00engiTunNORM\x00 0000", 0, false},
-		{2, "COM", "\x00engiTunSMPB\x00 0000", 0, false},
+		{3, "COMM", "\x00engplayNORM\x00 0000", 0, false},
+		{2, "COM", "\x00engplaySMPB\x00 0000", 0, false},
 		{3, "COMM", "\x00engListen again\x00why", 0, true},
 		{3, "COMM", "\x00eng\x00SMPB", 0, true},
 		{4, "TXXX", "\x07\x00replaygain_track_gain\x00-7 dB", 0x40, false},                   // grouped
@@ -157,7 +157,7 @@ func TestRenderedAnew(t *testing.T) {
 		"2.2 compressed":                    {made(2, 0x40, gone(4)), made(2, 0x40, gone(4))},
 		"nothing that has to go":            {made(3, 0xC0, ext3, title(3), []byte("rubbish")), made(3, 0xC0, ext3, title(3), []byte("rubbish"))},
 		"an APEv2 tag in front":             {madeAPE(true, "Title", "T", "Replaygain_Track_Gain", "x"), madeAPE(true, "Title", "T")},
-		"an APEv2 tag with nothing to keep": {madeAPE(true, "MP3GAIN_UNDO", "x"), nil},
+		"an APEv2 tag with nothing to keep": {madeAPE(true, "FILE_GAIN_UNDO", "x"), nil},
 		"longer than the file":              {made(3, 0, title(3))[:15], nil},
 	} {
 		if got, _ := Levelled(test.source, nil); !bytes.Equal(got, test.want) {

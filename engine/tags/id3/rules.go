@@ -30,8 +30,8 @@ var levelled = rule{
 		"TSSE",
 	},
 	text:    tags.Stale,
-	comment: func(name string) bool { return tags.Stale(name) && !tags.IsGain(name) }, // "iTunNORM", not "Listen again"
-	private: []string{"PeakValue", "AverageLevel"},                                    // levels, of a widespread player
+	comment: tags.PlayersNote,
+	private: []string{"PeakValue", "AverageLevel"}, // levels, of a widespread player
 }
 
 // retagged is for the same sound with other gain tags. RVAD is no gain tag but how loud somebody wants it.
