@@ -32,7 +32,7 @@ for f in [
     TCON(encoding=0, text="Speech"), TLEN(encoding=0, text="1234"), TSSE(encoding=0, text="An encoder"), TENC(encoding=0, text="A station"),
     TXXX(encoding=1, desc="Catalogue", text="A 1"), TXXX(encoding=0, desc="replaygain_track_gain", text="-7.00 dB"),
     TXXX(encoding=1, desc="REPLAYGAIN_ALBUM_PEAK", text="1.0"),
-    COMM(encoding=1, lang="eng", desc="", text="a\nb"), COMM(encoding=0, lang="eng", desc="playNORM", text=" 00000001"),
+    COMM(encoding=1, lang="eng", desc="", text="a\nb"), COMM(encoding=0, lang="eng", desc="iTunNORM", text=" 00000001"),
     COMM(encoding=0, lang="deu", desc="Listen again", text="c"),
     APIC(encoding=0, mime="image/jpeg", type=3, desc="front", data=picture), APIC(encoding=1, mime="image/jpeg", type=4, desc="bäck", data=picture + b"\xff\x00\xff"),
     USLT(encoding=1, lang="eng", desc="d", text="words"), SYLT(encoding=0, lang="eng", format=2, type=1, desc="s", text=[("la", 100), ("lo", 200)]),
@@ -100,7 +100,7 @@ func mp3Source(t testing.TB, version int) string {
 	case 2: // mutagen writes no 2.2: frames of three letters and three bytes of size (ID3v2.2.0, 3.2)
 		var body []byte
 		for _, f := range [][2]string{
-			{"TT2", "\x01\xFF\xFEL\x00\xE4\x00"}, {"TXX", "\x00replaygain_track_gain\x00-7 dB"}, {"COM", "\x00engplayNORM\x00 0001"},
+			{"TT2", "\x01\xFF\xFEL\x00\xE4\x00"}, {"TXX", "\x00replaygain_track_gain\x00-7 dB"}, {"COM", "\x00engiTunNORM\x00 0001"},
 			{"PIC", "\x00JPG\x03front\x00" + string(load(t, cover(t)))}, {"ULT", "\x00engd\x00words"}, {"UFI", "http://x\x00id"}, {"TSS", "\x00An encoder"},
 		} {
 			n := len(f[1])
@@ -118,9 +118,9 @@ func mp3Source(t testing.TB, version int) string {
 // gone are the frames and items that a levelled copy of a source must not have.
 var gone = map[int][]string{
 	0: {},
-	2: {"TXXX:replaygain_track_gain", "COMM:playNORM:eng", "TSSE"}, // mutagen gives frames of 2.2 their later names
-	3: {"TXXX:replaygain_track_gain", "TXXX:REPLAYGAIN_ALBUM_PEAK", "COMM:playNORM:eng", "TSSE", "PRIV:PeakValue:1234", "APE FILE_GAIN_UNDO", "APE replaygain_track_gain"},
-	4: {"TXXX:replaygain_track_gain", "TXXX:REPLAYGAIN_ALBUM_PEAK", "COMM:playNORM:eng", "TSSE", "PRIV:PeakValue:1234", "APE FILE_GAIN_UNDO", "APE replaygain_track_gain", "RVA2:track"},
+	2: {"TXXX:replaygain_track_gain", "COMM:iTunNORM:eng", "TSSE"}, // mutagen gives frames of 2.2 their later names
+	3: {"TXXX:replaygain_track_gain", "TXXX:REPLAYGAIN_ALBUM_PEAK", "COMM:iTunNORM:eng", "TSSE", "PRIV:PeakValue:1234", "APE FILE_GAIN_UNDO", "APE replaygain_track_gain"},
+	4: {"TXXX:replaygain_track_gain", "TXXX:REPLAYGAIN_ALBUM_PEAK", "COMM:iTunNORM:eng", "TSSE", "PRIV:PeakValue:1234", "APE FILE_GAIN_UNDO", "APE replaygain_track_gain", "RVA2:track"},
 }
 
 // A levelled MP3 has every field of its source, by the word of mutagen and ffprobe, but for those that have to go; its sound
