@@ -61,7 +61,7 @@ func fuzzPCM(t *testing.T, name string, file []byte) {
 		return
 	}
 	defer tags.close()
-	before, after := tags.chunks(tags.kind.container)
+	before, after := tags.chunks(Spec{Container: tags.kind.container})
 	for _, c := range append(before, after...) {
 		if c.start < 12 || c.len < 0 || c.start+c.len > int64(len(file)) {
 			t.Fatalf("chunk %+v in %d bytes", c, len(file))

@@ -27,7 +27,7 @@ func ReadSheet(head, tail []byte) (s tags.Sheet) {
 		}
 	}
 	for _, b := range whole {
-		if t, ok := parse(b); ok && isID3(b) {
+		if t, ok := parse(b); ok && isID3(b) && len(s.Fields) < maxFrames {
 			s.Merge(t.sheet())
 		}
 	}
@@ -42,7 +42,7 @@ func ReadSheet(head, tail []byte) (s tags.Sheet) {
 // What of a tag is read for a sheet: whoever has more has it from a machine gone mad.
 const (
 	maxFrames = 5000
-	maxValues = 500 // of one field
+	maxValues = 200 // of one field
 )
 
 // sheet returns what one ID3v2 tag says.
@@ -143,17 +143,23 @@ func (t *tag) texts(s *tags.Sheet, id string, values []string) {
 	addAll(s, name, values)
 }
 
-// addAll adds values to a field, which may be numbers with what they are out of: "3/12".
+// addAll adds values to a field, but for those it has, as some frames repeat others. They may be numbers with what they are
+// out of: "3/12".
 func addAll(s *tags.Sheet, name string, values []string) {
+	has := s.Values(name)
+	var fresh []string
 	for _, v := range values {
-		has := s.Values(name)
-		switch total := totals[name]; {
-		case slices.Contains(has, v) || len(has) >= maxValues: // some frames repeat others
-		case total != "":
-			s.AddNumber(name, total, strings.TrimSpace(v))
-		default:
-			s.Add(name, v)
+		if len(has)+len(fresh) < maxValues && !slices.Contains(has, v) && !slices.Contains(fresh, v) {
+			fresh = append(fresh, v)
 		}
+	}
+	total := totals[name]
+	if total == "" {
+		s.Add(name, fresh...)
+		return
+	}
+	for _, v := range fresh {
+		s.AddNumber(name, total, strings.TrimSpace(v))
 	}
 }
 
