@@ -36,6 +36,7 @@ const mostMended = 64 << 20
 func (t *tagSource) chunks(spec Spec) (before, after []chunk) {
 	if t != nil && t.kind.container != spec.Container {
 		s, _ := t.sheet()
+		s.Settle()
 		if spec.Container == "wav" {
 			return wavChunks(s, spec.Format)
 		}

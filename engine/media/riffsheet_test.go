@@ -159,6 +159,10 @@ func TestSheetIntoWAVAndAIFF(t *testing.T) {
 	mp3 := save(t, "source.mp3", slices.Concat(id3.WriteSheet(want), load(t, plain)))
 	sameSheet(t, readSheet(t, mp3), want)
 
+	adts := filepath.Join(dir, "plain.aac")
+	run(t, "ffmpeg", "-v", "error", "-i", plain, "-c:a", "aac", adts)
+	sameSheet(t, readSheet(t, save(t, "source.aac", slices.Concat(id3.WriteSheet(want), load(t, adts)))), want)
+
 	deliver := func(source, name string) string {
 		path := filepath.Join(dir, name)
 		spec := wavSpec(16, false)

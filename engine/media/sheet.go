@@ -13,7 +13,7 @@ func (t *tagSource) sheet() (s tags.Sheet, ok bool) {
 	}
 	switch t.kind.container {
 	case "mp3", "aac":
-		return t.mpegSheet()
+		return t.sheetAtEnds()
 	case "wav":
 		return t.wavSheet()
 	case "aiff":
@@ -22,8 +22,8 @@ func (t *tagSource) sheet() (s tags.Sheet, ok bool) {
 	return s, false
 }
 
-// mpegSheet reads the tags at both ends of MPEG audio.
-func (t *tagSource) mpegSheet() (s tags.Sheet, ok bool) {
+// sheetAtEnds reads the tags that stand in front of the format's own bytes and behind them: ID3 and APEv2.
+func (t *tagSource) sheetAtEnds() (s tags.Sheet, ok bool) {
 	from, err := id3.TailStart(t.f, t.kind.start, t.size)
 	if err != nil {
 		return s, false
