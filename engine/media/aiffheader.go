@@ -80,7 +80,7 @@ func parseAIFF(r io.ReaderAt, size int64) (*aiffHeader, error) {
 		if w.sound != nil && !letters(b[:4]) {
 			break
 		}
-		c := &chunk{string(b[:4]), at + 8, int64(be32(b[4:]))}
+		c := &chunk{id: string(b[:4]), start: at + 8, len: int64(be32(b[4:]))}
 		if at, err = w.take(c); err != nil {
 			return nil, err
 		}
@@ -121,7 +121,7 @@ func (w *aiffWalk) take(c *chunk) (int64, error) {
 	case end > w.size && w.sound == nil:
 		return 0, &FormatError{c.start - 8, fmt.Sprintf("its %q chunk reaches past the end of the file", c.id)}
 	case end > w.size: // torn: what there is of it
-		w.h.after = append(w.h.after, chunk{c.id, c.start, w.size - c.start})
+		w.h.after = append(w.h.after, chunk{id: c.id, start: c.start, len: w.size - c.start})
 	case w.sound == nil:
 		w.h.before = append(w.h.before, *c)
 	default:

@@ -82,7 +82,7 @@ func newAIFFWriter(f *os.File, spec Spec, tags *tagSource) (*aiffWriter, error) 
 	if _, err := io.WriteString(f, head); err != nil {
 		return nil, err
 	}
-	before, after := tags.chunks("aiff")
+	before, after := tags.chunks(spec)
 	if err := w.copyChunks(before); err != nil {
 		return nil, err
 	}

@@ -31,11 +31,19 @@ var mends = map[string]mend{
 // mostMended is the largest chunk that is read whole to be mended; a larger one is carried as it is.
 const mostMended = 64 << 20
 
-// chunks returns the source's chunks to carry over in front of the samples and behind them, if it is of the same
-// container as the copy.
-func (t *tagSource) chunks(container string) (before, after []chunk) {
+// chunks returns the chunks to carry over in front of the samples and behind them: the source's own, if it is of the same
+// container as the copy, else those that say what its tags do.
+func (t *tagSource) chunks(spec Spec) (before, after []chunk) {
+	if t != nil && t.kind.container != spec.Container {
+		s, _ := t.sheet()
+		s.Settle()
+		if spec.Container == "wav" {
+			return wavChunks(s, spec.Format)
+		}
+		return aiffChunks(s, spec.Format)
+	}
 	switch {
-	case t == nil || t.kind.container != container:
+	case t == nil:
 		return nil, nil
 	case t.wav != nil:
 		before, after = t.wav.before, t.wav.after
@@ -48,6 +56,9 @@ func (t *tagSource) chunks(container string) (before, after []chunk) {
 
 // body returns a chunk's content for the copy, and its length.
 func (t *tagSource) body(c chunk, spec Spec) (io.Reader, int64, error) {
+	if c.made != nil {
+		return bytes.NewReader(c.made), c.len, nil
+	}
 	repair := mends[c.id]
 	if repair == nil || c.len > mostMended {
 		return io.NewSectionReader(t.f, c.start, c.len), c.len, nil

@@ -34,10 +34,11 @@ const (
 // guidTail is what every sub-format GUID of a plain format tag ends with.
 const guidTail = "\x00\x00\x00\x00\x10\x00\x80\x00\x00\xAA\x00\x38\x9B\x71"
 
-// chunk is one chunk of a file: its letters and where its body lies.
+// chunk is one chunk of a file: its letters and where its body lies, or what it is, if it is made here.
 type chunk struct {
 	id         string
 	start, len int64
+	made       []byte
 }
 
 // wavHeader is what a WAV file's chunks say, checked.
@@ -172,7 +173,7 @@ func (w *wavWalk) next(at int64) (*chunk, error) {
 	if err != nil {
 		return nil, err
 	}
-	c := &chunk{id, at + 8, int64(n)}
+	c := &chunk{id: id, start: at + 8, len: int64(n)}
 	if big, ok := w.sizes[id]; ok && w.wide && (n == unknown32 || n == 0 && id == "data") {
 		c.len = big
 	}
@@ -203,7 +204,7 @@ func (w *wavWalk) take(c *chunk) (int64, error) {
 	case end > w.size && w.h.data == 0:
 		return 0, &FormatError{c.start - 8, fmt.Sprintf("its %q chunk reaches past the end of the file", c.id)}
 	case end > w.size: // torn: what there is of it
-		w.h.after = append(w.h.after, chunk{c.id, c.start, w.size - c.start})
+		w.h.after = append(w.h.after, chunk{id: c.id, start: c.start, len: w.size - c.start})
 	case w.h.data == 0:
 		w.h.before = append(w.h.before, *c)
 	default:

@@ -60,7 +60,7 @@ func newWAVWriter(f *os.File, spec Spec, tags *tagSource) (*wavWriter, error) {
 	if err := enc.AddLE(head); err != nil {
 		return nil, err
 	}
-	before, after := tags.chunks("wav")
+	before, after := tags.chunks(spec)
 	if err := w.copyChunks(before); err != nil {
 		return nil, err
 	}
