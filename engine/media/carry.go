@@ -73,8 +73,8 @@ var technical = []string{
 const maxTag = 100 << 10 // bytes; the system limits one argument of a command to 128 KiB
 
 // ffmpegTags returns FFmpeg's options, in front of the output, for the tags, chapters and pictures of the
-// source, which must be input 1. pictures says whether the target has room for them.
-func (t *Toolbox) ffmpegTags(ctx context.Context, src *tagSource, pictures bool) ([]string, error) {
+// source, which must be input 1.
+func (t *Toolbox) ffmpegTags(ctx context.Context, src *tagSource) ([]string, error) {
 	if src == nil {
 		return []string{"-map_metadata", "-1"}, nil
 	}
@@ -98,17 +98,15 @@ func (t *Toolbox) ffmpegTags(ctx context.Context, src *tagSource, pictures bool)
 	for _, name := range slices.Sorted(maps.Keys(kept)) {
 		args = append(args, "-metadata", name+"="+kept[name])
 	}
-	if pictures {
-		for n, picture := range p.pictures() {
-			args = append(args, "-map", "1:"+strconv.Itoa(picture.Index))
-			for _, name := range []string{"comment", "title"} { // what it shows: "Cover (front)"; and a caption
-				if value := picture.Tags[name]; value != "" && len(value) <= maxTag {
-					args = append(args, fmt.Sprintf("-metadata:s:v:%d", n), name+"="+strings.ReplaceAll(value, "\x00", ""))
-				}
+	for n, picture := range p.pictures() {
+		args = append(args, "-map", "1:"+strconv.Itoa(picture.Index))
+		for _, name := range []string{"comment", "title"} { // what it shows: "Cover (front)"; and a caption
+			if value := picture.Tags[name]; value != "" && len(value) <= maxTag {
+				args = append(args, fmt.Sprintf("-metadata:s:v:%d", n), name+"="+strings.ReplaceAll(value, "\x00", ""))
 			}
 		}
-		args = append(args, "-c:v", "copy", "-disposition:v", "attached_pic")
 	}
+	args = append(args, "-c:v", "copy", "-disposition:v", "attached_pic")
 	return args, nil
 }
 

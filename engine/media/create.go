@@ -50,7 +50,10 @@ func (t *Toolbox) Create(ctx context.Context, path string, spec Spec) (audio.Sin
 	case spec.Container == "aiff":
 		s.w, err = newAIFFWriter(f, spec, tags)
 	case spec.Container == "flac" && t.FFmpeg() == "":
-		s.w, err = newFLACWriter(f, spec, tags)
+		var carry *flacCarrier
+		if carry, err = t.newFLACCarrier(ctx, spec, tags); err == nil {
+			s.w, err = newFLACWriter(f, spec, carry)
+		}
 	default:
 		s.w, err = t.newFFWriter(ctx, f, spec, tags)
 	}

@@ -1,0 +1,43 @@
+package media
+
+import (
+	"context"
+
+	"evenshelf/engine/tags"
+	"evenshelf/engine/tags/mp4"
+)
+
+// A recording that changes its format carries a tags.Sheet from the one to the other: what its own reader here says, or
+// what FFmpeg tells of formats that have none.
+
+// sheet reads what a source carries, if it is of a format that is read here. ok is false for all others, and for what is
+// damaged.
+func (src *tagSource) sheet() (s tags.Sheet, ok bool) {
+	switch src.kind.container {
+	case "flac", "ogg":
+		c, pictures, ok := src.comments()
+		s := c.Sheet()
+		s.Pictures = pictures
+		return s, ok
+	case "mp4":
+		s, err := mp4.ReadSheet(src.f, src.size)
+		return s, err == nil
+	}
+	return tags.Sheet{}, false
+}
+
+// sheetOf returns what a source carries into another format; it may be nil. Without FFmpeg that is nothing where there is
+// no reader here.
+func (t *Toolbox) sheetOf(ctx context.Context, src *tagSource) (s tags.Sheet, err error) {
+	if src == nil {
+		return s, nil
+	}
+	s, ok := src.sheet()
+	if !ok && t.FFmpeg() != "" {
+		if s, err = t.probeSheet(ctx, src); err != nil {
+			return s, err
+		}
+	}
+	s.Settle()
+	return s, nil
+}
