@@ -4,7 +4,6 @@ import (
 	"bytes"
 	"slices"
 	"strings"
-	"unicode/utf16"
 
 	"evenshelf/engine/tags"
 )
@@ -111,32 +110,6 @@ func (t *tag) mendChapter(f frame) (mended frame, ok bool) {
 	return t.with(f, at, slices.Concat(body[:end+times], unused, body[end+times+places:])), true
 }
 
-// text decodes a text up to its end mark, in the encodings of ID3v2.4, 4: ISO 8859-1, UTF-16 with a byte order
-// mark or big-endian, UTF-8.
-func text(encoding byte, b []byte) string {
-	if encoding != 1 && encoding != 2 {
-		b, _, _ = bytes.Cut(b, []byte{0})
-		return string(b) // names that matter here are ASCII
-	}
-	little := encoding == 1
-	var units []uint16
-	for ; len(b) >= 2; b = b[2:] {
-		u := uint16(b[0])<<8 | uint16(b[1])
-		if little {
-			u = u>>8 | u<<8
-		}
-		switch {
-		case u == 0:
-			return string(utf16.Decode(units))
-		case u == 0xFFFE && len(units) == 0: // the mark, read in the wrong order
-			little = !little
-		case u != 0xFEFF || len(units) > 0:
-			units = append(units, u)
-		}
-	}
-	return string(utf16.Decode(units))
-}
-
 // modern returns the name that a frame has in 2.3 and 2.4, if its content is as there.
 func modern(id []byte) string {
 	name := strings.TrimRight(string(id), "\x00 ")
@@ -144,9 +117,4 @@ func modern(id []byte) string {
 		return now
 	}
 	return name
-}
-
-// older are the names of ID3v2.2 for frames that a rule may name.
-var older = map[string]string{
-	"TXX": "TXXX", "COM": "COMM", "RVA": "RVAD", "MLL": "MLLT", "BUF": "RBUF", "TSI": "TSIZ", "TSS": "TSSE",
 }

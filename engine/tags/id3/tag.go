@@ -65,13 +65,8 @@ func parse(b []byte) (t *tag, ok bool) {
 		body = body[n:]
 	}
 	var rest []byte
-	switch t.version() {
-	case 2:
-		t.frames, rest = walk(body, 6, func(b []byte) (int, bool) { return int(b[3])<<16 | int(b[4])<<8 | int(b[5]), true })
-	case 3:
-		t.frames, rest = walk(body, 10, plain)
-	case 4:
-		t.frames, rest = walk(body, 10, func(b []byte) (int, bool) { return syncsafe(b[4:]) })
+	t.frames, rest = walk(body, t.frameHead(), t.sizeOf)
+	if t.version() == 4 {
 		// A widespread program wrote the sizes of 2.3 into tags of 2.4.
 		if other, left := walk(body, 10, plain); !zeros(rest) && (zeros(left) || len(left) < len(rest)) {
 			for i, f := range other {
@@ -100,6 +95,17 @@ func (t *tag) extended(b []byte) (n int, ok bool) {
 	}
 	n, ok = syncsafe(b)
 	return n, ok && n >= 4 && n <= len(b)
+}
+
+// sizeOf reads the size in the header of a frame.
+func (t *tag) sizeOf(b []byte) (int, bool) {
+	switch t.version() {
+	case 2:
+		return int(b[3])<<16 | int(b[4])<<8 | int(b[5]), true
+	case 3:
+		return plain(b)
+	}
+	return syncsafe(b[4:])
 }
 
 func plain(b []byte) (int, bool) {
