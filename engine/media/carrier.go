@@ -32,15 +32,15 @@ func (t *Toolbox) carrierFor(ctx context.Context, spec Spec, src *tagSource) (ca
 	case src != nil && src.kind.container == "mp3":
 		return newMP3Carrier(src)
 	}
-	list, err := t.ffmpegTags(ctx, src)
-	return ffmpegCarrier(append(list, "-id3v2_version", "3")), err // the version old players read too
+	s, err := t.sheetOf(ctx, src)
+	return sheetMP3Carrier(s), err
 }
 
 // noTags are FFmpeg's options for carriers that put everything in themselves.
 var noTags = []string{"-map_metadata", "-1", "-map_chapters", "-1"}
 
-// ffmpegCarrier leaves it to FFmpeg: it is the options that say so.
-type ffmpegCarrier []string
+// ffmpegCarrier leaves it to FFmpeg, whose options say so elsewhere.
+type ffmpegCarrier struct{}
 
-func (c ffmpegCarrier) args() []string        { return c }
-func (c ffmpegCarrier) finish(*os.File) error { return nil }
+func (ffmpegCarrier) args() []string        { return nil }
+func (ffmpegCarrier) finish(*os.File) error { return nil }

@@ -132,18 +132,6 @@ func (p *probe) sound() *probeStream {
 	return nil
 }
 
-// pictures returns the streams of cover art, of the kinds every container takes. One that is damaged has no size, and
-// FFmpeg would write nothing at all with it.
-func (p *probe) pictures() []probeStream {
-	var list []probeStream
-	for _, s := range p.Streams {
-		if s.Type == "video" && s.Disposition["attached_pic"] == 1 && (s.Codec == "mjpeg" || s.Codec == "png") && s.Width > 0 && s.Height > 0 {
-			list = append(list, s)
-		}
-	}
-	return list
-}
-
 func (p *probe) video() bool {
 	for _, s := range p.Streams {
 		if s.Type == "video" && s.Disposition["attached_pic"] == 0 {

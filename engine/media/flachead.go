@@ -2,7 +2,6 @@ package media
 
 import (
 	"bufio"
-	"bytes"
 	"context"
 	"fmt"
 	"io"
@@ -11,7 +10,6 @@ import (
 
 	"evenshelf/engine/tags"
 	"evenshelf/engine/tags/flac"
-	"evenshelf/engine/tags/ogg"
 	"evenshelf/engine/tags/vorbis"
 )
 
@@ -24,21 +22,6 @@ const flacPadding = 8 << 10 // bytes left for later changes of tags
 type flacCarrier struct {
 	blocks []flac.Block // noPoints is one of them
 	room   int64        // bytes that are asked for: with the table, but without the padding's header
-}
-
-// flacSource lists the metadata blocks of a source that is a FLAC, by itself or in Ogg; those behind damage are left
-// out. Other sources have none.
-func flacSource(src *tagSource) (list []flac.Block) {
-	switch {
-	case src == nil:
-	case src.kind.container == "flac":
-		list, _, _ = flac.Blocks(io.NewSectionReader(src.f, src.kind.start, src.size-src.kind.start))
-	case src.kind.container == "ogg":
-		if head, err := ogg.FLACHead(src.kind.section(src.f)); err == nil {
-			list, _, _ = flac.Blocks(bytes.NewReader(head))
-		}
-	}
-	return list
 }
 
 // newFLACCarrier chooses the metadata of a delivery: from a FLAC every block, from others what FLAC has words for.

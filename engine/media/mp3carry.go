@@ -6,6 +6,7 @@ import (
 	"os"
 	"strconv"
 
+	"evenshelf/engine/tags"
 	"evenshelf/engine/tags/id3"
 )
 
@@ -29,6 +30,9 @@ func newMP3Carrier(src *tagSource) (c mp3Carrier, err error) {
 	c.front, c.back = id3.Levelled(head, tail)
 	return c, err
 }
+
+// sheetMP3Carrier puts what a source of another format says in front of the sound.
+func sheetMP3Carrier(s tags.Sheet) carrier { return mp3Carrier{front: id3.WriteSheet(s)} }
 
 // args has FFmpeg write an ID3v2 tag of the right length with nothing but padding in it, or none.
 func (c mp3Carrier) args() []string {

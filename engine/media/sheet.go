@@ -4,6 +4,7 @@ import (
 	"context"
 
 	"evenshelf/engine/tags"
+	"evenshelf/engine/tags/id3"
 	"evenshelf/engine/tags/mp4"
 )
 
@@ -22,8 +23,21 @@ func (src *tagSource) sheet() (s tags.Sheet, ok bool) {
 	case "mp4":
 		s, err := mp4.ReadSheet(src.f, src.size)
 		return s, err == nil
+	case "mp3", "aac", "wv", "ape":
+		return src.sheetAtEnds()
 	}
 	return tags.Sheet{}, false
+}
+
+// sheetAtEnds reads the tags that stand in front of the format's own bytes and behind them: ID3 and APEv2.
+func (src *tagSource) sheetAtEnds() (s tags.Sheet, ok bool) {
+	from, err := id3.TailStart(src.f, src.kind.start, src.size)
+	if err != nil {
+		return s, false
+	}
+	head, err1 := readAt(src.f, 0, int(min(src.kind.start, id3.MaxLength)))
+	tail, err2 := readAt(src.f, from, int(min(src.size-from, id3.MaxLength)))
+	return id3.ReadSheet(head, tail), err1 == nil && err2 == nil
 }
 
 // sheetOf returns what a source carries into another format; it may be nil. Without FFmpeg that is nothing where there is

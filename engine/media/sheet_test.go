@@ -1,6 +1,7 @@
 package media
 
 import (
+	"bytes"
 	"crypto/md5"
 	"encoding/json"
 	"fmt"
@@ -146,7 +147,7 @@ func TestSheetsBetweenFormats(t *testing.T) {
 		"m4a": {[]string{"-c:a", "aac", "-map_chapters", "1"}, false, chapters,
 			[]string{bare(3, "jpeg", "64x64x24", jpeg), bare(0, "png", "80x48x24", png)}, []string{asMP4[1], asMP4[0]}},
 		"wma": {[]string{"-c:a", "wmav2", "-map_chapters", "1"}, true, chapters, []string{front, back}, asMP4},
-		"wv": {[]string{"-c:a", "wavpack"}, true, nil,
+		"wv": {[]string{"-c:a", "wavpack"}, false, nil,
 			[]string{bare(3, "png", "80x48x24", png), bare(4, "jpeg", "64x64x24", jpeg)}, asMP4},
 	}
 	targets := map[string]Spec{
@@ -237,6 +238,48 @@ func TestSheetLanguage(t *testing.T) {
 		stream, _ := ffprobe(t, back)
 		if got := stream["tags"].(map[string]any)["language"]; got != language {
 			t.Errorf("%v, want %s", got, language)
+		}
+	}
+}
+
+// What ID3 tags around a FLAC say, and its comments do not, comes through to FLAC and to others; what both say is the
+// comments'.
+func TestID3AroundFLAC(t *testing.T) {
+	dir, box := t.TempDir(), withFFmpeg(t)
+	snd := programme(2, 30_000, 16, 0.5)
+	plain, tag := filepath.Join(dir, "plain.flac"), filepath.Join(dir, "tag")
+	run(t, "flac", "-s", "-T", "Title=Own", "-o", plain, writeWAV(t, snd, 48000))
+	run(t, "/usr/bin/python3", "-c", `
+import sys
+from mutagen.id3 import ID3, TIT2, TPE1, TXXX, APIC
+f = ID3()
+f.add(TIT2(text=["Other"])); f.add(TPE1(text=["One", "Two"])); f.add(TXXX(desc="replaygain_track_gain", text=["-7 dB"]))
+f.add(APIC(type=3, mime="image/jpeg", desc="x", data=open(sys.argv[2], "rb").read()))
+f.save(sys.argv[1])`, tag, cover(t))
+	v1 := make([]byte, 128) // ID3v1: title, artist, album of 30 bytes each behind its mark
+	copy(v1, "TAGOther")
+	copy(v1[63:], "Album")
+	v1[127] = 255 // no genre
+	source := saveAs(t, filepath.Join(dir, "source.flac"), slices.Concat(load(t, tag), load(t, plain), v1))
+	want := []string{"Title=Own", "ARTIST=One", "ARTIST=Two", "ALBUM=Album"}
+	for name, test := range map[string]struct {
+		box  *Toolbox
+		spec Spec
+	}{
+		"flac": {box, flacSpec(16, 48000)}, "native.flac": {withoutFFmpeg(), flacSpec(16, 48000)},
+		"ogg": {box, Spec{Container: "ogg", Codec: "vorbis", Format: stereo(48000)}},
+	} {
+		path := filepath.Join(dir, "copy."+name)
+		test.spec.TagsFrom = source
+		write(t, test.box, path, test.spec, snd)
+		_, got := entries(t, path)
+		if len(got) > 4 && strings.HasPrefix(got[4], "METADATA_BLOCK_PICTURE=") || name != "ogg" && bytes.Contains(load(t, path), []byte("image/jpeg")) {
+			got = got[:4]
+		} else {
+			t.Errorf("%s: there is no picture", name)
+		}
+		if !slices.Equal(got, want) {
+			t.Errorf("%s: %q", name, got)
 		}
 	}
 }

@@ -100,16 +100,6 @@ var pictureKinds = []string{
 	"During recording", "During performance", "Movie/video screen capture", "A bright coloured fish", "Illustration", "Band/artist logotype", "Publisher/Studio logotype",
 }
 
-// pictureKind reads what a picture shows out of its tags: a comment says so, or in APEv2 the name of its item.
-func pictureKind(named map[string]string) int {
-	for n, kind := range pictureKinds {
-		if _, ok := named[strings.Replace(kind, "Cover", "Cover Art", 1)]; ok || named["comment"] == kind {
-			return n
-		}
-	}
-	return 0
-}
-
 const maxPictures = 32 // each costs a start of FFmpeg
 
 // probePictures takes the pictures out of a recording. What is larger than any picture, or of no known kind, is left out.
@@ -128,7 +118,7 @@ func (t *Toolbox) probePictures(ctx context.Context, src *tagSource, p *probe) (
 		if err == nil {
 			data := make([]byte, size)
 			if _, err = cover.f.ReadAt(data, 0); err == nil && tags.MIME(data) != "" {
-				list = append(list, tags.Picture{Kind: pictureKind(s.Tags), MIME: tags.MIME(data), Description: s.Tags["title"], Data: data})
+				list = append(list, tags.Picture{Kind: max(0, slices.Index(pictureKinds, s.Tags["comment"])), MIME: tags.MIME(data), Description: s.Tags["title"], Data: data})
 			}
 		}
 		if cover.f.Close(); err != nil {

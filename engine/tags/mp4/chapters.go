@@ -136,7 +136,7 @@ func timeOf(n int64, scale uint32) time.Duration {
 	return time.Duration(whole)*time.Second + time.Duration((rest*int64(time.Second)+int64(scale)/2)/int64(scale))
 }
 
-// list makes the box of chapters. It has room for 255; the track of titles has all.
+// listOf makes the box of chapters. It has room for 255; the track of titles has all.
 func listOf(chapters []tags.Chapter) *box {
 	chapters = chapters[:min(len(chapters), maxListed)]
 	b := append(full(1<<24), 0, 0, 0, 0, byte(len(chapters)))
@@ -152,7 +152,7 @@ func listOf(chapters []tags.Chapter) *box {
 func cutText(s string, most int) string {
 	s = strings.ToValidUTF8(s, "\uFFFD")
 	for len(s) > most {
-		_, n := utf8.DecodeLastRuneInString(s[:len(s)])
+		_, n := utf8.DecodeLastRuneInString(s)
 		s = s[:len(s)-n]
 	}
 	return s

@@ -34,8 +34,8 @@ func WriteSheet(f Target, size int64, s tags.Sheet) error {
 		copy(language(sound.child("mdia", "mdhd")), code)
 		fields = slices.Delete(fields, i, i+1)
 	}
-	if list.kids = append(itemsOf(fields), covers(s.Pictures)...); len(list.kids) == 0 {
-		to.moov.child("udta").drop("meta")
+	if list.kids = append(itemsOf(fields), covers(s.Pictures)...); len(list.kids)+len(s.Chapters) == 0 {
+		to.moov.drop("udta")
 	}
 	at := last.at
 	if chapters := s.Chapters[:min(len(s.Chapters), maxChapters)]; len(chapters) > 0 {
