@@ -9,7 +9,7 @@ import (
 
 // carrier puts what a source carries beside its sound into a file that FFmpeg encodes.
 type carrier interface {
-	args() []string          // FFmpeg's options in front of the output; the source is input 1
+	args() []string          // FFmpeg's options in front of the output, for the room that it has to leave; it is to write no tags
 	finish(f *os.File) error // completes the file when FFmpeg has ended
 }
 
@@ -36,10 +36,7 @@ func (t *Toolbox) carrierFor(ctx context.Context, spec Spec, src *tagSource) (ca
 	return sheetMP3Carrier(s), err
 }
 
-// noTags are FFmpeg's options for carriers that put everything in themselves.
-var noTags = []string{"-map_metadata", "-1", "-map_chapters", "-1"}
-
-// ffmpegCarrier leaves it to FFmpeg, whose options say so elsewhere.
+// ffmpegCarrier leaves it to FFmpeg, whose options say so elsewhere: films are written with all that is in them.
 type ffmpegCarrier struct{}
 
 func (ffmpegCarrier) args() []string        { return nil }

@@ -72,7 +72,7 @@ var noPoints = flac.Made(flac.SeekTable, nil)
 func isSeekTable(b flac.Block) bool { return b.Type == flac.SeekTable }
 
 func (c *flacCarrier) args() []string {
-	return append(slices.Clone(noTags), "-metadata_header_padding", fmt.Sprint(c.room))
+	return []string{"-metadata_header_padding", fmt.Sprint(c.room)}
 }
 
 // finish overwrites all blocks behind STREAMINFO with those of the delivery and a padding that fills the rest. Where

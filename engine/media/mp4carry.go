@@ -11,7 +11,7 @@ import (
 // so it writes none of them.
 type mp4Carrier struct{ *mp4.Carried }
 
-func (c mp4Carrier) args() []string { return noTags }
+func (c mp4Carrier) args() []string { return nil }
 
 func (c mp4Carrier) finish(f *os.File) error {
 	info, err := f.Stat()
@@ -24,7 +24,7 @@ func (c mp4Carrier) finish(f *os.File) error {
 // mp4SheetCarrier is what goes into an MP4 from another format.
 type mp4SheetCarrier struct{ sheet tags.Sheet }
 
-func (c mp4SheetCarrier) args() []string { return noTags }
+func (c mp4SheetCarrier) args() []string { return nil }
 
 func (c mp4SheetCarrier) finish(f *os.File) error {
 	info, err := f.Stat()

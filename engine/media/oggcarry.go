@@ -30,7 +30,7 @@ func (t *Toolbox) newOggCarrier(ctx context.Context, spec Spec, src *tagSource) 
 	return &oggCarrier{c}, err
 }
 
-func (c *oggCarrier) args() []string { return noTags }
+func (c *oggCarrier) args() []string { return nil }
 
 // finish writes the file anew, in itself: all of it is moved back so far that its new front, which is longer by at
 // most that much, never reaches what is still to be read.

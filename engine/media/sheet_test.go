@@ -283,3 +283,28 @@ f.save(sys.argv[1])`, tag, cover(t))
 		}
 	}
 }
+
+// Of formats without a reader here FFmpeg tells tags, chapters and pictures: Matroska counts chapters in nanoseconds.
+func TestSheetByFFmpeg(t *testing.T) {
+	dir, box := t.TempDir(), withFFmpeg(t)
+	snd := programme(2, 96_000, 16, 0.5)
+	marks := saveAs(t, filepath.Join(dir, "marks"), []byte(";FFMETADATA1\n[CHAPTER]\nTIMEBASE=1/1000000000\nSTART=500000000\nEND=700000000\ntitle=First\n"+
+		"[CHAPTER]\nTIMEBASE=1/1000000000\nSTART=1234567890\nEND=2000000000\ntitle=Sécond\n"))
+	source := filepath.Join(dir, "source.mka")
+	run(t, "ffmpeg", "-v", "error", "-i", writeWAV(t, snd, 48000), "-i", marks, "-map", "0", "-map_chapters", "1", "-c:a", "flac", "-metadata", "title=T", "-metadata", "track=3/12",
+		"-attach", cover(t), "-metadata:s:t", "mimetype=image/jpeg", "-metadata:s:t", "filename=cover.jpg", source)
+	for name, spec := range map[string]Spec{"x.opus": {Container: "ogg", Codec: "opus", Format: stereo(48000)}, "x.flac": flacSpec(16, 48000)} {
+		path := filepath.Join(dir, name)
+		spec.TagsFrom = source
+		write(t, box, path, spec, snd)
+		_, got := entries(t, path)
+		got = slices.DeleteFunc(got, func(s string) bool { return strings.HasPrefix(s, "METADATA_BLOCK_PICTURE=") })
+		if want := []string{"TITLE=T", "TRACKNUMBER=3", "TRACKTOTAL=12", "CHAPTER001=00:00:00.500", "CHAPTER001NAME=First",
+			"CHAPTER002=00:00:01.235", "CHAPTER002NAME=Sécond"}; !slices.Equal(got, want) {
+			t.Errorf("%s: %q", name, got)
+		}
+		if streams := string(run(t, "ffprobe", "-v", "error", "-show_entries", "stream=codec_name:stream_tags=comment", "-of", "csv", path)); !strings.Contains(streams, "mjpeg,Cover (front)") {
+			t.Errorf("%s: %s", name, streams)
+		}
+	}
+}
