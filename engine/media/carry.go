@@ -1,12 +1,8 @@
 package media
 
 import (
-	"context"
-	"fmt"
-	"maps"
 	"os"
 	"slices"
-	"strconv"
 	"strings"
 
 	"evenshelf/engine/tags"
@@ -20,6 +16,7 @@ type tagSource struct {
 	kind kind
 	wav  *wavHeader  // nil if it is not WAV
 	aiff *aiffHeader // nil if it is not AIFF
+	said tags.Sheet  // what a WAV or AIFF made from another format carries
 }
 
 // openTags opens the file tags are taken from; "" gives nil.
@@ -71,46 +68,6 @@ var technical = []string{
 }
 
 const maxTag = 100 << 10 // bytes; the system limits one argument of a command to 128 KiB
-
-// ffmpegTags returns FFmpeg's options, in front of the output, for the tags, chapters and pictures of the
-// source, which must be input 1. pictures says whether the target has room for them.
-func (t *Toolbox) ffmpegTags(ctx context.Context, src *tagSource, pictures bool) ([]string, error) {
-	if src == nil {
-		return []string{"-map_metadata", "-1"}, nil
-	}
-	p, err := t.runProbe(ctx, src.f, src.kind)
-	if err != nil {
-		return nil, err
-	}
-	args := []string{"-map_metadata", "-1", "-map_chapters", "1"}
-	kept := map[string]string{}
-	leaveOut := technical
-	if slices.Contains([]string{"flac", "ogg", "mp3"}, src.kind.container) {
-		leaveOut = technical[:1]
-	}
-	if s := p.sound(); s != nil { // Ogg keeps its tags on the stream, the others on the file
-		keepTags(kept, s.Tags, leaveOut)
-		if language := s.Tags["language"]; src.kind.demuxer == "mov" && language != "" {
-			args = append(args, "-metadata:s:a:0", "language="+language)
-		}
-	}
-	keepTags(kept, p.Format.Tags, leaveOut)
-	for _, name := range slices.Sorted(maps.Keys(kept)) {
-		args = append(args, "-metadata", name+"="+kept[name])
-	}
-	if pictures {
-		for n, picture := range p.pictures() {
-			args = append(args, "-map", "1:"+strconv.Itoa(picture.Index))
-			for _, name := range []string{"comment", "title"} { // what it shows: "Cover (front)"; and a caption
-				if value := picture.Tags[name]; value != "" && len(value) <= maxTag {
-					args = append(args, fmt.Sprintf("-metadata:s:v:%d", n), name+"="+strings.ReplaceAll(value, "\x00", ""))
-				}
-			}
-		}
-		args = append(args, "-c:v", "copy", "-disposition:v", "attached_pic")
-	}
-	return args, nil
-}
 
 func keepTags(dst, src map[string]string, leaveOut []string) {
 	for name, value := range src {

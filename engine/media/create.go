@@ -42,7 +42,12 @@ func (t *Toolbox) Create(ctx context.Context, path string, spec Spec) (audio.Sin
 		return nil, about(path, err)
 	}
 	s := &sink{path: path, f: f, tags: tags, format: spec.Format, stopped: stopped(ctx)}
+	riff := spec.Container == "wav" || spec.Container == "aiff"
+	if riff && tags != nil && tags.kind.container != spec.Container {
+		tags.said, err = t.sheetOf(ctx, tags)
+	}
 	switch {
+	case err != nil:
 	case spec.Film != nil:
 		s.w, err = t.newFilmWriter(ctx, f, spec, tags)
 	case spec.Container == "wav":
@@ -50,7 +55,10 @@ func (t *Toolbox) Create(ctx context.Context, path string, spec Spec) (audio.Sin
 	case spec.Container == "aiff":
 		s.w, err = newAIFFWriter(f, spec, tags)
 	case spec.Container == "flac" && t.FFmpeg() == "":
-		s.w, err = newFLACWriter(f, spec, tags)
+		var carry *flacCarrier
+		if carry, err = t.newFLACCarrier(ctx, spec, tags); err == nil {
+			s.w, err = newFLACWriter(f, spec, carry)
+		}
 	default:
 		s.w, err = t.newFFWriter(ctx, f, spec, tags)
 	}

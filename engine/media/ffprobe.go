@@ -35,8 +35,9 @@ func guarded(k kind) []string {
 
 // probe is what ffprobe says about a file, as far as it matters here.
 type probe struct {
-	Streams []probeStream `json:"streams"`
-	Format  struct {
+	Streams  []probeStream  `json:"streams"`
+	Chapters []probeChapter `json:"chapters"`
+	Format   struct {
 		Start    string            `json:"start_time"`
 		Duration string            `json:"duration"`
 		BitRate  string            `json:"bit_rate"`
@@ -64,9 +65,10 @@ type probeStream struct {
 	Tags        map[string]string `json:"tags"`
 }
 
-// runProbe asks ffprobe about an open file.
-func (t *Toolbox) runProbe(ctx context.Context, f *os.File, k kind) (*probe, error) {
-	out, err := t.answer(ctx, f, t.ffprobe, append([]string{"-v", "error", "-of", "json", "-show_streams", "-show_format"}, guarded(k)...))
+// runProbe asks ffprobe about an open file; more are options that ask for more.
+func (t *Toolbox) runProbe(ctx context.Context, f *os.File, k kind, more ...string) (*probe, error) {
+	args := append([]string{"-v", "error", "-of", "json", "-show_streams", "-show_format"}, more...)
+	out, err := t.answer(ctx, f, t.ffprobe, append(args, guarded(k)...))
 	if err != nil {
 		return nil, err
 	}
@@ -128,18 +130,6 @@ func (p *probe) sound() *probeStream {
 		return all[0]
 	}
 	return nil
-}
-
-// pictures returns the streams of cover art, of the kinds every container takes. One that is damaged has no size, and
-// FFmpeg would write nothing at all with it.
-func (p *probe) pictures() []probeStream {
-	var list []probeStream
-	for _, s := range p.Streams {
-		if s.Type == "video" && s.Disposition["attached_pic"] == 1 && (s.Codec == "mjpeg" || s.Codec == "png") && s.Width > 0 && s.Height > 0 {
-			list = append(list, s)
-		}
-	}
-	return list
 }
 
 func (p *probe) video() bool {

@@ -38,21 +38,15 @@ func (t *Toolbox) newFFWriter(ctx context.Context, f *os.File, spec Spec, tags *
 		pcm.Format.Layout = encoderLayout(pcm.Format.Layout)
 	}
 
-	args := []string{"-nostdin", "-v", "error", "-y", "-f", "wav", "-ignore_length", "1"}
-	args = append(append(args, t.largePackets()...), "-i", "pipe:0")
-	files := []*os.File{f}
-	if tags != nil {
-		args = append(args, guarded(tags.kind)...)
-		files = []*os.File{tags.f, f}
-	}
 	carry, err := t.carrierFor(ctx, spec, tags)
 	if err != nil {
 		return nil, err
 	}
-	args = append(append(args, "-map", "0:a:0"), carry.args()...)
+	args := []string{"-nostdin", "-v", "error", "-y", "-f", "wav", "-ignore_length", "1", "-i", "pipe:0", "-map", "0:a:0", "-map_metadata", "-1"}
+	args = append(args, carry.args()...)
 	args = append(args, t.encoderArgs(spec)...)
-	args = append(args, "-fflags", "+bitexact", "-f", muxer, fmt.Sprintf("file:/dev/fd/%d", 2+len(files)))
-	c, err := startChild(ctx, false, files, t.ffmpeg, args...)
+	args = append(args, "-fflags", "+bitexact", "-f", muxer, inputFD)
+	c, err := startChild(ctx, false, []*os.File{f}, t.ffmpeg, args...)
 	if err != nil {
 		return nil, err
 	}
@@ -134,15 +128,6 @@ func (t *Toolbox) exactLength(spec Spec) []string {
 		return nil
 	}
 	return []string{"-movie_timescale", strconv.Itoa(spec.Format.Rate)}
-}
-
-// largePackets has FFmpeg pass the sound on in pieces of 64 KiB instead of 4. With tags as a second input each is handed
-// from one thread to another, which costs as much as a third of encoding FLAC. Older FFmpegs cannot do it.
-func (t *Toolbox) largePackets() []string {
-	if !t.since(4, 4) {
-		return nil
-	}
-	return []string{"-max_size", "65536"}
 }
 
 // since reports whether the FFmpeg in use is of a version or later.

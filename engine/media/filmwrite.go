@@ -71,7 +71,7 @@ func (t *Toolbox) newFilmWriter(ctx context.Context, f *os.File, spec Spec, tags
 	}
 	// What has no packets for long is looked for through all of the film before any sound is taken.
 	c.stall += time.Duration(tags.size/slowDisk) * time.Second
-	w.ffWriter = &ffWriter{child: c, pack: newPacker(pcm), f: f, carry: ffmpegCarrier(nil)}
+	w.ffWriter = &ffWriter{child: c, pack: newPacker(pcm), f: f, carry: ffmpegCarrier{}}
 	w.silence, w.expect = o.entry.silence, o.expect
 	err = w.send(streamHead(pcm))
 	if err == nil && w.silence > 0 {

@@ -220,7 +220,7 @@ func TestOddFLACMetadata(t *testing.T) {
 		"damaged comments": {[][]byte{blocks[0], cut}, []string{"TITLE=T"}},
 		"no comment bytes": {[][]byte{blocks[0], flacBlockOf(4, nil)}, nil},
 		"names":            {[][]byte{blocks[0], comment("no name", "=value", "Ä=ö", "A=\xff")}, []string{"no name", "=value", "Ä=ö", "A=\xff"}},
-		"a mask":           {[][]byte{blocks[0], comment("waveformatextensible_channel_mask=0x3", "A=B")}, []string{"A=B"}},
+		"a mask":           {[][]byte{blocks[0], comment("waveformatextensible_channel_mask=0x3", "A=B")}, []string{"waveformatextensible_channel_mask=0x3", "A=B"}},
 	} {
 		for _, box := range []*Toolbox{withFFmpeg(t), withoutFFmpeg()} {
 			source, path := save(t, "odd.flac", flacOf(test.blocks, sound)), filepath.Join(t.TempDir(), "x")
@@ -235,8 +235,8 @@ func TestOddFLACMetadata(t *testing.T) {
 	}
 }
 
-// A loudspeaker mask that is not the usual one is written anew from the layout, once.
-func TestFLACMaskIsWrittenAnew(t *testing.T) {
+// A loudspeaker mask stays as it is where the layout does, and is written anew, once, where it does not.
+func TestFLACMask(t *testing.T) {
 	snd := programme(2, 9_000, 16, 0.5)
 	dir := t.TempDir()
 	source, path := filepath.Join(dir, "source.flac"), filepath.Join(dir, "x")
@@ -244,11 +244,17 @@ func TestFLACMaskIsWrittenAnew(t *testing.T) {
 	run(t, "metaflac", "--set-tag=WaveFormatExtensible_Channel_Mask=0x0600", source)
 	for _, box := range []*Toolbox{withFFmpeg(t), withoutFFmpeg()} {
 		level(t, box, source, path)
-		if _, got := entries(t, path); !slices.Equal(got, []string{"TITLE=T", "WAVEFORMATEXTENSIBLE_CHANNEL_MASK=0x0600"}) {
+		if _, got := entries(t, path); !slices.Equal(got, []string{"TITLE=T", "WaveFormatExtensible_Channel_Mask=0x0600"}) {
 			t.Errorf("%q", got)
 		}
 		if out, _ := exec.Command("metaflac", "--list", path).CombinedOutput(); strings.Count(string(out), "type: 1 (PADDING)") != 1 {
 			t.Errorf("%s", out)
+		}
+		spec := flacSpec(16, 44100)
+		spec.TagsFrom, spec.Format.Layout.Mask = source, 0x30
+		write(t, box, path, spec, snd)
+		if _, got := entries(t, path); !slices.Equal(got, []string{"TITLE=T", "WAVEFORMATEXTENSIBLE_CHANNEL_MASK=0x0030"}) {
+			t.Errorf("%q", got)
 		}
 	}
 }

@@ -2,16 +2,14 @@ package media
 
 import (
 	"bufio"
-	"bytes"
+	"context"
 	"fmt"
 	"io"
 	"os"
 	"slices"
-	"strings"
 
 	"evenshelf/engine/tags"
 	"evenshelf/engine/tags/flac"
-	"evenshelf/engine/tags/ogg"
 	"evenshelf/engine/tags/vorbis"
 )
 
@@ -26,28 +24,25 @@ type flacCarrier struct {
 	room   int64        // bytes that are asked for: with the table, but without the padding's header
 }
 
-// flacSource lists the metadata blocks of a source that is a FLAC, by itself or in Ogg; those behind damage are left
-// out. Other sources have none.
-func flacSource(src *tagSource) (list []flac.Block) {
-	switch {
-	case src == nil:
-	case src.kind.container == "flac":
-		list, _, _ = flac.Blocks(io.NewSectionReader(src.f, src.kind.start, src.size-src.kind.start))
-	case src.kind.container == "ogg":
-		if head, err := ogg.FLACHead(src.kind.section(src.f)); err == nil {
-			list, _, _ = flac.Blocks(bytes.NewReader(head))
-		}
+// newFLACCarrier chooses the metadata of a delivery: from a FLAC every block, from others what FLAC has words for.
+func (t *Toolbox) newFLACCarrier(ctx context.Context, spec Spec, src *tagSource) (*flacCarrier, error) {
+	if list := flacSource(src); list != nil {
+		return flacHead(spec, list), nil
 	}
-	return list
+	c, pictures, err := t.commentsOf(ctx, src)
+	return flacHead(spec, flac.Of(c, pictures)), err
 }
 
-// flacHead chooses the metadata of a delivery from that of its source. Every block is carried as it is, but for those
-// that a new encoding makes anew and the comments that a new level makes wrong. Where loudspeakers are not the usual
-// ones, a comment names them.
+// flacHead makes the metadata of a delivery of blocks. Every block is carried as it is, but for those that a new encoding
+// makes anew and the comments that a new level makes wrong. Where loudspeakers are not the usual ones, a comment names
+// them; one that says so already stays.
 func flacHead(spec Spec, list []flac.Block) *flacCarrier {
-	edit := vorbis.Edit{Vendor: vorbis.Vendor, Drop: func(name string) bool { return tags.Stale(name) || strings.EqualFold(name, maskComment) }}
-	if mask := unusualMask(spec.Format.Layout); mask != "" {
-		edit.Add = [][2]string{{maskComment, mask}}
+	comments, _ := flac.Comments(list)
+	layout, named := namedLayout(comments, spec.Format.Layout.Channels)
+	named = named && layout == spec.Format.Layout
+	edit := vorbis.Edit{Vendor: vorbis.Vendor, Drop: func(name string) bool { return tags.Stale(name) || !named && isMask(name) }}
+	if mask := unusualMask(spec.Format.Layout); mask != "" && !named {
+		edit.Add = [][2]string{{vorbis.Mask, mask}}
 	}
 	length := int64(0)
 	if info, err := flac.ReadInfo(list); err == nil {
@@ -77,7 +72,7 @@ var noPoints = flac.Made(flac.SeekTable, nil)
 func isSeekTable(b flac.Block) bool { return b.Type == flac.SeekTable }
 
 func (c *flacCarrier) args() []string {
-	return []string{"-map_metadata", "-1", "-metadata_header_padding", fmt.Sprint(c.room)}
+	return []string{"-metadata_header_padding", fmt.Sprint(c.room)}
 }
 
 // finish overwrites all blocks behind STREAMINFO with those of the delivery and a padding that fills the rest. Where

@@ -55,21 +55,28 @@ func readFLACMeta(r io.ReaderAt, start int64) (*flacMeta, error) {
 	return m, nil
 }
 
-// maskComment is the comment that names loudspeakers where they are not the usual ones (RFC 9639).
-const maskComment = "WAVEFORMATEXTENSIBLE_CHANNEL_MASK"
-
-// layout returns the loudspeaker positions: the usual ones unless the comment says otherwise.
+// layout returns the loudspeaker positions: the usual ones unless a comment says otherwise.
 func (m *flacMeta) layout() audio.Layout {
-	for _, c := range m.comments {
-		for _, entry := range c.Entries {
-			name, value, _ := strings.Cut(entry, "=")
-			if !strings.EqualFold(name, maskComment) {
-				continue
-			}
-			if mask, err := strconv.ParseUint(strings.TrimPrefix(strings.ToLower(value), "0x"), 16, 32); err == nil {
-				return layoutOf(m.info.NChannels, uint32(mask))
-			}
-		}
+	if layout, ok := namedLayout(m.comments, m.info.NChannels); ok {
+		return layout
 	}
 	return audio.UsualLayout(m.info.NChannels)
 }
+
+// namedLayout returns the loudspeaker positions that a comment names; ok is false if none does.
+func namedLayout(comments []vorbis.Comment, channels int) (l audio.Layout, ok bool) {
+	for _, c := range comments {
+		for _, entry := range c.Entries {
+			name, value, _ := strings.Cut(entry, "=")
+			if !isMask(name) {
+				continue
+			}
+			if mask, err := strconv.ParseUint(strings.TrimPrefix(strings.ToLower(value), "0x"), 16, 32); err == nil {
+				return layoutOf(channels, uint32(mask)), true
+			}
+		}
+	}
+	return l, false
+}
+
+func isMask(name string) bool { return strings.EqualFold(name, vorbis.Mask) }

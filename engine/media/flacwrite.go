@@ -28,14 +28,14 @@ type flacWriter struct {
 	fill       int
 }
 
-func newFLACWriter(f *os.File, spec Spec, tags *tagSource) (*flacWriter, error) {
+func newFLACWriter(f *os.File, spec Spec, carry *flacCarrier) (*flacWriter, error) {
 	channels := spec.Format.Layout.Channels
 	info := &meta.StreamInfo{
 		BlockSizeMin: flacBlock, BlockSizeMax: flacBlock, SampleRate: uint32(spec.Format.Rate),
 		NChannels: uint8(channels), BitsPerSample: uint8(spec.BitDepth),
 	}
-	w := &flacWriter{f: f, out: &seekBuffer{f: f, w: bufio.NewWriterSize(f, 1<<16)}, quantisers: newQuantisers(spec), carry: flacHead(spec, flacSource(tags))}
-	room := &meta.Block{Header: meta.Header{Type: meta.TypePadding, Length: w.carry.room}}
+	w := &flacWriter{f: f, out: &seekBuffer{f: f, w: bufio.NewWriterSize(f, 1<<16)}, quantisers: newQuantisers(spec), carry: carry}
+	room := &meta.Block{Header: meta.Header{Type: meta.TypePadding, Length: carry.room}}
 	var err error
 	if w.enc, err = flac.NewEncoder(w.out, info, room); err != nil {
 		return nil, err

@@ -35,12 +35,10 @@ const mostMended = 64 << 20
 // container as the copy, else those that say what its tags do.
 func (t *tagSource) chunks(spec Spec) (before, after []chunk) {
 	if t != nil && t.kind.container != spec.Container {
-		s, _ := t.sheet()
-		s.Settle()
 		if spec.Container == "wav" {
-			return wavChunks(s, spec.Format)
+			return wavChunks(t.said, spec.Format)
 		}
-		return aiffChunks(s, spec.Format)
+		return aiffChunks(t.said, spec.Format)
 	}
 	switch {
 	case t == nil:
@@ -71,12 +69,14 @@ func (t *tagSource) body(c chunk, spec Spec) (io.Reader, int64, error) {
 	return bytes.NewReader(b), int64(len(b)), nil
 }
 
-// mendID3 takes the gains out of an ID3v2 tag.
+// mendID3 takes the gains out of an ID3v2 tag. What is behind it stays.
 func mendID3(b []byte, _ *tagSource, _ Spec) []byte {
-	if front, _ := id3.Levelled(b, nil); len(front) > 0 {
-		return front
+	n := id3.HeadLength(b)
+	if n == 0 || n > int64(len(b)) {
+		return b
 	}
-	return b
+	front, _ := id3.Levelled(b[:n], nil)
+	return append(front, b[n:]...)
 }
 
 // mendCart keeps the level reference of a cart chunk (AES46) true: it is the sample value of 0 dB. The one in use is

@@ -36,7 +36,7 @@ func sheetMP3Carrier(s tags.Sheet) carrier { return mp3Carrier{front: id3.WriteS
 
 // args has FFmpeg write an ID3v2 tag of the right length with nothing but padding in it, or none.
 func (c mp3Carrier) args() []string {
-	args := []string{"-map_metadata", "-1", "-map_chapters", "-1", "-id3v2_version"}
+	args := []string{"-id3v2_version"}
 	if len(c.front) == 0 {
 		return append(args, "0")
 	}

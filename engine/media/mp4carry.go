@@ -3,6 +3,7 @@ package media
 import (
 	"os"
 
+	"evenshelf/engine/tags"
 	"evenshelf/engine/tags/mp4"
 )
 
@@ -10,7 +11,7 @@ import (
 // so it writes none of them.
 type mp4Carrier struct{ *mp4.Carried }
 
-func (c mp4Carrier) args() []string { return []string{"-map_metadata", "-1", "-map_chapters", "-1"} }
+func (c mp4Carrier) args() []string { return nil }
 
 func (c mp4Carrier) finish(f *os.File) error {
 	info, err := f.Stat()
@@ -18,4 +19,17 @@ func (c mp4Carrier) finish(f *os.File) error {
 		return err
 	}
 	return c.Into(f, info.Size())
+}
+
+// mp4SheetCarrier is what goes into an MP4 from another format.
+type mp4SheetCarrier struct{ sheet tags.Sheet }
+
+func (c mp4SheetCarrier) args() []string { return nil }
+
+func (c mp4SheetCarrier) finish(f *os.File) error {
+	info, err := f.Stat()
+	if err != nil {
+		return err
+	}
+	return mp4.WriteSheet(f, info.Size(), c.sheet)
 }

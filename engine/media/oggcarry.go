@@ -1,6 +1,7 @@
 package media
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"io"
@@ -14,18 +15,22 @@ import (
 // oggCarrier puts the comments of a Vorbis or Opus stream, as they are, in place of those that FFmpeg writes.
 type oggCarrier struct{ comment vorbis.Comment }
 
-// oggHead reads the comments that a delivery of the source's own codec carries on; of a chained file they are the
-// first link's. It returns nil if they cannot be had like this.
-func oggHead(spec Spec, src *tagSource) *oggCarrier {
-	codec, c, err := ogg.Comments(src.kind.section(src.f))
-	if err != nil || codec != spec.Codec {
-		return nil
+// newOggCarrier chooses the comments of a delivery. From the target's own codec they come with all that is in their block; of
+// a chained file they are the first link's.
+func (t *Toolbox) newOggCarrier(ctx context.Context, spec Spec, src *tagSource) (*oggCarrier, error) {
+	if src != nil && src.kind.container == "ogg" {
+		if codec, c, err := ogg.Comments(src.kind.section(src.f)); err == nil && codec == spec.Codec {
+			vorbis.Edit{Drop: tags.Stale}.Apply(&c)
+			return &oggCarrier{c}, nil
+		}
 	}
-	vorbis.Edit{Drop: tags.Stale}.Apply(&c)
-	return &oggCarrier{c}
+	c, pictures, err := t.commentsOf(ctx, src)
+	c.PutPictures(pictures)
+	c.Fit(ogg.MaxComments)
+	return &oggCarrier{c}, err
 }
 
-func (c *oggCarrier) args() []string { return []string{"-map_metadata", "-1", "-map_chapters", "-1"} }
+func (c *oggCarrier) args() []string { return nil }
 
 // finish writes the file anew, in itself: all of it is moved back so far that its new front, which is longer by at
 // most that much, never reaches what is still to be read.

@@ -21,6 +21,7 @@ const (
 	Padding       = 1
 	SeekTable     = 3
 	VorbisComment = 4
+	Picture       = 6
 	Forbidden     = 127 // would look like a frame
 )
 

@@ -91,6 +91,9 @@ func FuzzFLACBlocks(f *testing.F) {
 		list, sound, err := Blocks(bytes.NewReader(b))
 		EditComments(list, vorbis.Edit{Drop: tags.Stale})
 		Comments(list)
+		if s := Sheet(list); len(Of(vorbis.FromSheet(s), s.Pictures)) != 1+len(s.Pictures) {
+			t.Fatalf("a picture of %d is lost", len(s.Pictures))
+		}
 		if info, e := ReadInfo(list); e == nil {
 			if _, e := MakeSeekTable(bytes.NewReader(b), min(sound, int64(len(b))), int64(len(b)), info); e != nil {
 				t.Fatal(e)

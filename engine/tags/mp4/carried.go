@@ -3,7 +3,6 @@ package mp4
 import (
 	"bufio"
 	"bytes"
-	"fmt"
 	"io"
 	"slices"
 )
@@ -45,7 +44,7 @@ func (c *Carried) Into(f Target, size int64) error {
 	}
 	sound, last := to.track("soun"), to.spans[len(to.spans)-1]
 	if sound == nil || to.front() || last.kind != "moov" || to.spans[0].kind != "ftyp" {
-		return fmt.Errorf("FFmpeg has not written the MP4 that was expected")
+		return errUnexpected
 	}
 	c.dress(to.moov, sound)
 	tracks := c.tracks(to.moov, sound)

@@ -76,11 +76,7 @@ func setGains(moov *box, g tags.Gains) error {
 		return err
 	}
 	for _, pair := range g.ReplayGain() {
-		list.kids = append(list.kids, &box{kind: "----", kids: []*box{
-			{kind: "mean", body: full(0, []byte(freeform)...)},
-			{kind: "name", body: full(0, []byte(strings.ToLower(pair[0]))...)},
-			{kind: "data", body: append(full(1, 0, 0, 0, 0), pair[1]...)}, // UTF-8, of no country
-		}})
+		list.kids = append(list.kids, named(strings.ToLower(pair[0]), pair[1:]))
 	}
 	return nil
 }

@@ -48,6 +48,9 @@ func codecOf(p page) (codec, bool) {
 // maxHeaders is more than pictures and setup of any recording take; a hostile file can take no more memory.
 const maxHeaders = 64 << 20
 
+// MaxComments is how many bytes of comments leave room for the other headers.
+const MaxComments = maxHeaders - 1<<20
+
 // headers gathers the packets in front of the sound. The first is alone on its page, and kept apart.
 type headers struct {
 	codec   codec

@@ -79,6 +79,16 @@ func appendField(b []byte, s string) []byte {
 	return append(binary.LittleEndian.AppendUint32(b, uint32(len(s))), s...)
 }
 
+// Pairs are the entries that have a name, as name and value.
+func (c Comment) Pairs() (list [][2]string) {
+	for _, entry := range c.Entries {
+		if name, value, named := strings.Cut(entry, "="); named {
+			list = append(list, [2]string{name, value})
+		}
+	}
+	return list
+}
+
 // Edit is a change of a comment block.
 type Edit struct {
 	Vendor string                 // "": it stays
