@@ -173,7 +173,7 @@ func TestMigrations(t *testing.T) {
 				t.Errorf("%+v", got)
 			}
 		}
-		if list, err := f.Levelled(f.ctx, f.shelf.ID, "after"); err != nil || len(list) != 3 {
+		if list, err := f.Levelled(f.ctx, f.shelf.ID, 0, "after"); err != nil || len(list) != 3 {
 			t.Errorf("%+v %v", list, err)
 		}
 	})

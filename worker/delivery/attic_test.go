@@ -16,8 +16,9 @@ import (
 // atticBench is a shelf, its copies and its attic, and what was recorded.
 type atticBench struct {
 	*bench
-	place Place
-	kept  []Original
+	place    Place
+	kept     []Original
+	versions []*Original // likewise, nil where there was none
 }
 
 func newAtticBench(t *testing.T) *atticBench {
@@ -32,7 +33,8 @@ var errCut = errors.New("the power went")
 // replace runs Replace; cut ends it right after the original was recorded.
 func (b *atticBench) replace(l *leveller, cut bool) (level.Outcome, string, error) {
 	b.t.Helper()
-	return Replace(b.t.Context(), l, b.place, level.Task{}, "job-7", func(_ context.Context, o Original) error {
+	return Replace(b.t.Context(), l, &b.place, level.Task{}, "job-7", func(_ context.Context, o Original, v *Original) error {
+		b.versions = append(b.versions, v)
 		b.kept = append(b.kept, o)
 		if cut {
 			return errCut
