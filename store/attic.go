@@ -32,11 +32,16 @@ func scanOriginal(row scanner) (o Original, err error) {
 func (s *Store) KeepOriginal(ctx context.Context, o Original, versions ...Original) error {
 	err := s.write(ctx, func(tx *sql.Tx) error {
 		for _, v := range versions {
-			_, err := tx.ExecContext(ctx, `INSERT INTO attic (recording_id, sha256, job_id, stored, levelled, size, length, kept_at, kind)
+			kept, err := tx.ExecContext(ctx, `INSERT INTO attic (recording_id, sha256, job_id, stored, levelled, size, length, kept_at, kind)
 				VALUES (?, ?, ?, ?, ?, ?, ?, ?, 'version') ON CONFLICT (recording_id, sha256) DO NOTHING`,
 				v.RecordingID, v.SHA256, v.JobID, v.Stored, v.Levelled, v.Size, v.Length, now())
 			if err != nil {
 				return err
+			}
+			if n, err := kept.RowsAffected(); err != nil {
+				return err
+			} else if n == 0 { // by an attempt that was cut short
+				continue
 			}
 			if err := tell(ctx, tx, Event{At: fromMillis(now()), RecordingID: v.RecordingID, JobID: v.JobID, What: "changed",
 				Words: fmt.Sprintf("the file that was here, another version of the recording, went to the attic as %q", v.Stored)}); err != nil {
@@ -126,8 +131,8 @@ func (s *Store) KeptByOthers(ctx context.Context, runID int64) (list []KeptBy, e
 // AtticOf counts what the attic has of a shelf.
 func (s *Store) AtticOf(ctx context.Context, shelfID int64) (all AtticCount, err error) {
 	err = s.read(ctx, func(tx *sql.Tx) error {
-		return tx.QueryRowContext(ctx, `SELECT count(*) FILTER (WHERE `+keptLast+`), count(*), coalesce(sum(CASE a.length WHEN 0 THEN a.size ELSE a.length END), 0)
-			FROM attic a JOIN recordings r ON r.id = a.recording_id WHERE r.shelf_id = ?`, shelfID).Scan(&all.Originals, &all.Files, &all.Bytes)
+		return tx.QueryRowContext(ctx, `SELECT count(*) FILTER (WHERE `+keptLast+`), count(*) FILTER (WHERE NOT (`+keptLast+`)), coalesce(sum(CASE a.length WHEN 0 THEN a.size ELSE a.length END), 0)
+			FROM attic a JOIN recordings r ON r.id = a.recording_id WHERE r.shelf_id = ?`, shelfID).Scan(&all.Originals, &all.Versions, &all.Bytes)
 	})
 	if err != nil {
 		return all, fmt.Errorf("attic of shelf %d: %w", shelfID, err)

@@ -58,7 +58,7 @@ type Original struct {
 // AtticCount is how much the attic has.
 type AtticCount struct {
 	Originals int   // that can be brought back
-	Files     int   // these and all others
+	Versions  int   // other files
 	Bytes     int64 // of all; about, where an older version noted no length
 }
 

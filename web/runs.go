@@ -26,9 +26,7 @@ type runView struct {
 	Parts    []part
 	Ended    int    // done, held, failed or cancelled
 	Reached  int    // those of them that had their turn: all but the cancelled
-	Delivers string // the delivery in words
-	Encoded  string // in what the files are written, if not as they were
-	Together string // which recordings share a gain
+	Delivers string // what is written and where that goes, in words
 	Pace     string // audio done in a minute, in words; "" while not known
 	Left     string // time left in words, "" while not known or when finished
 	Going    bool   // waiting or working
@@ -43,13 +41,7 @@ type part struct {
 }
 
 func viewRun(r store.Run, now time.Time) runView {
-	v := runView{Run: r, Delivers: deliveryWords(r.Delivery)}
-	if r.Delivery.Levels() {
-		v.Encoded = encodedWords(r)
-	}
-	if r.Delivery != store.Measure {
-		v.Together = groupWords(r)
-	}
+	v := runView{Run: r, Delivers: deliveryWords(r)}
 	v.Reached = r.Done + r.Held + r.Failed
 	v.Ended = v.Reached + r.Cancelled
 	v.Going = going(r.State)
