@@ -28,7 +28,7 @@ func scanOriginal(row scanner) (o Original, err error) {
 // KeepOriginal records that a recording's original is in the attic, before its place is taken: whatever
 // happens next, it can be found. It counts as the last one kept even if the clock was set back. versions are other files that
 // were in the recording's place and went to the attic with it; one that is there as an original stays that. Of each
-// it takes RecordingID, JobID, SHA256, Stored, Levelled, Size and Length.
+// it takes RecordingID, JobID, SHA256, Stored, Levelled, Size, Length and Modified.
 func (s *Store) KeepOriginal(ctx context.Context, o Original, versions ...Original) error {
 	err := s.write(ctx, func(tx *sql.Tx) error {
 		for _, v := range versions {
@@ -55,8 +55,12 @@ func (s *Store) KeepOriginal(ctx context.Context, o Original, versions ...Origin
 		if err != nil {
 			return err
 		}
-		// The new file keeps the time of the old one; with its size known, the next scan sees no change.
-		_, err = tx.ExecContext(ctx, `UPDATE recordings SET size = ?, inode = 0 WHERE id = ?`, o.Size, o.RecordingID)
+		// With the new file's size and time known, the next scan sees no change.
+		var modified *int64
+		if !o.Modified.IsZero() {
+			modified = new(o.Modified.UnixMilli())
+		}
+		_, err = tx.ExecContext(ctx, `UPDATE recordings SET size = ?, modified_at = coalesce(?, modified_at), inode = 0 WHERE id = ?`, o.Size, modified, o.RecordingID)
 		return err
 	})
 	if err != nil {

@@ -53,6 +53,7 @@ type Original struct {
 	Levelled    string    `json:"-"`      // SHA-256 of the file that took its place
 	Size        int64     `json:"-"`      // of the file that took its place, bytes
 	Length      int64     `json:"-"`      // of the original, bytes; 0 if that was not noted
+	Modified    time.Time `json:"-"`      // of the file that took its place; only KeepOriginal takes it, zero: the time of the one before
 }
 
 // AtticCount is how much the attic has.

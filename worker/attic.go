@@ -58,6 +58,9 @@ const already = "levelled with this profile already"
 
 // replace puts the levelled copy in the recording's place, unless what it would put there is there.
 func (s *Service) replace(ctx context.Context, w store.Work, t level.Task, onShelf, key string) (r result, err error) {
+	if refusal := delivery.Unfit(w.Profile.Delivered.Format, w.Recording.Path); refusal != "" { // before the work, not after it
+		return result{outcome: failedBecause(refusal)}, nil
+	}
 	leave, err := s.places.enter(ctx, w.Recording.ID)
 	if err != nil {
 		return r, err

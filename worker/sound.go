@@ -190,7 +190,7 @@ func (s *Service) tag(ctx context.Context, w store.Work, t level.Task, onShelf, 
 func (s *Service) record(recordingID, jobID int64) delivery.Record {
 	return func(ctx context.Context, o delivery.Original, version *delivery.Original) error {
 		kept := func(o delivery.Original) store.Original {
-			return store.Original{RecordingID: recordingID, JobID: jobID, SHA256: o.SHA256, Stored: o.Stored, Levelled: o.Levelled, Size: o.Size, Length: o.Length}
+			return store.Original{RecordingID: recordingID, JobID: jobID, SHA256: o.SHA256, Stored: o.Stored, Levelled: o.Levelled, Size: o.Size, Length: o.Length, Modified: o.Modified}
 		}
 		if version != nil {
 			return s.store.KeepOriginal(ctx, kept(o), kept(*version))

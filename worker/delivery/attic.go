@@ -20,11 +20,12 @@ import (
 // Original is a recording that was moved to the attic when its levelled copy took its place. Hashes are
 // SHA-256 of the files' bytes, in hexadecimal.
 type Original struct {
-	Stored   string // where it is, relative to the attic, with forward slashes
-	SHA256   string // of the original
-	Levelled string // of the file that took its place
-	Size     int64  // of the file that took its place, bytes
-	Length   int64  // of the original, bytes
+	Stored   string    // where it is, relative to the attic, with forward slashes
+	SHA256   string    // of the original
+	Levelled string    // of the file that took its place
+	Size     int64     // of the file that took its place, bytes
+	Length   int64     // of the original, bytes
+	Modified time.Time // of the file that took its place; only Record is told
 }
 
 // ErrChanged is wrapped when a file is neither the levelled copy that was put there nor the original.
@@ -56,7 +57,7 @@ type Record func(ctx context.Context, original Original, version *Original) erro
 //
 // A recording that was replaced before is levelled from its original, so that no sound is ever levelled
 // twice. One that is within its profile stays as it is. What is held goes where held copies go, and the
-// recording stays. output is relative to Root, or to Copies if the outcome is held. Errors as for Deliver.
+// recording stays. What takes its place has its time, or is a second younger if it is as long. output is relative to Root, or to Copies if the outcome is held. Errors as for Deliver.
 //
 // Whatever is in the recording's place and is not, byte for byte, what was put there goes to the attic too: somebody
 // has written other tags since. at.Ours is not looked at before the engine is done: whoever knows the sound may only then
@@ -113,6 +114,15 @@ func replace(ctx context.Context, engine maker, at *Place, t level.Task, key str
 	}
 	if err := d.dress(target, replaced); err != nil {
 		return o, "", err
+	}
+	kept.Modified = replaced.ModTime()
+	if kept.Size == replaced.Size() {
+		// Programs that back files up or copy what has changed go by length and time: with both as they were, they
+		// would never see that it is another file.
+		kept.Modified = kept.Modified.Add(time.Second)
+		if err := d.root.Chtimes(d.scratch, time.Time{}, kept.Modified); err != nil {
+			return o, "", err
+		}
 	}
 	step("dressed")
 	// The work took its time, and copying into the attic too: what somebody put there meanwhile is not in it.
