@@ -92,7 +92,10 @@ func (c *restoreCmd) list(a *app) error {
 		fmt.Fprintf(a.stdout, "%6d  run %-4d  %s  %s\n", o.RecordingID, o.RunID, o.KeptAt.Local().Format(minute), printable(o.Path))
 	}
 	if len(versions) > 0 {
-		fmt.Fprintln(a.stdout, "\nOther versions, which only you can take back from where they are:")
+		if len(kept) > 0 {
+			fmt.Fprintln(a.stdout)
+		}
+		fmt.Fprintln(a.stdout, "Other versions, which only you can take back from where they are:")
 	}
 	for _, v := range versions {
 		what := "with other tags"
