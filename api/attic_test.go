@@ -1,6 +1,7 @@
 package api
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"os"
@@ -267,6 +268,18 @@ func TestReplaceWantsAFolderItCanWriteTo(t *testing.T) {
 			t.Errorf("mode %o: %v, want %v", mode, err, want)
 		}
 	}
+}
+
+// unfit is a queue to which no format fits.
+type unfit struct{ Queue }
+
+func (unfit) StartRun(context.Context, store.NewRun) (store.Run, error) {
+	return store.Run{}, fmt.Errorf("none of the 3 files could be replaced: %w", store.ErrFormat)
+}
+
+func TestReplaceInAFormatThatDoesNotFit(t *testing.T) {
+	h := open(t, func(o *Options) { o.Queue = unfit{o.Queue} })
+	h.ask("POST", at("/runs"), `{"shelf_id":1,"profile":"rotation","delivery":"replace","format":"mp3"}`).wantProblem(t, kindInvalid, "format: none of the 3 files could be replaced")
 }
 
 // asNobody runs fn on a thread that has given up the superuser's right to write everywhere, if the tests run as

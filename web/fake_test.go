@@ -137,6 +137,13 @@ func (f *fake) AtticOf(context.Context, int64) (store.AtticCount, error) {
 	return store.AtticCount{Originals: n, Versions: min(n, 1), Bytes: int64(n) * 41e6}, f.broken
 }
 
+func (f *fake) KeptByOthers(context.Context, int64) ([]store.KeptBy, error) {
+	if len(f.attic) == 0 {
+		return nil, f.broken
+	}
+	return []store.KeptBy{{RunID: 13, Originals: 2}}, f.broken
+}
+
 func (f *fake) invent(rng *rand.Rand, i, n int) (store.Recording, store.Job) {
 	folder := folders[i*len(folders)/max(n, 1)]
 	path := fmt.Sprintf("%s/%s %s %03d.wav", folder, firsts[rng.IntN(len(firsts))], seconds[rng.IntN(len(seconds))], i+1)

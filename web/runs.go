@@ -146,7 +146,8 @@ type runPage struct {
 	runView
 	List    []store.Job
 	AtWork  []store.Job
-	Attic   bool // originals that the run replaced are in the attic
+	Attic   bool           // originals that the run replaced are in the attic
+	Others  []store.KeptBy // runs that the originals of its recordings are kept for
 	Filters []filter
 	Only    store.JobState // the state the list is narrowed to
 	First   string
@@ -211,6 +212,9 @@ func (s *Site) findRun(c *gin.Context, n int64) (p runPage, err error) {
 			return p, err
 		}
 		p.Attic = len(kept) > 0
+		if p.Others, err = s.store.KeptByOthers(ctx, n); err != nil {
+			return p, err
+		}
 	}
 	if after > 0 {
 		p.First = jobsURL(n, p.Only, 0)

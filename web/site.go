@@ -30,6 +30,7 @@ type Store interface {
 	Originals(ctx context.Context, q store.OriginalQuery) ([]store.Original, error)
 	Versions(ctx context.Context, q store.OriginalQuery) ([]store.Version, error)
 	AtticOf(ctx context.Context, shelfID int64) (store.AtticCount, error)
+	KeptByOthers(ctx context.Context, runID int64) ([]store.KeptBy, error)
 }
 
 // Site serves the dashboard's pages and static files.

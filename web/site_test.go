@@ -165,6 +165,7 @@ func TestSentences(t *testing.T) {
 		{"full", "/runs/12", "levelled copies; originals not touched."},
 		{"replaced", "/runs/12", "levelled files in place of the originals, which go to the attic first."},
 		{"replaced", "/runs/12", "The originals it replaced are in the attic; a recording's page brings its own back, the button above all of them, as does evenshelf restore --of-run 12"},
+		{"replaced", "/runs/12", "2 originals of its recordings are kept for run 13, which wrote those files again."},
 		{"replaced", "/shelves/1", "In the attic now33 originals and 1 other version, 1.4 GB Bring the originals back"},
 		{"replaced", "/recordings/2", "/srv/radio/evening-even.attic/mine.0123456789ab.wav with other tags, kept today at 11:31"},
 		{"replaced", "/recordings/2", "The original is in the attic; the levelled file of run 12 took its place today at 11:31."},

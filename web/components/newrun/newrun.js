@@ -56,7 +56,7 @@ export function mount(button) {
     part.group.hidden = chosen() === "measure";
     group.querySelector("[data-levels]").hidden = !levels();
     group.value = levels() ? "" : "none";
-    part.shares.textContent = levels() ? "They share one gain, which does not go with a ride." : "They get a gain of their album too.";
+    part.shares.textContent = levels() ? "Those share one gain, which does not go with a ride." : "Those get a gain of their album too.";
     part.file.hidden = !levels();
     part.inplace.hidden = chosen() !== "replace";
   }
