@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"os"
+	"path"
 	"path/filepath"
 	"sync"
 
@@ -71,13 +72,18 @@ func (s *Service) replace(ctx context.Context, w store.Work, t level.Task, onShe
 		return r, err
 	}
 	if ours != nil {
-		l := store.Levelling{JobID: ours.JobID, RunID: ours.RunID, RecordingID: w.Recording.ID, Path: w.Recording.Path}
+		by, err := s.store.Job(ctx, ours.JobID) // of another recording, if it is a second copy that got tags
+		if err != nil {
+			return r, err
+		}
+		l := store.Levelling{JobID: by.ID, RunID: by.RunID, RecordingID: by.RecordingID, Path: by.Path}
 		if stands, err := s.stands(ctx, w, t, l); err != nil || stands {
 			return (&known{Levelling: l}).same(w), err
 		}
 		if t.TagsFrom, err = s.tagsFrom(ctx, w, onShelf); err != nil {
 			return r, err
 		}
+		t = inOwnFormat(t, source, w.Recording.Path)
 	}
 	at := place(w, source, ours)
 	if ours == nil {
@@ -134,6 +140,7 @@ func (s *Service) deliverCopy(ctx context.Context, w store.Work, t level.Task, o
 	} else if t.TagsFrom, err = s.tagsFrom(ctx, w, onShelf); err != nil {
 		return level.Outcome{}, "", err
 	}
+	t = inOwnFormat(t, source, w.Recording.Path)
 	deliver := func() (level.Outcome, string, error) {
 		return delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, t, key, delivery.Options{Overwrite: true})
 	}
@@ -182,6 +189,9 @@ func (s *Service) Restore(ctx context.Context, recordingID int64) (store.Recordi
 	shelf, err := s.store.ShelfNamed(ctx, rec.ShelfName) // Shelf would count all its recordings
 	if err != nil {
 		return fail(err)
+	}
+	if !sameFormat(kept.Stored, rec.Path) {
+		return fail(fmt.Errorf("what it was levelled from has another format, %s, and is at %s: %w", path.Ext(kept.Stored), filepath.Join(shelf.Attic(), kept.Stored), store.ErrState))
 	}
 	err = delivery.Restore(shelf.Root, rec.Path, shelf.Attic(), *inAttic(&kept), fmt.Sprintf("restore-%d", recordingID))
 	if err != nil {

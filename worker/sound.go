@@ -116,13 +116,16 @@ var formats = map[string]profile.Format{".wav": profile.WAV, ".flac": profile.FL
 // again is a levelling of a recording that is known: from its original, with the tags of the file that is there now.
 func (s *Service) again(w store.Work, k *known, t level.Task, onShelf string) (source string, _ level.Task, err error) {
 	t.Known, t.TagsFrom = nil, onShelf
-	if t.Profile.Delivered.Format == profile.OwnFormat && !sameFormat(k.Original.Stored, w.Recording.Path) {
-		if f, ok := formats[strings.ToLower(path.Ext(w.Recording.Path))]; ok { // its own format, not that of the other's original
-			t.Profile.Delivered.Format = f
-		}
-	}
 	source, err = stored(w.Shelf, *k.Original)
-	return source, t, err
+	return source, inOwnFormat(t, source, w.Recording.Path), err
+}
+
+// inOwnFormat has a recording written in its own format if that is not the one of the original it is levelled from.
+func inOwnFormat(t level.Task, source, rel string) level.Task {
+	if f, ok := formats[strings.ToLower(path.Ext(rel))]; ok && t.Profile.Delivered.Format == profile.OwnFormat && !sameFormat(source, rel) {
+		t.Profile.Delivered.Format = f
+	}
+	return t
 }
 
 // stored is where the attic has an original; errNoOriginal if it is gone.
@@ -170,6 +173,11 @@ func (s *Service) tag(ctx context.Context, w store.Work, t level.Task, onShelf, 
 				ours = &own
 			case !errors.Is(err, store.ErrNotFound):
 				return err
+			}
+		}
+		for _, l := range list { // a second copy of what was levelled: what it was levelled from is its original too
+			if ours == nil && l.Original != nil {
+				ours, at.Borrowed = l.Original, true
 			}
 		}
 		at.Ours = inAttic(ours)

@@ -1,8 +1,10 @@
 package worker
 
 import (
+	"errors"
 	"os"
 	"slices"
+	"strings"
 	"testing"
 
 	"evenshelf/engine/profile"
@@ -75,6 +77,39 @@ func TestSecondCopyInAnotherFormat(t *testing.T) {
 		if got != "levelled-17 sound of a.wav|b" {
 			t.Errorf("%s: %q", d, got)
 		}
+		if d == store.Replace { // once more, and what is not of its format does not take its place
+			b.wait(b.beginWith(s, d, func(p *profile.Profile) { p.Target = -16 }).ID, ended)
+			if got := b.onShelf("b.flac"); got != "levelled-16 sound of a.wav|b" {
+				t.Errorf("%q", got)
+			}
+			if _, err := s.Restore(b.ctx, b.recordings()["b.flac"].ID); !errors.Is(err, store.ErrState) || !strings.Contains(err.Error(), "another format, .wav") {
+				t.Errorf("%v", err)
+			}
+		}
+	}
+}
+
+// A second copy of what was levelled gets tags: it is levelled from what the first was, and stands where that stands.
+func TestTaggedSecondCopy(t *testing.T) {
+	b := newBench(t, "a.wav")
+	s := b.startService(&engine{}, 1)
+	b.wait(b.begin(s, store.Replace).ID, ended)
+	b.put("b.wav", "levelled sound of a.wav|b")
+	b.wait(b.begin(s, store.Tags).ID, ended)
+	id := b.recordings()["b.wav"].ID
+	if got := b.versions(id); !slices.Equal(got, []string{"levelled sound of a.wav|b"}) {
+		t.Errorf("versions: %q", got)
+	}
+	run := b.wait(b.begin(s, store.Replace).ID, ended)
+	if j := b.job(run.ID, "b.wav", store.Done, false); !strings.Contains(j.Reason, "sounds the same as a.wav") {
+		t.Errorf("%+v", j)
+	}
+	b.wait(b.beginWith(s, store.Replace, louder).ID, ended)
+	if got := b.onShelf("b.wav"); got != "levelled-17 sound of a.wav|b|gain" {
+		t.Errorf("%q", got)
+	}
+	if _, err := s.Restore(b.ctx, id); err != nil || b.onShelf("b.wav") != "sound of a.wav" {
+		t.Errorf("%v %q", err, b.onShelf("b.wav"))
 	}
 }
 

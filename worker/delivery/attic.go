@@ -172,12 +172,12 @@ func (d *delivery) toAttic(at *Place, target string) (original Original, version
 		return original, nil, err
 	}
 	if at.Ours == nil {
-		original = Original{Stored: d.stored(sum), SHA256: sum, Length: length}
+		original = Original{Stored: d.stored(sum, path.Ext(d.rel)), SHA256: sum, Length: length}
 		return original, nil, at.keep(target, original)
 	}
 	original = *at.Ours
 	if at.Borrowed {
-		original.Stored = d.stored(original.SHA256)
+		original.Stored = d.stored(original.SHA256, path.Ext(original.Stored))
 		if err := at.keep(filepath.Join(at.Attic, filepath.FromSlash(at.Ours.Stored)), original); err != nil {
 			return original, nil, err
 		}
@@ -188,15 +188,14 @@ func (d *delivery) toAttic(at *Place, target string) (original Original, version
 	case original.SHA256: // put back by hand
 		return original, nil, at.keep(target, original)
 	}
-	version = &Original{Stored: d.stored(sum), SHA256: sum, Length: length}
+	version = &Original{Stored: d.stored(sum, path.Ext(d.rel)), SHA256: sum, Length: length}
 	return original, version, at.keep(target, *version)
 }
 
 // stored names a file in the attic. The name carries the hash, so that another recording that comes to this path later
 // has a place too.
-func (d *delivery) stored(sum string) string {
-	ext := path.Ext(d.rel)
-	return strings.TrimSuffix(d.rel, ext) + "." + sum[:12] + ext
+func (d *delivery) stored(sum, extension string) string {
+	return strings.TrimSuffix(d.rel, path.Ext(d.rel)) + "." + sum[:12] + extension
 }
 
 // keep makes a file one in the attic.
