@@ -49,6 +49,8 @@ type Store interface {
 
 	Original(ctx context.Context, recordingID int64) (store.Original, error)
 	Originals(ctx context.Context, q store.OriginalQuery) ([]store.Original, error)
+	Versions(ctx context.Context, q store.OriginalQuery) ([]store.Version, error)
+	KeptByOthers(ctx context.Context, runID int64) ([]store.KeptBy, error)
 
 	Runs(ctx context.Context, limit int, before int64) ([]store.Run, error)
 	Run(ctx context.Context, id int64) (store.Run, error)
@@ -162,6 +164,7 @@ func (a *API) Register(r *gin.Engine) {
 	v1.POST("/recordings/:id/restore", a.handle(a.restore))
 
 	v1.GET("/attic", a.handle(a.listAttic))
+	v1.GET("/attic/versions", a.handle(a.listVersions))
 
 	v1.GET("/runs", a.handle(a.listRuns))
 	v1.POST("/runs", a.handle(a.startRun))

@@ -1,9 +1,13 @@
 package api
 
 import (
+	"context"
 	"errors"
+	"fmt"
 	"os"
+	"path/filepath"
 	"runtime"
+	"slices"
 	"strings"
 	"syscall"
 	"testing"
@@ -137,6 +141,7 @@ func TestAtticPageByPage(t *testing.T) {
 	run, jobs := h.startRun(store.Replace)
 	h.finish(jobs[0], level.Done)
 	h.finish(jobs[1], level.Done)
+	measured, _ := h.startRun(store.Measure)
 	first, second := min(jobs[0].RecordingID, jobs[1].RecordingID), max(jobs[0].RecordingID, jobs[1].RecordingID)
 	for _, c := range []struct {
 		address string
@@ -148,7 +153,7 @@ func TestAtticPageByPage(t *testing.T) {
 		{at("/attic?after=%d", second), nil},
 		{at("/attic?shelf=%d&run=%d", h.shelf.ID, run.ID), []int64{first, second}},
 		{at("/attic?shelf=%d", h.inbox.ID), nil},
-		{at("/attic?run=%d", run.ID+1), nil},
+		{at("/attic?run=%d", measured.ID), nil},
 	} {
 		var got struct{ Originals []store.Original }
 		r := h.get(c.address)
@@ -168,10 +173,71 @@ func TestAtticPageByPage(t *testing.T) {
 			}
 		}
 	}
+	h.get(at("/attic?run=%d", measured.ID+1)).wantProblem(t, kindNotFound, fmt.Sprintf("run %d", measured.ID+1))
+	h.get(at("/attic/versions?run=%d", measured.ID+1)).wantProblem(t, kindNotFound, "")
 	h.get(at("/attic?run=0&limit=1001")).wantProblem(t, kindBadRequest, "limit")
 	down := open(t, breakStore)
 	down.get(at("/attic")).wantProblem(t, kindInternal, "")
 	down.get(at("/recordings/%d", jobs[0].RecordingID)).wantProblem(t, kindInternal, "")
+}
+
+// A file that somebody made is listed with where it is, and an original with the run it is kept for.
+func TestAtticSaysWhereTheRestIs(t *testing.T) {
+	h := open(t, nil)
+	if r := h.get(at("/attic/versions")); strings.TrimSpace(string(r.body)) != `{"versions":[]}` {
+		t.Errorf("an empty attic: %d %s", r.status, r.body)
+	}
+	one, jobs := h.startRun(store.Replace)
+	h.finish(jobs[0], level.Done)
+	h.finish(jobs[1], level.Done)
+	two, again := h.startRun(store.Replace)
+	h.finish(jobOf(again, jobs[0].RecordingID), level.Done)
+	id := jobs[0].RecordingID
+	o, err := h.db.Original(t.Context(), id)
+	if err != nil {
+		t.Fatal(err)
+	}
+	mine := o
+	mine.SHA256, mine.Stored, mine.Length = hash("mine"), "mine.wav", 4
+	if err := h.db.KeepOriginal(t.Context(), o, mine, o); err != nil {
+		t.Fatal(err)
+	}
+	var page struct{ Versions []store.Version }
+	for address, want := range map[string]int{"/attic/versions": 2, fmt.Sprintf("/attic/versions?shelf=%d&run=%d", h.shelf.ID, two.ID): 1,
+		fmt.Sprintf("/attic/versions?run=%d", one.ID): 1, fmt.Sprintf("/attic/versions?shelf=%d", h.inbox.ID): 0, fmt.Sprintf("/attic/versions?after=%d", id): 0} {
+		r := h.get(at("%s", address))
+		r.into(t, 200, &page)
+		if len(page.Versions) != want {
+			t.Errorf("%s: %s", address, r.body)
+		}
+	}
+	h.get(at("/attic/versions?run=%d", two.ID)).into(t, 200, &page)
+	if v := page.Versions[0]; v.RecordingID != id || v.File != filepath.Join(h.shelf.Attic(), "mine.wav") || v.Earlier || v.SHA256 != hash("mine") {
+		t.Errorf("%+v", v)
+	}
+	var detail struct {
+		Versions []store.Version
+		History  []store.Event
+	}
+	h.get(at("/recordings/%d", id)).into(t, 200, &detail)
+	if len(detail.Versions) != 2 || !slices.ContainsFunc(detail.History, func(e store.Event) bool { return strings.Contains(e.Words, `to the attic as "mine.wav"`) }) {
+		t.Errorf("%+v", detail)
+	}
+	var kept struct {
+		Originals []store.Original
+		KeptBy    []store.KeptBy `json:"kept_by"`
+	}
+	h.get(at("/attic?run=%d", one.ID)).into(t, 200, &kept)
+	if len(kept.Originals) != 1 || len(kept.KeptBy) != 1 || kept.KeptBy[0] != (store.KeptBy{RunID: two.ID, Originals: 1}) {
+		t.Errorf("%+v", kept)
+	}
+	if all, err := h.db.AtticOf(t.Context(), h.shelf.ID); err != nil || all.Originals != 2 || all.Versions != 2 || all.Bytes == 0 {
+		t.Errorf("%+v %v", all, err)
+	}
+}
+
+func jobOf(list []store.Job, recordingID int64) store.Job {
+	return list[slices.IndexFunc(list, func(j store.Job) bool { return j.RecordingID == recordingID })]
 }
 
 func TestReplaceWantsAFolderItCanWriteTo(t *testing.T) {
@@ -202,6 +268,18 @@ func TestReplaceWantsAFolderItCanWriteTo(t *testing.T) {
 			t.Errorf("mode %o: %v, want %v", mode, err, want)
 		}
 	}
+}
+
+// unfit is a queue to which no format fits.
+type unfit struct{ Queue }
+
+func (unfit) StartRun(context.Context, store.NewRun) (store.Run, error) {
+	return store.Run{}, fmt.Errorf("none of the 3 files could be replaced: %w", store.ErrFormat)
+}
+
+func TestReplaceInAFormatThatDoesNotFit(t *testing.T) {
+	h := open(t, func(o *Options) { o.Queue = unfit{o.Queue} })
+	h.ask("POST", at("/runs"), `{"shelf_id":1,"profile":"rotation","delivery":"replace","format":"mp3"}`).wantProblem(t, kindInvalid, "format: none of the 3 files could be replaced")
 }
 
 // asNobody runs fn on a thread that has given up the superuser's right to write everywhere, if the tests run as

@@ -59,6 +59,7 @@ type recordingDetail struct {
 	Jobs      []store.Job     `json:"jobs"`
 	History   []store.Event   `json:"history"`
 	Original  *store.Original `json:"original"` // in the attic; nil if none is there
+	Versions  []store.Version `json:"versions"` // what else of it is there
 }
 
 func (a *API) showRecording(c *gin.Context) (int, any, error) {
@@ -83,7 +84,10 @@ func (a *API) showRecording(c *gin.Context) (int, any, error) {
 	if d.Original, err = a.original(ctx, id); err != nil {
 		return 0, nil, err
 	}
-	d.Jobs, d.History = list(d.Jobs), list(d.History)
+	if d.Versions, err = a.Store.Versions(ctx, store.OriginalQuery{RecordingID: id, Limit: 1}); err != nil {
+		return 0, nil, err
+	}
+	d.Jobs, d.History, d.Versions = list(d.Jobs), list(d.History), list(d.Versions)
 	return http.StatusOK, d, nil
 }
 

@@ -54,6 +54,9 @@ func (a *API) startRun(c *gin.Context) (int, any, error) {
 	if errors.Is(err, store.ErrNotFound) {
 		return 0, nil, invalid(complaint{"recordings", err.Error()})
 	}
+	if errors.Is(err, store.ErrFormat) {
+		return 0, nil, invalid(complaint{"format", strings.TrimSuffix(err.Error(), ": "+store.ErrFormat.Error())})
+	}
 	if err != nil {
 		return 0, nil, err
 	}
@@ -105,8 +108,17 @@ func (asked runRequest) profile(p profile.Profile) (own profile.Profile, errs []
 	if p.Name == "" { // that has been said
 		return p, nil
 	}
-	if (asked.Format != "" || asked.BitRate != 0) && !asked.Delivery.Levels() {
-		return p, []complaint{{"format", fmt.Sprintf("means nothing with delivery %s, which encodes no sound; nor does bit_rate_kbps", asked.Delivery)}}
+	if !asked.Delivery.Levels() {
+		why := fmt.Sprintf("means nothing with delivery %s, which encodes no sound", asked.Delivery)
+		if asked.Format != "" {
+			errs = append(errs, complaint{"format", why})
+		}
+		if asked.BitRate != 0 {
+			errs = append(errs, complaint{"bit_rate_kbps", why})
+		}
+		if errs != nil {
+			return p, errs
+		}
 	}
 	if asked.Delivery == store.Tags {
 		p = p.ForTags()

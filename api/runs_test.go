@@ -29,7 +29,8 @@ func TestRunWithWishesOfItsOwn(t *testing.T) {
 		`"delivery":"copy","bit_rate_kbps":191`:                      "bit_rate_kbps: 191 is not one of",
 		`"delivery":"copy","group":"album"`:                          "ride.speed: slow does not go with the group album",
 		`"delivery":"tags","format":"flac"`:                          "format: means nothing with delivery tags",
-		`"delivery":"measure","bit_rate_kbps":192`:                   "format: means nothing with delivery measure",
+		`"delivery":"copy","format":"flac","bit_rate_kbps":192`:      "bit_rate_kbps: means nothing in flac",
+		`"delivery":"measure","bit_rate_kbps":192`:                   "bit_rate_kbps: means nothing with delivery measure",
 		`"delivery":"tags","group":"disc"`:                           `group: "disc" is not one of`,
 		`"delivery":"copy","format":"mp3","bit_rate_kbps":191,"x":1`: "x: is not a field",
 	} {

@@ -239,7 +239,7 @@ func (c *levelCmd) tag(ctx context.Context, e *level.Engine, t level.Task, path 
 	}
 	dir, name := filepath.Split(real)
 	at := delivery.Place{Root: dir, Rel: name, Attic: filepath.Join(attic, dir), Source: real}
-	o, _, err := delivery.Tag(ctx, e, &at, t, fmt.Sprintf("%d", os.Getpid()), func(context.Context, delivery.Original) error { return nil })
+	o, _, err := delivery.Tag(ctx, e, &at, t, fmt.Sprintf("%d", os.Getpid()), func(context.Context, delivery.Original, *delivery.Original) error { return nil })
 	return o, err
 }
 

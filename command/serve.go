@@ -3,7 +3,6 @@ package command
 import (
 	"fmt"
 	"net"
-	"path/filepath"
 )
 
 type serveCmd struct {
@@ -18,16 +17,10 @@ func (c *serveCmd) Run(a *app) error {
 		return err
 	}
 	s, err := a.startServer(serverOptions{
-		data: a.Data, listen: c.Listen, shelfRoots: c.ShelfRoots, anyHost: c.OpenNetwork,
+		data: a.Data, listen: c.Listen, shelfRoots: c.ShelfRoots, anyHost: c.OpenNetwork, shelves: c.Shelf,
 	})
 	if err != nil {
 		return err
-	}
-	for name, root := range c.Shelf {
-		if err := a.ensureShelf(s.store, name, root, filepath.Join(a.Data, "copies")); err != nil {
-			s.stop()
-			return err
-		}
 	}
 	fmt.Fprintf(a.stdout, "Evenshelf is at %s  (Ctrl-C stops it)\n", s.url)
 	select {

@@ -33,6 +33,7 @@ type serverOptions struct {
 	listen     string
 	shelfRoots []string
 	anyHost    bool
+	shelves    map[string]string // folders, by the names they are registered under
 }
 
 // startServer wires the rooms together and returns once the server answers.
@@ -71,6 +72,11 @@ func (a *app) startServer(o serverOptions) (_ *server, err error) {
 	copies := filepath.Join(o.data, "copies")
 	if err := a.ensureShelf(s.store, store.UploadShelf, uploads, copies); err != nil {
 		return nil, err
+	}
+	for name, root := range o.shelves { // before anybody is answered, who would miss them
+		if err := a.ensureShelf(s.store, name, root, copies); err != nil {
+			return nil, err
+		}
 	}
 	if s.queue, err = worker.New(worker.Options{Store: s.store, Engine: engine, Log: a.log, Workers: a.workers()}); err != nil {
 		return nil, err

@@ -173,8 +173,38 @@ func TestMigrations(t *testing.T) {
 				t.Errorf("%+v", got)
 			}
 		}
-		if list, err := f.Levelled(f.ctx, f.shelf.ID, "after"); err != nil || len(list) != 3 {
+		if list, err := f.Levelled(f.ctx, f.shelf.ID, 0, "after"); err != nil || len(list) != 3 {
 			t.Errorf("%+v %v", list, err)
+		}
+	})
+	t.Run("5: down forgets versions and keeps originals", func(t *testing.T) {
+		f := open(t)
+		rec := f.found("a.wav")["a.wav"]
+		_, jobs := f.run(Replace)
+		o := Original{RecordingID: rec.ID, JobID: jobs[0], SHA256: strings.Repeat("a", 64), Levelled: strings.Repeat("f", 64), Stored: "a.wav", Size: 5, Length: 7}
+		v := o
+		v.SHA256, v.Stored = strings.Repeat("b", 64), "b.wav"
+		if err := f.KeepOriginal(f.ctx, o, v, v); err != nil { // twice, as after an attempt that was cut short
+			t.Fatal(err)
+		}
+		if got := f.texts(`SELECT kind || stored || length FROM attic ORDER BY sha256`); !slices.Equal(got, []string{"originala.wav7", "versionb.wav7"}) {
+			t.Errorf("%q", got)
+		}
+		if got := f.texts(`SELECT words FROM history WHERE what = 'changed'`); len(got) != 1 {
+			t.Errorf("history: %q", got)
+		}
+		ours, err := ourMigrations(f.writer, migrations.SQLite)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if _, err := ours.DownTo(f.ctx, 4); err != nil {
+			t.Fatal(err)
+		}
+		if _, err := ours.Up(f.ctx); err != nil {
+			t.Fatal(err)
+		}
+		if all, err := f.AtticOf(f.ctx, f.shelf.ID); err != nil || all != (AtticCount{Originals: 1, Bytes: 5}) { // of what took its place
+			t.Errorf("%+v %v", all, err)
 		}
 	})
 	t.Run("up from a populated database keeps it", func(t *testing.T) {

@@ -150,6 +150,22 @@ func (n NewRun) pick(ctx context.Context, tx *sql.Tx) (w conditions, err error) 
 	return w, nil
 }
 
+// Paths are those of the recordings that a run would be about, in no order. Errors as for CreateRun.
+func (s *Store) Paths(ctx context.Context, n NewRun) (paths []string, err error) {
+	err = s.read(ctx, func(tx *sql.Tx) error {
+		pick, err := n.pick(ctx, tx)
+		if err != nil {
+			return err
+		}
+		paths, err = collect(ctx, tx, func(row scanner) (p string, err error) { return p, row.Scan(&p) }, `SELECT path FROM recordings`+pick.where(), pick.args...)
+		return err
+	})
+	if err != nil {
+		return nil, fmt.Errorf("recordings of a run: %w", err)
+	}
+	return paths, nil
+}
+
 // insertJobs makes a waiting job for each recording that matches and returns their ids in path order.
 func insertJobs(ctx context.Context, tx *sql.Tx, runID int64, pick conditions) ([]int64, error) {
 	if _, err := tx.ExecContext(ctx, `INSERT INTO jobs (run_id, recording_id, bytes)

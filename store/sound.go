@@ -17,15 +17,16 @@ type Levelling struct {
 	Original                  *Original // what it was levelled from, if the attic has it
 }
 
-// Levelled returns the done levellings on a shelf whose result has a sound, newest first.
-func (s *Store) Levelled(ctx context.Context, shelfID int64, audioHash string) (list []Levelling, err error) {
+// Levelled returns the done levellings on a shelf whose result has a sound: first those of a recording (0: of none), then
+// those of others that sound the same, the newest of each first.
+func (s *Store) Levelled(ctx context.Context, shelfID, recordingID int64, audioHash string) (list []Levelling, err error) {
 	err = s.read(ctx, func(tx *sql.Tx) error {
 		list, err = collect(ctx, tx, func(row scanner) (l Levelling, err error) {
 			return l, row.Scan(&l.JobID, &l.RunID, &l.RecordingID, &l.Path)
 		}, `SELECT j.id, j.run_id, rec.id, rec.path FROM readings a JOIN jobs j ON j.id = a.job_id
 			JOIN runs r ON r.id = j.run_id JOIN recordings rec ON rec.id = j.recording_id
 			WHERE a.audio_hash = ? AND a.audio_hash <> '' AND a.kind = 'after' AND j.state = 'done' AND r.delivery IN ('copy', 'replace')
-				AND rec.shelf_id = ? ORDER BY a.id DESC LIMIT 100`, audioHash, shelfID)
+				AND rec.shelf_id = ? ORDER BY rec.id = ? DESC, a.id DESC LIMIT 100`, audioHash, shelfID, recordingID)
 		for i := range list {
 			if err == nil {
 				list[i].Original, err = originalOf(ctx, tx, list[i])
@@ -42,7 +43,7 @@ func (s *Store) Levelled(ctx context.Context, shelfID int64, audioHash string) (
 // originalOf finds in the attic what a job levelled. Later jobs may have levelled it too, so that it is theirs now: it
 // is known by its own sound. A job without an original to find has nil.
 func originalOf(ctx context.Context, tx *sql.Tx, l Levelling) (*Original, error) {
-	o, err := one(ctx, tx, scanOriginal, "original", allOriginals+` WHERE a.recording_id = ? AND EXISTS (
+	o, err := one(ctx, tx, scanOriginal, "original", inAttic+` WHERE `+isOriginal+` AND a.recording_id = ? AND EXISTS (
 			SELECT 1 FROM readings mine JOIN readings its ON its.audio_hash = mine.audio_hash AND its.job_id = coalesce(j.same_as, j.id) AND its.kind = 'before'
 			WHERE mine.job_id = ? AND mine.kind = 'before' AND mine.audio_hash <> '')
 		ORDER BY a.kept_at DESC LIMIT 1`, l.RecordingID, l.JobID)

@@ -52,7 +52,7 @@ func TestLevelledIsFoundByItsSound(t *testing.T) {
 		job      int64
 		original string
 	}{"one": {first, "a"}, "two": {second, "a"}, "three": {third, "b"}, "copied": {copied, ""}, "tagged": {}, "failed": {}, "original": {}, "": {}} {
-		list, err := f.Levelled(f.ctx, f.shelf.ID, sound)
+		list, err := f.Levelled(f.ctx, f.shelf.ID, 0, sound)
 		if err != nil || (want.job == 0) != (len(list) == 0) {
 			t.Errorf("%q: %+v %v", sound, list, err)
 			continue
@@ -65,7 +65,7 @@ func TestLevelledIsFoundByItsSound(t *testing.T) {
 			t.Errorf("%q: %+v, want %+v", sound, l, want)
 		}
 	}
-	if list, err := f.Levelled(f.ctx, f.addShelf("other").ID, "one"); err != nil || len(list) != 0 {
+	if list, err := f.Levelled(f.ctx, f.addShelf("other").ID, 0, "one"); err != nil || len(list) != 0 {
 		t.Errorf("on another shelf: %+v %v", list, err)
 	}
 }

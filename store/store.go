@@ -29,6 +29,9 @@ import (
 // ErrInvalid is wrapped when what was asked for does not make sense: a bad name, cursor, folder or profile.
 var ErrInvalid = errors.New("not valid")
 
+// ErrFormat is an ErrInvalid: files in the format that a run asks for could not go where it puts them.
+var ErrFormat = fmt.Errorf("the format is %w", ErrInvalid)
+
 // Options says where the database is.
 type Options struct {
 	Path string // of the SQLite file; its folder is made

@@ -52,14 +52,42 @@ type Original struct {
 	Stored      string    `json:"-"`      // where it is, relative to the attic
 	Levelled    string    `json:"-"`      // SHA-256 of the file that took its place
 	Size        int64     `json:"-"`      // of the file that took its place, bytes
+	Length      int64     `json:"-"`      // of the original, bytes; 0 if that was not noted
+	Modified    time.Time `json:"-"`      // of the file that took its place; only KeepOriginal takes it, zero: the time of the one before
+}
+
+// AtticCount is how much the attic has.
+type AtticCount struct {
+	Originals int   // that can be brought back
+	Versions  int   // other files
+	Bytes     int64 // of all; about, where an older version noted no length
+}
+
+// Version is what the attic keeps of a recording beside the original that is brought back.
+type Version struct {
+	RecordingID int64     `json:"recording_id"`
+	ShelfID     int64     `json:"shelf_id"`
+	RunID       int64     `json:"run_id"` // that took its place
+	Path        string    `json:"path"`   // of the recording, relative to the shelf's root
+	KeptAt      time.Time `json:"kept_at"`
+	SHA256      string    `json:"sha256"`
+	File        string    `json:"file"`    // where it is, an absolute path
+	Earlier     bool      `json:"earlier"` // an original of an earlier file in the recording's place; else one with other tags
+}
+
+// KeptBy says for which run the attic has originals.
+type KeptBy struct {
+	RunID     int64 `json:"run_id"`
+	Originals int   `json:"originals"`
 }
 
 // OriginalQuery selects a page of the attic, in order of the recordings' ids.
 type OriginalQuery struct {
-	ShelfID int64 // 0 = all
-	RunID   int64 // 0 = all; else those that run replaced last
-	After   int64 // recording id of the last one of the page before
-	Limit   int   // 1 … 1000, 0 = 100
+	ShelfID     int64 // 0 = all
+	RunID       int64 // 0 = all; else those that run replaced last
+	RecordingID int64 // 0 = all; only Versions asks
+	After       int64 // recording id of the last one of the page before
+	Limit       int   // 1 … 1000, 0 = 100
 }
 
 // ShelfSummary is a shelf with what is known about its recordings, those missing from the disk left out.

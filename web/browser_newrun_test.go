@@ -9,6 +9,8 @@ import (
 	"github.com/chromedp/chromedp"
 	"github.com/chromedp/chromedp/kb"
 
+	"evenshelf/engine/audio"
+	"evenshelf/engine/profile"
 	"evenshelf/web/webtest"
 )
 
@@ -50,8 +52,8 @@ func testTags(t *testing.T, ctx context.Context, url string, f *fake) {
 	shown := func(part string) bool {
 		return webtest.Eval[bool](t, ctx, fmt.Sprintf(`!!document.querySelector("dialog[open] [data-part=%s]").offsetParent`, part))
 	}
-	if !shown("file") || shown("group") {
-		t.Error("a run that levels asks for a group, or not for a format")
+	if !shown("file") || !shown("group") || shown("single") || !webtest.Eval[bool](t, ctx, `document.querySelector("dialog[open] [name=group]").value === ""`) {
+		t.Error("a run that levels asks how a single channel counts, or not for a format and a group")
 	}
 	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [name=format]").value = "flac"`)
 	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [value=replace]").click()`)
@@ -59,16 +61,29 @@ func testTags(t *testing.T, ctx context.Context, url string, f *fake) {
 		t.Error("nothing is said of files that cannot take their original's place")
 	}
 	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [value=tags]").click()`)
-	if shown("file") || !shown("group") || !shown("sure") {
-		t.Error("a run for tags asks for a format, or not for a group and a second step")
+	if shown("file") || shown("how") || !shown("single") || !shown("group") || !shown("sure") || !webtest.Eval[bool](t, ctx, `document.querySelector("dialog[open] [name=group]").value === "none"`) {
+		t.Error("a run for tags asks for a format or a profile, or not for a group, a single channel and a second step")
 	}
+	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [value=two-loudspeakers]").click()`)
 	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [name=group]").value = "album"`)
 	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [name=sure]").click()`)
 	webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [type=submit]").click()`)
 	until(t, ctx, `location.pathname === "/runs/12"`)
-	if body := <-f.asked; !strings.Contains(body, `"delivery":"tags"`) || !strings.Contains(body, `"group":"album"`) || strings.Contains(body, "format") {
+	if body := <-f.asked; !strings.Contains(body, `"delivery":"tags"`) || !strings.Contains(body, `"group":"album"`) || !strings.Contains(body, fmt.Sprintf(`"profile":%q`, twoLoudspeakers(t))) || strings.Contains(body, "format") {
 		t.Errorf("asked for %s", body)
 	}
+}
+
+// twoLoudspeakers is the first profile that counts a single channel so.
+func twoLoudspeakers(t *testing.T) string {
+	t.Helper()
+	for _, p := range profile.Gather("").All {
+		if p.Mono == audio.TwoLoudspeakers {
+			return p.Name
+		}
+	}
+	t.Fatal("no profile counts a single channel as two loudspeakers play it")
+	return ""
 }
 
 // testRestoreAll brings all originals of a run back; those that cannot be are named, and stay.

@@ -76,7 +76,7 @@ func TestInBrowser(t *testing.T) {
 	t.Run("replacing takes a second step", func(t *testing.T) { testReplacing(t, ctx, url, f) })
 	t.Run("tags", func(t *testing.T) { testTags(t, ctx, url, f) })
 	t.Run("all originals are brought back", func(t *testing.T) { testRestoreAll(t, ctx) })
-	t.Run("measuring asks for a profile where it matters", func(t *testing.T) {
+	t.Run("measuring asks how a single channel counts where it matters", func(t *testing.T) {
 		for _, c := range []struct {
 			rule audio.MonoRule
 			asks bool
@@ -89,7 +89,7 @@ func TestInBrowser(t *testing.T) {
 			webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("[data-component=newrun]").click()`)
 			until(t, ctx, `document.querySelectorAll("dialog[open] input[name=profile]").length === 3`)
 			webtest.Eval[chromedp.Void](t, ctx, `document.querySelector("dialog[open] [value=measure]").click()`)
-			if got := webtest.Eval[bool](t, ctx, `!!document.querySelector("dialog[open] [data-part=how]").offsetParent`); got != c.asks {
+			if got := webtest.Eval[bool](t, ctx, `!!document.querySelector("dialog[open] [data-part=single]").offsetParent`); got != c.asks {
 				t.Errorf("with a second profile that counts %s: asks %v, want %v", c.rule, got, c.asks)
 			}
 		}
@@ -311,6 +311,8 @@ func testMaths(t *testing.T, ctx context.Context, url string) {
 		t.Error("the first three seconds set the foot of the scale, or not its head")
 	}
 	for what, body := range map[string]string{
+		"what counts a single channel so is named": `const p = [{ name: "a", mono: "x" }, { name: "untouched", mono: "y" }, { name: "b", mono: "y" }, { name: "c", mono: "z" }];
+			return m.counting(p, "x") === "a" && m.counting(p, "y") === "untouched" && m.counting(p, "z") === "c" && m.counting(p, "w") === "a" && m.counting([], "x") === undefined`,
 		"each unusable file is named once": `const p = (...files) => m.unusable(files.map((file) => ({ file, words: "" }))); return p() === "" && p("a.toml", "a.toml") === "1 file in the profiles folder cannot be used: a.toml." &&
 			p("1.toml", "2.toml", "3.toml", "4.toml", "5.toml", "6.TOML", "7.toml") === "7 files in the profiles folder cannot be used: 1.toml, 2.toml, 3.toml, 4.toml, 5.toml, and 2 more." && p("/srv/profiles") === "The profiles folder cannot be read."`,
 	} {

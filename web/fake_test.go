@@ -123,6 +123,27 @@ func (f *fake) Originals(_ context.Context, q store.OriginalQuery) ([]store.Orig
 	return list, f.broken
 }
 
+func (f *fake) Versions(_ context.Context, q store.OriginalQuery) ([]store.Version, error) {
+	if q.RecordingID != 2 || len(f.attic) == 0 {
+		return nil, f.broken
+	}
+	return []store.Version{{RecordingID: 2, File: "/srv/radio/evening-even.attic/mine.0123456789ab.wav", KeptAt: noon.Add(-29 * time.Minute)}}, f.broken
+}
+
+func (f *fake) AtticOf(context.Context, int64) (store.AtticCount, error) {
+	f.mu.Lock()
+	defer f.mu.Unlock()
+	n := len(f.attic)
+	return store.AtticCount{Originals: n, Versions: min(n, 1), Bytes: int64(n) * 41e6}, f.broken
+}
+
+func (f *fake) KeptByOthers(context.Context, int64) ([]store.KeptBy, error) {
+	if len(f.attic) == 0 {
+		return nil, f.broken
+	}
+	return []store.KeptBy{{RunID: 13, Originals: 2}}, f.broken
+}
+
 func (f *fake) invent(rng *rand.Rand, i, n int) (store.Recording, store.Job) {
 	folder := folders[i*len(folders)/max(n, 1)]
 	path := fmt.Sprintf("%s/%s %s %03d.wav", folder, firsts[rng.IntN(len(firsts))], seconds[rng.IntN(len(seconds))], i+1)

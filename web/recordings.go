@@ -192,6 +192,7 @@ type recordingPage struct {
 	History       []store.Event
 	Original      *store.Original // in the attic; nil if none is there
 	OnlyTagged    bool            // what took its place differs in its gain tags alone
+	Versions      []store.Version // what else of it is in the attic
 }
 
 func (s *Site) recording(c *gin.Context) {
@@ -231,6 +232,9 @@ func (s *Site) findRecording(c *gin.Context, n int64) (p recordingPage, err erro
 		}
 		p.OnlyTagged = tagged(&by)
 	case !errors.Is(err, store.ErrNotFound):
+		return p, err
+	}
+	if p.Versions, err = s.store.Versions(ctx, store.OriginalQuery{RecordingID: n, Limit: 1}); err != nil {
 		return p, err
 	}
 	for i := range p.Jobs {

@@ -26,9 +26,7 @@ type runView struct {
 	Parts    []part
 	Ended    int    // done, held, failed or cancelled
 	Reached  int    // those of them that had their turn: all but the cancelled
-	Delivers string // the delivery in words
-	Encoded  string // in what the files are written, if not as they were
-	Together string // which recordings share a gain
+	Delivers string // what is written and where that goes, in words
 	Pace     string // audio done in a minute, in words; "" while not known
 	Left     string // time left in words, "" while not known or when finished
 	Going    bool   // waiting or working
@@ -43,13 +41,7 @@ type part struct {
 }
 
 func viewRun(r store.Run, now time.Time) runView {
-	v := runView{Run: r, Delivers: deliveryWords(r.Delivery)}
-	if r.Delivery.Levels() {
-		v.Encoded = encodedWords(r)
-	}
-	if r.Delivery != store.Measure {
-		v.Together = groupWords(r)
-	}
+	v := runView{Run: r, Delivers: deliveryWords(r)}
 	v.Reached = r.Done + r.Held + r.Failed
 	v.Ended = v.Reached + r.Cancelled
 	v.Going = going(r.State)
@@ -154,7 +146,8 @@ type runPage struct {
 	runView
 	List    []store.Job
 	AtWork  []store.Job
-	Attic   bool // originals that the run replaced are in the attic
+	Attic   bool           // originals that the run replaced are in the attic
+	Others  []store.KeptBy // runs that the originals of its recordings are kept for
 	Filters []filter
 	Only    store.JobState // the state the list is narrowed to
 	First   string
@@ -219,6 +212,9 @@ func (s *Site) findRun(c *gin.Context, n int64) (p runPage, err error) {
 			return p, err
 		}
 		p.Attic = len(kept) > 0
+		if p.Others, err = s.store.KeptByOthers(ctx, n); err != nil {
+			return p, err
+		}
 	}
 	if after > 0 {
 		p.First = jobsURL(n, p.Only, 0)

@@ -20,7 +20,6 @@ type shelfView struct {
 	Going        bool     // the last run has not ended yet
 	Whole        bool     // the shelf has a page, or the start page, to itself
 	TakesUploads bool     // it is the one shelf that does
-	Kept         bool     // there are originals in the attic; only where the page of a shelf asks
 }
 
 func viewShelf(s store.ShelfSummary) shelfView {
@@ -68,6 +67,11 @@ func (s *Site) shelves(c *gin.Context) {
 	s.render(c, http.StatusOK, "shelves", p)
 }
 
+type shelfPage struct {
+	shelfView
+	Kept store.AtticCount
+}
+
 func (s *Site) shelf(c *gin.Context) {
 	n, err := id(c)
 	if err != nil {
@@ -79,12 +83,11 @@ func (s *Site) shelf(c *gin.Context) {
 		s.fail(c, err)
 		return
 	}
-	kept, err := s.store.Originals(c.Request.Context(), store.OriginalQuery{ShelfID: n, Limit: 1})
-	if err != nil {
+	p := shelfPage{shelfView: viewShelf(sh)}
+	p.Whole = true
+	if p.Kept, err = s.store.AtticOf(c.Request.Context(), n); err != nil {
 		s.fail(c, err)
 		return
 	}
-	v := viewShelf(sh)
-	v.Whole, v.Kept = true, len(kept) > 0
-	s.render(c, http.StatusOK, "shelf", v)
+	s.render(c, http.StatusOK, "shelf", p)
 }

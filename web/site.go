@@ -28,6 +28,9 @@ type Store interface {
 	HeldFor(ctx context.Context, recordingIDs []int64) (map[int64][]level.Doubt, error)
 	Original(ctx context.Context, recordingID int64) (store.Original, error)
 	Originals(ctx context.Context, q store.OriginalQuery) ([]store.Original, error)
+	Versions(ctx context.Context, q store.OriginalQuery) ([]store.Version, error)
+	AtticOf(ctx context.Context, shelfID int64) (store.AtticCount, error)
+	KeptByOthers(ctx context.Context, runID int64) ([]store.KeptBy, error)
 }
 
 // Site serves the dashboard's pages and static files.

@@ -24,8 +24,22 @@ func stateWords(s store.JobState) string {
 	return string(s)
 }
 
-// deliveryWords says where a run's results go.
-func deliveryWords(d store.Delivery) string {
+// deliveryWords says what a run writes and where that goes: "MP3, 192 kbit/s, one gain for a folder: levelled copies …".
+func deliveryWords(r store.Run) string {
+	var what []string
+	if encoded := encodedWords(r); encoded != "" && r.Delivery.Levels() {
+		what = append(what, encoded)
+	}
+	if group := groupWords(r); group != "" && r.Delivery != store.Measure {
+		what = append(what, group)
+	}
+	if len(what) > 0 {
+		return strings.Join(what, ", ") + ": " + goesTo(r.Delivery)
+	}
+	return goesTo(r.Delivery)
+}
+
+func goesTo(d store.Delivery) string {
 	switch d {
 	case store.Measure:
 		return "only measuring, nothing is written"
@@ -39,12 +53,9 @@ func deliveryWords(d store.Delivery) string {
 	return string(d)
 }
 
-// encodedWords says in what a run's files are written where that is not the source's own: "as MP3, 192 kbit/s".
+// encodedWords says in what a run's files are written where that is not the source's own: "MP3, 192 kbit/s".
 func encodedWords(r store.Run) string {
-	words := ""
-	if name := formatNames[r.Format]; name != "" {
-		words = "as " + name
-	}
+	words := formatNames[r.Format]
 	if r.BitRate != 0 {
 		words += fmt.Sprintf(", %d kbit/s", r.BitRate)
 	}

@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"os"
+	"path"
 	"path/filepath"
 	"sync"
 
@@ -25,6 +26,16 @@ func (s *Service) firstGeneration(ctx context.Context, shelf store.Shelf, record
 	return source, ours, err
 }
 
+// tagsFrom is where a recording that is levelled from its original has its tags from: the file that was put in its place if
+// that got those of a version somebody made, else "", the original.
+func (s *Service) tagsFrom(ctx context.Context, w store.Work, onShelf string) (string, error) {
+	versions, err := s.store.Versions(ctx, store.OriginalQuery{RecordingID: w.Recording.ID, Limit: 1})
+	if err != nil || len(versions) == 0 {
+		return "", err
+	}
+	return onShelf, nil
+}
+
 // ours is what the attic has of a file that is, byte for byte, what we put in a recording's place; nil if it is not.
 func (s *Service) ours(ctx context.Context, recordingID int64, onShelf string) (*store.Original, error) {
 	kept, err := s.store.Original(ctx, recordingID)
@@ -33,7 +44,7 @@ func (s *Service) ours(ctx context.Context, recordingID int64, onShelf string) (
 		return nil, nil
 	case err != nil:
 		return nil, err
-	case !inAttic(kept).IsLevelled(onShelf):
+	case !inAttic(&kept).IsLevelled(onShelf):
 		return nil, nil
 	}
 	return &kept, nil
@@ -48,6 +59,9 @@ const already = "levelled with this profile already"
 
 // replace puts the levelled copy in the recording's place, unless what it would put there is there.
 func (s *Service) replace(ctx context.Context, w store.Work, t level.Task, onShelf, key string) (r result, err error) {
+	if refusal := delivery.Unfit(w.Profile.Delivered.Format, w.Recording.Path); refusal != "" { // before the work, not after it
+		return result{outcome: failedBecause(refusal)}, nil
+	}
 	leave, err := s.places.enter(ctx, w.Recording.ID)
 	if err != nil {
 		return r, err
@@ -58,17 +72,25 @@ func (s *Service) replace(ctx context.Context, w store.Work, t level.Task, onShe
 		return r, err
 	}
 	if ours != nil {
-		l := store.Levelling{JobID: ours.JobID, RunID: ours.RunID, RecordingID: w.Recording.ID, Path: w.Recording.Path}
+		by, err := s.store.Job(ctx, ours.JobID) // of another recording, if it is a second copy that got tags
+		if err != nil {
+			return r, err
+		}
+		l := store.Levelling{JobID: by.ID, RunID: by.RunID, RecordingID: by.RecordingID, Path: by.Path}
 		if stands, err := s.stands(ctx, w, t, l); err != nil || stands {
 			return (&known{Levelling: l}).same(w), err
 		}
-	} else {
-		t.Known = s.whoever(ctx, w, s.levelledBefore(ctx, w, t))
+		if t.TagsFrom, err = s.tagsFrom(ctx, w, onShelf); err != nil {
+			return r, err
+		}
+		t = inOwnFormat(t, source, w.Recording.Path)
+	}
+	at := place(w, source, ours)
+	if ours == nil {
+		t.Known = s.whoever(ctx, w, s.levelledBefore(ctx, w, t, &at))
 	}
 	put := func() error {
-		r.outcome, r.output, err = delivery.Replace(ctx, s.engine, place(w, source, ours), t, key, func(ctx context.Context, o delivery.Original) error {
-			return s.keepOriginal(ctx, w.Recording.ID, w.Job.ID, o)
-		})
+		r.outcome, r.output, err = delivery.Replace(ctx, s.engine, &at, t, key, s.record(w.Recording.ID, w.Job.ID))
 		return err
 	}
 	var k *known
@@ -78,12 +100,10 @@ func (s *Service) replace(ctx context.Context, w store.Work, t level.Task, onShe
 	if k.stands {
 		return k.same(w), nil
 	}
-	if k.RecordingID == w.Recording.ID {
-		ours = k.Original
-	}
-	if source, t, err = s.again(w.Shelf, k, t, onShelf); err != nil {
+	if at.Source, t, err = s.again(w, k, t, onShelf); err != nil {
 		return r, err
 	}
+	at.Ours, at.Borrowed = inAttic(k.Original), k.RecordingID != w.Recording.ID
 	err = put()
 	if plan := r.outcome.Plan; err == nil && plan != nil && plan.Untouched { // copied byte for byte, tags and all
 		r.outcome.Verdict.Reason = "the original is within the profile and is back with the tags it had; the file with other tags is in the attic"
@@ -116,8 +136,11 @@ func (s *Service) deliverCopy(ctx context.Context, w store.Work, t level.Task, o
 		return level.Outcome{}, "", err
 	}
 	if ours == nil {
-		t.Known = s.whoever(ctx, w, s.levelledBefore(ctx, w, t))
+		t.Known = s.whoever(ctx, w, s.levelledBefore(ctx, w, t, nil))
+	} else if t.TagsFrom, err = s.tagsFrom(ctx, w, onShelf); err != nil {
+		return level.Outcome{}, "", err
 	}
+	t = inOwnFormat(t, source, w.Recording.Path)
 	deliver := func() (level.Outcome, string, error) {
 		return delivery.Deliver(ctx, s.engine, source, w.Shelf.Copies, w.Recording.Path, t, key, delivery.Options{Overwrite: true})
 	}
@@ -125,14 +148,18 @@ func (s *Service) deliverCopy(ctx context.Context, w store.Work, t level.Task, o
 	if o, output, err = deliver(); !errors.As(err, &k) {
 		return o, output, err
 	}
-	if source, t, err = s.again(w.Shelf, k, t, onShelf); err != nil {
+	if source, t, err = s.again(w, k, t, onShelf); err != nil {
 		return level.Outcome{}, "", err
 	}
 	return deliver()
 }
 
-func inAttic(o store.Original) delivery.Original {
-	return delivery.Original{Stored: o.Stored, SHA256: o.SHA256, Levelled: o.Levelled, Size: o.Size}
+// inAttic is an original as delivery knows it; nil if there is none.
+func inAttic(o *store.Original) *delivery.Original {
+	if o == nil {
+		return nil
+	}
+	return &delivery.Original{Stored: o.Stored, SHA256: o.SHA256, Levelled: o.Levelled, Size: o.Size, Length: o.Length}
 }
 
 // Restore puts a recording's original back in its place, bit for bit, and returns the recording as it is
@@ -163,7 +190,10 @@ func (s *Service) Restore(ctx context.Context, recordingID int64) (store.Recordi
 	if err != nil {
 		return fail(err)
 	}
-	err = delivery.Restore(shelf.Root, rec.Path, shelf.Attic(), inAttic(kept), fmt.Sprintf("restore-%d", recordingID))
+	if !sameFormat(kept.Stored, rec.Path) {
+		return fail(fmt.Errorf("what it was levelled from has another format, %s, and is at %s: %w", path.Ext(kept.Stored), filepath.Join(shelf.Attic(), kept.Stored), store.ErrState))
+	}
+	err = delivery.Restore(shelf.Root, rec.Path, shelf.Attic(), *inAttic(&kept), fmt.Sprintf("restore-%d", recordingID))
 	if err != nil {
 		return fail(fmt.Errorf("%w: %w", err, store.ErrState))
 	}

@@ -131,6 +131,41 @@ func TestRestoreSaysWhatToDo(t *testing.T) {
 	}
 }
 
+// A format that nothing could be replaced in is refused at once, and where only some could, those that cannot end without work.
+func TestReplaceInAFormatThatDoesNotFit(t *testing.T) {
+	b := newBench(t, "a.wav")
+	e := &engine{}
+	s := b.startService(e, 1)
+	asFLAC := func(p *profile.Profile) { p.Delivered.Format = profile.FLAC }
+	p, err := profile.Named("rotation")
+	if err != nil {
+		t.Fatal(err)
+	}
+	asFLAC(&p)
+	scanned(b, s)
+	if _, err := s.StartRun(b.ctx, store.NewRun{ShelfID: b.shelf.ID, Profile: p, Delivery: store.Replace}); !errors.Is(err, store.ErrFormat) || !strings.Contains(err.Error(), ".wav") {
+		t.Errorf("%v", err)
+	}
+	b.put("b.flac", "sound of b")
+	run := b.wait(b.beginWith(scanned(b, s), store.Replace, asFLAC).ID, ended)
+	b.job(run.ID, "b.flac", store.Done, false)
+	if j := b.job(run.ID, "a.wav", store.Failed, false); !strings.Contains(j.Reason, "cannot take the place of .wav") || j.Attempts != 1 || e.times("a.wav") != 0 {
+		t.Errorf("%+v, at work %d times", j, e.times("a.wav"))
+	}
+}
+
+// What takes an original's place and is as long has another time, which is no change to the next scan.
+func TestReplacedAsLongIsNoChange(t *testing.T) {
+	b := newBench(t, "a.wav")
+	s := b.startService(&engine{}, 1)
+	b.wait(b.begin(s, store.Replace).ID, ended)
+	b.wait(b.beginWith(s, store.Replace, func(p *profile.Profile) { p.Target = -16 }).ID, ended) // longer
+	b.wait(b.beginWith(s, store.Replace, louder).ID, ended)                                      // as long
+	if scan, err := s.Scan(b.ctx, b.shelf.ID, ""); err != nil || scan.Changed != 0 {
+		t.Errorf("%+v %v", scan, err)
+	}
+}
+
 func TestTurnstileLetsOneThrough(t *testing.T) {
 	var turn turnstile[int64]
 	var wg sync.WaitGroup

@@ -182,7 +182,15 @@ func (e *engine) Level(ctx context.Context, source string, t level.Task, scratch
 		state = level.Held
 	}
 	return level.Outcome{Before: before, After: heard(scratch, -18), Plan: &level.Plan{Gain: 12}, Renders: 1,
-		Verdict: level.Verdict{State: state}, Extension: filepath.Ext(source)}, nil
+		Verdict: level.Verdict{State: state}, Extension: extension(t, source)}, nil
+}
+
+// extension is the source's own unless the profile names a format that is called as its extension is.
+func extension(t level.Task, source string) string {
+	if f := t.Profile.Delivered.Format; f != profile.OwnFormat {
+		return "." + string(f)
+	}
+	return filepath.Ext(source)
 }
 
 func reading(lufs audio.LUFS) *level.Analysis {

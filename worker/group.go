@@ -207,7 +207,7 @@ func (s *Service) toLevel(ctx context.Context, w store.Work, r store.Recording, 
 		}
 		return onShelf, nil // its own turn says why it cannot be read
 	}
-	list, err := s.store.Levelled(ctx, w.Shelf.ID, a.AudioHash)
+	list, err := s.store.Levelled(ctx, w.Shelf.ID, r.ID, a.AudioHash)
 	if err != nil {
 		return "", err
 	}

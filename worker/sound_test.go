@@ -143,7 +143,8 @@ func TestCopyOfWhatWasTagged(t *testing.T) {
 }
 
 // A second copy of what was levelled, under another name and with other tags, is not levelled either; with another
-// profile it is levelled from the original of the first, and is itself what the attic keeps of it.
+// profile it is levelled from the original of the first, which is its own then too: what is levelled is no original. The
+// file with its tags is in the attic as a version.
 func TestSecondCopyOfWhatWasLevelled(t *testing.T) {
 	b := newBench(t, "a.wav")
 	s := b.startService(&engine{}, 1)
@@ -158,11 +159,18 @@ func TestSecondCopyOfWhatWasLevelled(t *testing.T) {
 	if got := b.onShelf("best of/b.wav"); got != "levelled-17 sound of a.wav|best of" {
 		t.Errorf("%q", got)
 	}
-	if _, err := s.Restore(b.ctx, b.recordings()["best of/b.wav"].ID); err != nil || b.onShelf("best of/b.wav") != "levelled sound of a.wav|best of" {
+	id := b.recordings()["best of/b.wav"].ID
+	if got := b.versions(id); !slices.Equal(got, []string{"levelled sound of a.wav|best of"}) {
+		t.Errorf("versions: %q", got)
+	}
+	if _, err := s.Restore(b.ctx, id); err != nil || b.onShelf("best of/b.wav") != "sound of a.wav" {
 		t.Errorf("%v %q", err, b.onShelf("best of/b.wav"))
 	}
 	if got := b.onShelf("a.wav"); got != "levelled-17 sound of a.wav" {
 		t.Errorf("%q", got)
+	}
+	if _, err := s.Restore(b.ctx, b.recordings()["a.wav"].ID); err != nil || b.onShelf("a.wav") != "sound of a.wav" {
+		t.Errorf("its original went with the other's: %v %q", err, b.onShelf("a.wav"))
 	}
 }
 

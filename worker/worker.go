@@ -28,6 +28,7 @@ import (
 
 	"evenshelf/engine/level"
 	"evenshelf/engine/media"
+	"evenshelf/engine/profile"
 	"evenshelf/store"
 	"evenshelf/worker/delivery"
 	"evenshelf/worker/discover"
@@ -193,8 +194,24 @@ func (s *Service) Stop(ctx context.Context) error {
 	return nil
 }
 
-// StartRun stores a run and enters its jobs in the queue, both or neither.
+// StartRun stores a run and enters its jobs in the queue, both or neither. It wraps store.ErrFormat if no file of the run
+// could take its original's place; where only some cannot, their jobs say so.
 func (s *Service) StartRun(ctx context.Context, n store.NewRun) (store.Run, error) {
+	if n.Delivery == store.Replace && n.Profile.Delivered.Format != profile.OwnFormat {
+		paths, err := s.store.Paths(ctx, n)
+		if err != nil {
+			return store.Run{}, err
+		}
+		unfit := ""
+		for _, p := range paths {
+			if unfit = delivery.Unfit(n.Profile.Delivered.Format, p); unfit == "" {
+				break
+			}
+		}
+		if unfit != "" {
+			return store.Run{}, fmt.Errorf("none of the %d files could be replaced: %s: %w", len(paths), unfit, store.ErrFormat)
+		}
+	}
 	return s.store.CreateRun(ctx, n, s.enqueue)
 }
 

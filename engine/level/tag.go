@@ -22,7 +22,7 @@ const rightAlready = "its gain tags are right already"
 // Tag measures source and writes a copy of it into the file scratch in which the open gain tags say what was measured:
 // the recording's own loudness, and its group's where the task has one. Nothing else changes: the copy is read back, and
 // its sound has to be the same to the last sample, or the outcome is failed and there is no copy. The outcome has no
-// After if there is nothing to write. Errors as for Level.
+// After if there is nothing to write: the tags are right, or the format has none. Errors as for Level.
 func (e *Engine) Tag(ctx context.Context, source string, t Task, scratch string) (o Outcome, err error) {
 	return e.tag(ctx, source, t, scratch, e.Media.Retag)
 }
@@ -55,7 +55,11 @@ func (e *Engine) tag(ctx context.Context, source string, t Task, scratch string,
 		return o, nil
 	}
 	err = retag(ctx, source, scratch, gains)
+	var none media.NoGainTags
 	switch {
+	case errors.As(err, &none): // as those of a mixed shelf; that is no failure of theirs
+		o.Verdict = Verdict{State: Done, Reason: "left as it is: there are no gain tags in " + containerName(none.Container)}
+		return o, nil
 	case err != nil && (ctx.Err() != nil || errors.As(err, new(syscall.Errno))): // the machine's, and may heal
 		return Outcome{}, err
 	case err != nil:
@@ -76,6 +80,19 @@ func (e *Engine) tag(ctx context.Context, source string, t Task, scratch string,
 	o.After, o.Extension = after, filepath.Ext(source)
 	o.Verdict = Verdict{State: Done, Reason: tagged(gains)}
 	return o, nil
+}
+
+// containerName is how people call a container that has no gain tags.
+func containerName(container string) string {
+	switch container {
+	case "matroska":
+		return "Matroska"
+	case "webm":
+		return "WebM"
+	case "mpegts":
+		return "MPEG transport streams"
+	}
+	return strings.ToUpper(container)
 }
 
 // Album reads which album a file is from; its title is "" if it names none. Errors name the file.

@@ -1,6 +1,7 @@
 package level
 
 import (
+	"bytes"
 	"context"
 	"errors"
 	"fmt"
@@ -8,12 +9,14 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"slices"
 	"strings"
 	"syscall"
 	"testing"
 
 	"evenshelf/engine/media"
 	"evenshelf/engine/tags"
+	"evenshelf/engine/tags/ogg"
 )
 
 // retagger is a stand-in that has metaflac write the tags.
@@ -122,7 +125,8 @@ func TestTagFails(t *testing.T) {
 	}{
 		{song, retagger{other: other}, "the sound of the copy with new tags is not the same"},
 		{song, retagger{other: torn}, "is not the same"},
-		{song, retagger{err: fmt.Errorf("%w: there are no gain tags in it", media.ErrUnsupported)}, "not supported: there are no gain tags in it"},
+		{song, retagger{err: fmt.Errorf("%w: of another kind", media.ErrUnsupported)}, "not supported: of another kind"},
+		{song, retagger{err: fmt.Errorf("x: %w", ogg.ErrDamaged)}, "damaged"},
 		{song, retagger{err: &media.FormatError{Offset: 4, Reason: "a block longer than the file"}}, "a block longer than the file"},
 		{torn, retagger{}, "what was read is not the whole of it"},
 		{silence, retagger{}, "silent"},
@@ -150,10 +154,10 @@ func TestTagFails(t *testing.T) {
 	}
 }
 
-// With the engine's own writing, a format either has gain tags, which ffprobe finds, or fails and says so.
+// With the engine's own writing, a format either has gain tags, which ffprobe finds, or is left as it is, which is said.
 func TestTagInEveryFormat(t *testing.T) {
 	dir, e := t.TempDir(), &Engine{Media: media.Find()}
-	for _, name := range []string{"a.flac", "a.mp3", "a.m4a", "a.ogg", "a.opus", "a.wav", "a.aiff"} {
+	for _, name := range []string{"a.flac", "a.mp3", "a.m4a", "a.ogg", "a.opus", "a.wav", "a.aiff", "a.mkv"} {
 		source, scratch := excerpt(t, dir, name, 0.5), filepath.Join(dir, "scratch-"+name)
 		has := e.Media.Retag(t.Context(), source, filepath.Join(dir, "try"), tags.Gains{})
 		o, err := e.Tag(t.Context(), source, Task{Profile: named(t, "untouched"), Shared: &Shared{Integrated: -20, TruePeak: -2}}, scratch)
@@ -162,8 +166,11 @@ func TestTagInEveryFormat(t *testing.T) {
 			continue
 		}
 		if errors.Is(has, media.ErrUnsupported) {
-			if o.Verdict.State != Failed || !strings.Contains(o.Verdict.Reason, "no gain tags in") {
+			if want := "left as it is: there are no gain tags in " + map[string]string{"a.wav": "WAV", "a.aiff": "AIFF", "a.mkv": "Matroska"}[name]; o.Verdict.State != Done || o.Verdict.Reason != want || o.After != nil {
 				t.Errorf("%s: %+v", name, o.Verdict)
+			}
+			if _, err := os.Stat(scratch); err == nil {
+				t.Errorf("%s: something was written", name)
 			}
 			continue
 		}
@@ -178,6 +185,24 @@ func TestTagInEveryFormat(t *testing.T) {
 		if again, err := e.Tag(t.Context(), scratch, Task{Profile: named(t, "untouched"), Shared: &Shared{Integrated: -20, TruePeak: -2}}, scratch+".2"); err != nil || again.Verdict.Reason != rightAlready {
 			t.Errorf("%s again: %+v %v", name, again.Verdict, err)
 		}
+	}
+}
+
+// An Ogg file with something between its pages, which FFmpeg reads over, is damaged whenever it is tried.
+func TestTagWhatIsDamagedInside(t *testing.T) {
+	dir, e := t.TempDir(), &Engine{Media: media.Find()}
+	song := excerpt(t, dir, "a.ogg", 0.5)
+	b := readFile(t, song)
+	at := bytes.LastIndex(b, []byte("OggS"))
+	if err := os.WriteFile(song, slices.Concat(b[:at], make([]byte, 64), b[at:]), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	o, err := e.Tag(t.Context(), song, Task{Profile: named(t, "untouched")}, filepath.Join(dir, "scratch"))
+	if err != nil || o.Verdict.State != Failed || !strings.Contains(o.Verdict.Reason, "Ogg stream holds") {
+		t.Errorf("%+v %v", o.Verdict, err)
+	}
+	if o, err := e.Level(t.Context(), song, Task{Profile: named(t, "rotation")}, filepath.Join(dir, "scratch")); err != nil {
+		t.Errorf("%+v %v", o.Verdict, err)
 	}
 }
 

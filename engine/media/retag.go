@@ -3,7 +3,6 @@ package media
 import (
 	"context"
 	"errors"
-	"fmt"
 	"io"
 	"os"
 
@@ -42,9 +41,15 @@ func behindTags(retag retagger) retagger {
 	}
 }
 
+// NoGainTags is the error of Retag for a container that has no gain tags; it is an ErrUnsupported.
+type NoGainTags struct{ Container string } // as in Info.Container
+
+func (e NoGainTags) Error() string { return "there are no gain tags in " + e.Container }
+func (e NoGainTags) Unwrap() error { return ErrUnsupported }
+
 // Retag writes a copy of the recording at source to path in which its gain tags are those given, instead of
 // whatever it had. Nothing else of it changes. What is at path is overwritten. Errors name the file and wrap
-// ErrUnsupported if its format has no gain tags.
+// NoGainTags if its format has none.
 func (t *Toolbox) Retag(ctx context.Context, source, path string, g tags.Gains) (err error) {
 	if err := stopped(ctx)(); err != nil {
 		return about(source, err)
@@ -60,7 +65,7 @@ func (t *Toolbox) Retag(ctx context.Context, source, path string, g tags.Gains) 
 	}
 	retag := retaggers[k.container]
 	if retag == nil {
-		return about(source, fmt.Errorf("%w: there are no gain tags in %s", ErrUnsupported, k.container))
+		return about(source, NoGainTags{k.container})
 	}
 	out, err := os.OpenFile(path, os.O_RDWR|os.O_CREATE|os.O_TRUNC, 0o644)
 	if err != nil {

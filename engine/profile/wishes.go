@@ -1,5 +1,7 @@
 package profile
 
+import "fmt"
+
 // Wishes are what one run asks for beside its profile. The zero value asks for nothing.
 type Wishes struct {
 	Format  Format // "" is the profile's, as below
@@ -19,7 +21,11 @@ func (p Profile) With(w Wishes) (Profile, error) {
 	if w.Group != "" {
 		p.Group = w.Group
 	}
-	return p, p.Validate()
+	err := p.Validate()
+	if err == nil && w.BitRate != 0 && (p.Delivered.Format == WAV || p.Delivered.Format == FLAC) {
+		err = Complaints{{Field: "delivered.bit_rate_kbps", Words: fmt.Sprintf("means nothing in %s, which has no bit rate to choose", p.Delivered.Format)}}
+	}
+	return p, err
 }
 
 // ForTags returns what a run that writes gain tags takes from a profile: how a single channel counts and which

@@ -21,6 +21,11 @@ func TestWishes(t *testing.T) {
 			t.Errorf("%+v: %v, want a word about %s", w, err, why)
 		}
 	}
+	for _, f := range []Format{WAV, FLAC} {
+		if _, err := p.With(Wishes{Format: f, BitRate: 192}); err == nil || !strings.HasPrefix(err.Error(), "delivered.bit_rate_kbps") {
+			t.Errorf("a bit rate in %s: %v", f, err)
+		}
+	}
 	// Every built-in profile can say which recordings belong together when only tags are written.
 	for _, b := range builtin {
 		for _, g := range []Group{Alone, Folder, Album} {

@@ -20,10 +20,12 @@ import (
 // Original is a recording that was moved to the attic when its levelled copy took its place. Hashes are
 // SHA-256 of the files' bytes, in hexadecimal.
 type Original struct {
-	Stored   string // where it is, relative to the attic, with forward slashes
-	SHA256   string // of the original
-	Levelled string // of the file that took its place
-	Size     int64  // of the file that took its place, bytes
+	Stored   string    // where it is, relative to the attic, with forward slashes
+	SHA256   string    // of the original
+	Levelled string    // of the file that took its place
+	Size     int64     // of the file that took its place, bytes
+	Length   int64     // of the original, bytes
+	Modified time.Time // of the file that took its place; only Record is told
 }
 
 // ErrChanged is wrapped when a file is neither the levelled copy that was put there nor the original.
@@ -36,9 +38,17 @@ type Place struct {
 	Attic  string
 	Copies string // what is held goes to _held below it
 	Source string // the sound to work on: Root/Rel itself, or an original in the attic
-	// Ours is what the attic has of the file at Root/Rel, if that file was made from it; nil: that file is an original.
+	// Ours is what the attic has of the file at Root/Rel: the original it was made from, byte for byte or by its sound;
+	// nil: that file is an original.
 	Ours *Original
+	// Borrowed says that Ours is the original of another recording, of which this one is a second copy: it gets a name
+	// of its own in the attic, and is this one's original from then on.
+	Borrowed bool
 }
+
+// Record notes what is in the attic before a recording's place is taken: its original, and if what is there is neither
+// that nor ours, that version too.
+type Record func(ctx context.Context, original Original, version *Original) error
 
 // Replace levels a recording and puts the copy in its place, in an order that can be cut short anywhere
 // without losing the original:
@@ -47,21 +57,22 @@ type Place struct {
 //
 // A recording that was replaced before is levelled from its original, so that no sound is ever levelled
 // twice. One that is within its profile stays as it is. What is held goes where held copies go, and the
-// recording stays. output is relative to Root, or to Copies if the outcome is held. Errors as for Deliver.
+// recording stays. What takes its place has its time, or is a second younger if it is as long. output is relative to Root, or to Copies if the outcome is held. Errors as for Deliver.
 //
 // Whatever is in the recording's place and is not, byte for byte, what was put there goes to the attic too: somebody
-// has written other tags since. Only the original is recorded.
-func Replace(ctx context.Context, eng Leveller, at Place, t level.Task, key string, record func(context.Context, Original) error) (level.Outcome, string, error) {
-	return replace(ctx, eng.Level, &at, t, key, record)
+// has written other tags since. at.Ours is not looked at before the engine is done: whoever knows the sound may only then
+// know the file.
+func Replace(ctx context.Context, eng Leveller, at *Place, t level.Task, key string, record Record) (level.Outcome, string, error) {
+	return replace(ctx, eng.Level, at, t, key, record)
 }
 
 // Tag writes gain tags into a recording's own file, on the path of Replace. One whose tags are right already stays as
-// it is. at.Ours is not looked at before the engine is done: whoever knows the sound may only then know the file.
-func Tag(ctx context.Context, eng Tagger, at *Place, t level.Task, key string, record func(context.Context, Original) error) (level.Outcome, string, error) {
+// it is.
+func Tag(ctx context.Context, eng Tagger, at *Place, t level.Task, key string, record Record) (level.Outcome, string, error) {
 	return replace(ctx, eng.Tag, at, t, key, record)
 }
 
-func replace(ctx context.Context, engine maker, at *Place, t level.Task, key string, record func(context.Context, Original) error) (o level.Outcome, output string, err error) {
+func replace(ctx context.Context, engine maker, at *Place, t level.Task, key string, record Record) (o level.Outcome, output string, err error) {
 	d, refusal, err := open(at.Source, at.Root, at.Rel, key, Options{Overwrite: true})
 	if err != nil || refusal != "" {
 		return failed(level.Outcome{}, refusal), "", err
@@ -94,7 +105,7 @@ func replace(ctx context.Context, engine maker, at *Place, t level.Task, key str
 		return o, at.Rel, nil
 	}
 	step("made")
-	kept, err := d.toAttic(at, target)
+	kept, version, err := d.toAttic(at, target)
 	if err != nil {
 		return o, "", fmt.Errorf("attic: %w", err)
 	}
@@ -104,12 +115,24 @@ func replace(ctx context.Context, engine maker, at *Place, t level.Task, key str
 	if err := d.dress(target, replaced); err != nil {
 		return o, "", err
 	}
+	kept.Modified = replaced.ModTime()
+	if kept.Size == replaced.Size() {
+		// Programs that back files up or copy what has changed go by length and time: with both as they were, they
+		// would never see that it is another file.
+		kept.Modified = kept.Modified.Add(time.Second)
+		if err := d.root.Chtimes(d.scratch, time.Time{}, kept.Modified); err != nil {
+			return o, "", err
+		}
+	}
 	step("dressed")
 	// The work took its time, and copying into the attic too: what somebody put there meanwhile is not in it.
 	if err := Unchanged(target, replaced); err != nil {
 		return o, "", err
 	}
-	if err := record(ctx, kept); err != nil {
+	if version != nil {
+		version.Levelled, version.Size = kept.Levelled, kept.Size
+	}
+	if err := record(ctx, kept, version); err != nil {
 		return o, "", err
 	}
 	step("recorded")
@@ -141,26 +164,43 @@ func (d *delivery) hold(copies, extension string) (output string, err error) {
 	return output, keep(d.path(d.scratch), sum, filepath.Join(copies, filepath.FromSlash(output)))
 }
 
-// toAttic keeps what is in the recording's place, unless we made it from what is in the attic already, and returns the
-// original.
-func (d *delivery) toAttic(at *Place, target string) (Original, error) {
-	sum, _, err := digest(target)
+// toAttic keeps what is in the recording's place, unless it is there already or we made it from what is, and returns the
+// original; if what is kept is not that, it is a version.
+func (d *delivery) toAttic(at *Place, target string) (original Original, version *Original, err error) {
+	sum, length, err := digest(target)
 	if err != nil {
-		return Original{}, err
+		return original, nil, err
 	}
-	if at.Ours != nil && sum == at.Ours.Levelled {
-		return *at.Ours, nil
+	if at.Ours == nil {
+		original = Original{Stored: d.stored(sum, path.Ext(d.rel)), SHA256: sum, Length: length}
+		return original, nil, at.keep(target, original)
 	}
-	// The name carries the hash, so that another recording that comes to this path later has a place too.
-	ext := path.Ext(d.rel)
-	stored := strings.TrimSuffix(d.rel, ext) + "." + sum[:12] + ext
-	if err := keep(target, sum, filepath.Join(at.Attic, filepath.FromSlash(stored))); err != nil {
-		return Original{}, err
+	original = *at.Ours
+	if at.Borrowed {
+		original.Stored = d.stored(original.SHA256, path.Ext(original.Stored))
+		if err := at.keep(filepath.Join(at.Attic, filepath.FromSlash(at.Ours.Stored)), original); err != nil {
+			return original, nil, err
+		}
 	}
-	if at.Ours != nil {
-		return *at.Ours, nil
+	switch sum {
+	case original.Levelled:
+		return original, nil, nil
+	case original.SHA256: // put back by hand
+		return original, nil, at.keep(target, original)
 	}
-	return Original{Stored: stored, SHA256: sum}, nil
+	version = &Original{Stored: d.stored(sum, path.Ext(d.rel)), SHA256: sum, Length: length}
+	return original, version, at.keep(target, *version)
+}
+
+// stored names a file in the attic. The name carries the hash, so that another recording that comes to this path later
+// has a place too.
+func (d *delivery) stored(sum, extension string) string {
+	return strings.TrimSuffix(d.rel, path.Ext(d.rel)) + "." + sum[:12] + extension
+}
+
+// keep makes a file one in the attic.
+func (at *Place) keep(from string, o Original) error {
+	return keep(from, o.SHA256, filepath.Join(at.Attic, filepath.FromSlash(o.Stored)))
 }
 
 // Restore puts the original back at rel below root, bit for bit, and takes it out of the attic. It may be

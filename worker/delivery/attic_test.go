@@ -9,15 +9,18 @@ import (
 	"strings"
 	"syscall"
 	"testing"
+	"time"
 
 	"evenshelf/engine/level"
+	"evenshelf/engine/profile"
 )
 
 // atticBench is a shelf, its copies and its attic, and what was recorded.
 type atticBench struct {
 	*bench
-	place Place
-	kept  []Original
+	place    Place
+	kept     []Original
+	versions []*Original // likewise, nil where there was none
 }
 
 func newAtticBench(t *testing.T) *atticBench {
@@ -32,7 +35,8 @@ var errCut = errors.New("the power went")
 // replace runs Replace; cut ends it right after the original was recorded.
 func (b *atticBench) replace(l *leveller, cut bool) (level.Outcome, string, error) {
 	b.t.Helper()
-	return Replace(b.t.Context(), l, b.place, level.Task{}, "job-7", func(_ context.Context, o Original) error {
+	return Replace(b.t.Context(), l, &b.place, level.Task{}, "job-7", func(_ context.Context, o Original, v *Original) error {
+		b.versions = append(b.versions, v)
 		b.kept = append(b.kept, o)
 		if cut {
 			return errCut
@@ -259,4 +263,82 @@ func TestRestoreNothingOntoAnEmptyShelf(t *testing.T) {
 		t.Errorf("got %v", err)
 	}
 	b.check(nil, []string{"m/a.*=source"})
+}
+
+// A folder that nothing can be written to is told before the work, and is no reason to try again.
+func TestFolderThatCannotBeWrittenTo(t *testing.T) {
+	root, err := os.MkdirTemp("", "evenshelf") // not t.TempDir, whose parent lets nobody else in
+	must(t, err)
+	defer os.RemoveAll(root)
+	must(t, os.Chmod(root, 0o755))
+	for _, dir := range []string{"m", "out"} {
+		must(t, os.Mkdir(filepath.Join(root, dir), 0o755))
+	}
+	source := filepath.Join(root, "m", "a.wav")
+	must(t, os.WriteFile(source, []byte("source"), 0o644))
+	must(t, os.Chmod(filepath.Join(root, "m"), 0o555))
+	must(t, os.Chmod(filepath.Join(root, "out"), 0o555))
+	at := Place{Root: root, Rel: "m/a.wav", Attic: filepath.Join(root, "attic"), Copies: filepath.Join(root, "out"), Source: source}
+	worked := &leveller{during: func() { t.Error("the engine was asked to work") }}
+	for what, do := range map[string]func() (level.Outcome, string, error){
+		"replace": func() (level.Outcome, string, error) {
+			return Replace(t.Context(), worked, &at, level.Task{}, "job-7", nil)
+		},
+		"copy": func() (level.Outcome, string, error) {
+			return Deliver(t.Context(), worked, source, filepath.Join(root, "out"), "m/a.wav", level.Task{}, "job-7", Options{Overwrite: true})
+		},
+	} {
+		var o level.Outcome
+		var output string
+		err := asNobody(func() (err error) {
+			o, output, err = do()
+			return err
+		})
+		if err != nil || output != "" || o.Verdict.State != level.Failed || !strings.HasPrefix(o.Verdict.Reason, "its folder cannot be written to") {
+			t.Errorf("%s: %+v %q %v", what, o.Verdict, output, err)
+		}
+	}
+	for err, want := range map[error]bool{syscall.EROFS: true, syscall.EACCES: true, syscall.ENOSPC: false, syscall.EIO: false} {
+		if refusal, rest := noWay(&os.PathError{Op: "open", Path: "x", Err: err}); (refusal != "") != want || (rest == nil) != want {
+			t.Errorf("%v: %q %v", err, refusal, rest)
+		}
+	}
+}
+
+// A file as long as the one whose place it takes is a second younger: else a backup would not see that it is another.
+func TestReplaceIsSeenByBackups(t *testing.T) {
+	b := newAtticBench(t)
+	must(t, os.WriteFile(b.place.Source, []byte("as long "), 0o644))
+	must(t, os.Chtimes(b.place.Source, sourceTime, sourceTime))
+	for i, c := range []struct {
+		text  string
+		later time.Duration
+	}{{"levelled", time.Second}, {"levelled more", time.Second}, {"levelled MORE", 2 * time.Second}} {
+		if i > 0 {
+			b.again(i - 1)
+		}
+		if _, _, err := b.replace(&leveller{text: strings.TrimPrefix(c.text, "levelled")}, false); err != nil {
+			t.Fatal(err)
+		}
+		info, err := os.Stat(filepath.Join(b.src, "m/a.wav"))
+		must(t, err)
+		if want := sourceTime.Add(c.later); !info.ModTime().Equal(want) || !b.kept[i].Modified.Equal(want) {
+			t.Errorf("%s: %v, recorded %v, want %v", c.text, info.ModTime(), b.kept[i].Modified, want)
+		}
+	}
+}
+
+func TestUnfit(t *testing.T) {
+	for _, c := range []struct {
+		format profile.Format
+		rel    string
+		unfit  bool
+	}{
+		{profile.MP3, "a/b.flac", true}, {profile.MP3, "a/b.MP3", false}, {profile.WAV, "b.wave", false}, {profile.FLAC, "b.aiff", true},
+		{profile.OwnFormat, "b.flac", false}, {profile.MP3, "film.mkv", false}, {profile.M4A, "film.mp4", false}, {profile.Opus, "b.ogg", true},
+	} {
+		if why := Unfit(c.format, c.rel); (why != "") != c.unfit {
+			t.Errorf("%s for %s: %q", c.format, c.rel, why)
+		}
+	}
 }

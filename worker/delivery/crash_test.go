@@ -134,7 +134,7 @@ func TestCrashingProcess(t *testing.T) {
 	if last != nil && last.IsLevelled(filepath.Join(c.Place.Root, c.Place.Rel)) {
 		c.Place.Source, c.Place.Ours = filepath.Join(c.Place.Attic, last.Stored), last
 	}
-	_, output, err := Replace(t.Context(), &leveller{}, c.Place, level.Task{}, "job-7", func(_ context.Context, o Original) error {
+	_, output, err := Replace(t.Context(), &leveller{}, &c.Place, level.Task{}, "job-7", func(_ context.Context, o Original, _ *Original) error {
 		line, err := json.Marshal(o)
 		must(t, err)
 		f, err := os.OpenFile(c.Records, os.O_CREATE|os.O_APPEND|os.O_WRONLY, 0o600)

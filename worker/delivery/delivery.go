@@ -26,6 +26,7 @@ import (
 	"path"
 	"path/filepath"
 	"strings"
+	"syscall"
 
 	"evenshelf/engine/level"
 )
@@ -139,9 +140,24 @@ func (d *delivery) prepare() (refusal string, err error) {
 	}
 	// What a crash left is unlinked, not truncated: it could be a link to something.
 	if err := d.root.Remove(d.scratch); err != nil && !errors.Is(err, fs.ErrNotExist) {
-		return "", err
+		return noWay(err)
 	}
-	return "", nil
+	// That there can be one is found out now, rather than after minutes of work.
+	f, err := d.root.OpenFile(d.scratch, os.O_WRONLY|os.O_CREATE|os.O_EXCL, 0o600)
+	if err != nil {
+		return noWay(err)
+	}
+	return "", errors.Join(f.Close(), d.root.Remove(d.scratch))
+}
+
+// noWay makes a refusal of an error that says that a folder is not to be written to, which does not heal by itself.
+func noWay(err error) (refusal string, _ error) {
+	for _, why := range []error{syscall.EACCES, syscall.EPERM, syscall.EROFS} {
+		if errors.Is(err, why) {
+			return fmt.Sprintf("its folder cannot be written to (%s)", why), nil
+		}
+	}
+	return "", err
 }
 
 // make has the engine make the scratch file. If there is nothing to deliver the outcome has no After.

@@ -79,7 +79,7 @@ func (d *delivery) makeFolder(name string) (refusal string, err error) {
 		if d.leaves(name) {
 			return fmt.Sprintf("a symbolic link in %s leads out of the copies folder", name), nil
 		}
-		return "", fmt.Errorf("make the folder for the copy: %w", err)
+		return noWay(fmt.Errorf("make the folder for the copy: %w", err))
 	}
 	for at := name; at != "."; at = path.Dir(at) {
 		if err := d.syncFolder(path.Dir(at)); err != nil {

@@ -32,7 +32,8 @@ func (g tagger) Tag(_ context.Context, source string, _ level.Task, scratch stri
 
 func (b *atticBench) tag(g tagger) (level.Outcome, string, error) {
 	b.t.Helper()
-	return Tag(b.t.Context(), g, &b.place, level.Task{}, "job-8", func(_ context.Context, o Original) error {
+	return Tag(b.t.Context(), g, &b.place, level.Task{}, "job-8", func(_ context.Context, o Original, v *Original) error {
+		b.versions = append(b.versions, v)
 		b.kept = append(b.kept, o)
 		return nil
 	})

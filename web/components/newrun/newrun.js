@@ -3,6 +3,8 @@ import { el, parts, say } from "../../dom.js";
 
 // The profile offered first: what a shelf of everything is levelled with.
 const usual = "rotation";
+// The one that is named where nothing is levelled.
+const plain = "untouched";
 
 export function mount(button) {
   const dialog = document.getElementById(button.dataset.dialog);
@@ -11,18 +13,20 @@ export function mount(button) {
   const says = form.querySelector(".says");
   const start = form.querySelector("button[type=submit]");
 
-  let alike = true; // all profiles count a single channel by one rule
+  let known = []; // profiles
 
   async function offer() {
     start.disabled = true;
+    known = [];
+    how();
     try {
       const { profiles, problems } = await get(form.dataset.profiles);
       const first = profiles.find(({ name }) => name === usual) ?? profiles[0];
-      part.profiles.replaceChildren(...[first, ...profiles.filter((p) => p !== first)].map(option));
+      known = [first, ...profiles.filter((p) => p !== first)];
+      part.profiles.replaceChildren(...known.map(option));
       const trouble = unusable(problems);
       part.problems.hidden = !trouble;
       part.problems.textContent = trouble;
-      alike = new Set(profiles.map(({ mono }) => mono)).size < 2;
       how();
       start.disabled = false;
     } catch (error) {
@@ -32,16 +36,16 @@ export function mount(button) {
     }
   }
 
-  // What does not level needs no profile to choose, unless they count a single channel differently.
+  // What does not level needs of a profile only how it counts a single channel; that is asked if there is a choice.
   const chosen = () => form.elements.delivery.value;
   const levels = () => chosen() === "copy" || chosen() === "replace";
   function how() {
-    part.how.hidden = alike && !levels();
-    part.asks.textContent = levels() ? "How should they sound?" : "Which profile's rule for a single channel?";
+    part.how.hidden = !levels() && known.length > 0; // while they are fetched, or cannot be, that is to be seen
+    part.single.hidden = levels() || new Set(known.map(({ mono }) => mono)).size < 2;
   }
 
   // What changes the shelf takes a second step, anew each time.
-  const { sure } = form.elements;
+  const { sure, group } = form.elements;
   function ask() {
     const writes = chosen() === "replace" || chosen() === "tags";
     how();
@@ -49,7 +53,10 @@ export function mount(button) {
     part.yes.textContent = chosen() === "tags" ? "Yes, write into the files on this shelf" : "Yes, replace the files on this shelf";
     sure.required = writes;
     sure.checked = false;
-    part.group.hidden = chosen() !== "tags";
+    part.group.hidden = chosen() === "measure";
+    group.querySelector("[data-levels]").hidden = !levels();
+    group.value = levels() ? "" : "none";
+    part.shares.textContent = levels() ? "Those share one gain, which does not go with a ride." : "Those get a gain of their album too.";
     part.file.hidden = !levels();
     part.inplace.hidden = chosen() !== "replace";
   }
@@ -70,7 +77,7 @@ export function mount(button) {
       const run = await post(form.dataset.url, {
         shelf_id: Number(form.dataset.shelf),
         folder: form.elements.folder.value.trim(),
-        profile: form.elements.profile.value,
+        profile: levels() ? form.elements.profile.value : counting(known, form.elements.mono.value),
         delivery: chosen(),
         ...wishes(form.elements, levels(), chosen() === "tags"),
       });
@@ -82,10 +89,16 @@ export function mount(button) {
   });
 }
 
+// counting names a profile that counts a single channel by a rule: the plainest if it does.
+export function counting(profiles, mono) {
+  const fits = profiles.filter((p) => p.mono === mono);
+  return (fits.find(({ name }) => name === plain) ?? fits[0] ?? profiles[0])?.name;
+}
+
 // wishes are what a run asks for beside its profile; what is not shown is not asked for.
 export function wishes({ format, rate, group }, levels, tags) {
   if (tags) return { group: group.value };
-  return levels ? { format: format.value, bit_rate_kbps: Number(rate.value) } : {};
+  return levels ? { format: format.value, bit_rate_kbps: Number(rate.value), group: group.value } : {};
 }
 
 const NAMED = 5; // files that are named; more would cover the choice
