@@ -18,14 +18,16 @@ var decoders = map[string]string{"mp3": "mp3float", "mp2": "mp2float", "mp1": "m
 
 func decoderOf(codec string) string { return cmp.Or(decoders[codec], codec) }
 
-// decoderArgs choose the decoder of a codec. Of AC-3 and E-AC-3 the sound is what was coded: not as a player set to a
+// decoderArgs choose the decoder of the sound track of a number (from 1; 0 where there can be but one), which has a codec.
+// Other tracks are left to FFmpeg, which decodes a little of each to know it and would take this one's decoder for all. Of AC-3 and E-AC-3 the sound is what was coded: not as a player set to a
 // narrow range would have it (dynrng, compr), nor turned down by the loudness of its dialogue that it claims, which
 // FFmpeg does not do unless told to. What is measured is then what levelling works on, and the figures before and after
 // are of one kind: our tracks carry neither. Claimed loudness is not to be trusted anyway (EBU Tech 3343, 6).
-func decoderArgs(codec string) []string {
-	args := []string{"-c:a", decoderOf(codec)}
+func decoderArgs(codec string, track int) []string {
+	which := fmt.Sprintf(":a:%d", max(0, track-1))
+	args := []string{"-c" + which, decoderOf(codec)}
 	if codec == "ac3" || codec == "eac3" {
-		args = append(args, "-drc_scale", "0")
+		args = append(args, "-drc_scale"+which, "0")
 	}
 	return args
 }
@@ -111,7 +113,7 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if k.container == "ogg" { // or it looks for the length, which is known, and takes the last link of a chain for damage
 		args = append(args, "-seekable", "0")
 	}
-	args = append(args, decoderArgs(l.info.Codec)...)
+	args = append(args, decoderArgs(l.info.Codec, l.info.Track)...)
 	if l.extent != nil {
 		args = append(args, "-ignore_editlist", "1", "-flags2", "+skip_manual")
 	}

@@ -41,7 +41,8 @@ func (t *Toolbox) newFilmWriter(ctx context.Context, f *os.File, spec Spec, tags
 	}
 	o := &filmOptions{t: t, ctx: ctx, src: tags, spec: spec, source: source, at: at.seconds(), same: spec.Container == tags.kind.container}
 	if start, err := strconv.ParseFloat(p.Format.Start, 64); err == nil && !o.same {
-		o.at -= start // what FFmpeg does to all stamps if it is not told to keep them
+		o.begin = start // FFmpeg does so if it is not told to keep them
+		o.at -= start
 	}
 	w := &filmWriter{tool: t, ctx: ctx}
 	args, err := o.build(p)
