@@ -102,6 +102,11 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if err != nil {
 		return nil, err
 	}
+	return t.decode(ctx, f, path, k, l, 0)
+}
+
+// decode starts decoding what was found, a film's sound from a time on, s; 0 is its first sample.
+func (t *Toolbox) decode(ctx context.Context, f *os.File, path string, k kind, l finding, at float64) (*ffReader, error) {
 	l.info.Decoder = fmt.Sprintf("ffmpeg %s %s", t.Version(), decoderOf(l.info.Codec))
 
 	// One thread of each kind: many recordings are read side by side. Without flush_packets every packet
@@ -110,18 +115,19 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if k.container == "flac" { // it checks the frames' checksums only if told to
 		args = append(args, "-err_detect", "+crccheck")
 	}
-	if k.container == "ogg" { // or it looks for the length, which is known, and takes the last link of a chain for damage
+	if k.container == "ogg" && at == 0 { // or it looks for the length, which is known, and takes the last link of a chain for damage
 		args = append(args, "-seekable", "0")
 	}
 	args = append(args, decoderArgs(l.info.Codec, l.info.Track)...)
 	if l.extent != nil {
 		args = append(args, "-ignore_editlist", "1", "-flags2", "+skip_manual")
 	}
-	args = append(args, guarded(k)...)
+	seek, timed := from(at)
+	args = append(append(args, seek...), guarded(k)...)
 	args = append(args, "-vn", "-sn", "-dn", "-map", fmt.Sprintf("0:a:%d", max(0, l.info.Track-1)), "-map_metadata", "-1", "-fflags", "+bitexact", "-flush_packets", "0")
 	switch {
 	case l.info.isFilm():
-		args = append(args, "-af", onTime)
+		args = append(args, "-af", timed)
 	case l.extent != nil && l.extent.Start > 0:
 		args = append(args, "-af", fmt.Sprintf("atrim=start_sample=%d", l.extent.Start))
 	}
