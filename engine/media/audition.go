@@ -39,9 +39,9 @@ type Audition struct {
 	before int64  // the place of ready
 }
 
-// Audition opens a track (see OpenTrack) of so many frames, as a reading of it counted, of an open file, which stays the
-// caller's to close. What is missing in the end is silence, and what is more is left out, as is what a WAV file has no room for:
-// two channels of 48 kHz last six hours.
+// Audition opens a track (see OpenTrack) of an open file, which stays the caller's to close, and of so many frames, as a
+// reading of it counted. What is missing in the end is silence, and what is more is left out, as is what a WAV file has no
+// room for: two channels of 48 kHz may last six hours.
 func (t *Toolbox) Audition(ctx context.Context, f *os.File, track int, frames int64) (*Audition, error) {
 	info, err := f.Stat()
 	if err != nil {
@@ -193,7 +193,8 @@ func (a *Audition) more() error {
 	return nil
 }
 
-// from are FFmpeg's options, for the input and for what is made of it, to begin at a time, s, of a film; 0 is the first sample.
+// from are FFmpeg's options to begin at a time, s, of a film, for the input, and the filter to go with them; 0 is the first
+// sample, whenever that comes.
 func from(at float64) (seek []string, filter string) {
 	if at == 0 {
 		return nil, onTime

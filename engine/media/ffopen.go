@@ -18,11 +18,13 @@ var decoders = map[string]string{"mp3": "mp3float", "mp2": "mp2float", "mp1": "m
 
 func decoderOf(codec string) string { return cmp.Or(decoders[codec], codec) }
 
-// decoderArgs choose the decoder of the sound track of a number (from 1; 0 where there can be but one), which has a codec.
-// Other tracks are left to FFmpeg, which decodes a little of each to know it and would take this one's decoder for all. Of AC-3 and E-AC-3 the sound is what was coded: not as a player set to a
-// narrow range would have it (dynrng, compr), nor turned down by the loudness of its dialogue that it claims, which
-// FFmpeg does not do unless told to. What is measured is then what levelling works on, and the figures before and after
-// are of one kind: our tracks carry neither. Claimed loudness is not to be trusted anyway (EBU Tech 3343, 6).
+// decoderArgs choose the decoder of a codec for a sound track, counted from 1; 0 where there can be but one. The others are
+// left to FFmpeg, which decodes a little of each to know it, and would use a decoder that is named without a track for all.
+//
+// Of AC-3 and E-AC-3 the sound is what was coded: not as a player set to a narrow range would have it (dynrng, compr), nor
+// turned down by the loudness of its dialogue that it claims, which FFmpeg does not do unless told to. What is measured is
+// then what levelling works on, and the figures before and after are of one kind: our tracks carry neither. Claimed
+// loudness is not to be trusted anyway (EBU Tech 3343, 6).
 func decoderArgs(codec string, track int) []string {
 	which := fmt.Sprintf(":a:%d", max(0, track-1))
 	args := []string{"-c" + which, decoderOf(codec)}
