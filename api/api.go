@@ -28,6 +28,7 @@ import (
 	"github.com/gin-gonic/gin"
 
 	"evenshelf/engine/level"
+	"evenshelf/engine/media"
 	"evenshelf/engine/profile"
 	"evenshelf/store"
 )
@@ -75,6 +76,7 @@ type Options struct {
 	Store    Store
 	Queue    Queue
 	Profiles func() profile.Set // called for each request that needs them; nil = the built-in ones
+	Media    *media.Toolbox     // plays single tracks of films; nil = films are sent as they are
 	Log      *slog.Logger       // nil = silent
 	Version  string             // shown by /healthz; "" = what the Go build recorded
 
@@ -90,6 +92,7 @@ type API struct {
 	Options
 	document document
 	streams  atomic.Int64 // event streams that are open
+	heard    atomic.Int64 // tracks of films that are being sent
 	pace     pace
 }
 

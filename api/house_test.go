@@ -212,7 +212,7 @@ func analysis(loudness audio.LUFS, peak audio.DBTP) *level.Analysis {
 			ShortTerm10: loudness - 2, ShortTerm50: loudness, ShortTerm95: loudness + 2,
 			TruePeak: peak, SamplePeak: audio.DBFS(peak), PLR: audio.LU(float64(peak) - float64(loudness)),
 			MinPSR: 8, RMS: audio.DBFS(loudness), CrestFactor: 12, NoiseFloor: loudness - 30, MonoRule: audio.OneChannel},
-		Decoder: "test", Engine: level.Version,
+		Decoder: "test", Engine: level.Version, Stored: &level.Stored{Codec: "pcm_s16le", Bits: 16},
 		Faults:    []faults.Fault{{Code: "clipped", Severity: faults.Note, At: 0.1, Length: 0.01, Words: "clipped once"}},
 		Condition: faults.Condition{HeadSilence: 0.1, TailSilence: 0, Correlation: 0.93, Balance: -0.4, Offset: audio.Ratio(audio.Undefined)},
 		Dialogue:  level.Dialogue{ActiveTime: 0.2, SpeechTime: 0.1, SpeechLoudness: loudness + 1},

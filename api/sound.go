@@ -5,6 +5,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"io"
 	"io/fs"
 	"mime"
 	"net/http"
@@ -15,6 +16,7 @@ import (
 
 	"github.com/gin-gonic/gin"
 
+	"evenshelf/engine/media"
 	"evenshelf/store"
 )
 
@@ -23,7 +25,28 @@ type sound struct {
 	file        *os.File
 	info        fs.FileInfo
 	disposition string
+	track       *track // what is sent instead of the file; nil: nothing
 }
+
+// track is a sound track of a film on its way to a player.
+type track struct {
+	*media.Audition
+	number int
+	failed func(error) // what is told where the client no longer can be
+	done   func()
+}
+
+// Read implements io.Reader.
+func (t *track) Read(p []byte) (int, error) {
+	n, err := t.Audition.Read(p)
+	if err != nil && err != io.EOF {
+		t.failed(err)
+	}
+	return n, err
+}
+
+// maxHeard bounds the tracks of films that are sent at a time: each has a decoder.
+const maxHeard = 16
 
 // playSound sends the recording before or after levelling for the dashboard's player.
 func (a *API) playSound(c *gin.Context) (int, any, error) {
@@ -31,7 +54,49 @@ func (a *API) playSound(c *gin.Context) (int, any, error) {
 	if version != "before" && version != "after" {
 		return 0, nil, badRequest("", complaint{"version", fmt.Sprintf("%q is not one of before, after", version)})
 	}
-	return a.openSound(c, version == "before", "inline")
+	status, value, err := a.openSound(c, version == "before", "inline")
+	if err != nil {
+		return status, value, err
+	}
+	s := value.(sound)
+	if s.track, err = a.openTrack(c, s.file, version == "before"); err != nil {
+		s.file.Close()
+		return 0, nil, err
+	}
+	return status, s, nil
+}
+
+// openTrack opens the sound track of a film that the reading before or after is of: a player that is handed the film
+// plays the one marked default, if it knows the container at all. It is nil where the file itself is to be sent.
+func (a *API) openTrack(c *gin.Context, file *os.File, before bool) (*track, error) {
+	id, err := pathID(c)
+	if err != nil {
+		return nil, err
+	}
+	ctx := c.Request.Context()
+	reading, after, err := a.Store.Readings(ctx, id)
+	if !before {
+		reading = after
+	}
+	if err != nil || a.Media == nil || reading == nil || reading.Stored == nil || !reading.Stored.Film {
+		return nil, err
+	}
+	if a.heard.Add(1) > maxHeard {
+		a.heard.Add(-1)
+		return nil, unavailable(fmt.Sprintf("%d tracks of films are being played already", maxHeard))
+	}
+	t := &track{number: reading.Stored.Track, done: func() { a.heard.Add(-1) }}
+	t.failed = func(err error) {
+		if ctx.Err() == nil {
+			a.Log.WarnContext(ctx, "a track of a film cannot be played", "recording_id", id, "track", t.number, "error", err)
+		}
+	}
+	if t.Audition, err = a.Media.Audition(ctx, file, t.number, reading.Frames); err != nil {
+		t.done()
+		t.failed(err)
+		return nil, notFound(fmt.Sprintf("sound track %d of recording %d cannot be decoded", t.number, id))
+	}
+	return t, nil
 }
 
 // fetchResult sends the delivered or held result for keeping.
@@ -71,7 +136,7 @@ func (a *API) openSound(c *gin.Context, before bool, disposition string) (int, a
 		a.Log.WarnContext(ctx, "sound cannot be opened", "recording_id", id, "folder", dir, "file", name, "error", err)
 		return 0, nil, notFound(fmt.Sprintf("the file of recording %d cannot be opened: %s", id, inWords(err)))
 	}
-	return http.StatusOK, sound{file, info, disposition}, nil
+	return http.StatusOK, sound{file, info, disposition, nil}, nil
 }
 
 // fileBefore is the file that the before reading is of, so that ear and eye judge the same sound: the one on
@@ -193,11 +258,21 @@ func inWords(err error) string {
 
 func (s sound) send(c *gin.Context, _ int) error {
 	defer s.file.Close()
-	c.Header("Content-Type", soundType(s.info.Name()))
+	var content io.ReadSeeker = s.file
+	kind, tag := soundType(s.info.Name()), fmt.Sprintf("%x-%x", s.info.Size(), s.info.ModTime().UnixNano())
+	if s.track != nil {
+		defer s.track.done()
+		defer s.track.Close()
+		content, kind, tag = s.track, soundTypes[".wav"], fmt.Sprintf("%s-%d", tag, s.track.number)
+		if strings.Contains(c.GetHeader("Range"), ",") { // each would start a decoder
+			c.Request.Header.Del("Range")
+		}
+	}
+	c.Header("Content-Type", kind)
 	c.Header("Content-Disposition", s.disposition)
 	c.Header("Cache-Control", "no-cache") // the copy may be made again under the same address
-	c.Header("ETag", fmt.Sprintf(`"%x-%x"`, s.info.Size(), s.info.ModTime().UnixNano()))
-	http.ServeContent(patientResponse{c.Writer, patient(c)}, c.Request, "", s.info.ModTime(), s.file)
+	c.Header("ETag", `"`+tag+`"`)
+	http.ServeContent(patientResponse{c.Writer, patient(c)}, c.Request, "", s.info.ModTime(), content)
 	return nil
 }
 

@@ -85,7 +85,7 @@ func (a *app) startServer(o serverOptions) (_ *server, err error) {
 	gin.SetMode(gin.ReleaseMode)
 	router := gin.New()
 	options := api.Options{
-		Store: s.store, Queue: s.queue, Log: a.log, Version: Version, Profiles: a.watchedProfiles(),
+		Store: s.store, Queue: s.queue, Log: a.log, Version: Version, Profiles: a.watchedProfiles(), Media: engine.Media,
 		ShelfRoots: o.shelfRoots, UploadDir: uploads, CopiesDir: copies,
 	}
 	if !o.anyHost {

@@ -45,7 +45,7 @@ func (p recordingPage) Deeds() []deed {
 		add("Order", fmt.Sprintf("the order of loud and soft: %s (1: as it was, 0: none left)", audio.Number(float64(treated.Order), 2)), nil)
 	}
 	add("Foreseen", p.foreseenWords(), nil)
-	add("Written", writtenWords(plan.Delivered), nil)
+	add("Written", p.writtenWords(), nil)
 	return all
 }
 
@@ -170,24 +170,6 @@ func (p recordingPage) foreseenWords() string {
 	}
 	return fmt.Sprintf("%s LUFS and %s dBTP before it was encoded; %s and %s came out", audio.Number(*f.Integrated, 1), audio.Number(*f.TruePeak, 1),
 		audio.Number(*a.Integrated, 1), audio.Number(*a.TruePeak, 1))
-}
-
-func writtenWords(d profile.Delivered) string {
-	if d.Dither == "" {
-		return ""
-	}
-	s := "with the word length of the source"
-	if d.Bits > 0 {
-		s = fmt.Sprintf("with %d bits", d.Bits)
-	}
-	switch d.Dither {
-	case profile.Triangular:
-		return s + ", dithered where that is shorter than what was worked with"
-	case profile.Shaped:
-		return s + ", dithered with shaped noise where that is shorter than what was worked with"
-	default:
-		return s + ", without dither"
-	}
 }
 
 // share is a part of 1 in percent; a little is said to be little, not none.

@@ -11,10 +11,13 @@ import (
 	"evenshelf/store"
 )
 
+// as24 is of a delivery in FLAC.
+var as24 = &store.Reading{Analysis: level.Analysis{Stored: &level.Stored{Codec: "flac", Bits: 24}}}
+
 // deedsOf joins what a page tells of a job.
 func deedsOf(j *store.Job, target float64) string {
 	var parts []string
-	for _, d := range (recordingPage{Levelled: j, Target: &target}).Deeds() {
+	for _, d := range (recordingPage{Levelled: j, Target: &target, AfterReading: as24}).Deeds() {
 		s := d.Label + ": " + d.Words
 		if d.At != nil {
 			s += " @" + audio.Clock(*d.At)
@@ -48,10 +51,10 @@ Pauses: lifted at the most 1.8 dB over the lower of the gains beside them @0:18.
 Compressor: took 2.3 dB off on average: from −10.5 LUFS on, 3:1, with a soft knee of 6 dB and a release of 80 ms
 Peaks: held under −1.0 dBTP: more than 1 dB for 3.1 %, more than 3 dB for under 0.1 % of what is heard; 5.2 dB at the most @1:23.4
 Foreseen: −18.0 LUFS and −1.0 dBTP before it was encoded; −18.4 and −0.7 came out
-Written: with 24 bits, dithered where that is shorter than what was worked with`},
-		"by an engine that told less": {old, "Gain: −3.2 dB throughout\nPeaks: stay under −1.0 dBTP by themselves"},
+Written: FLAC with 24 bits, dithered where that is shorter than what was worked with`},
+		"by an engine that told less": {old, "Gain: −3.2 dB throughout\nPeaks: stay under −1.0 dBTP by themselves\nWritten: FLAC with 24 bits"},
 		"one of a folder": {album, "Loudness: the whole programme came from −20.0 to −18.1 LUFS: +1.9 LU; −18.0 was aimed at\nGain: +2.0 dB throughout\n" +
-			"Peaks: held under −2.0 dBTP\nWritten: with the word length of the source, without dither"},
+			"Peaks: held under −2.0 dBTP\nWritten: FLAC with 24 bits, without dither"},
 		"untouched":    {&store.Job{Plan: &level.Plan{Untouched: true}}, ""},
 		"only planned": {&store.Job{}, ""},
 		"not levelled": {nil, ""},

@@ -91,6 +91,7 @@ func analyse(ctx context.Context, src media.Reader, o Options, sound *decoded) (
 	}
 	a := new(Unmeasured())
 	a.FormatName, a.Decoder, a.Engine, a.Info = src.Info().FormatName(), src.Info().Decoder, Version, src.Info()
+	a.Stored = storedAs(a.Info)
 	a.Faults = append(damage, unplaced(src.Format().Layout)...)
 	a.Reading, a.Timeline.Timeline = m.Finish()
 	a.AudioHash = identity.sum()

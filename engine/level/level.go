@@ -7,6 +7,8 @@
 package level
 
 import (
+	"strings"
+
 	"evenshelf/engine/audio"
 	"evenshelf/engine/dynamics"
 	"evenshelf/engine/faults"
@@ -47,9 +49,32 @@ type Analysis struct {
 	// AudioHash is of the decoded samples (see fingerprint): the same sound has the same, whatever its file is called and tagged.
 	AudioHash string         `json:"audio_hash"`
 	Faults    []faults.Fault `json:"faults"` // never nil
+	Stored    *Stored        `json:"stored"` // nil in readings of earlier versions
 
 	Info     media.Info `json:"-"`
 	Timeline Timeline   `json:"-"`
+}
+
+// Stored is how a sound is stored in its file.
+type Stored struct {
+	Codec   string `json:"codec"`    // FFmpeg's name, as "ac3"
+	BitRate int    `json:"bit_rate"` // bit/s, of a lossy codec; 0 if not known
+	Bits    int    `json:"bits"`     // a sample, of a lossless one; 0 of a lossy one
+	Film    bool   `json:"film"`     // it is one track among what a film has; see media.Info.AmongOthers
+	Track   int    `json:"track"`    // of the sound tracks, from 1; 0 where there can be but one
+	Tracks  int    `json:"tracks"`   // how many these are; likewise
+	Title   string `json:"title"`    // of the track
+}
+
+const longestTitle = 200 // bytes
+
+func storedAs(i media.Info) *Stored {
+	s := &Stored{Codec: i.Codec, BitRate: i.BitRate, Bits: i.BitDepth, Film: i.AmongOthers(), Track: i.Track}
+	if titles := strings.Split(i.Titles, "\n"); s.Track > 0 && s.Track <= len(titles) {
+		s.Tracks, s.Title = len(titles), titles[s.Track-1]
+		s.Title = strings.ToValidUTF8(s.Title[:min(len(s.Title), longestTitle)], "")
+	}
+	return s
 }
 
 // Dialogue is what is known about the speech in a recording.

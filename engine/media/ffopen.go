@@ -18,14 +18,18 @@ var decoders = map[string]string{"mp3": "mp3float", "mp2": "mp2float", "mp1": "m
 
 func decoderOf(codec string) string { return cmp.Or(decoders[codec], codec) }
 
-// decoderArgs choose the decoder of a codec. Of AC-3 and E-AC-3 the sound is what was coded: not as a player set to a
-// narrow range would have it (dynrng, compr), nor turned down by the loudness of its dialogue that it claims, which
-// FFmpeg does not do unless told to. What is measured is then what levelling works on, and the figures before and after
-// are of one kind: our tracks carry neither. Claimed loudness is not to be trusted anyway (EBU Tech 3343, 6).
-func decoderArgs(codec string) []string {
-	args := []string{"-c:a", decoderOf(codec)}
+// decoderArgs choose the decoder of a codec for a sound track, counted from 1; 0 where there can be but one. The others are
+// left to FFmpeg, which decodes a little of each to know it, and would use a decoder that is named without a track for all.
+//
+// Of AC-3 and E-AC-3 the sound is what was coded: not as a player set to a narrow range would have it (dynrng, compr), nor
+// turned down by the loudness of its dialogue that it claims, which FFmpeg does not do unless told to. What is measured is
+// then what levelling works on, and the figures before and after are of one kind: our tracks carry neither. Claimed
+// loudness is not to be trusted anyway (EBU Tech 3343, 6).
+func decoderArgs(codec string, track int) []string {
+	which := fmt.Sprintf(":a:%d", max(0, track-1))
+	args := []string{"-c" + which, decoderOf(codec)}
 	if codec == "ac3" || codec == "eac3" {
-		args = append(args, "-drc_scale", "0")
+		args = append(args, "-drc_scale"+which, "0")
 	}
 	return args
 }
@@ -100,6 +104,11 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if err != nil {
 		return nil, err
 	}
+	return t.decode(ctx, f, path, k, l, 0)
+}
+
+// decode starts decoding what was found, a film's sound from a time on, s; 0 is its first sample.
+func (t *Toolbox) decode(ctx context.Context, f *os.File, path string, k kind, l finding, at float64) (*ffReader, error) {
 	l.info.Decoder = fmt.Sprintf("ffmpeg %s %s", t.Version(), decoderOf(l.info.Codec))
 
 	// One thread of each kind: many recordings are read side by side. Without flush_packets every packet
@@ -108,18 +117,19 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if k.container == "flac" { // it checks the frames' checksums only if told to
 		args = append(args, "-err_detect", "+crccheck")
 	}
-	if k.container == "ogg" { // or it looks for the length, which is known, and takes the last link of a chain for damage
+	if k.container == "ogg" && at == 0 { // or it looks for the length, which is known, and takes the last link of a chain for damage
 		args = append(args, "-seekable", "0")
 	}
-	args = append(args, decoderArgs(l.info.Codec)...)
+	args = append(args, decoderArgs(l.info.Codec, l.info.Track)...)
 	if l.extent != nil {
 		args = append(args, "-ignore_editlist", "1", "-flags2", "+skip_manual")
 	}
-	args = append(args, guarded(k)...)
+	seek, timed := from(at)
+	args = append(append(args, seek...), guarded(k)...)
 	args = append(args, "-vn", "-sn", "-dn", "-map", fmt.Sprintf("0:a:%d", max(0, l.info.Track-1)), "-map_metadata", "-1", "-fflags", "+bitexact", "-flush_packets", "0")
 	switch {
 	case l.info.isFilm():
-		args = append(args, "-af", onTime)
+		args = append(args, "-af", timed)
 	case l.extent != nil && l.extent.Start > 0:
 		args = append(args, "-af", fmt.Sprintf("atrim=start_sample=%d", l.extent.Start))
 	}

@@ -113,6 +113,15 @@ func (t *Toolbox) answer(ctx context.Context, f *os.File, tool string, args []st
 	return out.Bytes(), nil
 }
 
+// start is when a film begins, s; 0 if it does not say.
+func (p *probe) start() float64 {
+	start, err := strconv.ParseFloat(p.Format.Start, 64)
+	if err != nil {
+		return 0
+	}
+	return start
+}
+
 // sounds returns the sound streams.
 func (p *probe) sounds() []*probeStream {
 	var list []*probeStream

@@ -17,6 +17,8 @@ const (
 	maxCovers     = 20
 	startSlack    = 0.0015 // s: Matroska counts in milliseconds
 	leadSlack     = 0.008  // s by which the stamps of Opus and Vorbis come before the sound
+	orderSlack    = 0.1    // s: AVI says when pictures are decoded; they are shown a few later where some refer forward
+	noOffset      = 1e-6   // s: less than any time stamp says, but not none
 )
 
 // filmOptions puts together what FFmpeg is told to make a film.
@@ -27,6 +29,7 @@ type filmOptions struct {
 	spec   Spec
 	source *probeStream
 	at     float64 // s, when the sound begins
+	begin  float64 // s, when the source does, by which all time stamps are moved back; 0 if they are kept
 	same   bool    // the container is the source's
 
 	inputs []string // the film's, from input 1 on
@@ -88,13 +91,18 @@ func (o *filmOptions) build(p *probe) ([]string, error) {
 	return args, nil
 }
 
-// open opens the film once more, its time stamps moved by some seconds, and returns the input's number.
+// open opens the film once more, its time stamps moved by some seconds, and returns the input's number. Where FFmpeg moves
+// time stamps back, it does so in some containers (MPEG-TS and PS) to the begin not of the film but of what is taken from
+// the input, a track here; but not once there is an offset, however small.
 func (o *filmOptions) open(offset float64) int {
 	if o.opened == maxFilmInputs {
 		return maxFilmInputs
 	}
+	if !o.same {
+		offset += noOffset
+	}
 	if offset != 0 {
-		if o.opened == 0 { // the first one's chapters would be moved too
+		if o.opened == 0 && o.same { // the first one's chapters would be moved too
 			o.open(0)
 		}
 		o.inputs = append(o.inputs, "-itsoffset", fmt.Sprintf("%.6f", offset))
@@ -158,8 +166,11 @@ func (o *filmOptions) copy(s *probeStream, sound int) error {
 	o.counts[s.Type]++
 	if s.timed() {
 		e := expected{kind: s.Type, codec: s.Codec, start: math.NaN()}
-		if start, err := strconv.ParseFloat(s.Start, 64); err == nil && o.same && s.Type != "subtitle" {
-			e.start, e.slack = start, startSlack
+		if start, err := strconv.ParseFloat(s.Start, 64); err == nil && s.Type != "subtitle" {
+			e.start, e.slack = start-o.begin, startSlack
+			if o.src.kind.container == "avi" && s.Type == "video" {
+				e.slack = orderSlack
+			}
 		}
 		o.expect = append(o.expect, e)
 	}

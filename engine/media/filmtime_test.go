@@ -2,6 +2,8 @@ package media
 
 import (
 	"fmt"
+	"math"
+	"os"
 	"path/filepath"
 	"slices"
 	"strconv"
@@ -115,5 +117,94 @@ func TestFilmStaysInterleaved(t *testing.T) {
 	}
 	if last[0] < 59 || last[2] < 59 {
 		t.Errorf("the film ends at %v", last)
+	}
+}
+
+// A track of MPEG-TS or PS that begins later than another stays as much later, in the copy too, and so does the levelled
+// one: FFmpeg would move each to the begin of the film. The times are ffprobe's.
+func TestTracksOfBroadcastsStayApart(t *testing.T) {
+	t.Parallel()
+	for name, args := range map[string][]string{
+		"late.ts":  {"-af", "asetpts=PTS+1.68/TB", "-c:v", "libx264", "-preset", "ultrafast", "-c:a", "mp2"},
+		"ac3.ts":   {"-af", "asetpts=PTS+1.68/TB", "-c:v", "libx264", "-preset", "ultrafast", "-c:a", "ac3"},
+		"dvb.ts":   {"-vf", "setpts=PTS+0.8/TB", "-fps_mode", "passthrough", "-c:v", "mpeg2video", "-bf", "2", "-c:a", "mp2"},
+		"late.mpg": {"-af", "asetpts=PTS+1.2/TB", "-c:v", "mpeg2video", "-c:a", "mp2"},
+	} {
+		t.Run(name, func(t *testing.T) {
+			source := filepath.Join(t.TempDir(), name)
+			run(t, "ffmpeg", append(append([]string{"-v", "error", "-copyts", "-f", "lavfi", "-i", "testsrc2=s=160x120:r=25:d=5", "-f", "lavfi", "-i", "anoisesrc=d=4:r=48000:a=0.2:c=pink:seed=1",
+				"-ac", "2"}, args...), source)...)
+			path, spec, _ := deliver(t, source, Wish{Title: LevelledTitle("film")})
+			before, _ := streams(t, source)
+			after, _ := streams(t, path)
+			if len(before) != 2 || len(after) != 3 || spec.Container != "matroska" {
+				t.Fatalf("%d tracks became %d in %s", len(before), len(after), spec.Container)
+			}
+			start := func(s stream) float64 {
+				at, err := strconv.ParseFloat(s.Start, 64)
+				if err != nil {
+					t.Fatal(err)
+				}
+				return at
+			}
+			apart := start(before[1]) - start(before[0])
+			if math.Abs(apart) < 0.7 {
+				t.Fatalf("the tracks of the source are %.3f s apart", apart)
+			}
+			for _, s := range after[1:] {
+				if got := start(s) - start(after[0]); math.Abs(got-apart) > startSlack {
+					t.Errorf("sound track %d comes %.3f s after the pictures instead of %.3f s", s.Index, got, apart)
+				}
+			}
+			if got := tracksApart(t, path, 0, path, 1); got[0] < -48 || got[0] > 48 || got[2] != 0 || got[3] != 0 || got[4] != 0 {
+				t.Errorf("begins %d frames late, lags %v", got[0], got[2:])
+			}
+		})
+	}
+}
+
+// A track that came out beside its time is refused, also where the container is another.
+func TestDriftIsRefused(t *testing.T) {
+	source := filepath.Join(t.TempDir(), "a.mkv")
+	run(t, "ffmpeg", "-v", "error", "-f", "lavfi", "-i", "testsrc2=s=160x120:r=25:d=1", "-f", "lavfi", "-i", "anoisesrc=d=1", "-c:v", "mpeg4", "-c:a", "flac", source)
+	f, err := os.Open(source)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer f.Close()
+	for late, refused := range map[float64]bool{0: false, 0.01: true, -0.8: true} {
+		w := &filmWriter{ffWriter: &ffWriter{f: f}, tool: withFFmpeg(t), ctx: t.Context(), expect: []expected{
+			{kind: "video", codec: "mpeg4", slack: startSlack}, {kind: "audio", codec: "flac", start: late, slack: startSlack}}}
+		if err := w.check(); (err != nil) != refused {
+			t.Errorf("%g s late: %v", late, err)
+		}
+	}
+}
+
+// Each sound track of a film is read and levelled whatever the codecs of the others are.
+func TestFilmsOfSeveralCodecs(t *testing.T) {
+	for _, codecs := range [][2]string{{"aac", "ac3"}, {"ac3", "aac"}, {"dca", "ac3"}, {"libmp3lame", "aac"}, {"libopus", "libvorbis"}, {"flac", "libmp3lame"}, {"pcm_s16le", "eac3"}} {
+		t.Run(fmt.Sprint(codecs), func(t *testing.T) {
+			t.Parallel()
+			source := filepath.Join(t.TempDir(), "a.mkv")
+			run(t, "ffmpeg", "-v", "error", "-f", "lavfi", "-i", "testsrc2=s=160x120:r=25:d=2", "-f", "lavfi", "-i", "anoisesrc=d=2:r=48000:a=0.2:seed=1", "-f", "lavfi", "-i", "anoisesrc=d=2:r=48000:a=0.1:seed=2",
+				"-map", "0", "-map", "1", "-map", "2", "-c:v", "mpeg4", "-ac", "2", "-c:a:0", codecs[0], "-c:a:1", codecs[1], "-strict", "-2", source)
+			box := withFFmpeg(t)
+			for track := 1; track <= 2; track++ {
+				r, err := box.OpenTrack(t.Context(), source, track)
+				if err != nil {
+					t.Fatal(err)
+				}
+				snd, _ := drained(t, r)
+				want := len(run(t, "ffmpeg", "-v", "error", "-drc_scale", "0", "-i", source, "-map", fmt.Sprintf("0:a:%d", track-1), "-f", "f32le", "-")) / 8
+				if snd.Frames() < want-1024 || snd.Frames() > want+1024 {
+					t.Errorf("track %d: %d frames instead of %d", track, snd.Frames(), want)
+				}
+			}
+			path, _, _ := deliver(t, source, Wish{Title: LevelledTitle("film")})
+			if list, _ := streams(t, path); len(list) != 4 {
+				t.Errorf("%d tracks", len(list))
+			}
+		})
 	}
 }

@@ -40,8 +40,9 @@ func (t *Toolbox) newFilmWriter(ctx context.Context, f *os.File, spec Spec, tags
 		return nil, err
 	}
 	o := &filmOptions{t: t, ctx: ctx, src: tags, spec: spec, source: source, at: at.seconds(), same: spec.Container == tags.kind.container}
-	if start, err := strconv.ParseFloat(p.Format.Start, 64); err == nil && !o.same {
-		o.at -= start // what FFmpeg does to all stamps if it is not told to keep them
+	if !o.same {
+		o.begin = p.start() // FFmpeg does so if it is not told to keep them
+		o.at -= o.begin
 	}
 	w := &filmWriter{tool: t, ctx: ctx}
 	args, err := o.build(p)
