@@ -107,7 +107,7 @@ type Plan struct {
 	Compressor *dynamics.Compression `json:"compressor"`   // nil: none; works on the ridden sound
 	Gain       audio.DB              `json:"gain_db"`      // steady, after both
 	Limit      bool                  `json:"limit"`        // whether the ceiling has anything to do
-	Ceiling    audio.DBTP            `json:"ceiling_dbtp"` // used while rendering; lossy targets may need it lower than the profile's
+	Ceiling    audio.DBTP            `json:"ceiling_dbtp"` // used while rendering, before an encoder moves peaks: for lossy targets not the profile's
 	Limiter    profile.Limiter       `json:"limiter"`
 	Delivered  profile.Delivered     `json:"delivered"`
 

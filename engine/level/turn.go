@@ -165,12 +165,16 @@ func (j *turn) again(plan Plan, after *Analysis, renders int) (next Plan, ok boo
 		if renders > 1 {
 			still = lowestStill
 		}
-		next.Ceiling = audio.DBTP(stored(audio.DB(plan.Ceiling) - over - still))
+		held := plan.Ceiling
+		if plan.still() && !plan.Limit {
+			held = min(held, j.before.TruePeak+audio.DBTP(plan.Gain))
+		}
+		next.Ceiling = audio.DBTP(stored(audio.DB(held) - over - still))
 		next.Limit = j.mayLimit()
 	}
 	most := j.most
 	if !j.mayLimit() {
-		most += audio.DB(next.Ceiling-j.task.Profile.Ceiling) + j.encoder.Over
+		most = audio.DB(next.Ceiling - j.before.TruePeak)
 	}
 	next.Gain = stored(min(plan.Gain+audio.DB(plan.Aim-j.readBack(after).anchored), most))
 	if plan.still() {
