@@ -18,12 +18,12 @@ var decoders = map[string]string{"mp3": "mp3float", "mp2": "mp2float", "mp1": "m
 
 func decoderOf(codec string) string { return cmp.Or(decoders[codec], codec) }
 
-// decoderArgs choose the decoder of a codec. Of AC-3 and E-AC-3 the sound is what was coded: not as a player set to a
+// decoderArgs choose the decoder of a sound track, counted from 1, by its codec; others than it would be misread. Of AC-3 and E-AC-3 the sound is what was coded: not as a player set to a
 // narrow range would have it (dynrng, compr), nor turned down by the loudness of its dialogue that it claims, which
 // FFmpeg does not do unless told to. What is measured is then what levelling works on, and the figures before and after
 // are of one kind: our tracks carry neither. Claimed loudness is not to be trusted anyway (EBU Tech 3343, 6).
-func decoderArgs(codec string) []string {
-	args := []string{"-c:a", decoderOf(codec)}
+func decoderArgs(codec string, track int) []string {
+	args := []string{fmt.Sprintf("-c:a:%d", max(1, track)-1), decoderOf(codec)}
 	if codec == "ac3" || codec == "eac3" {
 		args = append(args, "-drc_scale", "0")
 	}
@@ -111,7 +111,7 @@ func (t *Toolbox) openFFmpeg(ctx context.Context, f *os.File, path string, k kin
 	if k.container == "ogg" { // or it looks for the length, which is known, and takes the last link of a chain for damage
 		args = append(args, "-seekable", "0")
 	}
-	args = append(args, decoderArgs(l.info.Codec)...)
+	args = append(args, decoderArgs(l.info.Codec, l.info.Track)...)
 	if l.extent != nil {
 		args = append(args, "-ignore_editlist", "1", "-flags2", "+skip_manual")
 	}

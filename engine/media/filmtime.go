@@ -16,7 +16,7 @@ func (i instant) seconds() float64 { return float64(i.ticks) * float64(i.num) / 
 // firstSound returns when the first sample of a track is heard that is not the decoder's run-in. Only decoding tells:
 // containers say in several ways, or not at all, how much of the first packets is left out.
 func (t *Toolbox) firstSound(ctx context.Context, f *os.File, k kind, track int, codec string) (instant, error) {
-	args := append([]string{"-nostdin", "-v", "error", "-max_alloc", "268435456", "-copyts"}, decoderArgs(codec)...)
+	args := append([]string{"-nostdin", "-v", "error", "-max_alloc", "268435456", "-copyts"}, decoderArgs(codec, track)...)
 	args = append(append(args, guarded(k)...), "-map", fmt.Sprintf("0:a:%d", track-1), "-frames:a", "1", "-f", "framecrc", "pipe:1")
 	out, err := t.answer(ctx, f, t.ffmpeg, args)
 	if err != nil {
