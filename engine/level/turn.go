@@ -3,6 +3,7 @@ package level
 import (
 	"context"
 	"fmt"
+	"strings"
 
 	"evenshelf/engine/audio"
 	"evenshelf/engine/media"
@@ -63,6 +64,17 @@ func (j *turn) tell(o *Outcome, r rendering) {
 		o.Treatment = treatmentOf(j.before, r)
 	}
 	o.Verdict = judge(j.task.Profile, j.before, j.plan, r, o.Treatment)
+	if note := j.otherFormat(); note != "" {
+		o.Verdict.Reason = strings.TrimPrefix(o.Verdict.Reason+"; "+note, "; ")
+	}
+}
+
+// otherFormat says why the copy is not in the format that the source has or that was asked for; "" if it is.
+func (j *turn) otherFormat() string {
+	if j.plan.Untouched || j.spec.Note == "" {
+		return ""
+	}
+	return fmt.Sprintf("delivered as %s (%s)", j.spec.FormatName(), j.spec.Note)
 }
 
 // deliver renders until a copy is near enough, and leaves the one that came closest in scratch: a lossy encoder may
