@@ -93,7 +93,7 @@ func analyse(ctx context.Context, src media.Reader, o Options, sound *decoded) (
 	a.FormatName, a.Decoder, a.Engine, a.Info = src.Info().FormatName(), src.Info().Decoder, Version, src.Info()
 	a.Faults = append(damage, unplaced(src.Format().Layout)...)
 	a.Reading, a.Timeline.Timeline = m.Finish()
-	a.AudioHash = identity.sum()
+	a.AudioHash, a.alike = identity.sum(), identity.alike()
 	if o.LoudnessOnly {
 		return a, nil
 	}

@@ -50,6 +50,8 @@ type Analysis struct {
 
 	Info     media.Info `json:"-"`
 	Timeline Timeline   `json:"-"`
+
+	alike bool // it is stereo, and its two channels are the same, bit for bit
 }
 
 // Dialogue is what is known about the speech in a recording.
@@ -112,6 +114,7 @@ type Plan struct {
 	Delivered  profile.Delivered     `json:"delivered"`
 
 	mixed bool // what is levelled is a mix to stereo
+	alike bool // its two channels are the same: see half
 }
 
 // Ride is the part of a plan that moves.

@@ -31,7 +31,7 @@ func MakePlan(t Task, a *Analysis, e Encoder) (Plan, error) {
 		return Plan{}, err
 	}
 	p := t.Profile
-	plan := Plan{Ceiling: audio.DBTP(stored(audio.DB(p.Ceiling) - e.raises(p.Limiter.Most > 0, t.Shared != nil))), Limiter: p.Limiter, Delivered: p.Delivered, mixed: a.Info.Mixed}
+	plan := Plan{Ceiling: audio.DBTP(stored(audio.DB(p.Ceiling) - e.raises(p.Limiter.Most > 0, t.Shared != nil))), Limiter: p.Limiter, Delivered: p.Delivered, mixed: a.Info.Mixed, alike: a.alike}
 	plan.Anchor, plan.Anchored = anchorOf(p, a)
 	plan.Aim = p.Target
 	foreseen := plan.Anchored

@@ -214,21 +214,29 @@ func (j *turn) predict(ctx context.Context, plan Plan) (rendering, error) {
 		return rendering{}, err
 	}
 	defer done()
-	m, err := meter.New(src.Format(), j.task.Profile.Mono)
+	f, mono := src.Format(), j.task.Profile.Mono
+	if plan.alike { // of which one counts as both
+		f.Layout, mono = audio.Mono, audio.TwoLoudspeakers
+	}
+	m, err := meter.New(f, mono)
 	if err != nil {
 		return rendering{}, err
 	}
-	work, err := Render(ctx, src, plan, metered{m})
+	work, err := Render(ctx, src, plan, metered{m, f.Layout.Channels})
 	if err != nil {
 		return rendering{}, err
 	}
 	reading, timeline := m.Finish()
+	reading.Channels, reading.Layout, reading.MonoRule = j.before.Channels, j.before.Layout, j.before.MonoRule
 	reading, timeline = louder(reading, timeline, j.encoder.Gain)
 	return j.rendering(reading, timeline, work), nil
 }
 
-// metered is a sink that only measures.
-type metered struct{ *meter.Meter }
+// metered is a sink that only measures, the first so many channels.
+type metered struct {
+	*meter.Meter
+	channels int
+}
 
-func (m metered) WriteBlock(b audio.Block) error { m.Write(b); return nil }
+func (m metered) WriteBlock(b audio.Block) error { m.Write(b[:m.channels]); return nil }
 func (m metered) Close() error                   { return nil }
