@@ -186,7 +186,7 @@ func (j *turn) again(plan Plan, after *Analysis, renders int) (next Plan, ok boo
 	}
 	most := j.most
 	if !j.mayLimit() {
-		most = audio.DB(next.Ceiling - j.before.TruePeak)
+		most += audio.DB(next.Ceiling-j.task.Profile.Ceiling) + j.encoder.raises(false, j.task.Shared != nil)
 	}
 	next.Gain = stored(min(plan.Gain+audio.DB(plan.Aim-j.readBack(after).anchored), most))
 	if plan.still() {
