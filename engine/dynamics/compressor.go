@@ -96,6 +96,14 @@ func NewCompressor(f audio.Format, c Compression) *Compressor {
 	return s
 }
 
+// CountTwice has each channel count twice: what is put in stands for two that are the same, and is lowered as they would
+// be, to the last bit. Call it before Process.
+func (c *Compressor) CountTwice() {
+	for i := range c.ear.channels {
+		c.ear.channels[i].scale *= 2
+	}
+}
+
 // Process takes the next block and returns sound that is ready, in order; at the start that is less than
 // was put in. The block returned is valid until the next call. Blocks may have up to audio.BlockFrames frames.
 func (c *Compressor) Process(b audio.Block) audio.Block {

@@ -94,7 +94,7 @@ func analyse(ctx context.Context, src media.Reader, o Options, sound *decoded) (
 	a.Stored = storedAs(a.Info)
 	a.Faults = append(damage, unplaced(src.Format().Layout)...)
 	a.Reading, a.Timeline.Timeline = m.Finish()
-	a.AudioHash = identity.sum()
+	a.AudioHash, a.alike = identity.sum(), identity.alike()
 	if o.LoudnessOnly {
 		return a, nil
 	}

@@ -10,6 +10,17 @@ import (
 type Encoder struct {
 	Gain audio.DB // it puts this on everything, as LAME does at its lower bit rates
 	Over audio.DB // it raises true peaks that are held under a ceiling by so much, its gain counted in
+	// Least is the smallest change of level worth another encoding: what it does to peaks by itself is less.
+	Least audio.DB
+}
+
+// raises is by how much true peaks come out of the encoder higher. Those that nothing has held do, on average, by its gain
+// alone; but where recordings share a gain, one whose copy came out too high would be set apart from the others.
+func (e Encoder) raises(mayLimit, shared bool) audio.DB {
+	if mayLimit || shared {
+		return e.Over
+	}
+	return e.Gain
 }
 
 // over64 is by how much encoders raise the peaks of limited sound, dB, at 64 kbit/s a channel; at other bit rates it is
@@ -19,6 +30,9 @@ var over64 = map[string]float64{"mp3": 0.5, "aac": 1.3, "opus": 0.95, "vorbis": 
 
 // mostOver bounds it: what bit rates so low do varies more than it is worth giving away beforehand.
 const mostOver = 2
+
+// leastEncoded is the smallest change of level worth another lossy encoding, dB.
+const leastEncoded = 1
 
 // encoderOf returns what is known of the encoder for a spec, of media's.
 func encoderOf(s media.Spec) Encoder {
@@ -31,7 +45,7 @@ func encoderOf(s media.Spec) Encoder {
 	if rate == 0 { // the codec's best quality, which takes about as much
 		rate = 128_000 * channels
 	}
-	e := Encoder{Over: stored(audio.DB(min(over*64_000*float64(channels)/float64(rate), mostOver)))}
+	e := Encoder{Least: leastEncoded, Over: stored(audio.DB(min(over*64_000*float64(channels)/float64(rate), mostOver)))}
 	if s.Codec == "mp3" && s.BitRate > 0 {
 		e.Gain = lameGain(s.BitRate)
 	}

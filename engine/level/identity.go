@@ -48,6 +48,11 @@ func (p *fingerprint) bytes(x []float32) []byte {
 	return p.swapped
 }
 
+// alike reports whether the channels are left and right, and the same.
+func (p *fingerprint) alike() bool {
+	return p.format.Layout == audio.Stereo && p.channels[0].Sum128() == p.channels[1].Sum128()
+}
+
 // sum is the hash in hexadecimal.
 func (p *fingerprint) sum() string {
 	all := binary.LittleEndian.AppendUint32(nil, uint32(p.format.Rate))

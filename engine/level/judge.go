@@ -42,8 +42,11 @@ func judge(p profile.Profile, before *Analysis, plan Plan, r rendering, done *Tr
 			words[i] = f.Words
 		}
 		return Verdict{State: Held, Reason: strings.Join(words, "; "), Doubts: d.found}
+	case abs(short) > p.Tolerance && plan.Untouched:
+		return Verdict{State: Done, Reason: fmt.Sprintf("%.1f LU short of the target: %s", short, plan.Reason)}
 	case abs(short) > p.Tolerance:
-		return Verdict{State: Done, Reason: fmt.Sprintf("%.1f LU short of the target: the peaks allow no more without dynamics", short)}
+		return Verdict{State: Done, Reason: fmt.Sprintf("%.1f LU short of the target: the peaks allow no more without dynamics", short) +
+			leftOver(audio.DB(p.Ceiling-r.TruePeak), "are the encoder's doing")}
 	case plan.Untouched:
 		return Verdict{State: Done, Reason: plan.Reason}
 	default:
@@ -117,7 +120,7 @@ func (d *doubts) outcome() {
 	}
 	short := d.plan.Aim.Sub(r.anchored)
 	// Without dynamics the peaks decide how far the gain goes; that is what such a profile asks for.
-	asFarAsPeaksAllow := p.Limiter.Most == 0 && short > 0 && d.plan.Gain >= audio.DB(d.plan.Ceiling-d.before.TruePeak)-leastGain
+	asFarAsPeaksAllow := p.Limiter.Most == 0 && short > 0 && (d.plan.Untouched || d.plan.Gain >= audio.DB(d.plan.Ceiling-d.before.TruePeak)-leastGain)
 	if abs(short) <= p.Tolerance || asFarAsPeaksAllow {
 		return
 	}

@@ -53,6 +53,8 @@ type Analysis struct {
 
 	Info     media.Info `json:"-"`
 	Timeline Timeline   `json:"-"`
+
+	alike bool // it is stereo, and its two channels are the same, bit for bit
 }
 
 // Stored is how a sound is stored in its file.
@@ -132,11 +134,12 @@ type Plan struct {
 	Compressor *dynamics.Compression `json:"compressor"`   // nil: none; works on the ridden sound
 	Gain       audio.DB              `json:"gain_db"`      // steady, after both
 	Limit      bool                  `json:"limit"`        // whether the ceiling has anything to do
-	Ceiling    audio.DBTP            `json:"ceiling_dbtp"` // used while rendering; lossy targets may need it lower than the profile's
+	Ceiling    audio.DBTP            `json:"ceiling_dbtp"` // used while rendering, before an encoder moves peaks: for lossy targets not the profile's
 	Limiter    profile.Limiter       `json:"limiter"`
 	Delivered  profile.Delivered     `json:"delivered"`
 
 	mixed bool // what is levelled is a mix to stereo
+	alike bool // its two channels are the same: see half
 }
 
 // Ride is the part of a plan that moves.

@@ -31,7 +31,7 @@ func MakePlan(t Task, a *Analysis, e Encoder) (Plan, error) {
 		return Plan{}, err
 	}
 	p := t.Profile
-	plan := Plan{Ceiling: audio.DBTP(stored(audio.DB(p.Ceiling) - e.Over)), Limiter: p.Limiter, Delivered: p.Delivered, mixed: a.Info.Mixed}
+	plan := Plan{Ceiling: audio.DBTP(stored(audio.DB(p.Ceiling) - e.raises(p.Limiter.Most > 0, t.Shared != nil))), Limiter: p.Limiter, Delivered: p.Delivered, mixed: a.Info.Mixed, alike: a.alike}
 	plan.Anchor, plan.Anchored = anchorOf(p, a)
 	plan.Aim = p.Target
 	foreseen := plan.Anchored
@@ -64,8 +64,8 @@ func MakePlan(t Task, a *Analysis, e Encoder) (Plan, error) {
 	switch {
 	case p.Within == profile.Leave && fits && abs(off) <= p.Tolerance:
 		plan.leave("already within the profile")
-	case p.Within == profile.Leave && fits && plan.still() && off > 0 && plan.Gain < leastGain:
-		plan.leave("already as loud as its peaks allow")
+	case p.Within == profile.Leave && fits && plan.still() && 0 < off && plan.Gain < stored(wanted) && plan.Gain+e.Gain < max(leastGain, e.Least):
+		plan.leave("already as loud as its peaks allow" + leftOver(audio.DB(p.Ceiling-peak), "another encoding is not worth"))
 	default:
 		plan.Limit = p.Limiter.Most > 0 && (!plan.still() || plan.Gain > audio.DB(plan.Ceiling-a.TruePeak))
 		plan.Reason = plan.words(p)

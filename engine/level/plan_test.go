@@ -74,8 +74,8 @@ func TestMakePlanForAnEncoder(t *testing.T) {
 		{"room enough", "rotation", reading(-30, -20), nil, 12.44, -18, false, false},
 		{"peaks come near the ceiling", "rotation", reading(-30, -13.8), nil, 12.44, -18, true, false},
 		{"within", "rotation", reading(-18.2, -1.1), nil, 0, -18, false, true},
-		{"no dynamics: stops short of the ceiling", "untouched", reading(-30, -8), nil, 6.5, -18, false, false},
-		{"no dynamics: near enough to the ceiling already", "untouched", reading(-24, -1.3), nil, 0, -18, false, true},
+		{"no dynamics: the encoder moves peaks by its gain", "untouched", reading(-30, -8), nil, 7.44, -18, false, false},
+		{"no dynamics: near enough to the ceiling already", "untouched", reading(-24, -1.04), nil, 0, -18, false, true},
 		{"a gain shared with others", "untouched", reading(-30, -20), &Shared{Integrated: -28, TruePeak: -15}, 10.44, -20, false, false},
 	} {
 		plan, err := MakePlan(Task{Profile: named(t, c.profile), Shared: c.shared}, c.before, mp3)

@@ -21,6 +21,9 @@ type Work struct {
 // frame: ride, compressor, steady gain, ceiling. A source that breaks off early is rendered as far as it
 // goes. Equal input and plan give equal output on any machine. sink is not closed.
 func Render(ctx context.Context, src audio.Source, plan Plan, sink audio.Sink) (Work, error) {
+	if plan.alike {
+		src, sink = halfOf(src), twiceTo(sink)
+	}
 	c := newChain(src.Format(), plan)
 	_, err := audio.Each(src, func(b audio.Block) error {
 		return errors.Join(sink.WriteBlock(c.process(b)), context.Cause(ctx))
@@ -53,6 +56,9 @@ func newChain(f audio.Format, plan Plan) *chain {
 	}
 	if plan.Compressor != nil {
 		c.compressor = dynamics.NewCompressor(f, *plan.Compressor)
+		if plan.alike {
+			c.compressor.CountTwice()
+		}
 	}
 	if plan.Limit {
 		c.ceiling = dynamics.NewCeiling(f, plan.Ceiling, timing(plan.Limiter), func() dynamics.PeakReader {

@@ -3,6 +3,7 @@ package level
 import (
 	"context"
 	"fmt"
+	"strings"
 
 	"evenshelf/engine/audio"
 	"evenshelf/engine/media"
@@ -63,6 +64,17 @@ func (j *turn) tell(o *Outcome, r rendering) {
 		o.Treatment = treatmentOf(j.before, r)
 	}
 	o.Verdict = judge(j.task.Profile, j.before, j.plan, r, o.Treatment)
+	if note := j.otherFormat(); note != "" {
+		o.Verdict.Reason = strings.TrimPrefix(o.Verdict.Reason+"; "+note, "; ")
+	}
+}
+
+// otherFormat says why the copy is not in the format that the source has or that was asked for; "" if it is.
+func (j *turn) otherFormat() string {
+	if j.plan.Untouched || j.spec.Note == "" {
+		return ""
+	}
+	return fmt.Sprintf("delivered as %s (%s)", j.spec.FormatName(), j.spec.Note)
 }
 
 // deliver renders until a copy is near enough, and leaves the one that came closest in scratch: a lossy encoder may
@@ -165,12 +177,16 @@ func (j *turn) again(plan Plan, after *Analysis, renders int) (next Plan, ok boo
 		if renders > 1 {
 			still = lowestStill
 		}
-		next.Ceiling = audio.DBTP(stored(audio.DB(plan.Ceiling) - over - still))
+		held := plan.Ceiling
+		if plan.still() && !plan.Limit {
+			held = min(held, j.before.TruePeak+audio.DBTP(plan.Gain))
+		}
+		next.Ceiling = audio.DBTP(stored(audio.DB(held) - over - still))
 		next.Limit = j.mayLimit()
 	}
 	most := j.most
 	if !j.mayLimit() {
-		most += audio.DB(next.Ceiling-j.task.Profile.Ceiling) + j.encoder.Over
+		most += audio.DB(next.Ceiling-j.task.Profile.Ceiling) + j.encoder.raises(false, j.task.Shared != nil)
 	}
 	next.Gain = stored(min(plan.Gain+audio.DB(plan.Aim-j.readBack(after).anchored), most))
 	if plan.still() {
@@ -198,21 +214,29 @@ func (j *turn) predict(ctx context.Context, plan Plan) (rendering, error) {
 		return rendering{}, err
 	}
 	defer done()
-	m, err := meter.New(src.Format(), j.task.Profile.Mono)
+	f, mono := src.Format(), j.task.Profile.Mono
+	if plan.alike { // of which one counts as both
+		f.Layout, mono = audio.Mono, audio.TwoLoudspeakers
+	}
+	m, err := meter.New(f, mono)
 	if err != nil {
 		return rendering{}, err
 	}
-	work, err := Render(ctx, src, plan, metered{m})
+	work, err := Render(ctx, src, plan, metered{m, f.Layout.Channels})
 	if err != nil {
 		return rendering{}, err
 	}
 	reading, timeline := m.Finish()
+	reading.Channels, reading.Layout, reading.MonoRule = j.before.Channels, j.before.Layout, j.before.MonoRule
 	reading, timeline = louder(reading, timeline, j.encoder.Gain)
 	return j.rendering(reading, timeline, work), nil
 }
 
-// metered is a sink that only measures.
-type metered struct{ *meter.Meter }
+// metered is a sink that only measures, the first so many channels.
+type metered struct {
+	*meter.Meter
+	channels int
+}
 
-func (m metered) WriteBlock(b audio.Block) error { m.Write(b); return nil }
+func (m metered) WriteBlock(b audio.Block) error { m.Write(b[:m.channels]); return nil }
 func (m metered) Close() error                   { return nil }

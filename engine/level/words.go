@@ -42,6 +42,14 @@ func (plan Plan) words(p profile.Profile) string {
 	return strings.Join(parts, "; ")
 }
 
+// leftOver says what becomes of the room that peaks are left with under the ceiling, if it is worth a word.
+func leftOver(room audio.DB, what string) string {
+	if room < leastGain {
+		return ""
+	}
+	return fmt.Sprintf(", but for %s dB that %s", audio.Number(float64(room), 1), what)
+}
+
 // signed writes a gain with its sign, to a tenth.
 func signed(g audio.DB) string {
 	s := audio.Number(float64(g), 1)

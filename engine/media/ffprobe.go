@@ -8,6 +8,7 @@ import (
 	"errors"
 	"fmt"
 	"os"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -163,6 +164,7 @@ func (p *probe) info(k kind, number int) (Info, *probeStream, error) {
 		titles[i] = strings.ReplaceAll(s.title(), "\n", " ")
 	}
 	info.Titles = strings.Join(titles, "\n")
+	info.Others = len(sounds) > 1 || slices.ContainsFunc(p.Streams, func(s probeStream) bool { return s.Type == "subtitle" || s.Type == "attachment" })
 	info.Format = audio.Format{Rate: atoi(s.SampleRate), Layout: audio.UsualLayout(s.Channels)}
 	if err := checkFormat(info.Format, -1); err != nil {
 		return Info{}, nil, err

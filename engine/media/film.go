@@ -56,7 +56,7 @@ var isoExtensions = []string{".m4v", ".qt", ".3gp", ".3g2"}
 
 var filmKinds = map[string]filmKind{
 	"mp4": {"mp4", []string{"aac", "ac3", "eac3", "mp3", "opus", "flac", "alac"}, "aac", "aac", "flac",
-		append([]string{".mp4", ".mov"}, isoExtensions...)},
+		append([]string{".mp4", ".mov", ".m4a", ".m4b"}, isoExtensions...)},
 	"mov": {"mov", []string{"aac", "ac3", "eac3", "mp3", "alac", "pcm_s16le", "pcm_s16be", "pcm_s24le", "pcm_s24be", "pcm_s32le", "pcm_s32be", "pcm_f32le", "pcm_f32be"}, "aac", "aac", "alac",
 		append([]string{".mov", ".mp4"}, isoExtensions...)},
 	"matroska": {"matroska", []string{"aac", "ac3", "eac3", "mp3", "opus", "vorbis", "flac", "alac", "pcm_s16le", "pcm_s24le", "pcm_s32le", "pcm_f32le"}, "flac", "aac", "flac",
@@ -64,9 +64,14 @@ var filmKinds = map[string]filmKind{
 	"webm": {"webm", []string{"opus", "vorbis"}, "opus", "opus", "vorbis", []string{".webm", ".weba"}},
 }
 
-// isFilm reports whether a recording is delivered as a whole file around one levelled track: films, and Matroska also
-// without pictures, whose further tracks, attachments and chapters no other container has room for.
-func (i Info) isFilm() bool { return i.Video || i.Container == "matroska" || i.Container == "webm" }
+// soundOnly are the extensions of containers of films where there are no pictures.
+var soundOnly = map[string]string{"matroska": ".mka", "mp4": ".m4a"}
+
+// isFilm reports whether a recording is delivered as a whole file around one levelled track: films, what has other tracks
+// beside the sound, and Matroska also without, whose chapters and tags no other container has room for.
+func (i Info) isFilm() bool {
+	return i.Video || i.Others || i.Container == "matroska" || i.Container == "webm"
+}
 
 // filmContainer is the container that a film is delivered in: its own, or Matroska, which takes nearly everything.
 func filmContainer(own string) string {
@@ -82,14 +87,18 @@ func (t *Toolbox) filmSpec(info Info, w Wish) Spec {
 	kind := filmKinds[container]
 	var why []string
 	if container != info.Container {
-		why = append(why, fmt.Sprintf("films in %s are delivered as Matroska", info.Container))
+		what := "films"
+		if !info.Video {
+			what = "several tracks"
+		}
+		why = append(why, fmt.Sprintf("%s in %s are delivered as Matroska", what, info.Container))
 	}
 	if w.Format != "" && info.Video {
 		why = append(why, fmt.Sprintf("a film stays a film, although %s was asked for", w.Format))
 	}
 	s := Spec{Container: container, Format: info.Format, Plain: w.Plain, Shaped: w.Shaped, Extension: kind.extensions[0]}
-	if !info.Video && container == "matroska" {
-		s.Extension = ".mka"
+	if ext, ok := soundOnly[container]; ok && !info.Video {
+		s.Extension = ext
 	}
 	usual := kind.lossy
 	if info.BitDepth > 0 {

@@ -37,6 +37,7 @@ type Info struct {
 	Titles    string // of all sound tracks, a line each, empty without one; "" where there can be but one
 	Mixed     bool   // Format is that of a mix of more channels to two (see Downmix)
 	Video     bool   // there are moving pictures beside the sound (cover art does not count)
+	Others    bool   // there are other tracks beside it: further sound, subtitles, attached files
 	Decoder   string // who decodes it, with version, e.g. "ffmpeg 5.1.6 mp3float"
 }
 

@@ -213,8 +213,8 @@ func TestOtherOgg(t *testing.T) {
 	}{
 		"flac.ogg":  {[]string{"-i", wav, "-c:a", "flac"}, "flac", "ogg flac is not written here"},
 		"speex.ogg": {[]string{"-i", mono, "-c:a", "libspeex"}, "m4a aac", "ogg speex is not written here"},
-		"two.ogg":   {[]string{"-i", wav, "-i", wav, "-map", "0", "-map", "1", "-c:a", "libvorbis"}, "ogg vorbis", ""},
-		"mixed.ogg": {[]string{"-i", wav, "-i", wav, "-map", "0", "-map", "1", "-c:a:0", "libopus", "-c:a:1", "libvorbis"}, "opus", ""},
+		"two.ogg":   {[]string{"-i", wav, "-i", wav, "-map", "0", "-map", "1", "-c:a", "libvorbis"}, "matroska vorbis", "several tracks in ogg are delivered as Matroska"},
+		"mixed.ogg": {[]string{"-i", wav, "-i", wav, "-map", "0", "-map", "1", "-c:a:0", "libopus", "-c:a:1", "libvorbis"}, "matroska opus", "several tracks"},
 		"film.ogg":  {[]string{"-f", "lavfi", "-i", "color=s=64x64:d=1", "-i", wav, "-c:v", "libtheora", "-c:a", "libvorbis"}, "matroska vorbis", "films in ogg are delivered as Matroska"},
 	} {
 		t.Run(name, func(t *testing.T) {

@@ -30,12 +30,16 @@ var lossyCodecs = map[string]lossy{
 // the next of 16, 24 and 32: the noise of 8 bits anew, 45 dB under full scale, would be heard in any programme, and
 // whatever plays 8 bits plays 16. Lossy bit rates are kept. A film is delivered as a whole, with one sound track levelled.
 func (t *Toolbox) SpecFor(info Info, w Wish) Spec {
-	if info.isFilm() && (info.Video || w.Format == "") {
+	own := w.Format == "" || w.Format == formatOf(info)
+	if info.isFilm() && (info.Video || own) {
 		return t.filmSpec(info, w)
 	}
 	s, note := t.ownFormat(info)
-	if w.Format != "" && w.Format != formatOf(info) {
+	if !own {
 		s, note = t.inFormat(w.Format, info)
+	}
+	if info.Others {
+		note = joinNotes(note, fmt.Sprintf("there is no room in %s for its other tracks", s.Container))
 	}
 	s.Format, s.Note, s.Plain, s.Shaped = info.Format, note, w.Plain, w.Shaped
 	if w.BitRate != 0 {

@@ -97,6 +97,11 @@ func (t *Toolbox) inFormat(format string, info Info) (Spec, string) {
 	return Spec{Container: l.container, Codec: codec, BitRate: info.BitRate, Rate: at.Rate, Extension: l.extension}, note
 }
 
+// FormatName is that of the file that is written, as Info has it.
+func (s Spec) FormatName() string {
+	return Info{Container: s.Container, Codec: s.Codec, Video: s.Film != nil && s.Extension != soundOnly[s.Container]}.FormatName()
+}
+
 // delivered is the format of the file that is written.
 func (s Spec) delivered() audio.Format {
 	f := s.Format
