@@ -242,19 +242,22 @@ func (s *Site) findRecording(c *gin.Context, n int64) (p recordingPage, err erro
 			p.Last = &p.Jobs[i]
 		}
 	}
+	p.Levelled = levelledBy(p.AfterReading, p.Jobs)
 	if p.Last != nil {
 		run, err := s.store.Run(ctx, p.Last.RunID)
 		if err != nil {
 			return p, err
 		}
 		p.Run = &run
-		p.Target = &run.Target
-		p.Ceiling = known(run.Ceiling)
-		if p.Last.Plan != nil {
-			p.Ceiling = known(p.Last.Plan.Ceiling)
+		aimed := run // what the after reading is to be held against: a later run may only have written tags
+		if p.Levelled != nil && p.Levelled.RunID != run.ID {
+			if aimed, err = s.store.Run(ctx, p.Levelled.RunID); err != nil {
+				return p, err
+			}
 		}
+		p.Target = &aimed.Target
+		p.Ceiling = known(aimed.Ceiling)
 	}
-	p.Levelled = levelledBy(p.AfterReading, p.Jobs)
 	p.Told = told(p.Recording, p.Run, p.Last)
 	return p, nil
 }
