@@ -18,11 +18,8 @@ type damage struct {
 
 // damages are what happens to files: copying that broke off, bad sectors, flipped bits, wrong sizes, foreign bytes.
 var damages = []damage{
-	{"one byte", func(b []byte, _ *rand.Rand) []byte { return b[:1] }},
 	{"cut in the header", func(b []byte, _ *rand.Rand) []byte { return b[:min(43, len(b))] }},
-	{"cut early", func(b []byte, _ *rand.Rand) []byte { return b[:len(b)/9] }},
 	{"cut in the middle", func(b []byte, _ *rand.Rand) []byte { return b[:len(b)/2] }},
-	{"last byte gone", func(b []byte, _ *rand.Rand) []byte { return b[:len(b)-1] }},
 	{"head gone", func(b []byte, _ *rand.Rand) []byte { return b[100:] }},
 	{"flips in the header", func(b []byte, r *rand.Rand) []byte { return flip(b, r, 4, 160) }},
 	{"flips everywhere", func(b []byte, r *rand.Rand) []byte { return flip(b, r, 30, len(b)) }},

@@ -127,9 +127,11 @@ func TestAuditionKeepsItsLength(t *testing.T) {
 		t.Fatal(err)
 	}
 	defer film.Close()
-	if long, err := withFFmpeg(t).Audition(t.Context(), film, 1, 1<<60); err != nil || long.size > 1<<32-1 {
-		t.Errorf("%v: %+v", err, long)
+	long, err := withFFmpeg(t).Audition(t.Context(), film, 1, 1<<60)
+	if err != nil || long.size > 1<<32-1 {
+		t.Fatalf("%v: %+v", err, long)
 	}
+	long.Close()
 	plain := save(t, "a.flac", nil)
 	run(t, "ffmpeg", "-v", "error", "-y", "-i", source, "-vn", plain)
 	f, err := os.Open(plain)

@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 	"testing"
 
@@ -112,6 +113,9 @@ func TestFilmIsCopiedAroundItsSound(t *testing.T) {
 		"opus.webm":  {"-c:a", "libopus"},
 	} {
 		for _, w := range []Wish{{Title: LevelledTitle("film")}, {Title: LevelledTitle("film"), InPlace: true}} {
+			if placed := []string{"aac.mkv", "opus.mkv", "ac3.mp4", "pcm.mov", "opus.webm"}; w.InPlace != slices.Contains(placed, name) && name != "aac.mp4" {
+				continue // each film is delivered one way, and one both
+			}
 			t.Run(fmt.Sprint(name, " in place ", w.InPlace), func(t *testing.T) {
 				t.Parallel()
 				source := makeFilm(t, name, more...)

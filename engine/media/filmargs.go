@@ -168,8 +168,11 @@ func (o *filmOptions) copy(s *probeStream, sound int) error {
 		e := expected{kind: s.Type, codec: s.Codec, start: math.NaN()}
 		if start, err := strconv.ParseFloat(s.Start, 64); err == nil && s.Type != "subtitle" {
 			e.start, e.slack = start-o.begin, startSlack
-			if o.src.kind.container == "avi" && s.Type == "video" {
+			switch {
+			case o.src.kind.container == "avi" && s.Type == "video":
 				e.slack = orderSlack
+			case !o.same && (s.Codec == "opus" || s.Codec == "vorbis"): // what leads is counted in one container and not in another
+				e.slack = 2 * leadSlack
 			}
 		}
 		o.expect = append(o.expect, e)

@@ -113,7 +113,7 @@ func exact(t *testing.T, name string, box *Toolbox, path string, frames int) aud
 func TestMP3AnyLength(t *testing.T) {
 	box := withFFmpeg(t)
 	for _, layout := range []audio.Format{{Rate: 11025, Layout: audio.Mono}, stereo(22050), {Rate: 32000, Layout: audio.Mono}, stereo(44100)} {
-		for _, frames := range []int{1, 46, 47, 48, 529, 575, 576, 577, 1105, 1151, 1152, 1153, 2304, 44099, 44100, 44101} {
+		for _, frames := range []int{1, 46, 47, 575, 576, 577, 1105, 1152, 1153, 44101} {
 			t.Run(fmt.Sprintf("%d Hz, %d frames", layout.Rate, frames), func(t *testing.T) {
 				t.Parallel()
 				snd, path := programme(layout.Layout.Channels, frames, 16, 0.6), filepath.Join(t.TempDir(), "a.mp3")
