@@ -221,7 +221,11 @@ func (o *filmOptions) addLevelled() {
 	for _, pair := range o.trackTags() {
 		o.tracks = append(o.tracks, meta, pair[0]+"="+pair[1])
 	}
-	o.expect = append(o.expect, expected{kind: "audio", codec: o.spec.Codec, start: o.at, slack: leadSlack})
+	slack := leadSlack
+	if o.spec.Codec == "vorbis" { // whose first packet has a stamp but no sound
+		slack += o.spec.Format.Seconds(512)
+	}
+	o.expect = append(o.expect, expected{kind: "audio", codec: o.spec.Codec, start: o.at, slack: slack})
 }
 
 // trackTags are the tags of the levelled track, sorted: in place those of its source, but for what counts its packets or

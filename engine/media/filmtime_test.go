@@ -208,3 +208,15 @@ func TestFilmsOfSeveralCodecs(t *testing.T) {
 		})
 	}
 }
+
+// Vorbis in Matroska says nothing in its first packet, which is the longer the lower the rate: that is no drift.
+func TestVorbisOfALowRateInMatroska(t *testing.T) {
+	t.Parallel()
+	source := filepath.Join(t.TempDir(), "a.mka")
+	run(t, "ffmpeg", "-v", "error", "-f", "lavfi", "-i", "anoisesrc=d=2:r=22050:a=0.2:c=pink", "-c:a", "libvorbis", source)
+	path, _, snd := deliver(t, source, Wish{})
+	got, _ := decode(t, withFFmpeg(t), path)
+	if d := lag(snd[0], got[0]); d != 0 || got.Frames() != snd.Frames() {
+		t.Errorf("%d frames late, %d of %d", d, got.Frames(), snd.Frames())
+	}
+}
