@@ -22,7 +22,8 @@ func auditioned(t *testing.T, path string, track int, frames int64) (whole []byt
 		if again, err = withFFmpeg(t).Audition(t.Context(), f, track, frames); err != nil {
 			t.Fatal(err)
 		}
-		t.Cleanup(func() { again.Close() })
+		opened := again
+		t.Cleanup(func() { opened.Close() })
 		if whole == nil {
 			if whole, err = io.ReadAll(again); err != nil {
 				t.Fatal(err)
