@@ -44,7 +44,7 @@ func (src *tagSource) sheetAtEnds() (s tags.Sheet, ok bool) {
 	return id3.ReadSheet(head, tail), err1 == nil && err2 == nil
 }
 
-// sheetOf returns what a source carries into another format; it may be nil. Without FFmpeg that is nothing where there is
+// sheetOf returns what a source, which may be nil, carries into another format. Without FFmpeg that is nothing where there is
 // no reader here.
 func (t *Toolbox) sheetOf(ctx context.Context, src *tagSource) (s tags.Sheet, err error) {
 	if src == nil {
