@@ -28,7 +28,7 @@ test: ## everything that has to pass: format, vet, lint, tests (with the race de
 	$(GO) test -race -timeout 12m $$($(GO) list ./... | grep -v '/engine/media$$')
 	$(GO) test -race -timeout 12m -run '$(SHARED)' ./engine/media
 	@# tests of the whole program, of formats and of long signals, which the race detector would make minutes longer
-	$(GO) test -timeout 15m ./command ./engine/media ./engine/demo ./engine/faults ./engine/level ./engine/meter ./engine/speech ./worker/delivery
+	$(GO) test -timeout 15m ./engine/level ./engine/media ./command ./engine/demo ./engine/faults ./engine/meter ./engine/speech ./worker/delivery
 
 bench: ## run every benchmark (x-realtime is how much faster than listening)
 	$(GO) test -run '^$$' -bench . -benchmem ./engine/...
