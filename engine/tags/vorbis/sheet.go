@@ -125,8 +125,12 @@ func formatTime(d time.Duration) string {
 func FromSheet(s tags.Sheet) Comment {
 	c := Comment{Vendor: Vendor}
 	for _, f := range s.Fields {
+		name := legal(f.Name)
+		if _, _, chapter := chapterName(name); name != f.Name && (chapter || name == pictureName) {
+			name = "_" + name // or it would come to mean something else
+		}
 		for _, value := range f.Values {
-			c.Entries = append(c.Entries, legal(f.Name)+"="+value)
+			c.Entries = append(c.Entries, name+"="+value)
 		}
 	}
 	for i, ch := range s.Chapters {
