@@ -10,6 +10,7 @@ import (
 	"slices"
 	"unicode/utf8"
 
+	"evenshelf/engine/tags"
 	"evenshelf/engine/tags/id3"
 )
 
@@ -212,19 +213,11 @@ func isText(b []byte) bool {
 	return true
 }
 
-// readAt returns up to n bytes at an offset; fewer, or none, where the file ends.
-func readAt(r io.ReaderAt, offset int64, n int) ([]byte, error) {
-	b := make([]byte, n)
-	n, err := r.ReadAt(b, offset)
-	if err == io.EOF {
-		err = nil
-	}
-	return b[:n], err
-}
-
 // le16 and friends keep header code short.
 var (
 	le16 = binary.LittleEndian.Uint16
 	le32 = binary.LittleEndian.Uint32
 	le64 = binary.LittleEndian.Uint64
+
+	readAt = tags.ReadAt
 )

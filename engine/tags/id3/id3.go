@@ -12,7 +12,6 @@ package id3
 
 import (
 	"encoding/binary"
-	"io"
 )
 
 const (
@@ -102,13 +101,3 @@ func edited(b []byte, r rule, gains [][2]string) []byte {
 
 // isID3 reports whether b is one whole ID3v2 tag.
 func isID3(b []byte) bool { return len(b) > 0 && b[0] == 'I' && HeadLength(b) == int64(len(b)) }
-
-// readAt returns up to n bytes at an offset; fewer, or none, where the file ends.
-func readAt(r io.ReaderAt, offset int64, n int) ([]byte, error) {
-	b := make([]byte, n)
-	n, err := r.ReadAt(b, offset)
-	if err == io.EOF {
-		err = nil
-	}
-	return b[:n], err
-}

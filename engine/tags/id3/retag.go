@@ -26,11 +26,11 @@ func Retag(dst io.Writer, src *io.SectionReader, g tags.Gains) error {
 	if max(start, src.Size()-end) > MaxLength {
 		return errors.New("its tags are larger than any recording's")
 	}
-	head, err := readAt(src, 0, int(start))
+	head, err := tags.ReadAt(src, 0, int(start))
 	if err != nil {
 		return err
 	}
-	tail, err := readAt(src, end, int(src.Size()-end))
+	tail, err := tags.ReadAt(src, end, int(src.Size()-end))
 	if err != nil {
 		return err
 	}
@@ -43,7 +43,7 @@ func Retag(dst io.Writer, src *io.SectionReader, g tags.Gains) error {
 func headEnd(src *io.SectionReader) (int64, error) {
 	end := int64(0)
 	for range maxTags {
-		b, err := readAt(src, end, apeLen)
+		b, err := tags.ReadAt(src, end, apeLen)
 		if err != nil {
 			return 0, err
 		}

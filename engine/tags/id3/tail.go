@@ -5,6 +5,8 @@ import (
 	"encoding/binary"
 	"io"
 	"slices"
+
+	"evenshelf/engine/tags"
 )
 
 // Taggers append to a recording whatever they like, in any order, and some devices fill up its last cluster with
@@ -22,7 +24,7 @@ func TailStart(r io.ReaderAt, start, size int64) (int64, error) {
 	end := size
 	for range maxTags {
 		at := max(start, end-window)
-		b, err := readAt(r, at, int(max(0, end-at)))
+		b, err := tags.ReadAt(r, at, int(max(0, end-at)))
 		if err != nil {
 			return 0, err
 		}
